@@ -1,0 +1,182 @@
+// Package scenarios describes WHAT is simulated: plain structs read from strict
+// YAML, and the embedded scenarios. It holds no physics.
+//
+// Every struct field carries its YAML key, its allowed range (tag "in", written
+// with the unit the user would write; ">" makes a bound exclusive) or its allowed
+// words (tag "one"), and one line for people (tag "about").
+package scenarios
+
+import "offplane/scenarios/units"
+
+// A Scenario is one complete virtual observation and its inversion.
+type Scenario struct {
+	About     string    `yaml:"about" about:"one line that says what this is"`
+	Seed      uint64    `yaml:"seed" about:"addresses every random number of the run"`
+	Observer  Observer  `yaml:"observer"`
+	Corona    Corona    `yaml:"corona"`
+	Waves     Waves     `yaml:"waves"`
+	Line      Line      `yaml:"line"`
+	Sight     Sight     `yaml:"sight"`
+	Image     Image     `yaml:"image"`
+	Camera    Camera    `yaml:"camera"`
+	Inversion Inversion `yaml:"inversion"`
+}
+
+// Observer says from where and when the corona is seen.
+type Observer struct {
+	Latitude  units.Angle    `yaml:"latitude" in:"-90 deg..90 deg" about:"heliographic latitude B0; positive tips the north pole toward the observer"`
+	Longitude units.Angle    `yaml:"longitude" in:"-360 deg..360 deg" about:"heliographic longitude (Stonyhurst)"`
+	Distance  units.Distance `yaml:"distance" in:">0.05 au..10 au" about:"distance from the Sun's centre"`
+	Start     units.Date     `yaml:"start" about:"UTC of the first frame"`
+}
+
+// Corona is the truth: field, density, temperature, composition.
+type Corona struct {
+	Fields      []Field      `yaml:"fields" about:"magnetic field components; they add"`
+	Density     Density      `yaml:"density"`
+	Temperature Temperature  `yaml:"temperature"`
+	ClosedBelow units.Height `yaml:"closed_below" in:">1 Rsun..5 Rsun" about:"lines with an apex above this count as open"`
+	Helium      float64      `yaml:"helium" in:"0..0.5" about:"He/H by number; sets mu and the proton share"`
+	Nonthermal  units.Speed  `yaml:"nonthermal" in:"0 km/s..200 km/s" about:"1/e speed of unresolved motions at waves.at_density; scales as n^(-1/4)"`
+}
+
+// A Field is exactly one of its members.
+type Field struct {
+	DipoleSheet *DipoleSheet `yaml:"dipole_sheet" about:"dipole, octupole and azimuthal current sheet (Banaszkiewicz et al. 1998, A&A 337, 940)"`
+	Radial      *Radial      `yaml:"radial" about:"radial test field, falling as a power of r; r^-2 is free of divergence"`
+}
+
+// DipoleSheet: see model.DipoleSheet for the formula.
+type DipoleSheet struct {
+	Strength units.Field  `yaml:"strength" in:">0 G..1000 G" about:"M"`
+	Sheet    units.Height `yaml:"sheet" in:"0.1 Rsun..100 Rsun" about:"a1, depth of the image monopole that makes the current sheet"`
+	Octupole float64      `yaml:"octupole" in:"-10..10" about:"Q, strength of the l = 3 term"`
+}
+
+// Radial is B = Strength r^-Exponent along r.
+type Radial struct {
+	Strength units.Field `yaml:"strength" in:">0 G..1000 G" about:"at the surface"`
+	Exponent float64     `yaml:"exponent" in:"0..6"`
+}
+
+// Density ties two laws to the field's topology.
+type Density struct {
+	Streamer Law         `yaml:"streamer" about:"inside the closed region and around the sheet; everywhere if there is no hole"`
+	Hole     *Law        `yaml:"hole" about:"on open field lines"`
+	Boundary units.Angle `yaml:"boundary" in:">0 deg..30 deg" about:"half-width in footpoint latitude of the passage from streamer to hole"`
+}
+
+// A Law is exactly one of its members, times Factor.
+type Law struct {
+	Named       string       `yaml:"named" about:"a published profile by author and year"`
+	PowerLaw    *PowerLaw    `yaml:"power_law"`
+	Hydrostatic *Hydrostatic `yaml:"hydrostatic"`
+	Factor      float64      `yaml:"factor" in:">0..1000" about:"multiplies the law"`
+}
+
+// PowerLaw is n = Surface r^-Exponent.
+type PowerLaw struct {
+	Surface  units.Density `yaml:"surface" in:">0 cm-3..1e12 cm-3"`
+	Exponent float64       `yaml:"exponent" in:"0..30"`
+}
+
+// Hydrostatic is the isothermal hydrostatic law (PowerLaw's physical cousin).
+type Hydrostatic struct {
+	Surface     units.Density     `yaml:"surface" in:">0 cm-3..1e12 cm-3"`
+	Temperature units.Temperature `yaml:"temperature" in:"0.3 MK..10 MK"`
+}
+
+// Temperature per region, blended like the density.
+type Temperature struct {
+	Streamer units.Temperature `yaml:"streamer" in:"0.63 MK..5 MK"`
+	Hole     units.Temperature `yaml:"hole" in:"0.63 MK..5 MK"`
+}
+
+// Waves is the random kink-wave driver.
+type Waves struct {
+	Amplitude  units.Speed   `yaml:"amplitude" in:"0 km/s..100 km/s" about:"rms of one polarisation of the outward train before damping, at at_density"`
+	AtDensity  units.Density `yaml:"at_density" in:">0 cm-3..1e12 cm-3" about:"density at which amplitude and nonthermal hold"`
+	Growth     string        `yaml:"growth" one:"wkb,none" about:"wkb: amplitude ~ n^(-1/4); none: the same everywhere"`
+	Cell       units.Length  `yaml:"cell" in:"0.5 Mm..100 Mm" about:"coherence scale of the driver at the surface"`
+	Spectrum   Spectrum      `yaml:"spectrum"`
+	Damping    float64       `yaml:"damping" in:"0..1000" about:"damping length over wavelength, xi_E; 0: no damping"`
+	Inward     float64       `yaml:"inward" in:"0..10" about:"power of the inward train launched at inward_from on open lines, over the undamped outward power; 0: none"`
+	InwardFrom units.Height  `yaml:"inward_from" in:">1 Rsun..5 Rsun"`
+	FarEnd     bool          `yaml:"far_end" about:"on closed lines, also the train launched at the far end"`
+}
+
+// Spectrum is P(f) = slope part + floor + bump between Low and High, scaled to unit variance.
+type Spectrum struct {
+	Slope     float64         `yaml:"slope" in:"0..5" about:"alpha of the f^-alpha part"`
+	Floor     float64         `yaml:"floor" in:"0..100" about:"white part, over the power-law part at bump_at"`
+	Bump      float64         `yaml:"bump" in:"0..1000" about:"peak of the log-normal bump, over the power-law part at bump_at"`
+	BumpAt    units.Frequency `yaml:"bump_at" in:"0.1 mHz..50 mHz"`
+	BumpWidth float64         `yaml:"bump_width" in:">0..3" about:"sigma in ln f"`
+	Low       units.Frequency `yaml:"low" in:"0.01 mHz..50 mHz"`
+	High      units.Frequency `yaml:"high" in:"0.1 mHz..100 mHz"`
+}
+
+// Line says which atomic data make the light.
+type Line struct {
+	Data       string  `yaml:"data" about:"file of atomic data; empty: the embedded set"`
+	Ionisation string  `yaml:"ionisation" one:"modern,arnaud-raymond-1992" about:"which ion-fraction column"`
+	Iron       float64 `yaml:"iron" in:"5..9" about:"A(Fe) = 12 + log10(Fe/H)"`
+	Photo      float64 `yaml:"photo" in:"0..10" about:"multiplies the disc's radiation; 1 is the Sun's"`
+}
+
+// Sight is how the line of sight is integrated.
+type Sight struct {
+	Plane bool         `yaml:"plane" about:"true: only the plane of the sky emits (method tests)"`
+	Step  float64      `yaml:"step" in:"0.05..1.5" about:"sample spacing over cell * r"`
+	Reach units.Height `yaml:"reach" in:"0.2 Rsun..10 Rsun" about:"farthest sample from the plane of the sky; integration may stop earlier once the rest is below tail"`
+	Tail  float64      `yaml:"tail" in:"1e-6..0.01" about:"share of either line's emission that may be left out at each end"`
+}
+
+// Image is the field of view.
+type Image struct {
+	Pixel units.SkyAngle `yaml:"pixel" in:"0.1 arcsec..60 arcsec"`
+	Inner units.Height   `yaml:"inner" in:"1.01 Rsun..3 Rsun"`
+	Outer units.Height   `yaml:"outer" in:">1.01 Rsun..3 Rsun"`
+	From  units.Angle    `yaml:"from" in:"-360 deg..360 deg" about:"first position angle of the wedge, counter-clockwise from north"`
+	To    units.Angle    `yaml:"to" in:"-360 deg..720 deg" about:"last position angle of the wedge; from + 360 deg is the full ring"`
+	Roll  units.Angle    `yaml:"roll" in:"-180 deg..180 deg" about:"rotation of the image's +y from solar north, counter-clockwise"`
+}
+
+// Camera is what stands between the radiance and the frames.
+type Camera struct {
+	Cadence     units.Duration     `yaml:"cadence" in:"0.1 s..600 s" about:"time between frames of the first line"`
+	Duration    units.Duration     `yaml:"duration" in:"60 s..48 h"`
+	Tunings     []units.Wavelength `yaml:"tunings" about:"offsets from the rest wavelength, ascending, of both lines"`
+	Filter      units.Wavelength   `yaml:"filter" in:"0.005 nm..1 nm" about:"full width at half maximum of the Gaussian transmission"`
+	SecondLine  int                `yaml:"second_line" in:"1..10000" about:"frames of the second line, evenly spread over the duration"`
+	PointSpread units.SkyAngle     `yaml:"point_spread" in:"0 arcsec..30 arcsec" about:"full width at half maximum of the Gaussian point spread; 0: none"`
+	Noise       bool               `yaml:"noise" about:"photon and read noise"`
+	Aperture    units.Diameter     `yaml:"aperture" in:"1 cm..1000 cm"`
+	Throughput  float64            `yaml:"throughput" in:">0..1" about:"detected electrons per photon at the entrance"`
+	Exposure    units.Duration     `yaml:"exposure" in:"1 ms..600 s" about:"of one tuning, all co-adds together"`
+	Coadds      int                `yaml:"coadds" in:"1..10000"`
+	ReadNoise   float64            `yaml:"read_noise" in:"0..1000" about:"electrons rms, one read"`
+	Background  units.Brightness   `yaml:"background" in:"0 ppm..1000 ppm" about:"sky and instrument, millionths of the disc-centre continuum"`
+}
+
+// Inversion is the observer's recipe. It may not know the corona.
+type Inversion struct {
+	Filter      Band              `yaml:"filter"`
+	Box         int               `yaml:"box" in:"5..101" about:"side of the coherence box [pixels], odd"`
+	Coherence   float64           `yaml:"coherence" in:">0..<1" about:"threshold of the island"`
+	Track       int               `yaml:"track" in:"5..201" about:"points along the track, one pixel apart, odd"`
+	Separation  bool              `yaml:"separation" about:"split outward and inward waves on the track before the lag fit"`
+	KZero       string            `yaml:"k_zero" one:"kept,halved,dropped" about:"what the separation does with the column of zero wavenumber"`
+	Padding     int               `yaml:"padding" in:"1..16" about:"zero padding of the track for the separation; 1: none"`
+	Temperature units.Temperature `yaml:"temperature" in:"0.63 MK..5 MK" about:"assumed in the ratio density"`
+	Mu          float64           `yaml:"mu" in:"0.5..2" about:"rho / (m_p n_e) assumed in the field"`
+	Helium      float64           `yaml:"helium" in:"0..0.5" about:"He/H assumed in the ratio density (proton collisions)"`
+	Line        Line              `yaml:"line"`
+}
+
+// Band is a Gaussian band-pass in frequency.
+type Band struct {
+	Centre units.Frequency `yaml:"centre" in:"0.1 mHz..100 mHz"`
+	Width  units.Frequency `yaml:"width" in:"0.01 mHz..100 mHz"`
+	Means  string          `yaml:"means" one:"1/e,sigma" about:"what width is: 1/e half-width or standard deviation of the amplitude filter"`
+}
