@@ -1,0 +1,60 @@
+// Package random gives addressed random numbers: every number is a pure function
+// of where it is used (seed, surface cell, polarisation, pixel, frame, ...), so
+// tiles, workers and shards cannot change it. It is the only importer of
+// golang.org/x/exp/rand.
+package random
+
+import (
+	"math"
+
+	//lint:ignore SA1019 the version is pinned in go.mod, so its streams cannot change under us; math/rand/v2 does not promise that
+	"golang.org/x/exp/rand"
+)
+
+// mix is the finaliser of splitmix64 (Steele, Lea & Flood 2014, OOPSLA, 453):
+// consecutive addresses give unrelated seeds.
+func mix(z uint64) uint64 {
+	z += 0x9e3779b97f4a7c15
+	z = (z ^ z>>30) * 0xbf58476d1ce4e5b9
+	z = (z ^ z>>27) * 0x94d049bb133111eb
+	return z ^ z>>31
+}
+
+// Hash maps an address to 64 random bits.
+func Hash(address ...uint64) uint64 {
+	h := uint64(0x243f6a8885a308d3)
+	for _, a := range address {
+		h = mix(h ^ mix(a))
+	}
+	return h
+}
+
+// A Stream is the sequence of random numbers that belongs to one address. It is
+// not safe for concurrent use.
+type Stream struct{ r *rand.Rand }
+
+// At returns the stream of an address.
+func At(address ...uint64) Stream {
+	var src rand.PCGSource
+	src.Seed(Hash(address...))
+	return Stream{rand.New(&src)}
+}
+
+// Normal returns the next standard normal number.
+func (s Stream) Normal() float64 { return s.r.NormFloat64() }
+
+// Uniform returns the next number in [0, 1).
+func (s Stream) Uniform() float64 { return s.r.Float64() }
+
+// Key is the hash of the leading part of an address, for loops over its last part.
+type Key uint64
+
+// NewKey returns the key of the leading part of an address.
+func NewKey(address ...uint64) Key { return Key(Hash(address...)) }
+
+// Normal returns the standard normal number at the address (key, i), by the
+// inverse of the normal distribution function: no state, no order.
+func (k Key) Normal(i uint64) float64 {
+	u := (float64(mix(uint64(k)^mix(i))>>11) + 0.5) * 0x1p-53 // in (0, 1)
+	return math.Sqrt2 * math.Erfinv(2*u-1)
+}

@@ -1,0 +1,91 @@
+package random
+
+import (
+	"math"
+	"testing"
+)
+
+// moments returns mean, variance, third and fourth standardised moments.
+func moments(x []float64) (m, v, s, k float64) {
+	n := float64(len(x))
+	for _, a := range x {
+		m += a / n
+	}
+	for _, a := range x {
+		v += (a - m) * (a - m) / n
+	}
+	for _, a := range x {
+		z := (a - m) / math.Sqrt(v)
+		s += z * z * z / n
+		k += z * z * z * z / n
+	}
+	return
+}
+
+// Sampling errors of the moments of n normal numbers (Kendall & Stuart, The
+// Advanced Theory of Statistics I, from memory): sd of mean n^-1/2, variance
+// (2/n)^1/2, skewness (6/n)^1/2, kurtosis (24/n)^1/2; allowed: 4 sd.
+func checkNormal(t *testing.T, x []float64) {
+	t.Helper()
+	n := float64(len(x))
+	m, v, s, k := moments(x)
+	for _, c := range []struct {
+		name          string
+		got, want, sd float64
+	}{
+		{"mean", m, 0, math.Sqrt(1 / n)},
+		{"variance", v, 1, math.Sqrt(2 / n)},
+		{"skewness", s, 0, math.Sqrt(6 / n)},
+		{"kurtosis", k, 3, math.Sqrt(24 / n)},
+	} {
+		if math.Abs(c.got-c.want) > 4*c.sd {
+			t.Errorf("%s %.5f, want %.5f +- %.5f", c.name, c.got, c.want, c.sd)
+		}
+	}
+}
+
+func TestNormals(t *testing.T) {
+	const n = 400_000
+	x := make([]float64, n)
+	s := At(1, 2, 3)
+	for i := range x {
+		x[i] = s.Normal()
+	}
+	checkNormal(t, x)
+	k := NewKey(7)
+	for i := range x {
+		x[i] = k.Normal(uint64(i))
+	}
+	checkNormal(t, x)
+	for i := range x { // across neighbouring addresses
+		x[i] = NewKey(7, uint64(i)).Normal(0)
+	}
+	checkNormal(t, x)
+	for i := range x {
+		x[i] = At(9, uint64(i)).Normal()
+	}
+	checkNormal(t, x)
+}
+
+func TestNeighbouringAddressesDoNotCorrelate(t *testing.T) {
+	const n = 200_000
+	var c float64
+	for i := range uint64(n) {
+		c += At(1, i).Normal() * At(1, i+1).Normal() / n
+	}
+	if math.Abs(c) > 4/math.Sqrt(n) {
+		t.Errorf("correlation %.5f", c)
+	}
+}
+
+// The streams are part of the file format (same seed, same bytes): these values
+// were printed by this package when the format was fixed.
+func TestStreamsAreFrozen(t *testing.T) {
+	if got, want := Hash(1, 2, 3), uint64(0xe234b8e7662009c0); got != want {
+		t.Errorf("Hash(1,2,3) = %#x, want %#x", got, want)
+	}
+	s := At(1, 2, 3)
+	if got := s.Normal(); got != 0.701871268712939 {
+		t.Errorf("first normal of (1,2,3) = %v, want %v", got, 0.701871268712939)
+	}
+}
