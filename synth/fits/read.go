@@ -304,10 +304,16 @@ type Image struct {
 	Ints   []int32
 }
 
+// FindImage returns the image HDU of that name without case, or that number in
+// the file; the empty name is the first image.
+func (f *File) FindImage(name string) (*HDU, error) {
+	return f.find("image EXTENSION", name, (*HDU).IsImage)
+}
+
 // Image reads a two-dimensional image by its name without case, or its number
 // in the file; the empty name is the first image.
 func (f *File) Image(name string) (*Image, error) {
-	h, err := f.find("image EXTENSION", name, (*HDU).IsImage)
+	h, err := f.FindImage(name)
 	if err != nil {
 		return nil, err
 	}
@@ -411,7 +417,7 @@ type Cube struct {
 // Cube opens an image by its name without case, or its number in the file; the
 // empty name is the first image.
 func (f *File) Cube(name string) (*Cube, error) {
-	h, err := f.find("image EXTENSION", name, (*HDU).IsImage)
+	h, err := f.FindImage(name)
 	if err != nil {
 		return nil, err
 	}
