@@ -1,0 +1,575 @@
+package invert
+
+import (
+	"context"
+	"errors"
+	"fmt"
+	"math"
+	"sync"
+
+	"offplane/scenarios/units"
+	"offplane/synth/line"
+	"offplane/synth/obs"
+	"offplane/synth/parallel"
+)
+
+// KZero says what the separation does with waves of zero wavenumber, which belong
+// to neither direction. On short tracks it decides the sign of the speed's bias.
+type KZero int
+
+// Weights 1, 1/2 and 0 in each direction.
+const (
+	Kept KZero = iota
+	Halved
+	Dropped
+)
+
+func (k KZero) weight() float64 { return [...]float64{Kept: 1, Halved: 0.5, Dropped: 0}[k] }
+
+// Options is the observer's recipe. Default returns the defaults.
+type Options struct {
+	Centre       float64 // of the Gaussian band-pass [Hz]. The default is 3.5e-3.
+	Width        float64 // of the band-pass amplitude [Hz]. The default is 1.5e-3.
+	WidthIsSigma bool    // Width is the standard deviation; otherwise the 1/e half-width. The default is false.
+	Box          int     // diameter of the round window of the coherence island [pixels], odd, 5 or more. The default is 21.
+	Coherence    float64 // threshold of the island, between 0 and 1. The default is 0.5.
+	Track        int     // most points of a track, one pixel apart, odd, 5 or more. The default is 31.
+	Separation   bool    // split outward and inward waves before the lag fit. The default is true.
+	KZero        KZero   // weight of zero wavenumber in the separation. The default is Halved.
+	Padding      int     // length of the separation's transform over the track's, 1 or more. The default is 1.
+	Temperature  float64 // assumed in the density [K]. The default is 1.6e6.
+	Mu           float64 // rho / (m_p n_e) assumed in the field. The default is 1.167, for He/H = 0.1.
+}
+
+// Default returns the customary recipe (common practice; see the fields).
+func Default() Options {
+	return Options{
+		Centre: 3.5e-3, Width: 1.5e-3,
+		Box: 21, Coherence: 0.5, Track: 31,
+		Separation: true, KZero: Halved, Padding: 1,
+		Temperature: 1.6e6, Mu: 1.167,
+	}
+}
+
+func (o *Options) check() error {
+	bad := func(name, want string, got any) error {
+		return fmt.Errorf("inversion: %s is %v: want %s", name, got, want)
+	}
+	switch {
+	case !(o.Centre > 0):
+		return bad("centre", "more than 0 Hz", o.Centre)
+	case !(o.Width > 0):
+		return bad("width", "more than 0 Hz", o.Width)
+	case o.Box < 5 || o.Box%2 == 0:
+		return bad("box", "an odd number, 5 or more", o.Box)
+	case !(o.Coherence > 0 && o.Coherence < 1):
+		return bad("coherence", "a number between 0 and 1", o.Coherence)
+	case o.Track < leastLags || o.Track%2 == 0:
+		return bad("track", "an odd number, 5 or more", o.Track)
+	case o.KZero < Kept || o.KZero > Dropped:
+		return bad("k_zero", "kept, halved or dropped", int(o.KZero))
+	case o.Padding < 1:
+		return bad("padding", "1 or more", o.Padding)
+	case !(o.Temperature > 0):
+		return bad("temperature", "more than 0 K", o.Temperature)
+	case !(o.Mu > 0):
+		return bad("mu", "more than 0", o.Mu)
+	}
+	return nil
+}
+
+// A Result is what the inversion makes of an observation.
+type Result struct {
+	// Maps are on the observation's grid, NaN where there is no value; see
+	// mapsOf for names and units, FlagCodes for the bits of FLAG.
+	Maps obs.Maps
+	// Series holds the band-passed Doppler series [km/s] that the tracker used, one
+	// per pixel of the field, one "tuning". NaN where the series was bad.
+	Series *obs.Cube
+}
+
+// The maps of a result, in file order, and their indices.
+const (
+	mapPeak = iota
+	mapWidth
+	mapDopplerRMS
+	mapRatio
+	mapDensity
+	mapDensityErr
+	mapAngle
+	mapAngleErr
+	mapCoherence
+	mapSpeed
+	mapSpeedErr
+	mapSpeedIn
+	mapTrack
+	mapField
+	mapFieldErr
+	mapFlag
+)
+
+func mapsOf(g *obs.Grid, unit string) obs.Maps {
+	ms := obs.Maps{
+		mapPeak:       {Name: "PEAK", Unit: unit, About: "peak intensity of the first line through the filter"},
+		mapWidth:      {Name: "WIDTH", Unit: "km/s", About: "1/e half-width of the first line, filter removed"},
+		mapDopplerRMS: {Name: "DOPPLER_RMS", Unit: "km/s", About: "rms of the band-passed Doppler shift, noise variance removed"},
+		mapRatio:      {Name: "RATIO", About: "line energy, second line over first"},
+		mapDensity:    {Name: "NE", Unit: "cm-3", About: "electron density from the line ratio"},
+		mapDensityErr: {Name: "NE_ERR", Unit: "cm-3", About: "photon-noise error of NE"},
+		mapAngle:      {Name: "ANGLE", Unit: "deg", About: "wave direction, counter-clockwise from north, 0 to 180"},
+		mapAngleErr:   {Name: "ANGLE_ERR", Unit: "deg", About: "formal error of ANGLE"},
+		mapCoherence:  {Name: "COHERENCE", About: "mean in-band coherence with the adjacent pixels"},
+		mapSpeed:      {Name: "SPEED", Unit: "km/s", About: "phase speed on the sky, outward"},
+		mapSpeedErr:   {Name: "SPEED_ERR", Unit: "km/s", About: "formal error of SPEED, a lower limit"},
+		mapSpeedIn:    {Name: "SPEED_IN", Unit: "km/s", About: "phase speed on the sky of the inward waves"},
+		mapTrack:      {Name: "TRACK", About: "track length over the wavelength at the band centre"},
+		mapField:      {Name: "B", Unit: "G", About: "magnetic field on the sky, speed sqrt(4 pi rho)"},
+		mapFieldErr:   {Name: "B_ERR", Unit: "G", About: "formal error of B, a lower limit"},
+		mapFlag:       {Name: "FLAG", About: "why a pixel has no field, and cautions", Codes: FlagCodes()},
+	}
+	n := g.Nx * g.Ny
+	for i := range ms {
+		if i == mapFlag {
+			ms[i].Ints = make([]int32, n)
+			for j := range ms[i].Ints {
+				ms[i].Ints[j] = FlagOutside
+			}
+			continue
+		}
+		ms[i].Data = make([]float32, n)
+		for j := range ms[i].Data {
+			ms[i].Data[j] = float32(math.NaN())
+		}
+	}
+	return ms
+}
+
+// A field is the state that the steps share. Each step writes only the entries of
+// its own pixels.
+type field struct {
+	opt    *Options
+	grid   *obs.Grid
+	pixels []int32
+	index  []int32 // raster to pixels; -1 outside
+	band   *band
+	spec   []float32    // band-passed spectra, band.row numbers a pixel, of unit norm
+	norm   []float32    // their norms; 0: no series
+	axis   [][2]float32 // cos and sin of twice the axis' angle in the image; zeros: none
+	flag   []int32
+}
+
+func (f *field) at(p int) (ix, iy int) {
+	i := int(f.pixels[p])
+	return i % f.grid.Nx, i / f.grid.Nx
+}
+
+// find returns the field pixel at (ix, iy), or -1.
+func (f *field) find(ix, iy int) int {
+	if ix < 0 || iy < 0 || ix >= f.grid.Nx || iy >= f.grid.Ny {
+		return -1
+	}
+	return int(f.index[iy*f.grid.Nx+ix])
+}
+
+// chunk is the number of pixels a worker takes at a time.
+const chunk = 64
+
+// Invert turns an observation into maps, with emitter e for the density. It
+// needs the frames of the first line; without a mean profile of the second there
+// is no density and no field. Frames with a single "tuning" are taken for a
+// Doppler cube [km/s]. Workers < 1 means every core; the result does not depend
+// on their number. Progress, if not nil, is called now and then, one call at a
+// time.
+//
+// The density is that of the ratio of line energies, because it is exact whatever
+// the widths of the lines are (line-centre intensities suffer less from scattered
+// light but need equal widths); it is taken at the pixel's projected distance
+// from the Sun.
+//
+// With separation SPEED is the speed of the outward waves and SPEED_IN that of the
+// inward ones; without it SPEED is the speed of whatever waves dominate the lags
+// and SPEED_IN is empty. A track that gains less than a fifth of its length in
+// distance from the Sun has no outward side: SPEED is then that of the stronger
+// waves.
+func Invert(ctx context.Context, o *obs.Observation, e line.Emitter, opt Options, workers int, progress func(done, total int)) (*Result, error) {
+	if err := opt.check(); err != nil {
+		return nil, err
+	}
+	cube := o.Frames[0]
+	if cube == nil {
+		return nil, errors.New("observation has no frames of line 1: it has to be made with frames")
+	}
+	np := len(o.Pixels)
+	if cube.Pixels != np {
+		return nil, fmt.Errorf("frames of line 1 hold %d pixels, the field has %d", cube.Pixels, np)
+	}
+	es := o.LineExposures(1)
+	if len(es) != cube.Frames {
+		return nil, fmt.Errorf("log of line 1 has %d exposures for %d frames", len(es), cube.Frames)
+	}
+	dt, err := cadence(es)
+	if err != nil {
+		return nil, err
+	}
+	b, err := newBand(&opt, cube.Frames, dt)
+	if err != nil {
+		return nil, err
+	}
+	var means [2]*means
+	for i := range means {
+		if means[i], err = newMeans(o, i, np); err != nil {
+			return nil, err
+		}
+	}
+	if means[0] == nil && cube.Tunings != 1 {
+		return nil, errors.New("observation has no mean profile of line 1")
+	}
+	if means[0] != nil && cube.Tunings != 1 && cube.Tunings != len(means[0].x) {
+		return nil, fmt.Errorf("frames of line 1 have %d tunings, the table %d", cube.Tunings, len(means[0].x))
+	}
+
+	f := &field{
+		opt: &opt, grid: &o.Grid, pixels: o.Pixels, index: make([]int32, o.Grid.Nx*o.Grid.Ny), band: b,
+		spec: make([]float32, np*b.row), norm: make([]float32, np), axis: make([][2]float32, np), flag: make([]int32, np),
+	}
+	for i := range f.index {
+		f.index[i] = -1
+	}
+	for p, i := range o.Pixels {
+		if int(i) >= len(f.index) || i < 0 || (p > 0 && i <= o.Pixels[p-1]) {
+			return nil, fmt.Errorf("field pixel %d has raster index %d: indices have to ascend within %d x %d", p, i, o.Grid.Nx, o.Grid.Ny)
+		}
+		f.index[i] = int32(p)
+	}
+	r := &Result{Maps: mapsOf(&o.Grid, o.Unit), Series: obs.NewCube(np, 1, cube.Frames)}
+	run := &run{field: f, cube: cube, means: means, emitter: e, result: r, variance: make([]float64, np)}
+
+	workers = parallel.Workers(workers)
+	scratch := make([]*worker, workers)
+	for i := range scratch {
+		scratch[i] = run.newWorker()
+	}
+	steps := []func(w *worker, p int){run.spectrum, run.normalise, run.direct, run.measure}
+	var mu sync.Mutex
+	done, total := 0, len(steps)*np
+	for i, step := range steps {
+		err := parallel.For(ctx, (np+chunk-1)/chunk, workers, func(w, c int) error {
+			from, to := c*chunk, min((c+1)*chunk, np)
+			for p := from; p < to; p++ {
+				step(scratch[w], p)
+			}
+			if progress != nil {
+				mu.Lock()
+				done += to - from
+				progress(done, total)
+				mu.Unlock()
+			}
+			return nil
+		})
+		if err != nil {
+			return nil, err
+		}
+		if i == 0 {
+			f.removeTrend()
+		}
+	}
+	flags := r.Maps[mapFlag].Ints
+	for p, i := range f.pixels {
+		flags[i] = f.flag[p]
+	}
+	return r, nil
+}
+
+// means is one line's mean profiles and their noise.
+type means struct {
+	*gaussian
+	noise photonNoise
+	data  [][]float32
+}
+
+// newMeans returns nil if the observation has no mean profile of line i+1.
+func newMeans(o *obs.Observation, i, pixels int) (*means, error) {
+	data := o.Mean[i]
+	if len(data) == 0 {
+		return nil, nil
+	}
+	ts := o.LineTunings(i + 1)
+	if len(data) != len(ts) {
+		return nil, fmt.Errorf("mean of line %d has %d tunings, the table %d", i+1, len(data), len(ts))
+	}
+	for k := range data {
+		if len(data[k]) != pixels {
+			return nil, fmt.Errorf("mean of line %d holds %d pixels, the field has %d", i+1, len(data[k]), pixels)
+		}
+	}
+	g, err := newGaussian(ts)
+	if err != nil {
+		return nil, err
+	}
+	return &means{gaussian: g, noise: newPhotonNoise(o.LineExposures(i + 1)), data: data}, nil
+}
+
+// A run is one inversion under way.
+type run struct {
+	*field
+	cube     *obs.Cube
+	means    [2]*means
+	emitter  line.Emitter
+	result   *Result
+	variance []float64 // white-noise variance of the Doppler series [(km/s)^2]; NaN: not known
+}
+
+// A worker is one goroutine's scratch.
+type worker struct {
+	transform *transformer
+	islands   *islander
+	track     tracker
+	lags      *lagger
+	I, s2     [2][]float64
+	frame     []float64
+}
+
+func (r *run) newWorker() *worker {
+	step := r.grid.Step() * units.SolarRadius / 1e5
+	w := &worker{
+		transform: newTransformer(r.band),
+		islands:   newIslander(r.field),
+		track:     tracker{field: r.field},
+		lags:      newLagger(r.band, r.opt, r.opt.Track, step),
+		frame:     make([]float64, r.cube.Tunings),
+	}
+	for i, m := range r.means {
+		if m != nil {
+			w.I[i], w.s2[i] = make([]float64, len(m.x)), make([]float64, len(m.x))
+		}
+	}
+	return w
+}
+
+func (r *run) set(m, p int, v float64) { r.result.Maps[m].Data[r.pixels[p]] = float32(v) }
+
+// profile fits the mean profile of line i+1 of a pixel and leaves intensities and
+// the variances of one frame in the worker.
+func (r *run) profile(w *worker, i, p int) profile {
+	m := r.means[i]
+	if m == nil {
+		return profile{}
+	}
+	for k := range w.I[i] {
+		w.I[i][k] = float64(m.data[k][p])
+	}
+	m.noise.variances(w.I[i], w.s2[i])
+	return m.fit(w.I[i])
+}
+
+// spectrum: mean profiles, Doppler series, band-passed spectrum.
+func (r *run) spectrum(w *worker, p int) {
+	first, second := r.profile(w, 0, p), r.profile(w, 1, p)
+	r.variance[p] = math.NaN()
+	if first.ok {
+		m := r.means[0]
+		r.set(mapPeak, p, first.peak)
+		if d := first.w*first.w - m.filter*m.filter; d > 0 {
+			r.set(mapWidth, p, math.Sqrt(d))
+		} else {
+			r.flag[p] |= FlagNarrow
+		}
+		if m.noise.known {
+			r.variance[p] = m.shiftVariance(first, w.I[0], w.s2[0])
+		}
+	} else {
+		r.flag[p] |= FlagNoLine
+	}
+	if second.ok && first.ok {
+		a, b := r.means[0], r.means[1]
+		ratio := second.peak * second.w * b.energyScale() / (first.peak * first.w * a.energyScale())
+		r.set(mapRatio, p, ratio)
+		ix, iy := r.at(p)
+		dist, _ := r.grid.Polar(ix, iy)
+		if n, slope, ok := density(r.emitter, ratio, r.opt.Temperature, dist); ok {
+			r.set(mapDensity, p, n)
+			if a.noise.known && b.noise.known {
+				v := a.energyVariance(first, w.I[0], w.s2[0])/float64(a.noise.frames) +
+					b.energyVariance(second, w.I[1], w.s2[1])/float64(b.noise.frames)
+				r.set(mapDensityErr, p, n*math.Sqrt(v)/math.Abs(slope))
+			}
+		} else {
+			r.flag[p] |= FlagDensity
+		}
+	} else {
+		r.flag[p] |= FlagNoRatio
+	}
+
+	t := w.transform
+	bad := r.series(w, p)
+	if 4*bad > t.frames {
+		r.flag[p] |= FlagBadSeries
+		return
+	}
+	if bad > 0 {
+		r.flag[p] |= FlagRepaired
+	}
+	row := r.spec[p*r.band.row : (p+1)*r.band.row]
+	noise := t.forward(row, math.IsNaN(r.variance[p]))
+	if !math.IsNaN(noise) {
+		r.variance[p] = noise
+	}
+	r.norm[p] = norm(row)
+}
+
+// series puts the repaired Doppler series of a pixel into the transformer and
+// returns the number of bad frames.
+func (r *run) series(w *worker, p int) (bad int) {
+	t := w.transform
+	switch r.cube.Tunings {
+	case 1:
+		for i, v := range r.cube.Series(p, 0) {
+			t.v[i], t.bad[i] = float64(v), math.IsNaN(float64(v)) || math.IsInf(float64(v), 0)
+		}
+	case 3:
+		g := r.means[0].gaussian
+		i1, i2, i3 := r.cube.Series(p, 0), r.cube.Series(p, 1), r.cube.Series(p, 2)
+		for i := range t.v {
+			v, ok := g.doppler(i1[i], i2[i], i3[i])
+			t.v[i], t.bad[i] = v, !ok
+		}
+	default:
+		g := r.means[0].gaussian
+		for i := range t.v {
+			for k := range w.frame {
+				w.frame[k] = float64(r.cube.Series(p, k)[i])
+			}
+			fit := g.fit(w.frame)
+			t.v[i], t.bad[i] = fit.v, !fit.ok
+		}
+	}
+	return repair(t.v, t.bad)
+}
+
+func norm(row []float32) float32 {
+	sum := 0.0
+	for _, x := range row {
+		sum += float64(x) * float64(x)
+	}
+	return float32(math.Sqrt(sum))
+}
+
+// normalise: rms, series for the caller, unit norm.
+func (r *run) normalise(w *worker, p int) {
+	row, series := r.spec[p*r.band.row:(p+1)*r.band.row], r.result.Series.Series(p, 0)
+	n := norm(row)
+	r.norm[p] = n
+	if n == 0 {
+		r.flag[p] |= FlagBadSeries // a constant is no series
+		for i := range series {
+			series[i] = float32(math.NaN())
+		}
+		return
+	}
+	w.transform.backward(row, series)
+	frames := float64(r.band.frames)
+	power := 2 * float64(n) * float64(n) / (frames * frames)
+	if v := r.variance[p]; !math.IsNaN(v) {
+		power -= v * r.band.passes
+	}
+	if power > 0 {
+		r.set(mapDopplerRMS, p, math.Sqrt(power))
+	} else {
+		r.flag[p] |= FlagBelowNoise
+	}
+	for j := range row {
+		row[j] /= n
+	}
+}
+
+// direct: coherence island and axis.
+func (r *run) direct(w *worker, p int) {
+	if r.norm[p] == 0 {
+		return
+	}
+	s := w.islands.island(p)
+	r.set(mapCoherence, p, s.coherence)
+	switch {
+	case s.count < leastIsland:
+		r.flag[p] |= FlagIslandSmall
+		return
+	case s.full():
+		r.flag[p] |= FlagIslandFills
+	}
+	if s.round() {
+		r.flag[p] |= FlagIslandRound
+		return
+	}
+	sin, cos := math.Sincos(2 * s.angle)
+	r.axis[p] = [2]float32{float32(cos), float32(sin)}
+	// PA = atan2(-y, z) of a vector at angle a + roll from west toward north.
+	pa := math.Mod(s.angle*180/math.Pi+r.grid.Roll-90, 180)
+	if pa < 0 {
+		pa += 180
+	}
+	if float32(pa) >= 180 {
+		pa = 0
+	}
+	r.set(mapAngle, p, pa)
+	r.set(mapAngleErr, p, s.err*180/math.Pi)
+}
+
+// leastRise is the gain in distance from the Sun over a track's length below which
+// a track has no outward side.
+const leastRise = 0.2
+
+// measure: track, speed, field.
+func (r *run) measure(w *worker, p int) {
+	if r.axis[p] == ([2]float32{}) {
+		return
+	}
+	t := &w.track
+	centre, rise := t.trace(p, r.opt.Track/2)
+	n := len(t.points)
+	if n < max(leastLags, r.opt.Track/3) {
+		r.flag[p] |= FlagTrackShort
+		return
+	}
+	if a, b := centre, n-1-centre; 2*min(a, b) < max(a, b) {
+		r.flag[p] |= FlagOneSided
+	}
+	if rise < leastRise {
+		r.flag[p] |= FlagUndirected
+	}
+	rows := t.sample()
+	var out speed
+	if r.opt.Separation {
+		rising, falling := w.lags.separate(rows, n)
+		out = w.lags.speed(rising, n, centre)
+		in := w.lags.speed(falling, n, centre)
+		in.v = -in.v
+		if rise < leastRise && in.power > out.power {
+			out, in = in, out
+		}
+		if in.ok && in.v > 0 {
+			r.set(mapSpeedIn, p, in.v)
+		}
+	} else {
+		out = w.lags.speed(rows, n, centre)
+		if out.v < 0 {
+			if rise >= leastRise {
+				r.flag[p] |= FlagInward
+			}
+			out.v = -out.v
+		}
+	}
+	if !out.ok || !(out.v > 0) {
+		r.flag[p] |= FlagNoSpeed
+		return
+	}
+	r.set(mapSpeed, p, out.v)
+	r.set(mapSpeedErr, p, out.err)
+	r.set(mapTrack, p, float64(n-1)*w.lags.step*r.opt.Centre/out.v)
+	if r.flag[p]&Blocking != 0 {
+		return
+	}
+	i := r.pixels[p]
+	b, err := fieldStrength(out.v, out.err, float64(r.result.Maps[mapDensity].Data[i]), float64(r.result.Maps[mapDensityErr].Data[i]), r.opt.Mu)
+	r.set(mapField, p, b)
+	r.set(mapFieldErr, p, err)
+}

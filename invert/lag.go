@@ -1,0 +1,252 @@
+package invert
+
+import "math"
+
+const (
+	leastLagCoherence = 0.3 // below it a lag cannot be measured: noise alone reaches about that
+	leastLags         = 5   // points of a fit
+	slowest           = 50. // slowest wave whose lags are searched for [km/s]
+	lagSteps          = 32. // steps of the search grid in one period of the band's centre
+)
+
+// A lagger measures phase speeds on tracks; one worker's scratch.
+type lagger struct {
+	*band
+	step   float64 // between points [km]
+	kzero  float64 // weight of zero wavenumber in the separation
+	pad    int
+	grid   float64 // step of the lag search [s]
+	reach  int     // lags searched, in steps either way
+	phasor []float32
+	kernel map[int][]float32
+	wave   [2][]float32
+	cross  []float32
+	fit    []lag
+}
+
+// A lag is that of one point of a track against its centre.
+type lag struct{ s, tau, coherence float64 } // [km, s]
+
+// points is the longest track, step the distance of its points [km].
+func newLagger(b *band, opt *Options, points int, step float64) *lagger {
+	l := &lagger{band: b, step: step, pad: opt.Padding, kzero: opt.KZero.weight(), kernel: map[int][]float32{}}
+	l.grid = 1 / (lagSteps * opt.Centre)
+	longest := min(step*float64(points-1)/slowest, float64(b.frames)*b.cadence/4)
+	l.reach = max(int(longest/l.grid), 4)
+	l.phasor = make([]float32, (2*l.reach+1)*b.row)
+	n := len(b.freq)
+	for m := -l.reach; m <= l.reach; m++ {
+		r := l.phasor[(m+l.reach)*b.row:]
+		for j, f := range b.freq {
+			s, c := math.Sincos(2 * math.Pi * f * float64(m) * l.grid)
+			r[j], r[n+j] = float32(c), float32(-s)
+		}
+	}
+	l.wave[0] = make([]float32, points*b.row)
+	l.wave[1] = make([]float32, points*b.row)
+	l.cross = make([]float32, b.row)
+	return l
+}
+
+// separate splits the spectra of n points into waves that run toward rising and
+// toward falling index: the hard quadrant filter of the (k, omega) plane, written
+// as a projection in s.
+//
+// At one frequency, a Fourier transform over M = padding n points, the choice of
+// k of one sign and the way back multiply the column of points by the Toeplitz
+// matrix P(d) = sum_k w_k exp(2 pi i k d / M) / M, with w = 1, 0 or, at k = 0, the
+// weight asked for (the Nyquist column of an even M is halved). Its real part is
+// half the identity plus (w_0 - 1/2)/M everywhere; its imaginary part is the
+// antisymmetric kernel H. So one real multiplication by H serves both directions.
+// With exp(-i omega t) for a spectrum, a wave toward rising s has k < 0.
+func (l *lagger) separate(rows []float32, n int) (rising, falling []float32) {
+	row, nf := l.row, len(l.freq)
+	rising, falling = l.wave[0][:n*row], l.wave[1][:n*row]
+	h := l.toeplitz(n)
+	z := rising // H x first
+	clear(z)
+	for i := range n {
+		zi := z[i*row : (i+1)*row]
+		for j := range n {
+			if c := h[n-1+i-j]; c != 0 {
+				blas.Saxpy(row, c, rows[j*row:(j+1)*row], 1, zi, 1)
+			}
+		}
+	}
+	zero := l.cross // the k = 0 part beyond one half, the same at every point
+	clear(zero)
+	if c := float32((l.kzero - 0.5) / float64(l.pad*n)); c != 0 {
+		for j := range n {
+			blas.Saxpy(row, c, rows[j*row:(j+1)*row], 1, zero, 1)
+		}
+	}
+	for i := range n {
+		x := rows[i*row : (i+1)*row]
+		up, down := rising[i*row:(i+1)*row], falling[i*row:(i+1)*row]
+		for j := range nf {
+			hr, hi := up[j], up[nf+j]
+			r, q := float32(0.5*x[j])+zero[j], float32(0.5*x[nf+j])+zero[nf+j]
+			// i H x = (-hi, hr); rising waves take its negative.
+			up[j], up[nf+j] = r+hi, q-hr
+			down[j], down[nf+j] = r-hi, q+hr
+		}
+	}
+	return rising, falling
+}
+
+// toeplitz returns H(d) for d = -(n-1)..n-1.
+func (l *lagger) toeplitz(n int) []float32 {
+	if h := l.kernel[n]; h != nil {
+		return h
+	}
+	m := l.pad * n
+	h := make([]float32, 2*n-1)
+	for d := -(n - 1); d < n; d++ {
+		sum := 0.0
+		for k := 1; 2*k < m; k++ {
+			sum += math.Sin(2 * math.Pi * float64(k*d%m) / float64(m))
+		}
+		h[n-1+d] = float32(sum / float64(m))
+		if math.Abs(sum) < 1e-9 {
+			h[n-1+d] = 0
+		}
+	}
+	l.kernel[n] = h
+	return h
+}
+
+// A speed is a measured phase speed [km/s], positive toward rising index.
+type speed struct {
+	v, err float64
+	power  float64 // of the waves on the track, summed over points
+	points int     // with a lag
+	ok     bool    // significant: err < |v|
+}
+
+// speed cross-correlates every point of a track with point centre, takes the lag
+// from a parabola through the peak, and fits a straight line, lag = s/v + c, with
+// the squared coherence as weight.
+//
+// The search goes outward from the centre, each point starting at the lag of the
+// one before it, so a peak one period off is not taken.
+//
+// The error adds two variances of the slope: the scatter of the lags about the
+// line, and the propagated error of the lags from the coherence g of a pair,
+// sqrt(1-g^2) / (g sqrt(2 n) 2 pi f_rms) with n independent spectral samples
+// (derived). Errors along a track are correlated, so it is a lower limit.
+func (l *lagger) speed(rows []float32, n, centre int) speed {
+	row, nf := l.row, len(l.freq)
+	c := rows[centre*row : (centre+1)*row]
+	var f2, pc float64
+	for j, f := range l.freq {
+		p := float64(c[j])*float64(c[j]) + float64(c[nf+j])*float64(c[nf+j])
+		pc += p
+		f2 += p * f * f
+	}
+	var r speed
+	if !(pc > 0) {
+		return r
+	}
+	r.power = pc
+	omega := 2 * math.Pi * math.Sqrt(f2/pc)
+	l.fit = append(l.fit[:0], lag{0, 0, 1})
+	for _, way := range [2]int{1, -1} {
+		start := 0
+		for i := centre + way; i >= 0 && i < n; i += way {
+			x := rows[i*row : (i+1)*row]
+			ps := float64(blas.Sdot(row, x, 1, x, 1))
+			if !(ps > 0) {
+				continue
+			}
+			r.power += ps
+			// Cross-spectrum x c*.
+			for j := range nf {
+				a, b := x[j], x[nf+j]
+				p, q := c[j], c[nf+j]
+				l.cross[j] = float32(a*p) + float32(b*q)
+				l.cross[nf+j] = float32(b*p) - float32(a*q)
+			}
+			m, tau, peak, ok := l.peak(start)
+			if !ok {
+				continue
+			}
+			g := peak / math.Sqrt(ps*pc)
+			if g < leastLagCoherence {
+				continue
+			}
+			start = m
+			l.fit = append(l.fit, lag{float64(i-centre) * l.step, tau, min(g, 1)})
+		}
+	}
+	r.points = len(l.fit)
+	if r.points < leastLags {
+		return r
+	}
+	var w, ws, wt float64
+	for _, q := range l.fit {
+		g2 := q.coherence * q.coherence
+		w += g2
+		ws += g2 * q.s
+		wt += g2 * q.tau
+	}
+	ws /= w
+	wt /= w
+	var sxx, sxy float64
+	for _, q := range l.fit {
+		g2 := q.coherence * q.coherence
+		sxx += g2 * (q.s - ws) * (q.s - ws)
+		sxy += g2 * (q.s - ws) * (q.tau - wt)
+	}
+	slope := sxy / sxx
+	var scatter, own float64
+	for _, q := range l.fit {
+		g2 := q.coherence * q.coherence
+		d := q.tau - wt - slope*(q.s-ws)
+		scatter += g2 * d * d
+		k := g2 * (q.s - ws) / sxx
+		own += k * k * lagVariance(q.coherence, l.samples, omega)
+	}
+	variance := scatter/(float64(r.points-2)*sxx) + own
+	r.v = 1 / slope
+	r.err = r.v * r.v * math.Sqrt(variance)
+	r.ok = r.err < math.Abs(r.v)
+	return r
+}
+
+// lagVariance returns the variance of the lag [s^2] of a pair of coherence g with
+// n independent spectral samples about the angular frequency omega [rad/s].
+func lagVariance(g, n, omega float64) float64 {
+	return (1 - g*g) / (g * g * 2 * n * omega * omega)
+}
+
+// peak climbs from step start to the nearest maximum of the cross-correlation
+// whose cross-spectrum is in l.cross, and puts a parabola through it.
+func (l *lagger) peak(start int) (m int, tau, height float64, ok bool) {
+	at := func(m int) float32 {
+		r := (m + l.reach) * l.row
+		return blas.Sdot(l.row, l.cross, 1, l.phasor[r:r+l.row], 1)
+	}
+	m = max(min(start, l.reach-1), 1-l.reach)
+	lo, mid, hi := at(m-1), at(m), at(m+1)
+	for lo > mid || hi > mid {
+		if hi >= lo {
+			m++
+			if m >= l.reach {
+				return 0, 0, 0, false
+			}
+			lo, mid, hi = mid, hi, at(m+1)
+		} else {
+			m--
+			if m <= -l.reach {
+				return 0, 0, 0, false
+			}
+			lo, mid, hi = at(m-1), lo, mid
+		}
+	}
+	a, b := float64(hi)-float64(lo), float64(lo)+float64(hi)-2*float64(mid)
+	if !(b < 0) {
+		return 0, 0, 0, false
+	}
+	d := -a / (2 * b)
+	return m, (float64(m) + d) * l.grid, float64(mid) - a*a/(8*b), true
+}

@@ -1,0 +1,181 @@
+package invert
+
+import (
+	"fmt"
+	"math"
+
+	"offplane/scenarios/units"
+	"offplane/synth/filter"
+	"offplane/synth/obs"
+)
+
+const lightSpeed = units.LightSpeed / 1e5 // [km/s]
+
+// A gaussian turns the intensities at the tunings of one line into the Gaussian
+// I exp[-(x-v)^2/w^2] through them (Tian et al. 2013, Sol. Phys. 288, 637): a
+// parabola a + b x + c x^2 through the logarithms, exact for three tunings and
+// unweighted least squares for more. x is the Doppler offset of a tuning from the
+// rest wavelength [km/s], red shift positive.
+//
+// A Gaussian line through a Gaussian filter is a Gaussian again, so the method is
+// exact for one; w still holds the filter.
+type gaussian struct {
+	x       []float64
+	a, b, c []float64 // the parabola's coefficients as weights of ln I
+	reach   float64   // largest |x|
+	filter  float64   // 1/e half-width of the filter [km/s]; 0: not known
+	rest    float64   // [nm]
+}
+
+func newGaussian(tunings []obs.Tuning) (*gaussian, error) {
+	n := len(tunings)
+	if n < 3 {
+		return nil, fmt.Errorf("line has %d tunings: a Gaussian needs three or more", n)
+	}
+	g := &gaussian{x: make([]float64, n), a: make([]float64, n), b: make([]float64, n), c: make([]float64, n)}
+	var s [5]float64
+	for k, t := range tunings {
+		rest := t.Wavelength - t.Offset
+		if !(rest > 0) {
+			return nil, fmt.Errorf("tuning %d of line %d: rest wavelength %g nm: want a positive one", t.Index, t.Line, rest)
+		}
+		g.x[k] = lightSpeed * t.Offset / rest
+		g.rest = rest
+		g.filter = max(g.filter, lightSpeed*filter.EFolding(t.FilterFWHM)/rest)
+		g.reach = max(g.reach, math.Abs(g.x[k]))
+		if k > 0 && !(g.x[k] > g.x[k-1]) {
+			return nil, fmt.Errorf("tuning %d of line %d: wavelengths have to ascend", t.Index, t.Line)
+		}
+	}
+	// Normal equations of the parabola in x/reach, solved by cofactors.
+	for _, x := range g.x {
+		u := x / g.reach
+		p := 1.0
+		for i := range s {
+			s[i] += p
+			p *= u
+		}
+	}
+	m := [3][3]float64{{s[0], s[1], s[2]}, {s[1], s[2], s[3]}, {s[2], s[3], s[4]}}
+	cof := func(i, j int) float64 {
+		i1, i2, j1, j2 := (i+1)%3, (i+2)%3, (j+1)%3, (j+2)%3
+		return m[i1][j1]*m[i2][j2] - m[i1][j2]*m[i2][j1]
+	}
+	det := m[0][0]*cof(0, 0) + m[0][1]*cof(0, 1) + m[0][2]*cof(0, 2)
+	for k, x := range g.x {
+		u := x / g.reach
+		row := func(i int) float64 { return (cof(0, i) + cof(1, i)*u + cof(2, i)*u*u) / det }
+		g.a[k], g.b[k], g.c[k] = row(0), row(1)/g.reach, row(2)/(g.reach*g.reach)
+	}
+	return g, nil
+}
+
+// A profile is a fitted Gaussian.
+type profile struct {
+	peak    float64 // [unit of the frames]
+	v, w    float64 // Doppler shift and 1/e half-width, filter included [km/s]
+	ok      bool
+	b, c, y float64 // parabola; y = ln peak
+}
+
+// fit fits the intensities, one per tuning. A profile with an intensity that is
+// not positive, without a maximum, or with its centre far outside the tunings is
+// not ok.
+func (g *gaussian) fit(I []float64) profile {
+	var a, b, c float64
+	for k, i := range I {
+		if !(i > 0) || math.IsInf(i, 1) {
+			return profile{}
+		}
+		l := math.Log(i)
+		a += g.a[k] * l
+		b += g.b[k] * l
+		c += g.c[k] * l
+	}
+	if !(c < 0) {
+		return profile{}
+	}
+	v := -b / (2 * c)
+	if math.Abs(v) > 2*g.reach {
+		return profile{}
+	}
+	y := a - b*b/(4*c)
+	return profile{peak: math.Exp(y), v: v, w: math.Sqrt(-1 / c), ok: true, b: b, c: c, y: y}
+}
+
+// doppler is fit for the Doppler shift alone at three tunings, two logarithms.
+func (g *gaussian) doppler(i1, i2, i3 float32) (v float64, ok bool) {
+	if !(i1 > 0 && i2 > 0 && i3 > 0) || i1 > math.MaxFloat32 || i2 > math.MaxFloat32 || i3 > math.MaxFloat32 {
+		return 0, false
+	}
+	r := 1 / float64(i2)
+	l1, l3 := math.Log(float64(i1)*r), math.Log(float64(i3)*r)
+	b := g.b[0]*l1 + g.b[2]*l3
+	c := g.c[0]*l1 + g.c[2]*l3
+	if !(c < 0) {
+		return 0, false
+	}
+	v = -b / (2 * c)
+	return v, math.Abs(v) <= 2*g.reach
+}
+
+// shiftVariance returns the variance of the Doppler shift [(km/s)^2] when the
+// intensities I have the variances s2: exact first-order propagation.
+func (g *gaussian) shiftVariance(p profile, I, s2 []float64) float64 {
+	sum := 0.0
+	for k := range I {
+		d := (-g.b[k] + p.b*g.c[k]/p.c) / (2 * p.c) // dv/dln I
+		sum += d * d * s2[k] / (I[k] * I[k])
+	}
+	return sum
+}
+
+// energyVariance returns the variance of the logarithm of the line's energy,
+// sqrt(pi) peak w, likewise.
+func (g *gaussian) energyVariance(p profile, I, s2 []float64) float64 {
+	sum := 0.0
+	for k := range I {
+		d := g.a[k] - p.b*g.b[k]/(2*p.c) + p.b*p.b*g.c[k]/(4*p.c*p.c) - g.c[k]/(2*p.c)
+		sum += d * d * s2[k] / (I[k] * I[k])
+	}
+	return sum
+}
+
+// energyScale times peak times w is the line's energy in the unit of the frames,
+// up to a factor common to both lines: what a filter of unit peak transmission
+// lets through of a line of energy E is E filter/w at its peak.
+func (g *gaussian) energyScale() float64 {
+	if g.filter > 0 {
+		return 1 / g.filter
+	}
+	return g.rest
+}
+
+// A photonNoise gives the variance of an intensity: alpha I + beta. Averaged over
+// the exposures of a line.
+type photonNoise struct {
+	known       bool
+	alpha, beta float64
+	frames      int
+}
+
+func newPhotonNoise(es []obs.Exposure) photonNoise {
+	n := photonNoise{known: len(es) > 0, frames: len(es)}
+	for _, e := range es {
+		if !(e.Electrons > 0) {
+			return photonNoise{frames: len(es)}
+		}
+		n.alpha += 1 / e.Electrons
+		n.beta += e.Background/e.Electrons + e.ReadNoise*e.ReadNoise/(e.Electrons*e.Electrons)
+	}
+	n.alpha /= float64(len(es))
+	n.beta /= float64(len(es))
+	return n
+}
+
+// variances fills s2 with the variances of one frame's intensities.
+func (n photonNoise) variances(I, s2 []float64) {
+	for k, i := range I {
+		s2[k] = n.alpha*max(i, 0) + n.beta
+	}
+}

@@ -1,0 +1,300 @@
+package invert
+
+import (
+	"fmt"
+	"math"
+	"slices"
+
+	"gonum.org/v1/gonum/dsp/fourier"
+
+	"offplane/synth/obs"
+)
+
+// least is the smallest weight of the amplitude filter that is kept: what is left
+// out holds less than 1e-8 of a flat spectrum's power.
+const least = 1e-4
+
+// A band is the Gaussian band-pass on the frequencies of a series.
+type band struct {
+	frames  int
+	cadence float64   // [s]
+	first   int       // first Fourier bin kept, at least 1: the mean goes
+	freq    []float64 // of the bins kept [Hz]
+	weight  []float64 // of the amplitude
+	row     int       // float32 numbers a spectrum takes: real parts, imaginary parts, zeros to a multiple of four
+	samples float64   // effective number of independent spectral samples
+	passes  float64   // share of a white series' variance that passes
+}
+
+func newBand(opt *Options, frames int, cadence float64) (*band, error) {
+	b := &band{frames: frames, cadence: cadence}
+	two := 1.0 // the filter is exp[-(f-f0)^2/(two w^2)]
+	if opt.WidthIsSigma {
+		two = 2
+	}
+	var s2, s4 float64
+	for j := 1; 2*j < frames; j++ {
+		f := float64(j) / (float64(frames) * cadence)
+		u := (f - opt.Centre) / opt.Width
+		w := math.Exp(-u * u / two)
+		if w < least {
+			continue
+		}
+		if b.first == 0 {
+			b.first = j
+		}
+		b.freq = append(b.freq, f)
+		b.weight = append(b.weight, w)
+		s2 += w * w
+		s4 += w * w * w * w
+	}
+	if len(b.freq) < 4 {
+		return nil, fmt.Errorf("series of %d frames every %g s has %d frequencies in the band %g +- %g mHz: needs 4 or more",
+			frames, cadence, len(b.freq), opt.Centre*1e3, opt.Width*1e3)
+	}
+	b.samples = s2 * s2 / s4 // T w sqrt(pi) for a 1/e width w, T w sqrt(2 pi) for a sigma
+	b.passes = 2 * s2 / float64(frames)
+	// Rows of whole 16-byte blocks: the order in which a vectorised dot product
+	// sums depends on the alignment of its arguments.
+	b.row = (2*len(b.freq) + 3) &^ 3
+	return b, nil
+}
+
+// cadence returns the interval between the frames of a line [s].
+func cadence(es []obs.Exposure) (float64, error) {
+	n := len(es)
+	if n < 2 {
+		return 0, fmt.Errorf("log of line 1 has %d exposures: needs two or more", n)
+	}
+	dt := (es[n-1].Time - es[0].Time) / float64(n-1)
+	for i := 1; i < n; i++ {
+		if d := es[i].Time - es[i-1].Time; !(d > 0) || math.Abs(d-dt) > 0.1*dt {
+			return 0, fmt.Errorf("frame %d of line 1 follows the one before by %g s, the mean is %g s: frames have to be evenly spaced (put in empty frames where some are missing)", i, d, dt)
+		}
+	}
+	return dt, nil
+}
+
+// outlier is the distance from the mean, in rms of the series, beyond which a
+// sample is taken for a hit on the detector: never reached by Gaussian waves
+// (2.6e-12), reached by a lone spike in 50 frames or more.
+const outlier = 7
+
+// repair fills bad samples by interpolation, linear in time (the nearest good one
+// at the ends), and returns their number. bad is updated with outliers.
+func repair(v []float64, bad []bool) int {
+	n := fill(v, bad)
+	if n == len(v) {
+		return n
+	}
+	mean, m2 := 0.0, 0.0
+	for _, x := range v {
+		mean += x
+	}
+	mean /= float64(len(v))
+	for _, x := range v {
+		m2 += (x - mean) * (x - mean)
+	}
+	limit := outlier * math.Sqrt(m2/float64(len(v)))
+	found := false
+	for i, x := range v {
+		if math.Abs(x-mean) > limit && !bad[i] {
+			bad[i] = true
+			found = true
+		}
+	}
+	if found {
+		n = fill(v, bad)
+	}
+	return n
+}
+
+func fill(v []float64, bad []bool) int {
+	n, last := 0, -1
+	for i := range v {
+		if bad[i] {
+			n++
+			continue
+		}
+		if gap := i - last; gap > 1 {
+			for j := last + 1; j < i; j++ {
+				if last < 0 {
+					v[j] = v[i]
+				} else {
+					v[j] = v[last] + (v[i]-v[last])*float64(j-last)/float64(gap)
+				}
+			}
+		}
+		last = i
+	}
+	if last >= 0 {
+		for j := last + 1; j < len(v); j++ {
+			v[j] = v[last]
+		}
+	}
+	return n
+}
+
+// A transformer holds one worker's scratch for Fourier transforms of one length.
+type transformer struct {
+	*band
+	fft   *fourier.FFT
+	v     []float64
+	bad   []bool
+	coeff []complex128
+	high  []float64
+}
+
+func newTransformer(b *band) *transformer {
+	return &transformer{
+		band:  b,
+		fft:   fourier.NewFFT(b.frames), // holds scratch: one per worker
+		v:     make([]float64, b.frames),
+		bad:   make([]bool, b.frames),
+		coeff: make([]complex128, b.frames/2+1),
+	}
+}
+
+// forward puts the band-passed spectrum of t.v into row and returns the variance
+// of the white noise as the highest frequencies tell it: the median power of the
+// top quarter of the spectrum, over ln 2 for an exponential distribution. NaN if
+// that quarter is in the band, or if noise is not asked for.
+func (t *transformer) forward(row []float32, noise bool) float64 {
+	t.fft.Coefficients(t.coeff, t.v)
+	n := len(t.freq)
+	for j, w := range t.weight {
+		c := t.coeff[t.first+j]
+		row[j] = float32(w * real(c))
+		row[n+j] = float32(w * imag(c))
+	}
+	if !noise {
+		return math.NaN()
+	}
+	top := (t.frames - 1) / 2
+	from := max(top-top/4, t.first+n)
+	if top-from < 8 {
+		return math.NaN()
+	}
+	t.high = t.high[:0]
+	for j := from; j <= top; j++ {
+		c := t.coeff[j]
+		t.high = append(t.high, real(c)*real(c)+imag(c)*imag(c))
+	}
+	slices.Sort(t.high)
+	m := (t.high[len(t.high)/2] + t.high[(len(t.high)-1)/2]) / 2
+	return m / math.Ln2 / float64(t.frames)
+}
+
+// backward turns a band-passed spectrum into its series.
+func (t *transformer) backward(row, series []float32) {
+	clear(t.coeff)
+	n := len(t.freq)
+	scale := 1 / float64(t.frames) // gonum leaves the round trip unscaled
+	for j := range n {
+		t.coeff[t.first+j] = complex(scale*float64(row[j]), scale*float64(row[n+j]))
+	}
+	t.fft.Sequence(t.v, t.coeff)
+	for i, v := range t.v {
+		series[i] = float32(v)
+	}
+}
+
+const (
+	sector       = 10.0 // [deg of position angle]: 120 Mm at the limb, many wave cells
+	leastSectors = 6
+	leastPixels  = 16 // in a sector
+)
+
+// removeTrend removes what the whole field does together in one frame: a constant
+// and an east-west slope (rotation drifting against the wavelength scale). It
+// works on the band-passed spectra, which is the same as a fit per frame, frame by
+// frame, because everything is linear; what is steady or slow is gone already.
+//
+// Waves have to survive it. Sectors of position angle each give a median; waves in
+// different sectors are independent, so a fit to n of them keeps 1/n of their
+// power. Constant and slope are removed only where their power stands out of that
+// by more than six standard deviations, otherwise nothing at all is done; nor is
+// anything in a field of fewer than six sectors, where a trend cannot be told from
+// a wave.
+func (f *field) removeTrend() {
+	members := make([][]int, int(360/sector))
+	west := make([]float64, len(f.pixels))
+	for p := range f.pixels {
+		if f.norm[p] == 0 {
+			continue
+		}
+		ix, iy := f.at(p)
+		_, pa := f.grid.Polar(ix, iy)
+		west[p], _ = f.grid.Sky(ix, iy)
+		i := min(int(pa/sector), len(members)-1)
+		members[i] = append(members[i], p)
+	}
+	members = slices.DeleteFunc(members, func(m []int) bool { return len(m) < leastPixels })
+	n := len(members)
+	if n < leastSectors {
+		return
+	}
+	row := f.band.row
+	medians := make([]float64, n*row)
+	var column []float32
+	y := make([]float64, n)
+	mean := 0.0
+	for i, m := range members {
+		for _, p := range m {
+			y[i] += west[p] / float64(len(m))
+		}
+		mean += y[i] / float64(n)
+		for j := range 2 * len(f.band.freq) {
+			column = column[:0]
+			for _, p := range m {
+				column = append(column, f.spec[p*row+j])
+			}
+			slices.Sort(column)
+			medians[i*row+j] = (float64(column[len(column)/2]) + float64(column[(len(column)-1)/2])) / 2
+		}
+	}
+	var yy float64
+	for i := range y {
+		y[i] -= mean
+		yy += y[i] * y[i]
+	}
+	limit := 1 + 6/math.Sqrt(f.band.samples)
+	fit := func(h func(i int) float64) []float64 {
+		c := make([]float64, row)
+		alone, together := 0.0, 0.0
+		for j := range c {
+			for i := range n {
+				x := h(i) * medians[i*row+j]
+				c[j] += x
+				alone += x * x
+			}
+			together += c[j] * c[j]
+		}
+		if !(together > limit*alone) {
+			return nil
+		}
+		return c
+	}
+	constant := fit(func(int) float64 { return 1 / float64(n) })
+	var slope []float64
+	if yy > 0 {
+		slope = fit(func(i int) float64 { return y[i] / yy })
+	}
+	if constant == nil && slope == nil {
+		return
+	}
+	for p := range f.pixels {
+		if f.norm[p] == 0 {
+			continue
+		}
+		s := f.spec[p*row : (p+1)*row]
+		for j := range s {
+			if constant != nil {
+				s[j] -= float32(constant[j])
+			}
+			if slope != nil {
+				s[j] -= float32(slope[j] * (west[p] - mean))
+			}
+		}
+	}
+}
