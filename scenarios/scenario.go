@@ -3,7 +3,8 @@
 //
 // Every struct field carries its YAML key, its allowed range (tag "in", written
 // with the unit the user would write; ">" makes a bound exclusive) or its allowed
-// words (tag "one"), and one line for people (tag "about").
+// words (tag "one"), and one line for people (tag "about"); package strict enforces
+// them and explains the tag "choice". Rules that tie keys together are in Validate.
 package scenarios
 
 import "offplane/scenarios/units"
@@ -42,8 +43,8 @@ type Corona struct {
 
 // A Field is exactly one of its members.
 type Field struct {
-	DipoleSheet *DipoleSheet `yaml:"dipole_sheet" about:"dipole, octupole and azimuthal current sheet (Banaszkiewicz et al. 1998, A&A 337, 940)"`
-	Radial      *Radial      `yaml:"radial" about:"radial test field, falling as a power of r; r^-2 is free of divergence"`
+	DipoleSheet *DipoleSheet `yaml:"dipole_sheet" choice:"field" about:"dipole, octupole and azimuthal current sheet (Banaszkiewicz et al. 1998, A&A 337, 940)"`
+	Radial      *Radial      `yaml:"radial" choice:"field" about:"radial test field, falling as a power of r; r^-2 is free of divergence"`
 }
 
 // DipoleSheet: see model.DipoleSheet for the formula.
@@ -68,9 +69,9 @@ type Density struct {
 
 // A Law is exactly one of its members, times Factor.
 type Law struct {
-	Named       string       `yaml:"named" about:"a published profile by author and year"`
-	PowerLaw    *PowerLaw    `yaml:"power_law"`
-	Hydrostatic *Hydrostatic `yaml:"hydrostatic"`
+	Named       string       `yaml:"named" choice:"law" one:"baumbach-allen,cranmer-1999-hole,doyle-1999-hole,gibson-1999,guhathakurta-1996-pole,guhathakurta-1996-sheet,leblanc-1998,mann-1999,newkirk-1961,saito-1970,saito-1970-equator,saito-1970-pole,saito-poland-munro-1977,sittler-guhathakurta-1999,sittler-guhathakurta-1999-pole,vrsnak-2004" about:"a published profile by author and year"`
+	PowerLaw    *PowerLaw    `yaml:"power_law" choice:"law"`
+	Hydrostatic *Hydrostatic `yaml:"hydrostatic" choice:"law"`
 	Factor      float64      `yaml:"factor" in:">0..1000" about:"multiplies the law"`
 }
 
@@ -146,7 +147,7 @@ type Image struct {
 type Camera struct {
 	Cadence     units.Duration     `yaml:"cadence" in:"0.1 s..600 s" about:"time between frames of the first line"`
 	Duration    units.Duration     `yaml:"duration" in:"60 s..48 h"`
-	Tunings     []units.Wavelength `yaml:"tunings" about:"offsets from the rest wavelength, ascending, of both lines"`
+	Tunings     []units.Wavelength `yaml:"tunings" in:"-5 nm..5 nm" about:"offsets from the rest wavelength, ascending, of both lines"`
 	Filter      units.Wavelength   `yaml:"filter" in:"0.005 nm..1 nm" about:"full width at half maximum of the Gaussian transmission"`
 	SecondLine  int                `yaml:"second_line" in:"1..10000" about:"frames of the second line, evenly spread over the duration"`
 	PointSpread units.SkyAngle     `yaml:"point_spread" in:"0 arcsec..30 arcsec" about:"full width at half maximum of the Gaussian point spread; 0: none"`

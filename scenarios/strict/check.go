@@ -12,7 +12,7 @@ import (
 // check goes through the whole value, defaults included, and holds it against the
 // tags.
 func (d *decoder) check(v reflect.Value, path string, f field) {
-	if d.failed[path] {
+	if d.pos.failed[path] {
 		return
 	}
 	t := v.Type()
@@ -54,7 +54,7 @@ func (d *decoder) wrong(path, format string, args ...any) {
 	if at, ok := d.pos.at[path]; ok {
 		p.Line, p.Column = at.line, at.col
 	}
-	d.failed[path] = true
+	d.pos.failed[path] = true
 	d.problems = append(d.problems, p)
 }
 
@@ -76,9 +76,11 @@ func (d *decoder) checkStruct(v reflect.Value, path string) {
 			if !v.Field(f.index).IsZero() {
 				groups[f.choice]++
 			}
-			broken[f.choice] = broken[f.choice] || d.failed[at]
+			broken[f.choice] = broken[f.choice] || d.pos.failed[at]
 		}
-		d.check(v.Field(f.index), at, f)
+		if f.choice == "" || !v.Field(f.index).IsZero() {
+			d.check(v.Field(f.index), at, f)
+		}
 	}
 	for _, g := range order {
 		if groups[g] != 1 && !broken[g] {
@@ -155,7 +157,7 @@ func hint(word string, known []string) string {
 
 // Nearest returns the known word that was most likely meant, or "".
 func Nearest(word string, known []string) string {
-	best, least := "", max(1, len(word)/3)+1
+	best, least := "", len(word)/3+1
 	for _, k := range known {
 		if dist := distance(strings.ToLower(word), strings.ToLower(k), least); dist < least {
 			best, least = k, dist

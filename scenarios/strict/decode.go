@@ -15,7 +15,6 @@ import (
 type decoder struct {
 	pos         *Positions
 	problems    Problems
-	failed      map[string]bool // paths whose value could not be read: not checked again
 	source      string
 	prefix      string // the path of the assignment, empty while reading a file
 	strictNeeds bool
@@ -73,7 +72,7 @@ func isPlain(n *yaml.Node) bool { return n.Kind == yaml.ScalarNode && n.Style ==
 
 // fail notes a problem at the value n.
 func (d *decoder) fail(n *yaml.Node, path, format string, args ...any) {
-	d.failed[path] = true
+	d.pos.failed[path] = true
 	p := Problem{Source: d.source, Path: path, Message: fmt.Sprintf(format, args...)}
 	if d.prefix == "" {
 		p.Line, p.Column = n.Line, n.Column
@@ -208,7 +207,7 @@ func (d *decoder) structure(v reflect.Value, n *yaml.Node, path string) {
 		d.note(at, key, value)
 		if f.choice != "" && !isNull(value) && !(value.Kind == yaml.ScalarNode && value.Value == "") {
 			if first := chosen[f.choice]; first != nil {
-				d.failed[path] = true
+				d.pos.failed[path] = true
 				d.problems = append(d.problems, d.located(key, at,
 					fmt.Sprintf("%q is given already; exactly one of %s may be", first.Value, members(fs, f.choice))))
 				return

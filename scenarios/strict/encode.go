@@ -156,7 +156,9 @@ func scalarText(v reflect.Value) string {
 
 var dateLike = regexp.MustCompile(`^[0-9]{4}-[0-9]{2}-[0-9]{2}T[0-9:.]+Z$`)
 
-func safe(s string) bool { return plain.MatchString(s) && !strings.Contains(s, "  ") && tagOf(s) != "!!null" }
+func safe(s string) bool {
+	return plain.MatchString(s) && !strings.Contains(s, "  ") && tagOf(s) != "!!null"
+}
 
 // tagOf returns what YAML takes s for if it stands without quotes.
 func tagOf(s string) string { return (&yaml.Node{Kind: yaml.ScalarNode, Value: s}).ShortTag() }

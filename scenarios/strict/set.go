@@ -31,9 +31,9 @@ func (d *decoder) assign(root reflect.Value, assignment string) {
 			delete(d.pos.at, p)
 		}
 	}
-	for p := range d.failed { // mended, or found again
+	for p := range d.pos.failed { // mended, or found again
 		if p == path || strings.HasPrefix(p, path+".") {
-			delete(d.failed, p)
+			delete(d.pos.failed, p)
 		}
 	}
 	d.descend(root, n, strings.Split(path, "."), "")

@@ -64,7 +64,7 @@ func (p Problem) Error() string {
 	if p.Path != "" && p.Source != setPrefix+p.Path {
 		b.WriteString(": " + p.Path)
 	}
-	return b.String() + ": " + p.Message
+	return strings.TrimPrefix(b.String()+": "+p.Message, ": ")
 }
 
 // Problems are sorted by position, those of assignments last.
@@ -102,10 +102,12 @@ func (ps Problems) Err() error {
 	return ps
 }
 
-// Positions says where each key of a file stands.
+// Positions says where each key of a file stands and which values are unsound. The
+// nil Positions are those of a value that came from no file.
 type Positions struct {
-	name string
-	at   map[string]place
+	name   string
+	at     map[string]place
+	failed map[string]bool // paths whose value could not be read or is not allowed
 }
 
 type place struct {
@@ -114,10 +116,37 @@ type place struct {
 	line, col       int // of the value
 }
 
-// Given reports whether the file or an assignment holds the key.
+// Given reports whether the file or an assignment holds the key; "" stands for the
+// file itself.
 func (p *Positions) Given(path string) bool {
+	if p == nil {
+		return false
+	}
 	_, ok := p.at[path]
 	return ok
+}
+
+func newPositions(name string) *Positions {
+	return &Positions{name, map[string]place{}, map[string]bool{}}
+}
+
+// Sound reports whether no problem was found at the paths, above or below them, so
+// that rules about them make sense. Nothing is sound in a file that is not YAML.
+func (p *Positions) Sound(paths ...string) bool {
+	if p == nil {
+		return true
+	}
+	if !p.Given("") {
+		return false
+	}
+	for f := range p.failed {
+		for _, path := range paths {
+			if f == path || f == "" || strings.HasPrefix(f, path+".") || strings.HasPrefix(path, f+".") {
+				return false
+			}
+		}
+	}
+	return true
 }
 
 // Problem returns a problem at the key of path or, if it was not given, at the
@@ -128,6 +157,9 @@ func (p *Positions) Problem(path, format string, args ...any) Problem {
 }
 
 func (p *Positions) nearest(path string) place {
+	if p == nil {
+		return place{}
+	}
 	for up := path; ; {
 		if at, ok := p.at[up]; ok {
 			return at
@@ -157,12 +189,14 @@ func Decode(name string, data []byte, into any) error {
 // Read is Decode followed by assignments as in Set; ranges are checked after all of
 // them. The positions are never nil.
 func Read(name string, data []byte, into any, assignments ...string) (*Positions, error) {
-	d := &decoder{pos: &Positions{name, map[string]place{}}, source: name, failed: map[string]bool{}}
+	d := &decoder{pos: newPositions(name), source: name}
 	v := target(into)
-	if n := d.document(data); n != nil {
-		d.pos.at[""] = place{name, n.Line, n.Column, n.Line, n.Column}
-		d.value(v, n, "")
+	n := d.document(data)
+	if n == nil {
+		return d.pos, d.problems.Err()
 	}
+	d.pos.at[""] = place{name, n.Line, n.Column, n.Line, n.Column}
+	d.value(v, n, "")
 	for _, a := range assignments {
 		d.assign(v, a)
 	}
@@ -176,7 +210,7 @@ func Read(name string, data []byte, into any, assignments ...string) (*Positions
 // are made as needed. Problems are located as "--set PATH"; what they leave in the
 // struct is of no use.
 func Set(into any, assignments ...string) error {
-	d := &decoder{pos: &Positions{"--set", map[string]place{}}, failed: map[string]bool{}}
+	d := &decoder{pos: newPositions("--set")}
 	v := target(into)
 	for _, a := range assignments {
 		d.assign(v, a)
@@ -204,7 +238,7 @@ func (d *decoder) document(data []byte) *yaml.Node {
 		first = 0
 	}
 	if len(data) > MaxBytes {
-		return fail(first, first, "%d bytes are too many; at most %d are read", len(data), MaxBytes)
+		return fail(first, first, "is too large; at most %d bytes are read", MaxBytes)
 	}
 	if line, col, what := unreadable(data); what != "" {
 		return fail(line*first, col*first, "%s; write plain UTF-8 text", what)

@@ -1,0 +1,161 @@
+package scenarios
+
+import (
+	"crypto/sha256"
+	"embed"
+	"encoding/hex"
+	"fmt"
+	"io"
+	"os"
+	"path/filepath"
+	"strings"
+
+	"offplane/scenarios/strict"
+)
+
+//go:embed library/*.yaml
+var library embed.FS
+
+// A Loaded scenario is complete and valid.
+type Loaded struct {
+	Scenario  Scenario
+	Name      string // of the embedded scenario, or the file's name without folder and suffix
+	Canonical []byte // the scenario with every default filled in; the same scenario gives the same bytes
+	SHA256    string // of Canonical, hexadecimal
+
+	source      string // for messages
+	data        []byte
+	assignments []string
+}
+
+// Names returns the names of the embedded scenarios in alphabetical order.
+func Names() []string {
+	files, err := library.ReadDir("library")
+	if err != nil {
+		panic("scenarios: " + err.Error())
+	}
+	names := make([]string, len(files))
+	for i, f := range files {
+		names[i] = strings.TrimSuffix(f.Name(), ".yaml")
+	}
+	return names
+}
+
+// About returns the one-line description of an embedded scenario.
+func About(name string) (string, error) {
+	l, err := Load(name)
+	if err != nil {
+		return "", err
+	}
+	return l.Scenario.About, nil
+}
+
+// Source returns the YAML of an embedded scenario with its comments.
+func Source(name string) ([]byte, error) {
+	data, err := library.ReadFile("library/" + name + ".yaml")
+	if err != nil {
+		hint := ""
+		if near := strict.Nearest(name, Names()); near != "" {
+			hint = fmt.Sprintf("; did you mean %q?", near)
+		}
+		return nil, fmt.Errorf("no scenario is called %q%s (there are %s; a file is named by its suffix, %s.yaml, or with a folder, ./%s)",
+			name, hint, strings.Join(Names(), ", "), name, name)
+	}
+	return data, nil
+}
+
+// Load reads a scenario, applies assignments (see strict.Set) and validates it. A
+// name with the suffix .yaml or .yml or with a path separator is a file, any other
+// an embedded scenario. The error is of type strict.Problems if the scenario was
+// found but is not valid.
+func Load(nameOrPath string, assignments ...string) (*Loaded, error) {
+	if isFile(nameOrPath) {
+		data, err := read(nameOrPath)
+		if err != nil {
+			stem := strings.TrimSuffix(filepath.Base(nameOrPath), filepath.Ext(nameOrPath))
+			if _, no := Source(stem); no == nil {
+				return nil, fmt.Errorf("%w; the embedded scenario is called %s, without suffix", err, stem)
+			}
+			return nil, err
+		}
+		return Parse(nameOrPath, data, assignments...)
+	}
+	data, err := Source(nameOrPath)
+	if err != nil {
+		return nil, err
+	}
+	return Parse(nameOrPath, data, assignments...)
+}
+
+func isFile(name string) bool {
+	ext := filepath.Ext(name)
+	return ext == ".yaml" || ext == ".yml" || strings.ContainsRune(name, '/') || strings.ContainsRune(name, filepath.Separator)
+}
+
+// read returns no more of a file than shows that it is too large.
+func read(path string) ([]byte, error) {
+	f, err := os.Open(path)
+	if err != nil {
+		return nil, err
+	}
+	defer f.Close()
+	return io.ReadAll(io.LimitReader(f, strict.MaxBytes+1))
+}
+
+// Parse is Load from memory; source stands in messages and gives the name.
+func Parse(source string, data []byte, assignments ...string) (*Loaded, error) {
+	l := &Loaded{Scenario: Default(), source: source, data: data, assignments: assignments}
+	l.Name = filepath.Base(source)
+	if isFile(source) {
+		l.Name = strings.TrimSuffix(l.Name, filepath.Ext(l.Name))
+	}
+	at, err := strict.Read(source, data, &l.Scenario, assignments...)
+	problems, _ := err.(strict.Problems)
+	problems = append(problems, Validate(&l.Scenario, at)...)
+	if err := problems.Err(); err != nil {
+		return nil, err
+	}
+	l.Canonical = strict.Encode(l.Scenario)
+	sum := sha256.Sum256(l.Canonical)
+	l.SHA256 = hex.EncodeToString(sum[:])
+	return l, nil
+}
+
+// With returns the scenario with further assignments applied and validated; l stays
+// as it is.
+func (l *Loaded) With(assignments ...string) (*Loaded, error) {
+	all := append(append([]string{}, l.assignments...), assignments...)
+	n, err := Parse(l.source, l.data, all...)
+	if err == nil {
+		n.Name = l.Name
+	}
+	return n, err
+}
+
+// Resolve validates a scenario that was made in memory. Lines in messages are those
+// of its canonical form.
+func Resolve(name string, s Scenario) (*Loaded, error) {
+	return Parse(name, strict.Encode(s))
+}
+
+// LoadInversion reads a file that holds an inversion section by itself, applies
+// assignments and validates it. Missing keys have the values of Default.
+func LoadInversion(path string, assignments ...string) (Inversion, error) {
+	data, err := read(path)
+	if err != nil {
+		return Inversion{}, err
+	}
+	return ParseInversion(path, data, assignments...)
+}
+
+// ParseInversion is LoadInversion from memory.
+func ParseInversion(source string, data []byte, assignments ...string) (Inversion, error) {
+	v := Default().Inversion
+	at, err := strict.Read(source, data, &v, assignments...)
+	problems, _ := err.(strict.Problems)
+	problems = append(problems, validateInversion(&v, "", at)...)
+	return v, problems.Err()
+}
+
+// EncodeInversion returns the canonical YAML that ParseInversion reads.
+func EncodeInversion(v Inversion) []byte { return strict.Encode(v) }

@@ -1,0 +1,141 @@
+package scenarios
+
+import (
+	"math"
+
+	"offplane/scenarios/strict"
+	"offplane/scenarios/units"
+)
+
+// maxPixels bounds the rectangle around the field of view.
+const maxPixels = 4e6
+
+// A validator notes broken rules, each at the key to change.
+type validator struct {
+	at       *strict.Positions
+	problems strict.Problems
+}
+
+// rule holds unless the keys it is about are unsound already. The first is where the
+// problem is located.
+func (v *validator) rule(ok bool, keys []string, format string, args ...any) {
+	if !ok && v.at.Sound(keys...) {
+		v.problems = append(v.problems, v.at.Problem(keys[0], format, args...))
+	}
+}
+
+// Validate checks the rules that tie keys together; the tags' own are strict's. at may
+// be nil: problems then have a path but no line.
+func Validate(s *Scenario, at *strict.Positions) strict.Problems {
+	v := &validator{at: at}
+	v.corona(s)
+	v.waves(s)
+	v.image(s)
+	v.camera(s)
+	v.problems = append(v.problems, validateInversion(&s.Inversion, "inversion.", at)...)
+	v.problems.Sort()
+	return v.problems
+}
+
+func (v *validator) corona(s *Scenario) {
+	c := &s.Corona
+	v.rule(len(c.Fields) > 0, []string{"corona.fields"}, "is empty; give at least one field")
+	if c.Density.Hole == nil || len(c.Fields) == 0 {
+		return
+	}
+	closed := false // has any field both open and closed lines?
+	for _, f := range c.Fields {
+		closed = closed || f.DipoleSheet != nil
+	}
+	v.rule(closed, []string{"corona.density.hole", "corona.fields"},
+		"a hole needs closed lines beside the open ones, but every line of a radial field is open; leave hole out or add a dipole_sheet to fields")
+}
+
+func (v *validator) waves(s *Scenario) {
+	w := &s.Waves
+	v.rule(w.Spectrum.High > w.Spectrum.Low, []string{"waves.spectrum.high", "waves.spectrum.low"},
+		"%v must be more than low, %v", w.Spectrum.High, w.Spectrum.Low)
+	v.rule(w.Inward == 0 || w.InwardFrom > s.Image.Outer, []string{"waves.inward_from", "waves.inward", "image.outer"},
+		"%v must be more than image.outer, %v, so that inward waves cross the whole image", w.InwardFrom, s.Image.Outer)
+	// A line counts as open from closed_below on and must reach inward_from.
+	v.rule(w.Inward == 0 || w.InwardFrom <= s.Corona.ClosedBelow, []string{"waves.inward_from", "waves.inward", "corona.closed_below"},
+		"%v must be at most corona.closed_below, %v: lower open lines do not reach it", w.InwardFrom, s.Corona.ClosedBelow)
+}
+
+func (v *validator) image(s *Scenario) {
+	m := &s.Image
+	v.rule(m.Outer > m.Inner, []string{"image.outer", "image.inner"}, "%v must be more than inner, %v", m.Outer, m.Inner)
+	v.rule(m.To > m.From, []string{"image.to", "image.from"}, "%v must be more than from, %v", m.To, m.From)
+	v.rule(m.To-m.From <= 360, []string{"image.to", "image.from"}, "%v is more than 360 deg beyond from, %v", m.To, m.From)
+	n := m.pixels(s.Observer.Distance)
+	v.rule(n <= maxPixels, []string{"image.pixel", "image.inner", "image.outer", "image.from", "image.to", "image.roll", "observer.distance"},
+		"%v makes an image of %.3g pixels; at most %.3g are allowed", m.Pixel, n, float64(maxPixels))
+	if !s.Sight.Plane {
+		step := s.Sight.Step * s.Waves.Cell.Rsun() * float64(m.Outer)
+		v.rule(float64(s.Sight.Reach) >= 10*step, []string{"sight.reach", "sight.step", "waves.cell", "image.outer"},
+			"%v holds fewer than 10 samples of step * cell * outer = %.3g Rsun; write at least %.3g Rsun", s.Sight.Reach, step, 10*step)
+	}
+	v.rule(float64(s.Sight.Reach) < s.Observer.Distance.Rsun(), []string{"sight.reach", "observer.distance"},
+		"%v lies behind the observer at %.4g Rsun", s.Sight.Reach, s.Observer.Distance.Rsun())
+}
+
+// pixels returns how many pixels the rectangle around the wedge holds.
+func (m *Image) pixels(distance units.Distance) float64 {
+	pitch := m.Pixel.Rad() * distance.Rsun()
+	left, right, low, high := math.Inf(1), math.Inf(-1), math.Inf(1), math.Inf(-1)
+	corner := func(pa float64) {
+		for _, r := range []units.Height{m.Inner, m.Outer} {
+			sin, cos := math.Sincos((pa - float64(m.Roll)) * math.Pi / 180)
+			x, y := -float64(r)*sin, float64(r)*cos
+			left, right, low, high = min(left, x), max(right, x), min(low, y), max(high, y)
+		}
+	}
+	from, to, roll := float64(m.From), float64(m.To), float64(m.Roll)
+	corner(from)
+	corner(to)
+	for q := math.Ceil((from - roll) / 90); q*90+roll < to; q++ { // where the rim touches the sides
+		corner(q*90 + roll)
+	}
+	return math.Ceil((right-left)/pitch) * math.Ceil((high-low)/pitch)
+}
+
+func (v *validator) camera(s *Scenario) {
+	c := &s.Camera
+	nyquist := units.Frequency(1e3 / (2 * float64(c.Cadence)))
+	top := s.Inversion.Filter.Centre + s.Inversion.Filter.Width
+	v.rule(nyquist > top, []string{"camera.cadence", "inversion.filter.centre", "inversion.filter.width"},
+		"%v has its Nyquist frequency 1/(2 cadence) at %.4g mHz, but the inversion's filter reaches to centre + width = %.4g mHz; write less than %.4g s",
+		c.Cadence, float64(nyquist), float64(top), 1e3/(2*float64(top)))
+	v.rule(c.Duration >= 10*c.Cadence, []string{"camera.duration", "camera.cadence"},
+		"%v is less than 10 cadences, %v", c.Duration, 10*c.Cadence)
+	n := len(c.Tunings)
+	v.rule(n >= 3, []string{"camera.tunings"}, "%d are too few; the three-point formula needs at least 3, such as [-0.12 nm, 0 nm, 0.12 nm]", n)
+	v.rule(float64(c.Exposure)*float64(n) <= float64(c.Cadence), []string{"camera.exposure", "camera.tunings", "camera.cadence"},
+		"%d tunings of %v take %.4g s, more than the cadence, %v", n, c.Exposure, float64(c.Exposure)*float64(n), c.Cadence)
+	if n < 3 {
+		return
+	}
+	ascending := true
+	for i := range n - 1 {
+		ascending = ascending && c.Tunings[i] < c.Tunings[i+1]
+	}
+	v.rule(ascending, []string{"camera.tunings"}, "must be in ascending order, each once")
+	if !ascending {
+		return
+	}
+	middle, symmetric := float64(c.Tunings[n/2]), n%2 == 1
+	span := float64(c.Tunings[n-1] - c.Tunings[0])
+	for i := range n {
+		off := float64(c.Tunings[i]) + float64(c.Tunings[n-1-i]) - 2*middle
+		symmetric = symmetric && math.Abs(off) <= 1e-9*span // decimals are not exact in binary
+	}
+	v.rule(symmetric, []string{"camera.tunings"},
+		"the three-point formula needs an odd number of tunings, symmetric about the middle one, such as [-0.12 nm, 0 nm, 0.12 nm]")
+}
+
+func validateInversion(s *Inversion, prefix string, at *strict.Positions) strict.Problems {
+	v := &validator{at: at}
+	v.rule(s.Box%2 == 1, []string{prefix + "box"}, "%d is even; the box needs a middle pixel, so write %d or %d", s.Box, s.Box-1, s.Box+1)
+	v.rule(s.Track%2 == 1, []string{prefix + "track"}, "%d is even; the track needs a middle point, so write %d or %d", s.Track, s.Track-1, s.Track+1)
+	return v.problems
+}
