@@ -1,0 +1,87 @@
+package kernel
+
+import (
+	"math"
+	"testing"
+
+	"offplane/synth/random"
+)
+
+func TestExpNeg(t *testing.T) {
+	for x := float32(0); x > -86; x -= 0.00137 {
+		if rel := math.Abs(float64(expNeg(x))/math.Exp(float64(x)) - 1); rel > 3e-7 {
+			t.Fatalf("exp(%g): relative error %.2g", x, rel)
+		}
+	}
+	if expNeg(-88) != 0 || expNeg(0) != 1 {
+		t.Error("ends")
+	}
+}
+
+func noise(n int, address ...uint64) []float32 {
+	s := random.At(address...)
+	x := make([]float32, n)
+	for i := range x {
+		x[i] = float32(s.Normal())
+	}
+	return x
+}
+
+func TestCombineIsTheSumOfRows(t *testing.T) {
+	for rows := range 11 {
+		r, c := make([][]float32, rows), noise(rows, 5)
+		for i := range r {
+			r[i] = noise(37, 6, uint64(i))
+		}
+		dst := noise(33, 9) // whatever was there is gone
+		Combine(dst, r, c)
+		for u := range dst {
+			want := 0.0
+			for i := range r {
+				want += float64(c[i]) * float64(r[i][u])
+			}
+			if math.Abs(float64(dst[u])-want) > 2e-6 {
+				t.Fatalf("%d rows: %g, want %g", rows, dst[u], want)
+			}
+		}
+	}
+}
+
+func TestProfileIsTheGaussian(t *testing.T) {
+	v := noise(50, 1)
+	for i := range v {
+		v[i] *= 15
+	}
+	acc := make([]float64, len(v))
+	Profile(acc, v, 2.5, 33.5, 1/40.0)
+	Profile(acc, v, 0.5, 0, 1/30.0)
+	for i, x := range v {
+		a, b := (33.5-float64(x))/40, float64(x)/30
+		want := 2.5*math.Exp(-a*a) + 0.5*math.Exp(-b*b)
+		if math.Abs(acc[i]/want-1) > 1e-6 {
+			t.Fatalf("v = %g: %.9g, want %.9g", x, acc[i], want)
+		}
+	}
+}
+
+func BenchmarkCombine(b *testing.B) {
+	const rows, frames = 64, 360
+	r, c := make([][]float32, rows), noise(rows, 5)
+	for i := range r {
+		r[i] = noise(frames, 6, uint64(i))
+	}
+	dst := make([]float32, frames)
+	for b.Loop() {
+		Combine(dst, r, c)
+	}
+	b.ReportMetric(float64(b.N)*rows*frames/b.Elapsed().Seconds()/1e9, "Gmultiply-adds/s")
+}
+
+func BenchmarkProfile(b *testing.B) {
+	v := noise(360, 1)
+	acc := make([]float64, len(v))
+	for b.Loop() {
+		Profile(acc, v, 1, 33.5, 1/40.0)
+	}
+	b.ReportMetric(float64(b.N)*float64(len(v))/b.Elapsed().Seconds()/1e9, "Gterms/s")
+}
