@@ -96,21 +96,21 @@ func (w *Writer) Close() error {
 		return w.err
 	}
 	if w.err == nil && w.open != nil {
-		w.err = w.open.unfinished()
+		w.err = w.fail(w.open.name, w.open.unfinished())
 	}
-	if w.err == nil {
-		w.err = w.buf.Flush()
-	}
-	if err := w.file.Close(); w.err == nil {
-		w.err = err
+	err := w.buf.Flush()
+	if e := w.file.Close(); err == nil {
+		err = e
 	}
 	w.file = nil
-	if w.err == nil {
-		w.err = os.Rename(w.path+".part", w.path)
+	if w.err == nil && err == nil {
+		err = os.Rename(w.path+".part", w.path)
+	}
+	if w.err == nil && err != nil {
+		w.err = fmt.Errorf("%s: %w", w.path, err)
 	}
 	if w.err != nil {
 		os.Remove(w.path + ".part")
-		w.err = fmt.Errorf("%s: %w", w.path, w.err)
 	}
 	return w.err
 }
@@ -124,7 +124,7 @@ func (w *Writer) Abort() {
 	w.file = nil
 	os.Remove(w.path + ".part")
 	if w.err == nil {
-		w.err = errors.New("fits: writer aborted")
+		w.err = fmt.Errorf("%s: writing was given up", w.path)
 	}
 }
 
@@ -134,10 +134,10 @@ func (w *Writer) next(name string) error {
 		return w.err
 	}
 	if w.file == nil {
-		return errors.New("fits: writer closed")
+		return errors.New("the file is closed")
 	}
 	if w.open != nil {
-		return w.open.unfinished()
+		return fmt.Errorf("begun too early: %w", w.open.unfinished())
 	}
 	if name == "" || name != strings.ToUpper(name) || len(name) > 68 || strings.ContainsAny(name, "' ") || printable("EXTNAME", name) != nil {
 		return fmt.Errorf("extension name %q: must be upper-case ASCII without blanks or quotes", name)
@@ -149,12 +149,12 @@ func (w *Writer) next(name string) error {
 	return nil
 }
 
-// fail makes an error stick, naming the HDU.
+// fail makes an error stick, naming file and HDU.
 func (w *Writer) fail(name string, err error) error {
 	if err != nil && w.err == nil {
-		w.err = fmt.Errorf("%s: %w", name, err)
+		w.err = fmt.Errorf("%s[%s]: %w", w.path, name, err)
 	}
-	return err
+	return w.err
 }
 
 // A body is an HDU being written by our own code: the header holds
@@ -178,7 +178,7 @@ func (w *Writer) begin(h Header) (*body, error) {
 }
 
 func (b *body) unfinished() error {
-	return fmt.Errorf("%s: only %d of %d bytes of data were written", b.name, b.total-b.left, b.total)
+	return fmt.Errorf("%s has only %d of its %d bytes of data", b.name, b.total-b.left, b.total)
 }
 
 // Write adds data bytes.

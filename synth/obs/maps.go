@@ -53,12 +53,12 @@ func WriteMaps(path string, g *Grid, maps Maps, primary fits.Header, tables ...f
 			err = fits.AddImage(w, m.Name, h, axes, m.Data)
 		}
 		if err != nil {
-			return fmt.Errorf("%s: %s: %w", path, m.Name, err)
+			return err
 		}
 	}
 	for _, t := range tables {
 		if err := w.AddTable(t); err != nil {
-			return fmt.Errorf("%s: %s: %w", path, t.Name, err)
+			return err
 		}
 	}
 	return w.Close()

@@ -1,0 +1,465 @@
+package obs
+
+import (
+	"fmt"
+	"math"
+	"strconv"
+
+	"offplane/synth/fits"
+)
+
+// blockFrames is the number of frames that are turned between pixel-major and
+// frame-major order at once: the buffer stays small beside the cube, and each
+// series is touched in whole cache lines.
+const blockFrames = 16
+
+// WriteObservation writes an observation: LINE1_MEAN and LINE2_MEAN (x, y,
+// wavelength), the tables TUNINGS and EXPOSURES, and with frames also LINE1 and
+// LINE2, if it was kept (x, y, wavelength, time). Pixels of the field are finite, all others
+// NaN. The tables have authority over the linear axes of the headers. Of the
+// scenario only its SHA-256 goes into the file.
+//
+// Every mean of the first line must be finite: that is how the field is found
+// again.
+func WriteObservation(path string, o *Observation, primary fits.Header, frames bool) error {
+	if err := o.check(frames); err != nil {
+		return fmt.Errorf("%s: %w", path, err)
+	}
+	if _, err := o.Grid.header(); err != nil {
+		return fmt.Errorf("%s: %w", path, err)
+	}
+	if o.Scenario != "" {
+		primary = append(append(fits.Header{}, primary...), fits.Card{Key: "SCENSHA", Value: o.Scenario})
+	}
+	w, err := fits.Create(path, primary)
+	if err != nil {
+		return err
+	}
+	defer w.Abort()
+	for line := 1; line <= 2; line++ {
+		if err := o.writeMean(w, line); err != nil {
+			return err
+		}
+	}
+	for _, t := range []fits.Table{o.tuningTable(), o.exposureTable()} {
+		if err := w.AddTable(t); err != nil {
+			return err
+		}
+	}
+	for line := 1; frames && line <= 2; line++ {
+		if err := o.writeFrames(w, line); err != nil {
+			return err
+		}
+	}
+	return w.Close()
+}
+
+// check returns an error if the parts of an observation do not fit each other.
+func (o *Observation) check(frames bool) error {
+	for i, p := range o.Pixels {
+		if p < 0 || int(p) >= o.Grid.Nx*o.Grid.Ny || i > 0 && p <= o.Pixels[i-1] {
+			return fmt.Errorf("pixel %d: raster indices must ascend within the %d x %d image", p, o.Grid.Nx, o.Grid.Ny)
+		}
+	}
+	count := 0
+	for line := 1; line <= 2; line++ {
+		tunings, exposures := o.LineTunings(line), o.LineExposures(line)
+		count += len(tunings) + len(exposures)
+		for i, t := range tunings {
+			if t.Index != i || !(t.Wavelength > 0) || i > 0 && t.Wavelength <= tunings[i-1].Wavelength {
+				return fmt.Errorf("TUNINGS: line %d, index %d, %g nm: wavelengths must ascend, indices run from 0", line, t.Index, t.Wavelength)
+			}
+		}
+		for i, e := range exposures {
+			if e.Frame != i || math.IsNaN(e.Time) || i > 0 && e.Time <= exposures[i-1].Time {
+				return fmt.Errorf("EXPOSURES: line %d, frame %d, %g s: times must ascend, frames run from 0", line, e.Frame, e.Time)
+			}
+		}
+		mean := o.Mean[line-1]
+		if len(mean) != len(tunings) {
+			return fmt.Errorf("LINE%d_MEAN: %d planes for %d tunings", line, len(mean), len(tunings))
+		}
+		for k := range mean {
+			if len(mean[k]) != len(o.Pixels) {
+				return fmt.Errorf("LINE%d_MEAN: %d pixels at tuning %d, the field has %d", line, len(mean[k]), k, len(o.Pixels))
+			}
+			for p, v := range mean[k] {
+				if line == 1 && (math.IsNaN(float64(v)) || math.IsInf(float64(v), 0)) {
+					return fmt.Errorf("LINE1_MEAN: pixel %d of the field is %v at tuning %d", o.Pixels[p], v, k)
+				}
+			}
+		}
+		c := o.Frames[line-1]
+		if frames && line == 1 && c == nil {
+			return fmt.Errorf("LINE1: the frames were not kept")
+		}
+		if c != nil && (c.Pixels != len(o.Pixels) || c.Tunings != len(tunings) || c.Frames != len(exposures)) {
+			return fmt.Errorf("LINE%d: %d pixels, %d tunings, %d frames; the field and the tables have %d, %d, %d", line,
+				c.Pixels, c.Tunings, c.Frames, len(o.Pixels), len(tunings), len(exposures))
+		}
+	}
+	if len(o.LineTunings(1)) == 0 {
+		return fmt.Errorf("TUNINGS: none of line 1")
+	}
+	if count != len(o.Tunings)+len(o.Exposures) {
+		return fmt.Errorf("TUNINGS or EXPOSURES: line must be 1 or 2")
+	}
+	return nil
+}
+
+// wavelengths returns the linear axis closest to the tunings.
+func wavelengths(tunings []Tuning) axis {
+	a := axis{kind: "WAVE", unit: "nm", at: tunings[0].Wavelength, step: 1, about: "vacuum; exact values in table TUNINGS"}
+	if n := len(tunings) - 1; n > 0 {
+		a.step = (tunings[n].Wavelength - a.at) / float64(n)
+	}
+	return a
+}
+
+// times returns the linear axis closest to the frames.
+func times(exposures []Exposure) axis {
+	a := axis{kind: "UTC", unit: "s", at: exposures[0].Time, step: 1, about: "since DATEREF; exact values in EXPOSURES"}
+	if n := len(exposures) - 1; n > 0 {
+		a.step = (exposures[n].Time - a.at) / float64(n)
+	}
+	return a
+}
+
+// lineHeader returns the cards of a cube of one line.
+func (o *Observation) lineHeader(tunings []Tuning, about string, axes ...axis) (fits.Header, error) {
+	var h fits.Header
+	if o.Unit != "" {
+		h.Set("BUNIT", o.Unit, "")
+	}
+	h.Set("BTYPE", about, "")
+	g := o.Grid
+	if w := tunings[0].Wavelength - tunings[0].Offset; w > 0 && tunings[0].Line == 2 {
+		g.RestWavelength = w
+	}
+	cards, err := g.header(axes...)
+	return append(h, cards...), err
+}
+
+func (o *Observation) writeMean(w *fits.Writer, line int) error {
+	tunings := o.LineTunings(line)
+	if len(tunings) == 0 {
+		return nil
+	}
+	h, err := o.lineHeader(tunings, "mean radiance through the filter", wavelengths(tunings))
+	if err != nil {
+		return err
+	}
+	cube, err := w.Cube(fmt.Sprintf("LINE%d_MEAN", line), h, o.Grid.Nx, o.Grid.Ny, len(tunings))
+	if err != nil {
+		return err
+	}
+	plane := blank(o.Grid.Nx * o.Grid.Ny)
+	for k := range tunings {
+		for i, p := range o.Pixels {
+			plane[p] = o.Mean[line-1][k][i]
+		}
+		if err := cube.WritePlane(plane); err != nil {
+			return err
+		}
+	}
+	return nil
+}
+
+func blank(n int) []float32 {
+	plane := make([]float32, n)
+	for i := range plane {
+		plane[i] = float32(math.NaN())
+	}
+	return plane
+}
+
+func (o *Observation) writeFrames(w *fits.Writer, line int) error {
+	c := o.Frames[line-1]
+	tunings, exposures := o.LineTunings(line), o.LineExposures(line)
+	if c == nil || len(exposures) == 0 {
+		return nil
+	}
+	h, err := o.lineHeader(tunings, "radiance through the filter", wavelengths(tunings), times(exposures))
+	if err != nil {
+		return err
+	}
+	cube, err := w.Cube("LINE"+strconv.Itoa(line), h, o.Grid.Nx, o.Grid.Ny, c.Tunings, c.Frames)
+	if err != nil {
+		return err
+	}
+	plane := blank(o.Grid.Nx * o.Grid.Ny)
+	return c.blocks(func(from, to int, planes [][]float32) error {
+		for p := range c.Pixels {
+			for k := range c.Tunings {
+				for j, v := range c.Series(p, k)[from:to] {
+					planes[j*c.Tunings+k][p] = v
+				}
+			}
+		}
+		for _, values := range planes {
+			for i, p := range o.Pixels {
+				plane[p] = values[i]
+			}
+			if err := cube.WritePlane(plane); err != nil {
+				return err
+			}
+		}
+		return nil
+	})
+}
+
+// blocks calls do for one block of frames after the other, with a buffer of one
+// row of field pixels for each frame and tuning in file order.
+func (c *Cube) blocks(do func(from, to int, planes [][]float32) error) error {
+	planes := make([][]float32, min(blockFrames, c.Frames)*c.Tunings)
+	for i := range planes {
+		planes[i] = make([]float32, c.Pixels)
+	}
+	for from := 0; from < c.Frames; from += blockFrames {
+		to := min(from+blockFrames, c.Frames)
+		if err := do(from, to, planes[:(to-from)*c.Tunings]); err != nil {
+			return err
+		}
+	}
+	return nil
+}
+
+func (o *Observation) tuningTable() fits.Table {
+	n := len(o.Tunings)
+	line, index := make([]int32, n), make([]int32, n)
+	wavelength, delay, fwhm, offset := make([]float64, n), make([]float64, n), make([]float64, n), make([]float64, n)
+	for i, t := range o.Tunings {
+		line[i], index[i] = int32(t.Line), int32(t.Index)
+		wavelength[i], delay[i], fwhm[i], offset[i] = t.Wavelength, t.Delay, t.FilterFWHM, t.Offset
+	}
+	return fits.Table{Name: "TUNINGS", Columns: []fits.Column{
+		{Name: "line", About: "1: 1074.7 nm, 2: 1079.8 nm", Data: line},
+		{Name: "index", About: "from 0, along axis 3", Data: index},
+		{Name: "wavelength_nm", Unit: "nm", About: "in vacuum", Data: wavelength},
+		{Name: "delay_s", Unit: "s", About: "start after the time of the frame", Data: delay},
+		{Name: "filter_fwhm_nm", Unit: "nm", About: "of the transmission; 0: not known", Data: fwhm},
+		{Name: "offset_nm", Unit: "nm", About: "from the rest wavelength", Data: offset},
+	}}
+}
+
+func (o *Observation) exposureTable() fits.Table {
+	n := len(o.Exposures)
+	line, frame := make([]int32, n), make([]int32, n)
+	time, exposure, electrons, background, noise := make([]float64, n), make([]float64, n), make([]float64, n), make([]float64, n), make([]float64, n)
+	for i, e := range o.Exposures {
+		line[i], frame[i] = int32(e.Line), int32(e.Frame)
+		time[i], exposure[i], electrons[i], background[i], noise[i] = e.Time, e.Exposure, e.Electrons, e.Background, e.ReadNoise
+	}
+	return fits.Table{Name: "EXPOSURES", Columns: []fits.Column{
+		{Name: "line", About: "1: 1074.7 nm, 2: 1079.8 nm", Data: line},
+		{Name: "frame", About: "from 0, along axis 4", Data: frame},
+		{Name: "time_s", Unit: "s", About: "of the frame, since DATEREF", Data: time},
+		{Name: "exposure_s", Unit: "s", About: "of one tuning, co-adds included", Data: exposure},
+		{Name: "electrons", About: "per unit of the frames; 0: noise not known", Data: electrons},
+		{Name: "background", Unit: o.Unit, About: "continuum that was subtracted", Data: background},
+		{Name: "read_noise", About: "electrons rms, co-adds included", Data: noise},
+	}}
+}
+
+// ReadObservation reads an observation. It needs no more than the images with
+// their names and world coordinates and the tables TUNINGS (line, index,
+// wavelength_nm, delay_s, offset_nm) and EXPOSURES (line, frame, time_s,
+// exposure_s): other columns default to 0, other cards to nothing known, a
+// missing observer to 1 au, a missing start to the zero time. The field is what is finite in every plane of
+// LINE1_MEAN. Frames stay nil where the file has none.
+func ReadObservation(path string) (*Observation, error) {
+	f, err := fits.Open(path)
+	if err != nil {
+		return nil, err
+	}
+	defer f.Close()
+	o := &Observation{}
+	if err := o.readTables(f); err != nil {
+		return nil, err
+	}
+	o.Scenario, _ = f.HDUs[0].Header.Text("SCENSHA")
+	for line := 1; line <= 2; line++ {
+		if line == 1 || len(o.LineTunings(line)) > 0 {
+			if err := o.readMean(f, line); err != nil {
+				return nil, err
+			}
+		}
+	}
+	for line := 1; line <= 2; line++ {
+		if err := o.readFrames(f, line); err != nil {
+			return nil, err
+		}
+	}
+	if err := o.check(false); err != nil {
+		return nil, fmt.Errorf("%s: %w", path, err)
+	}
+	return o, nil
+}
+
+// columns reads numeric columns; those after required default to 0.
+func columns(f *fits.File, table string, required int, names ...string) (out [][]float64, rows int, err error) {
+	t, err := f.Table(table)
+	if err != nil {
+		return nil, 0, err
+	}
+	for i, name := range names {
+		c, err := t.Floats(name)
+		if err != nil && i >= required {
+			c, err = make([]float64, rows), nil
+		}
+		if err != nil {
+			return nil, 0, err
+		}
+		for j, v := range c {
+			if math.IsNaN(v) || math.IsInf(v, 0) {
+				return nil, 0, fmt.Errorf("%s[%s]: row %d: %s is %v", f.Name, table, j+1, name, v)
+			}
+		}
+		out, rows = append(out, c), len(c)
+	}
+	return out, rows, nil
+}
+
+func (o *Observation) readTables(f *fits.File) error {
+	c, n, err := columns(f, "TUNINGS", 5, "line", "index", "wavelength_nm", "delay_s", "offset_nm", "filter_fwhm_nm")
+	if err != nil {
+		return err
+	}
+	for i := range n {
+		o.Tunings = append(o.Tunings, Tuning{Line: int(c[0][i]), Index: int(c[1][i]), Wavelength: c[2][i], Delay: c[3][i], Offset: c[4][i], FilterFWHM: c[5][i]})
+	}
+	c, n, err = columns(f, "EXPOSURES", 4, "line", "frame", "time_s", "exposure_s", "electrons", "background", "read_noise")
+	if err != nil {
+		return err
+	}
+	for i := range n {
+		o.Exposures = append(o.Exposures, Exposure{Line: int(c[0][i]), Frame: int(c[1][i]), Time: c[2][i], Exposure: c[3][i], Electrons: c[4][i], Background: c[5][i], ReadNoise: c[6][i]})
+	}
+	return nil
+}
+
+func (o *Observation) readMean(f *fits.File, line int) error {
+	name := fmt.Sprintf("LINE%d_MEAN", line)
+	c, err := f.Cube(name)
+	if err != nil {
+		return err
+	}
+	where := fmt.Sprintf("%s[%s]", f.Name, name)
+	tunings := o.LineTunings(line)
+	if len(tunings) == 0 || c.Planes() != len(tunings) {
+		return fmt.Errorf("%s: %d planes, table TUNINGS has %d of line %d", where, c.Planes(), len(tunings), line)
+	}
+	g, err := readGrid(c.Header, c.Axes)
+	if err != nil {
+		return fmt.Errorf("%s: %w", where, err)
+	}
+	size := g.Nx * g.Ny
+	planes := make([][]float32, len(tunings))
+	for k := range planes {
+		planes[k] = make([]float32, size)
+		if err := c.ReadPlane(k, planes[k]); err != nil {
+			return err
+		}
+	}
+	if line == 1 {
+		o.Grid = g
+		o.Unit, _ = c.Header.Text("BUNIT")
+		if _, ok := c.Header.Get("TELAPSE"); !ok {
+			o.fillGrid(tunings)
+		}
+		o.Pixels = field(planes)
+		if len(o.Pixels) == 0 {
+			return fmt.Errorf("%s: no pixel is finite at every wavelength: the field is empty", where)
+		}
+	} else if !g.sameFrame(&o.Grid) {
+		return fmt.Errorf("%s: not on the grid of LINE1_MEAN", where)
+	}
+	o.Mean[line-1] = make([][]float32, len(tunings))
+	for k, plane := range planes {
+		o.Mean[line-1][k] = make([]float32, len(o.Pixels))
+		for i, p := range o.Pixels {
+			o.Mean[line-1][k][i] = plane[p]
+		}
+	}
+	return nil
+}
+
+// fillGrid takes from the tables what a stripped header has lost.
+func (o *Observation) fillGrid(tunings []Tuning) {
+	if o.Grid.RestWavelength == 0 {
+		o.Grid.RestWavelength = tunings[0].Wavelength - tunings[0].Offset
+	}
+	es := o.LineExposures(1)
+	if len(es) == 0 {
+		return
+	}
+	last := es[len(es)-1]
+	if o.Grid.Exposure == 0 {
+		o.Grid.Exposure = es[0].Exposure
+	}
+	if o.Grid.Duration == 0 {
+		o.Grid.Duration = last.Time + last.Exposure
+	}
+}
+
+// field returns the raster indices that are finite in every plane.
+func field(planes [][]float32) []int32 {
+	var pixels []int32
+	for p := range planes[0] {
+		finite := true
+		for _, plane := range planes {
+			// x - x is 0 for finite x only.
+			finite = finite && plane[p]-plane[p] == 0
+		}
+		if finite {
+			pixels = append(pixels, int32(p))
+		}
+	}
+	return pixels
+}
+
+func (o *Observation) readFrames(f *fits.File, line int) error {
+	name := "LINE" + strconv.Itoa(line)
+	found := false
+	for _, h := range f.HDUs {
+		found = found || h.Name == name && h.IsImage()
+	}
+	if !found {
+		return nil
+	}
+	in, err := f.Cube(name)
+	if err != nil {
+		return err
+	}
+	where := fmt.Sprintf("%s[%s]", f.Name, name)
+	tunings, exposures := len(o.LineTunings(line)), len(o.LineExposures(line))
+	if in.Axes[0] != o.Grid.Nx || in.Axes[1] != o.Grid.Ny || len(in.Axes) != 4 || in.Axes[2] != tunings || in.Axes[3] != exposures {
+		return fmt.Errorf("%s: axes %v; the grid and the tables TUNINGS and EXPOSURES ask for %d, %d, %d, %d", where, in.Axes, o.Grid.Nx, o.Grid.Ny, tunings, exposures)
+	}
+	c := NewCube(len(o.Pixels), tunings, exposures)
+	plane := make([]float32, o.Grid.Nx*o.Grid.Ny)
+	err = c.blocks(func(from, to int, planes [][]float32) error {
+		for i, values := range planes {
+			if err := in.ReadPlane(from*tunings+i, plane); err != nil {
+				return err
+			}
+			for i, p := range o.Pixels {
+				values[i] = plane[p]
+			}
+		}
+		for p := range c.Pixels {
+			for k := range c.Tunings {
+				series := c.Series(p, k)[from:to]
+				for j := range series {
+					series[j] = planes[j*tunings+k][p]
+				}
+			}
+		}
+		return nil
+	})
+	if err != nil {
+		return err
+	}
+	o.Frames[line-1] = c
+	return nil
+}
