@@ -84,7 +84,8 @@ func (d *decoder) checkStruct(v reflect.Value, path string) {
 	}
 	for _, g := range order {
 		if groups[g] != 1 && !broken[g] {
-			d.wrong(path, "exactly one of %s must be given", members(fs, g))
+			d.pos.failed[path] = true
+			d.problems = append(d.problems, d.pos.Problem(path, "exactly one of %s must be given", members(fs, g)))
 		}
 	}
 }
