@@ -127,8 +127,8 @@ type Exposure struct {
 	Time       float64 // of the frame since the start [s]
 	Exposure   float64 // exposure of one tuning, co-adds included [s]
 	Electrons  float64 // detected electrons per unit radiance in one pixel and tuning; 0: noise not known
-	Background float64 // continuum background that was subtracted [unit of the frames]
-	ReadNoise  float64 // rms [electrons], co-adds included
+	Background float64 // continuum that was measured as long and subtracted: its photon noise counts twice [unit of the frames]
+	ReadNoise  float64 // rms of tuning and background together [electrons], co-adds included
 }
 
 // A Cube holds the frames of one line for the pixels of the field, time fastest.
