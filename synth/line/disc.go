@@ -16,6 +16,14 @@ func Dilution(r float64) float64 {
 // A law is a limb-darkening law I(mu)/I(1) = sum of law[i] mu^i.
 type law []float64
 
+func (l law) at(mu float64) float64 {
+	v := 0.0
+	for i := len(l) - 1; i >= 0; i-- {
+		v = v*mu + l[i]
+	}
+	return v
+}
+
 // nodes for the mean intensity far from the Sun, where the integrand is smooth.
 var farNodes, farWeights = func() (x, w []float64) {
 	x, w = make([]float64, 24), make([]float64, 24)
@@ -42,11 +50,7 @@ func (l law) meanIntensity(r float64) float64 {
 		// nearest singularities mu = +-ia are now far off and quadrature is exact
 		// to rounding.
 		for k, mu := range farNodes {
-			v := 0.0
-			for i := len(l) - 1; i >= 0; i-- {
-				v = v*mu + l[i]
-			}
-			sum += farWeights[k] * v * mu / math.Sqrt(mu*mu+a2)
+			sum += farWeights[k] * l.at(mu) * mu / math.Sqrt(mu*mu+a2)
 		}
 		return sum / (2 * r)
 	}

@@ -10,24 +10,20 @@ import (
 // at most 1/8; cubic interpolation in four points errs by (3/128) h^4 of it.
 // TestTable measures what results.
 const (
-	tableDensity     = 0.2                // ln n: (3/128) h^4 / 8 = 5e-6
-	tableTemperature = 0.0125 * math.Ln10 // ln T
-	tableHeight      = 0.045              // heightCoordinate
+	tableDensity     = 0.25               // ln n: (3/128) h^4 / 8 = 1.1e-5
+	tableTemperature = 0.0125 * math.Ln10 // ln T; the ion fraction asks for it
+	tableHeight      = 0.05               // heightCoordinate
 )
 
-// heightCoordinate is x = sqrt(-ln 2W), W the dilution factor: 0 at the surface.
-// Populations depend on height through ln W; near the surface W itself is
-// (1 - s)/2 with s = sqrt(1 - 1/r^2), and the mean intensity of the darkened disc
-// has a term s^2 ln s. In x both are smooth.
+// heightCoordinate is x = (r^2 - 1)^(1/4). The populations depend on height
+// through ln J. Near the surface J has terms in s = sqrt(1 - 1/r^2) and s^2 ln s,
+// which are smooth in the square root of s; far out ln J tends to -4 ln x.
 func heightCoordinate(r float64) float64 {
-	return math.Sqrt(-math.Log(2 * Dilution(r)))
+	return math.Sqrt(math.Sqrt((r - 1) * (r + 1)))
 }
 
 // heightOf is the inverse of heightCoordinate.
-func heightOf(x float64) float64 {
-	s := -math.Expm1(-x * x) // 1 - 2W
-	return 1 / math.Sqrt((1-s)*(1+s))
-}
+func heightOf(x float64) float64 { return math.Sqrt(1 + x*x*x*x) }
 
 // An axis is a uniform grid of at least four points, or of one.
 type axis struct {
@@ -71,9 +67,7 @@ type Table struct {
 	rng     Range
 	n, t, x axis
 	flat    bool      // one temperature
-	lnJ     []float64 // ln of population times power of the two lines: temperature, height, density, line
-	ions    curve     // ln of the ion fraction
-	lnIons  float64   // ln of n_iron/n_e; at one temperature with the ion fraction
+	lnJ     []float64 // ln of j/n of the two lines: temperature, height, density, line
 }
 
 // Table tabulates the model over a range; a range of one temperature makes a
@@ -90,16 +84,14 @@ func (m *Model) Table(over Range) (*Table, error) {
 			return nil, err
 		}
 	}
-	t := &Table{rng: over, ions: m.ions, flat: over.Temperature[0] == over.Temperature[1]}
+	t := &Table{rng: over, flat: over.Temperature[0] == over.Temperature[1]}
 	// The rates may be solved a little outside the range of densities, and at any
 	// greater height, so those ends are padded and every cell has a centred
 	// stencil. There are no rates outside the range of temperatures.
 	t.n = newAxis(math.Log(over.Density[0]), math.Log(over.Density[1]), tableDensity, 1, 1)
 	t.x = newAxis(heightCoordinate(over.Height[0]), heightCoordinate(over.Height[1]), tableHeight, 0, 1)
-	t.lnIons = math.Log(m.hydrogen) + (m.opt.Iron-12)*math.Ln10
 	if t.flat {
 		t.t = axis{lo: math.Log(over.Temperature[0]), n: 1}
-		t.lnIons += math.Log(m.IonFraction(over.Temperature[0]))
 	} else {
 		lo, hi := math.Log(over.Temperature[0]), math.Log(over.Temperature[1])
 		// A short range still gets four points: they reach back into the model's range.
@@ -116,12 +108,13 @@ func (m *Model) Table(over Range) (*Table, error) {
 	for i := range t.t.n {
 		temp := min(max(math.Exp(t.t.at(i)), m.rng.Temperature[0]), m.rng.Temperature[1])
 		m.coefficients(temp, c)
+		ions := m.ionsPerElectron(temp)
 		for k := range t.x.n {
 			j := m.MeanIntensity(heightOf(t.x.at(k)))
 			for l := range t.n.n {
 				m.solve(math.Exp(t.n.at(l)), c, j, work, p)
-				t.lnJ[at] = math.Log(m.PerIon(0, p))
-				t.lnJ[at+1] = math.Log(m.PerIon(1, p))
+				t.lnJ[at] = math.Log(ions * m.PerIon(0, p))
+				t.lnJ[at+1] = math.Log(ions * m.PerIon(1, p))
 				at += 2
 			}
 		}
@@ -140,31 +133,32 @@ func (t *Table) Emissivities(n, temp, r float64) (j1, j2 float64) {
 	ln := math.Log(n)
 	in, wn := t.n.stencil(ln)
 	ix, wx := t.x.stencil(heightCoordinate(r))
-	s := ln + t.lnIons
-	var a, b float64
-	if t.flat {
-		a, b = t.plane(ix*t.n.n+in, &wn, &wx)
-	} else {
-		lt := math.Log(temp)
-		it, wt := t.t.stencil(lt)
-		for i, w := range wt {
-			y, z := t.plane(((it+i)*t.x.n+ix)*t.n.n+in, &wn, &wx)
-			a += w * y
-			b += w * z
+	at, wt, temps := ix*t.n.n+in, [4]float64{1}, 1
+	if !t.flat {
+		var it int
+		it, wt = t.t.stencil(math.Log(temp))
+		at += it * t.x.n * t.n.n
+		temps = 4
+	}
+	// Sum over temperature and height first: eight independent chains of sums, two
+	// lines at four densities.
+	var v0, v1, v2, v3, v4, v5, v6, v7 float64
+	for i := range temps {
+		for k := range wx {
+			w := wt[i] * wx[k]
+			y := (*[8]float64)(t.lnJ[2*(at+k*t.n.n):])
+			v0 += w * y[0]
+			v1 += w * y[1]
+			v2 += w * y[2]
+			v3 += w * y[3]
+			v4 += w * y[4]
+			v5 += w * y[5]
+			v6 += w * y[6]
+			v7 += w * y[7]
 		}
-		at := cursor{x: lt * (1 / math.Ln10)}
-		s += at.at(&t.ions)
+		at += t.x.n * t.n.n
 	}
-	return math.Exp(s + a), math.Exp(s + b)
-}
-
-// plane interpolates in height and density from the point with index at.
-func (t *Table) plane(at int, wn, wx *[4]float64) (a, b float64) {
-	for _, w := range wx {
-		v := t.lnJ[2*at : 2*at+8 : 2*at+8]
-		a += w * (wn[0]*v[0] + wn[1]*v[2] + wn[2]*v[4] + wn[3]*v[6])
-		b += w * (wn[0]*v[1] + wn[1]*v[3] + wn[2]*v[5] + wn[3]*v[7])
-		at += t.n.n
-	}
-	return a, b
+	a := wn[0]*v0 + wn[1]*v2 + wn[2]*v4 + wn[3]*v6
+	b := wn[0]*v1 + wn[1]*v3 + wn[2]*v5 + wn[3]*v7
+	return math.Exp(ln + a), math.Exp(ln + b)
 }
