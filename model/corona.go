@@ -43,6 +43,7 @@ type Corona struct {
 
 // A Point is the corona at one position.
 type Point struct {
+	R     float64 // distance from the Sun's centre [solar radii]
 	N     float64 // electron density [cm^-3]
 	Kink  float64 // electron density that the kink wave feels [cm^-3]
 	T     float64 // [K]
@@ -172,7 +173,7 @@ func (c *Corona) At(p r3.Vec) Point {
 	ct := p.Z / r
 	theta := math.Acos(ct)
 	br, bt := c.field.Meridional(r, theta)
-	var q Point
+	q := Point{R: r}
 	q.B = cartesian(p, r, br, bt)
 	q.Line = c.lines.at(c, r, theta)
 	q.Streamer = c.share(q.Line.latitude())

@@ -319,3 +319,30 @@ func family(a, b *traced, ends int) bool {
 	}
 	return true
 }
+
+// LongestDelay returns the longest travel time [s] of a train that a sample may ask
+// for: from the first end of its line and, if asked, from the far end of a closed
+// line or from the launch radius of inward trains.
+func (c *Corona) LongestDelay(farEnd, inward bool) float64 {
+	longest := 0.0
+	for i := range c.lines.node {
+		n := &c.lines.node[i]
+		closed := n.closes && n.apex <= c.closedBelow
+		longest = math.Max(longest, finite(n.tau[0]))
+		// A neighbour of a closed line's node may be closed, so high lines count too.
+		if n.closes && n.apex <= 1.3*c.closedBelow && (farEnd || closed) {
+			longest = math.Max(longest, finite(n.tau[1]))
+		}
+		if inward && !closed {
+			longest = math.Max(longest, n.top)
+		}
+	}
+	return longest
+}
+
+func finite(x float64) float64 {
+	if math.IsNaN(x) {
+		return 0
+	}
+	return x
+}

@@ -200,6 +200,7 @@ func (b *body) end() error {
 		if _, err := b.Write(make([]byte, blockSize-r)); err != nil {
 			return err
 		}
+		b.left = 0
 	}
 	data := b.data.value()
 	b.header.Set("DATASUM", strconv.FormatUint(uint64(data), 10), "of the data")

@@ -1,0 +1,14 @@
+// Package synth makes the DATA that a coronagraph would record of a known corona,
+// and, apart from it, the TRUTH.
+//
+//  1. A pixel of the image grid (package obs) is a ray along x through the corona;
+//     ray.go places its samples.
+//  2. At each sample the model gives field, density, temperature and field line
+//     (package model), the atomic model the emissivities (package line), the driver
+//     the trains of waves that pass (package wave).
+//  3. truth.go turns the samples into the truth maps: values on the plane of the sky
+//     and means weighted by emission and by wave power.
+//  4. light.go adds up, frame by frame, the light of every sample through every filter
+//     tuning, Doppler shifted by its own velocity (package kernel).
+//  5. The camera (package camera) spreads and exposes it: the Observation.
+package synth

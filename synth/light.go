@@ -1,0 +1,98 @@
+package synth
+
+import (
+	"math"
+
+	"offplane/synth/filter"
+	"offplane/synth/kernel"
+)
+
+// A lamp adds up the light of the samples of one ray over the frames. It holds the
+// scratch space of one worker.
+type lamp struct {
+	c      *Scene
+	frames int
+	second []int // frames at which the second line is exposed
+
+	velocity []float32
+	atSecond []float32
+	rows     [][]float32
+	coef     []float32
+	delay    []float64
+	trains   []train
+	acc      [2][][]float64 // line, tuning, frame
+}
+
+func (c *Scene) newLamp(second []int) *lamp {
+	l := &lamp{c: c, frames: Frames(c.s), second: second}
+	l.velocity = make([]float32, l.frames)
+	l.atSecond = make([]float32, len(second))
+	l.delay = make([]float64, c.Driver.Rank())
+	for range c.tunings[0] {
+		l.acc[0] = append(l.acc[0], make([]float64, l.frames))
+		l.acc[1] = append(l.acc[1], make([]float64, len(second)))
+	}
+	return l
+}
+
+// shine fills acc with the radiance [erg cm^-2 s^-1 sr^-1] of a ray through every
+// tuning: the sum over samples of each sample's own Gaussian, shifted by its own
+// velocity, through the filter. Nothing is expanded; the exponential of package
+// kernel is good to 3e-7, and the velocity to wave.Tolerance.
+func (l *lamp) shine(ray []sample) {
+	for line := range 2 {
+		for _, a := range l.acc[line] {
+			clear(a)
+		}
+	}
+	c := l.c
+	for i := range ray {
+		s := &ray[i]
+		l.move(s)
+		for t, f := range l.second {
+			l.atSecond[t] = l.velocity[f]
+		}
+		wf := c.filter
+		for line := range 2 {
+			v := l.velocity
+			if line == 1 {
+				v = l.atSecond
+				wf *= c.light.Rest[0] / c.light.Rest[1] // one filter in nm is two in km/s
+			}
+			// Peak transmission times the share of the line that passes: filter.Gaussian at
+			// the line's own centre.
+			amp := s.j[line] * s.dx * filter.Gaussian(0, 0, s.width, wf)
+			inv := float32(1 / math.Hypot(s.width, wf))
+			for k, d := range c.tunings[line] {
+				kernel.Profile(l.acc[line][k], v, amp, float32(d), inv)
+			}
+		}
+	}
+}
+
+// move fills velocity with the Doppler velocity [km/s] of a sample at every frame: the
+// sum over its trains, polarisations and the sites around their footpoints.
+func (l *lamp) move(s *sample) {
+	d := l.c.Driver
+	n := d.RowLength()
+	l.rows, l.coef = l.rows[:0], l.coef[:0]
+	l.trains = l.c.trains(&s.point, s.azimuth, l.trains)
+	for i := range l.trains {
+		t := &l.trains[i]
+		at := d.Coefficients(l.delay, t.tau, 0)
+		for _, site := range d.Footpoint(t.colatitude, t.azimuth) {
+			for pol, a := range s.los {
+				k := a * t.factor * site.Weight
+				if math.Abs(k) < 1e-6 { // [km/s]
+					continue
+				}
+				rows := d.Rows(site.ID, pol, t.dir)
+				for r, x := range l.delay {
+					l.rows = append(l.rows, rows[r*n+at:r*n+at+l.frames])
+					l.coef = append(l.coef, float32(k*x))
+				}
+			}
+		}
+	}
+	kernel.Combine(l.velocity, l.rows, l.coef)
+}

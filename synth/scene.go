@@ -1,0 +1,266 @@
+package synth
+
+import (
+	"context"
+	"fmt"
+	"math"
+	"slices"
+
+	"gonum.org/v1/gonum/spatial/r3"
+
+	"offplane/model"
+	"offplane/scenarios"
+	"offplane/scenarios/units"
+	"offplane/synth/filter"
+	"offplane/synth/line"
+	"offplane/synth/obs"
+	"offplane/synth/wave"
+)
+
+// Light is what the synthesis needs to know of the spectral lines.
+type Light struct {
+	line.Emitter
+	Rest [2]float64 // rest wavelengths in vacuum [nm]
+	Disc [2]float64 // disc-centre continuum [erg cm^-2 s^-1 sr^-1 A^-1]
+	Mass float64    // of the ion [g]
+}
+
+// A Scene is a corona in front of a camera, ready to be looked at along any ray. It
+// is safe for concurrent use.
+type Scene struct {
+	Grid   obs.Grid
+	Corona *model.Corona
+	Driver *wave.Driver
+
+	s         *scenarios.Scenario
+	light     Light
+	view      model.View
+	longitude float64 // of the observer [rad]
+	cell      float64 // [solar radii]
+	longest   float64 // travel time of any train [s]
+	band      bandTable
+	filter    float64      // 1/e half-width [km/s], first line; the second scales
+	tunings   [2][]float64 // Doppler offsets [km/s] per line
+}
+
+// kms is one km/s in cgs.
+const kms = 1e5
+
+// NewScene builds the corona, traces its field lines and prepares the driver.
+func NewScene(ctx context.Context, s *scenarios.Scenario, light Light, workers int) (*Scene, error) {
+	outer := math.Hypot(float64(s.Image.Outer), float64(s.Sight.Reach)) + 0.1
+	if s.Sight.Plane {
+		outer = float64(s.Image.Outer) + 0.1
+	}
+	corona, err := model.New(ctx, s.Corona, model.Settings{Outer: outer, InwardFrom: float64(s.Waves.InwardFrom), Workers: workers})
+	if err != nil {
+		return nil, err
+	}
+	c := &Scene{
+		Grid: NewGrid(s, light.Rest[0]), Corona: corona,
+		s: s, light: light, view: model.NewView(s.Observer.Latitude.Rad()),
+		longitude: s.Observer.Longitude.Rad(), cell: s.Waves.Cell.Rsun(),
+	}
+	for l := range 2 {
+		toKms := units.LightSpeed / kms / light.Rest[l]
+		for _, t := range s.Camera.Tunings {
+			c.tunings[l] = append(c.tunings[l], float64(t)*toKms)
+		}
+	}
+	c.filter = filter.EFolding(float64(s.Camera.Filter)) * units.LightSpeed / kms / light.Rest[0]
+	// Lines traced between the nodes of the model's table may take a little longer.
+	c.longest = 1.02*corona.LongestDelay(s.Waves.FarEnd, s.Waves.Inward > 0) + 60
+	sp := s.Waves.Spectrum
+	c.Driver, err = wave.NewDriver(wave.Settings{
+		Seed: s.Seed, Cell: c.cell,
+		Spectrum: wave.Spectrum{Slope: sp.Slope, Floor: sp.Floor, Bump: sp.Bump, At: sp.BumpAt.Hz(), Width: sp.BumpWidth, Low: sp.Low.Hz(), High: sp.High.Hz()},
+		Damping:  s.Waves.Damping,
+		Cadence:  float64(s.Camera.Cadence), Frames: Frames(s),
+		MaxDelay: c.longest,
+	})
+	if err != nil {
+		return nil, err
+	}
+	c.band = newBandTable(c.Driver, s.Inversion.Filter, c.longest)
+	return c, nil
+}
+
+// Frames returns the number of frames of the first line.
+func Frames(s *scenarios.Scenario) int {
+	return int(math.Floor(float64(s.Camera.Duration)/float64(s.Camera.Cadence) + 1e-9))
+}
+
+// NewGrid returns the image grid of a scenario: the smallest that holds the field of
+// view and its margins, with the disc centre on a corner of four pixels.
+func NewGrid(s *scenarios.Scenario, rest float64) obs.Grid {
+	g := obs.Grid{
+		Pixel: float64(s.Image.Pixel), Roll: float64(s.Image.Roll),
+		Distance: s.Observer.Distance.Rsun(), Latitude: float64(s.Observer.Latitude), Longitude: float64(s.Observer.Longitude),
+		Start: s.Observer.Start.Time, Duration: float64(s.Camera.Duration), Exposure: float64(s.Camera.Exposure),
+		RestWavelength: rest,
+	}
+	// Corners of the field in the image frame, pixels from the disc centre: sampled
+	// along the rim of the wedge, generously.
+	step := g.Step()
+	roll := g.Roll * math.Pi / 180
+	lo := [2]float64{math.Inf(1), math.Inf(1)}
+	hi := [2]float64{math.Inf(-1), math.Inf(-1)}
+	from, to := float64(s.Image.From), float64(s.Image.To)
+	for i := range 1001 {
+		pa := (from + (to-from)*float64(i)/1000) * math.Pi / 180
+		for _, r := range []float64{float64(s.Image.Inner), float64(s.Image.Outer)} {
+			// West is -PA: y = -r sin PA, z = r cos PA, turned back by the roll.
+			y, z := -r*math.Sin(pa), r*math.Cos(pa)
+			u := [2]float64{(y*math.Cos(roll) + z*math.Sin(roll)) / step, (-y*math.Sin(roll) + z*math.Cos(roll)) / step}
+			for k := range 2 {
+				lo[k], hi[k] = min(lo[k], u[k]), max(hi[k], u[k])
+			}
+		}
+	}
+	const margin = 3
+	x0, y0 := math.Floor(lo[0])-margin, math.Floor(lo[1])-margin
+	g.Nx, g.Ny = int(math.Ceil(hi[0])+margin-x0), int(math.Ceil(hi[1])+margin-y0)
+	g.CentreX, g.CentreY = 0.5-x0, 0.5-y0
+	return g
+}
+
+// Field returns the raster indices of the pixels whose centres lie in the field of
+// view, ascending.
+func Field(g *obs.Grid, s *scenarios.Scenario) []int32 {
+	from, to := float64(s.Image.From), float64(s.Image.To)
+	var ps []int32
+	for iy := range g.Ny {
+		for ix := range g.Nx {
+			r, pa := g.Polar(ix, iy)
+			if r < float64(s.Image.Inner) || r > float64(s.Image.Outer) {
+				continue
+			}
+			if math.Mod(math.Mod(pa-from, 360)+360, 360) <= to-from {
+				ps = append(ps, int32(iy*g.Nx+ix))
+			}
+		}
+	}
+	return ps
+}
+
+// A bandTable holds the variance of a train within the inversion's band, over its
+// undamped variance, against its travel time.
+type bandTable struct {
+	step float64
+	v    []float64
+}
+
+func newBandTable(d *wave.Driver, b scenarios.Band, longest float64) bandTable {
+	w := b.Width.Hz()
+	if b.Means == "sigma" {
+		w *= math.Sqrt2 // to the 1/e half-width
+	}
+	h := func(f float64) float64 { x := (f - b.Centre.Hz()) / w; return math.Exp(-x * x) }
+	t := bandTable{step: 10}
+	for i := range int(longest/t.step) + 3 {
+		t.v = append(t.v, d.BandVariance(float64(i)*t.step, h))
+	}
+	return t
+}
+
+func (t *bandTable) at(tau float64) float64 {
+	u := tau / t.step
+	i := min(max(int(u), 0), len(t.v)-2)
+	return t.v[i] + (u-float64(i))*(t.v[i+1]-t.v[i])
+}
+
+// A train is one train of waves passing a sample.
+type train struct {
+	colatitude, azimuth float64 // of the footpoint that addresses it [rad]
+	tau                 float64 // travel time [s]
+	dir                 int     // wave.Outward or wave.Inward
+	factor              float64 // amplitude over the outward train's, before damping
+}
+
+// trains lists the trains that pass the point. A train that took longer than any on
+// the model's table came past a null of the field, where waves do not pass: left out.
+func (c *Scene) trains(p *model.Point, azimuth float64, dst []train) []train {
+	dst = dst[:0]
+	az := azimuth + c.longitude
+	l := &p.Line
+	if !math.IsNaN(l.Foot[0]) {
+		dst = append(dst, train{l.Foot[0], az, l.Tau[0], wave.Outward, 1})
+	}
+	switch {
+	case l.Closed && c.s.Waves.FarEnd:
+		dst = append(dst, train{l.Foot[1], az, l.Tau[1], wave.Outward, 1})
+	case l.Closed && l.Tau[1] < l.Tau[0]: // one train a line: that of the nearer end
+		dst[0] = train{l.Foot[1], az, l.Tau[1], wave.Outward, 1}
+	case !l.Closed && c.s.Waves.Inward > 0 && l.TauTop >= 0 && len(dst) > 0:
+		dst = append(dst, train{l.Foot[0], az, l.TauTop, wave.Inward, math.Sqrt(c.s.Waves.Inward)})
+	}
+	return slices.DeleteFunc(dst, func(t train) bool { return !(t.tau <= c.longest) })
+}
+
+// amplitude returns the rms speed [km/s] of one polarisation of an undamped outward
+// train at density n: WKB waves keep their energy flux, v ~ n^(-1/4) (observed:
+// Doyle, Banerjee & Perez 1998, Sol. Phys. 181, 91). The reference density is one
+// for all lines.
+func (c *Scene) amplitude(n float64) float64 {
+	a := float64(c.s.Waves.Amplitude)
+	if c.s.Waves.Growth == "none" {
+		return a
+	}
+	return a * math.Pow(n/float64(c.s.Waves.AtDensity), -0.25)
+}
+
+// width returns the 1/e half-width of a line [km/s] without the filter's: thermal
+// motion and unresolved motions, which scale like the waves.
+func (c *Scene) width(p *model.Point) float64 {
+	xi := float64(c.s.Corona.Nonthermal) * kms * math.Pow(p.N/float64(c.s.Waves.AtDensity), -0.25)
+	return line.Width(c.light.Mass, p.T, xi) / kms
+}
+
+// A sample is one point of a ray.
+type sample struct {
+	x       float64 // toward the observer [solar radii]
+	dx      float64 // its share of the ray [cm]
+	point   model.Point
+	azimuth float64    // of the point in the solar frame [rad]
+	sky     float64    // plane-of-sky component of the unit vector along B
+	angle   float64    // of B on the sky [rad], counter-clockwise from north
+	bSky    float64    // plane-of-sky component of B [G]
+	j       [2]float64 // emissivities [erg cm^-3 s^-1 sr^-1]
+	width   float64    // of the lines [km/s]
+	los     [2]float64 // Doppler velocity [km/s] of unit motion in each polarisation
+}
+
+// sampleAt evaluates the corona at (x, y, z) of the observer's frame.
+func (c *Scene) sampleAt(x, dx, y, z float64) sample {
+	pos := c.view.ToSun(r3.Vec{X: x, Y: y, Z: z})
+	s := sample{x: x, dx: dx, point: c.Corona.At(pos), azimuth: math.Atan2(pos.Y, pos.X)}
+	p := &s.point
+	b := c.view.ToSky(p.B)
+	bSky := math.Hypot(b.Y, b.Z)
+	s.bSky = bSky
+	s.sky = bSky / r3.Norm(b)
+	s.angle = math.Atan2(-b.Y, b.Z)
+	s.j[0], s.j[1] = c.light.Emissivities(p.N, p.T, r3.Norm(pos))
+	s.width = c.width(p)
+	e1, e2 := model.Frame(pos, p.B)
+	a := c.amplitude(p.N)
+	// Doppler velocity is positive away from the observer.
+	s.los = [2]float64{-a * c.view.ToSky(e1).X, -a * c.view.ToSky(e2).X}
+	return s
+}
+
+// inBand returns the variance [km^2/s^2] of the Doppler velocity of one train within
+// the inversion's band.
+func (c *Scene) inBand(s *sample, t *train) float64 {
+	a := s.los[0]*s.los[0] + s.los[1]*s.los[1]
+	return a * t.factor * t.factor * c.band.at(t.tau)
+}
+
+// A darkError says that the atomic data end before the ray may.
+type darkError struct {
+	n, t, r float64
+}
+
+func (e *darkError) Error() string {
+	return fmt.Sprintf("the line data give no emissivity at n_e = %.3g cm^-3, T = %.3g K, r = %.3g solar radii, where light still counts: change corona or sight.reach", e.n, e.t, e.r)
+}

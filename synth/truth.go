@@ -1,0 +1,236 @@
+package synth
+
+import (
+	"math"
+
+	"gonum.org/v1/gonum/spatial/r3"
+
+	"offplane/model"
+	"offplane/synth/obs"
+)
+
+// Truth is what the corona really was, as maps on the image grid.
+type Truth struct {
+	Grid obs.Grid
+	Maps obs.Maps
+}
+
+// truthMaps lists the maps in file order.
+var truthMaps = []obs.Map{
+	{Name: "B_SKY", Unit: "G", About: "field component in the plane of the sky, at x = 0"},
+	{Name: "B_EMIS", Unit: "G", About: "field component in the plane of the sky, mean weighted by emission"},
+	{Name: "B_WAVE", Unit: "G", About: "field component in the plane of the sky, mean weighted by wave power"},
+	{Name: "BTOT_SKY", Unit: "G", About: "field strength at x = 0"},
+	{Name: "NE_SKY", Unit: "cm-3", About: "electron density at x = 0"},
+	{Name: "NE_EMIS", Unit: "cm-3", About: "electron density, mean weighted by emission"},
+	{Name: "NE_KINK", Unit: "cm-3", About: "electron density that the wave feels at x = 0"},
+	{Name: "SPEED_SKY", Unit: "km/s", About: "kink speed at x = 0 projected on the sky, no flow"},
+	{Name: "SPEED_WAVE", Unit: "km/s", About: "1/mean(1/projected kink speed), weighted by wave power"},
+	{Name: "ANGLE_SKY", Unit: "deg", About: "direction of the field on the sky at x = 0, from north"},
+	{Name: "DEPTH50", Unit: "solRad", About: "half-depth that holds 50 % of the emission"},
+	{Name: "DEPTH90", Unit: "solRad", About: "half-depth that holds 90 % of the emission"},
+	{Name: "NEAR_SKY", About: "share of the emission within 0.1 solar radii of x = 0"},
+	{Name: "DOPPLER_LOCAL", Unit: "km/s", About: "rms in-band line-of-sight wave speed at x = 0"},
+	{Name: "STRUCTURE", About: "class of the field line at x = 0", Codes: []obs.Code{
+		{Value: model.Closed, Name: "closed", About: "both ends on the surface"},
+		{Value: model.Open, Name: "open", About: "open field line"},
+		{Value: model.Sheet, Name: "sheet", About: "open, in the streamer around the current sheet"},
+		{Value: model.ActiveRegion, Name: "active", About: "active region"},
+	}},
+}
+
+// newTruth returns empty truth maps.
+func newTruth(g obs.Grid) *Truth {
+	t := &Truth{Grid: g, Maps: make(obs.Maps, len(truthMaps))}
+	copy(t.Maps, truthMaps)
+	for i := range t.Maps {
+		m := &t.Maps[i]
+		if m.Name == "STRUCTURE" {
+			m.Ints = make([]int32, g.Nx*g.Ny)
+			continue
+		}
+		m.Data = make([]float32, g.Nx*g.Ny)
+		for p := range m.Data {
+			m.Data[p] = float32(math.NaN())
+		}
+	}
+	return t
+}
+
+// set fills the truth of one pixel from its ray; values in the order of truthMaps.
+func (t *Truth) set(pixel int32, v []float64, structure int32) {
+	for i := range v {
+		t.Maps[i].Data[pixel] = float32(v[i])
+	}
+	t.Maps[len(v)].Ints[pixel] = structure
+}
+
+// nearPlane is the half-depth of NEAR_SKY [solar radii].
+const nearPlane = 0.1
+
+// Weights are the shares of the samples of a ray in the means: each sums to one.
+type Weights struct {
+	Emission []float64 // radiance of the 1074.7 nm line
+	Wave     []float64 // wave power, see waveWeights
+}
+
+func (c *Scene) weights(ray []sample) Weights {
+	e := make([]float64, len(ray))
+	for i := range ray {
+		e[i] = ray[i].j[0] * ray[i].dx
+	}
+	w := c.waveWeights(ray)
+	normalise(e)
+	normalise(w)
+	return Weights{e, w}
+}
+
+func normalise(w []float64) {
+	sum := 0.0
+	for _, x := range w {
+		sum += x
+	}
+	if sum == 0 {
+		return
+	}
+	for i := range w {
+		w[i] /= sum
+	}
+}
+
+// waveWeights returns the weight of each sample in the wave that a pixel shows: for
+// many independent cells along the ray, powers add, so that the weight per length is
+// emissivity^2 times the in-band power of the line-of-sight velocity times the length
+// over which the wave is coherent along the ray (derived; for a sphere of widening
+// cells it gives W(Q)/W(Q+k) with Q = 2 p a - 2). That length is one cell over the
+// distance that the footpoint moves per length along the ray.
+func (c *Scene) waveWeights(ray []sample) []float64 {
+	w := make([]float64, len(ray))
+	if len(ray) == 1 {
+		w[0] = 1
+		return w
+	}
+	var ts []train
+	for i := range ray {
+		s := &ray[i]
+		a, b := &ray[max(i-1, 0)], &ray[min(i+1, len(ray)-1)]
+		ts = c.trains(&s.point, s.azimuth, ts)
+		power := 0.0
+		for k := range ts {
+			t := &ts[k]
+			end := 0
+			if s.point.Line.Closed && t.colatitude == s.point.Line.Foot[1] {
+				end = 1
+			}
+			power += c.inBand(s, t) * c.coherent(a, b, end)
+		}
+		w[i] = s.j[0] * s.j[0] * s.dx * power
+	}
+	return w
+}
+
+// coherent returns the length [solar radii] along the ray over which footpoints stay
+// within one cell, from the neighbours a and b of a sample.
+func (c *Scene) coherent(a, b *sample, end int) float64 {
+	dx := math.Abs(b.x - a.x)
+	moved := footDistance(a, b, end)
+	if math.IsNaN(moved) { // the class changes here: both neighbours have a first foot at least
+		moved = footDistance(a, b, 0)
+	}
+	if !(moved > 0) {
+		return float64(c.s.Sight.Reach)
+	}
+	return min(c.cell*dx/moved, float64(c.s.Sight.Reach))
+}
+
+// footDistance returns the angle [rad] between two samples' footpoints.
+func footDistance(a, b *sample, end int) float64 {
+	u := footVector(a.point.Line.Foot[end], a.azimuth)
+	v := footVector(b.point.Line.Foot[end], b.azimuth)
+	return 2 * math.Asin(min(r3.Norm(r3.Sub(u, v))/2, 1))
+}
+
+func footVector(colatitude, azimuth float64) r3.Vec {
+	st, ct := math.Sincos(colatitude)
+	sa, ca := math.Sincos(azimuth)
+	return r3.Vec{X: st * ca, Y: st * sa, Z: ct}
+}
+
+// truthOf returns the truth of one pixel, in the order of truthMaps, and its class.
+func (c *Scene) truthOf(ray []sample) ([]float64, int32) {
+	w := c.weights(ray)
+	var sky *sample
+	for i := range ray {
+		if ray[i].x == 0 {
+			sky = &ray[i]
+		}
+	}
+	var bEmis, bWave, nEmis, slow float64
+	for i := range ray {
+		s := &ray[i]
+		bEmis += w.Emission[i] * s.bSky
+		nEmis += w.Emission[i] * s.point.N
+		bWave += w.Wave[i] * s.bSky
+		slow += w.Wave[i] / (s.point.Speed * s.sky)
+	}
+	angle := math.Mod(sky.angle*180/math.Pi+360, 180)
+	p := &sky.point
+	var ts []train
+	local := 0.0
+	for _, t := range c.trains(p, sky.azimuth, ts) {
+		local += c.inBand(sky, &t)
+	}
+	return []float64{
+		sky.bSky, bEmis, bWave, r3.Norm(p.B),
+		p.N, nEmis, p.Kink,
+		p.Speed * sky.sky / kms, 1 / slow / kms,
+		angle,
+		depth(ray, w.Emission, 0.5), depth(ray, w.Emission, 0.9), shareWithin(ray, w.Emission, nearPlane),
+		math.Sqrt(local),
+	}, p.Structure()
+}
+
+// shareWithin returns the share of the emission at |x| < depth; each sample stands for
+// the stretch half-way to its neighbours.
+func shareWithin(ray []sample, e []float64, depth float64) float64 {
+	if len(ray) == 1 {
+		return 1
+	}
+	sum := 0.0
+	for i := range ray {
+		lo, hi := stretch(ray, i)
+		in := math.Min(hi, depth) - math.Max(lo, -depth)
+		if in > 0 {
+			sum += e[i] * in / (hi - lo)
+		}
+	}
+	return sum
+}
+
+func stretch(ray []sample, i int) (lo, hi float64) {
+	a, b := max(i-1, 0), min(i+1, len(ray)-1)
+	lo, hi = (ray[a].x+ray[i].x)/2, (ray[i].x+ray[b].x)/2
+	if a == i {
+		lo = 2*ray[i].x - hi
+	}
+	if b == i {
+		hi = 2*ray[i].x - lo
+	}
+	return lo, hi
+}
+
+// depth returns the half-depth [solar radii] that holds a share of the emission.
+func depth(ray []sample, e []float64, share float64) float64 {
+	if len(ray) == 1 {
+		return 0
+	}
+	lo, hi := 0.0, math.Max(-ray[0].x, ray[len(ray)-1].x)
+	for range 50 {
+		if m := (lo + hi) / 2; shareWithin(ray, e, m) < share {
+			lo = m
+		} else {
+			hi = m
+		}
+	}
+	return (lo + hi) / 2
+}
