@@ -1,6 +1,7 @@
 package invert
 
 import (
+	"fmt"
 	"math"
 
 	"offplane/scenarios/units"
@@ -16,27 +17,18 @@ func fieldStrength(v, vErr, n, nErr, mu float64) (b, err float64) {
 	return b, b * math.Hypot(vErr/v, nErr/(2*n))
 }
 
-// density returns the electron density [cm^-3] that gives the ratio of energies of
-// the second line to the first at the projected distance r [solar radii], and
-// d ln ratio / d ln n there. ok is false outside the range of the emitter.
-func density(e line.Emitter, ratio, t, r float64) (n, slope float64, ok bool) {
-	f := func(x float64) float64 {
-		j1, j2 := e.Emissivities(math.Exp(x), t, r)
-		return math.Log(j2/j1) - math.Log(ratio)
+// newInverter prepares the density for the heights of the field. Pixels inside the
+// limb get none.
+func newInverter(e line.Emitter, t float64, f *field) (*line.Inverter, error) {
+	low, high := math.Inf(1), 1.0
+	for p := range f.pixels {
+		ix, iy := f.at(p)
+		d, _ := f.grid.Polar(ix, iy)
+		low, high = min(low, d), max(high, d)
 	}
-	lo, hi := math.Log(1e6), math.Log(1e11)
-	a, b := f(lo), f(hi)
-	if !(a*b < 0) {
-		return 0, 0, false
+	inv, err := line.NewInverter(e, t, max(min(low, high), 1), high)
+	if err != nil {
+		return nil, fmt.Errorf("density at %.3g K from %.3f to %.3f solar radii: %w", t, low, high, err)
 	}
-	for range 60 {
-		m := (lo + hi) / 2
-		if c := f(m); a*c <= 0 {
-			hi = m
-		} else {
-			lo, a = m, c
-		}
-	}
-	x := (lo + hi) / 2
-	return math.Exp(x), (f(x+1e-3) - f(x-1e-3)) / 2e-3, true
+	return inv, nil
 }

@@ -242,7 +242,13 @@ func Invert(ctx context.Context, o *obs.Observation, e line.Emitter, opt Options
 		f.index[i] = int32(p)
 	}
 	r := &Result{Maps: mapsOf(&o.Grid, o.Unit), Series: obs.NewCube(np, 1, cube.Frames)}
-	run := &run{field: f, cube: cube, means: means, emitter: e, result: r, variance: make([]float64, np)}
+	run := &run{field: f, cube: cube, means: means, result: r, variance: make([]float64, np)}
+
+	if means[1] != nil {
+		if run.inverter, err = newInverter(e, opt.Temperature, f); err != nil {
+			return nil, err
+		}
+	}
 
 	workers = parallel.Workers(workers)
 	scratch := make([]*worker, workers)
@@ -314,7 +320,7 @@ type run struct {
 	*field
 	cube     *obs.Cube
 	means    [2]*means
-	emitter  line.Emitter
+	inverter *line.Inverter // nil without a second line
 	result   *Result
 	variance []float64 // white-noise variance of the Doppler series [(km/s)^2]; NaN: not known
 }
@@ -335,7 +341,7 @@ func (r *run) newWorker() *worker {
 		transform: newTransformer(r.band),
 		islands:   newIslander(r.field),
 		track:     tracker{field: r.field},
-		lags:      newLagger(r.band, r.opt, r.opt.Track, step),
+		lags:      newLagger(r.band, r.opt, r.opt.Track, step, 1/(lagSteps*r.opt.Centre)),
 		frame:     make([]float64, r.cube.Tunings),
 	}
 	for i, m := range r.means {
@@ -386,12 +392,12 @@ func (r *run) spectrum(w *worker, p int) {
 		r.set(mapRatio, p, ratio)
 		ix, iy := r.at(p)
 		dist, _ := r.grid.Polar(ix, iy)
-		if n, slope, ok := density(r.emitter, ratio, r.opt.Temperature, dist); ok {
+		if n, slope, why := r.inverter.Density(ratio, dist); why == line.Found {
 			r.set(mapDensity, p, n)
 			if a.noise.known && b.noise.known {
 				v := a.energyVariance(first, w.I[0], w.s2[0])/float64(a.noise.frames) +
 					b.energyVariance(second, w.I[1], w.s2[1])/float64(b.noise.frames)
-				r.set(mapDensityErr, p, n*math.Sqrt(v)/math.Abs(slope))
+				r.set(mapDensityErr, p, n*math.Abs(slope)*math.Sqrt(v))
 			}
 		} else {
 			r.flag[p] |= FlagDensity

@@ -14,6 +14,7 @@ type lagger struct {
 	*band
 	step   float64 // between points [km]
 	kzero  float64 // weight of zero wavenumber in the separation
+	power  float64 // of the coherence in the weights of the fit
 	pad    int
 	grid   float64 // step of the lag search [s]
 	reach  int     // lags searched, in steps either way
@@ -25,12 +26,13 @@ type lagger struct {
 }
 
 // A lag is that of one point of a track against its centre.
-type lag struct{ s, tau, coherence float64 } // [km, s]
+type lag struct{ s, tau, coherence, weight float64 } // [km, s]
 
-// points is the longest track, step the distance of its points [km].
-func newLagger(b *band, opt *Options, points int, step float64) *lagger {
-	l := &lagger{band: b, step: step, pad: opt.Padding, kzero: opt.KZero.weight(), kernel: map[int][]float32{}}
-	l.grid = 1 / (lagSteps * opt.Centre)
+// points is the longest track, step the distance of its points [km], grid the step
+// of the lag search [s]: the parabola's error is (2 pi f grid)^2/12 of the distance
+// to the nearest step, 0.3 % of at most half a step at lagSteps.
+func newLagger(b *band, opt *Options, points int, step, grid float64) *lagger {
+	l := &lagger{band: b, step: step, grid: grid, pad: opt.Padding, kzero: opt.KZero.weight(), power: 2, kernel: map[int][]float32{}}
 	longest := min(step*float64(points-1)/slowest, float64(b.frames)*b.cadence/4)
 	l.reach = max(int(longest/l.grid), 4)
 	l.phasor = make([]float32, (2*l.reach+1)*b.row)
@@ -149,7 +151,7 @@ func (l *lagger) speed(rows []float32, n, centre int) speed {
 	}
 	r.power = pc
 	omega := 2 * math.Pi * math.Sqrt(f2/pc)
-	l.fit = append(l.fit[:0], lag{0, 0, 1})
+	l.fit = append(l.fit[:0], lag{coherence: 1})
 	for _, way := range [2]int{1, -1} {
 		start := 0
 		for i := centre + way; i >= 0 && i < n; i += way {
@@ -175,7 +177,7 @@ func (l *lagger) speed(rows []float32, n, centre int) speed {
 				continue
 			}
 			start = m
-			l.fit = append(l.fit, lag{float64(i-centre) * l.step, tau, min(g, 1)})
+			l.fit = append(l.fit, lag{s: float64(i-centre) * l.step, tau: tau, coherence: min(g, 1)})
 		}
 	}
 	r.points = len(l.fit)
@@ -183,27 +185,26 @@ func (l *lagger) speed(rows []float32, n, centre int) speed {
 		return r
 	}
 	var w, ws, wt float64
-	for _, q := range l.fit {
-		g2 := q.coherence * q.coherence
-		w += g2
-		ws += g2 * q.s
-		wt += g2 * q.tau
+	for i := range l.fit {
+		q := &l.fit[i]
+		q.weight = math.Pow(q.coherence, l.power)
+		w += q.weight
+		ws += q.weight * q.s
+		wt += q.weight * q.tau
 	}
 	ws /= w
 	wt /= w
 	var sxx, sxy float64
 	for _, q := range l.fit {
-		g2 := q.coherence * q.coherence
-		sxx += g2 * (q.s - ws) * (q.s - ws)
-		sxy += g2 * (q.s - ws) * (q.tau - wt)
+		sxx += q.weight * (q.s - ws) * (q.s - ws)
+		sxy += q.weight * (q.s - ws) * (q.tau - wt)
 	}
 	slope := sxy / sxx
 	var scatter, own float64
 	for _, q := range l.fit {
-		g2 := q.coherence * q.coherence
 		d := q.tau - wt - slope*(q.s-ws)
-		scatter += g2 * d * d
-		k := g2 * (q.s - ws) / sxx
+		scatter += q.weight * d * d
+		k := q.weight * (q.s - ws) / sxx
 		own += k * k * lagVariance(q.coherence, l.samples, omega)
 	}
 	variance := scatter/(float64(r.points-2)*sxx) + own
