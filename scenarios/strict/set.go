@@ -17,7 +17,7 @@ func (d *decoder) assign(root reflect.Value, assignment string) {
 	defer func() { d.source, d.prefix = source, prefix }()
 	path, text, found := strings.Cut(assignment, "=")
 	path = strings.TrimSpace(path)
-	if !found || path == "" {
+	if !found || path == "" || strconv.Quote(path) != `"`+path+`"` {
 		d.problems = append(d.problems, Problem{Source: strings.TrimSpace(setPrefix), Message: fmt.Sprintf("%s is no assignment; write KEY=VALUE, such as seed=7", clip(assignment))})
 		return
 	}
