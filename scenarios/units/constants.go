@@ -9,14 +9,12 @@ package units
 
 // Constants of nature and nominal solar constants, cgs-Gaussian.
 const (
-	SolarRadius  = 6.957e10          // [cm] nominal, IAU 2015 Resolution B3
-	SolarGM      = 1.3271244e26      // [cm^3 s^-2] nominal, IAU 2015 Resolution B3
-	AU           = 1.495978707e13    // [cm] exact, IAU 2012 Resolution B2
-	LightSpeed   = 2.99792458e10     // [cm/s] exact, SI
-	Planck       = 6.62607015e-27    // [erg s] exact, SI 2019
-	Boltzmann    = 1.380649e-16      // [erg/K] exact, SI 2019
-	ElectronVolt = 1.602176634e-12   // [erg] exact, SI 2019
-	AtomicMass   = 1.66053906660e-24 // [g] CODATA 2018
-	ProtonMass   = 1.67262192369e-24 // [g] CODATA 2018
-	ElectronMass = 9.1093837015e-28  // [g] CODATA 2018
+	SolarRadius = 6.957e10          // [cm] nominal, IAU 2015 Resolution B3
+	SolarGM     = 1.3271244e26      // [cm^3 s^-2] nominal, IAU 2015 Resolution B3
+	AU          = 1.495978707e13    // [cm] exact, IAU 2012 Resolution B2
+	LightSpeed  = 2.99792458e10     // [cm/s] exact, SI
+	Planck      = 6.62607015e-27    // [erg s] exact, SI 2019
+	Boltzmann   = 1.380649e-16      // [erg/K] exact, SI 2019
+	AtomicMass  = 1.66053906660e-24 // [g] CODATA 2018
+	ProtonMass  = 1.67262192369e-24 // [g] CODATA 2018
 )
