@@ -59,3 +59,63 @@ func BenchmarkEmissivities(b *testing.B) {
 		})
 	}
 }
+
+func BenchmarkDensity(b *testing.B) {
+	a := Default()
+	m, err := New(a, a.Options())
+	if err != nil {
+		b.Fatal(err)
+	}
+	v, err := NewInverter(m, 1.5e6, 1.02, 2)
+	if err != nil {
+		b.Fatal(err)
+	}
+	n, _, r := ray()
+	var x [512]float64
+	for i := range x {
+		r[i] = min(r[i], 2)
+		if x[i], err = m.Ratio(n[i], 1.5e6, r[i]); err != nil {
+			b.Fatal(err)
+		}
+	}
+	b.Run("model", func(b *testing.B) {
+		for i := 0; b.Loop(); i = (i + 1) & 511 {
+			Density(m, x[i], 1.5e6, r[i])
+		}
+	})
+	b.Run("inverter", func(b *testing.B) {
+		b.ReportAllocs()
+		for i := 0; b.Loop(); i = (i + 1) & 511 {
+			v.Density(x[i], r[i])
+		}
+	})
+}
+
+func BenchmarkBuild(b *testing.B) {
+	a := Default()
+	m, err := New(a, a.Options())
+	if err != nil {
+		b.Fatal(err)
+	}
+	g := m.Range()
+	b.Run("table-all", func(b *testing.B) {
+		for b.Loop() {
+			m.Table(Range{g.Density, g.Temperature, [2]float64{1, 12}})
+		}
+	})
+	b.Run("table-one-temperature", func(b *testing.B) {
+		for b.Loop() {
+			m.Table(Range{g.Density, [2]float64{1.5e6, 1.5e6}, [2]float64{1.01, 4}})
+		}
+	})
+	b.Run("inverter", func(b *testing.B) {
+		for b.Loop() {
+			NewInverter(m, 1.5e6, 1.02, 2)
+		}
+	})
+	b.Run("data", func(b *testing.B) {
+		for b.Loop() {
+			Parse("fexiii.yaml", embedded)
+		}
+	})
+}

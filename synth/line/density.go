@@ -24,7 +24,7 @@ func (e *RatioError) Error() string {
 	if e.Above {
 		side = "above"
 	}
-	return fmt.Sprintf("ratio %.6g is %s the range %.6g..%.6g that can be reached", e.Ratio, side, e.Low, e.High)
+	return fmt.Sprintf("ratio %.4g is %s the range %.4g..%.4g that can be reached", e.Ratio, side, e.Low, e.High)
 }
 
 // ErrAmbiguous says that the ratio is no monotonic function of the density, so

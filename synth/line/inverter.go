@@ -21,8 +21,12 @@ func (r Reason) String() string {
 // pixels of a map. It tabulates ln ratio over (ln n, height), interpolates with
 // cubics and solves the cubic for the density, which stays accurate where the
 // ratio hardly depends on it. It is immutable, safe for concurrent use and does
-// not allocate. ln n agrees with Density to 1e-4 or better where the slope is
-// below 1000.
+// not allocate.
+//
+// ln n agrees with Density on the same Emitter to 1e-4: for a Model at every
+// density in range (slopes up to 1000), for a Table, whose interpolation has
+// kinks of its own, where the slope is below 100. Prefer a Model: the table is
+// built in some 20 ms.
 type Inverter struct {
 	n, x    axis
 	height  [2]float64

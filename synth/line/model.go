@@ -177,14 +177,30 @@ func New(a *Atom, opt Options) (*Model, error) {
 	if !(t[0] < t[1]) {
 		return nil, fmt.Errorf("the temperature grids of the data have no range in common")
 	}
-	p := make([]float64, m.n)
-	m.populations(1e8, math.Sqrt(t[0]*t[1]), 1.1, p)
-	for i, x := range p {
-		if math.IsNaN(x) {
-			return nil, fmt.Errorf("the levels have no equilibrium: level %d has no way down", i+1)
-		}
+	if i := m.stuck(math.Sqrt(t[0]) * math.Sqrt(t[1])); i >= 0 {
+		return nil, fmt.Errorf("level %d (%s) has no way down: there is no equilibrium", i+1, a.levels[i].name)
 	}
 	return m, nil
+}
+
+// stuck returns the first level that cannot reach the ground level at temperature
+// t by any chain of decays and collisions, or -1.
+func (m *Model) stuck(t float64) int {
+	c := make([]float64, m.n*m.n)
+	m.coefficients(t, c)
+	reaches := make([]bool, m.n)
+	reaches[0] = true
+	for again := true; again; {
+		again = false
+		for i := range m.n {
+			for j := range m.n {
+				if !reaches[i] && reaches[j] && c[i*m.n+j]+m.decay[i*m.n+j] > 0 {
+					reaches[i], again = true, true
+				}
+			}
+		}
+	}
+	return slices.Index(reaches, false)
 }
 
 // gather turns tables into curves of what is solved for.
