@@ -31,6 +31,7 @@ type Options struct {
 	Centre       float64 // of the Gaussian band-pass [Hz]. The default is 3.5e-3.
 	Width        float64 // of the band-pass amplitude [Hz]. The default is 1.5e-3.
 	WidthIsSigma bool    // Width is the standard deviation; otherwise the 1/e half-width. The default is false.
+	Taper        float64 // share of the series under the cosine bell at each end, 0 to 0.5. The default is 0.1.
 	Box          int     // diameter of the round window of the coherence island [pixels], odd, 5 or more. The default is 21.
 	Coherence    float64 // threshold of the island, between 0 and 1. The default is 0.5.
 	Track        int     // most points of a track, one pixel apart, odd, 5 or more. The default is 31.
@@ -44,7 +45,7 @@ type Options struct {
 // Default returns the customary recipe (common practice; see the fields).
 func Default() Options {
 	return Options{
-		Centre: 3.5e-3, Width: 1.5e-3,
+		Centre: 3.5e-3, Width: 1.5e-3, Taper: 0.1,
 		Box: 21, Coherence: 0.5, Track: 31,
 		Separation: true, KZero: Halved, Padding: 1,
 		Temperature: 1.6e6, Mu: 1.167,
@@ -60,6 +61,8 @@ func (o *Options) check() error {
 		return bad("centre", "more than 0 Hz", o.Centre)
 	case !(o.Width > 0):
 		return bad("width", "more than 0 Hz", o.Width)
+	case !(o.Taper >= 0 && o.Taper <= 0.5):
+		return bad("taper", "a number from 0 to 0.5", o.Taper)
 	case o.Box < 5 || o.Box%2 == 0:
 		return bad("box", "an odd number, 5 or more", o.Box)
 	case !(o.Coherence > 0 && o.Coherence < 1):
@@ -474,7 +477,7 @@ func (r *run) normalise(w *worker, p int) {
 	}
 	w.transform.backward(row, series)
 	frames := float64(r.band.frames)
-	power := 2 * float64(n) * float64(n) / (frames * frames)
+	power := 2 * float64(n) * float64(n) / (frames * frames * r.band.kept)
 	if v := r.variance[p]; !math.IsNaN(v) {
 		power -= v * r.band.passes
 	}

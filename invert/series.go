@@ -18,12 +18,14 @@ const least = 1e-4
 type band struct {
 	frames  int
 	cadence float64   // [s]
-	first   int       // first Fourier bin kept, at least 1: the mean goes
+	first   int       // first Fourier bin kept, at least 1
 	freq    []float64 // of the bins kept [Hz]
 	weight  []float64 // of the amplitude
 	row     int       // float32 numbers a spectrum takes: real parts, imaginary parts, zeros to a multiple of four
 	samples float64   // effective number of independent spectral samples
 	passes  float64   // share of a white series' variance that passes
+	taper   []float64 // of the series
+	kept    float64   // share of a series' power that the taper keeps
 }
 
 func newBand(opt *Options, frames int, cadence float64) (*band, error) {
@@ -52,7 +54,26 @@ func newBand(opt *Options, frames int, cadence float64) (*band, error) {
 		return nil, fmt.Errorf("series of %d frames every %g s has %d frequencies in the band %g +- %g mHz: needs 4 or more",
 			frames, cadence, len(b.freq), opt.Centre*1e3, opt.Width*1e3)
 	}
+	// Cosine bells at both ends (Tukey window). Two delayed copies of one wave differ
+	// where the observation begins and ends, and share the jump there that a Fourier
+	// series sees: untapered, it draws lags to zero. Speeds of a noiseless wave on a
+	// 31-point track then scatter by 1.4 % in 3 h and are 0.4 % high; tapered by 0.1
+	// at each end, 0.09 % and 0.07 % (derived; own simulation).
+	b.taper = make([]float64, frames)
+	var t2, t4 float64
+	for i := range b.taper {
+		x := (math.Min(float64(i), float64(frames-1-i)) + 0.5) / (opt.Taper * float64(frames))
+		b.taper[i] = 1
+		if x < 1 {
+			b.taper[i] = (1 - math.Cos(math.Pi*x)) / 2
+		}
+		w := b.taper[i] * b.taper[i]
+		t2 += w / float64(frames)
+		t4 += w * w / float64(frames)
+	}
+	b.kept = t2
 	b.samples = s2 * s2 / s4 // T w sqrt(pi) for a 1/e width w, T w sqrt(2 pi) for a sigma
+	b.samples *= t2 * t2 / t4
 	b.passes = 2 * s2 / float64(frames)
 	// Rows of whole 16-byte blocks: the order in which a vectorised dot product
 	// sums depends on the alignment of its arguments.
@@ -155,11 +176,20 @@ func newTransformer(b *band) *transformer {
 	}
 }
 
-// forward puts the band-passed spectrum of t.v into row and returns the variance
+// forward puts the band-passed spectrum of t.v, tapered about its mean, into row and
+// returns the variance
 // of the white noise as the highest frequencies tell it: the median power of the
 // top quarter of the spectrum, over ln 2 for an exponential distribution. NaN if
 // that quarter is in the band, or if noise is not asked for.
 func (t *transformer) forward(row []float32, noise bool) float64 {
+	mean := 0.0
+	for _, v := range t.v {
+		mean += v
+	}
+	mean /= float64(t.frames)
+	for i, w := range t.taper {
+		t.v[i] = (t.v[i] - mean) * w
+	}
 	t.fft.Coefficients(t.coeff, t.v)
 	n := len(t.freq)
 	for j, w := range t.weight {
@@ -182,7 +212,7 @@ func (t *transformer) forward(row []float32, noise bool) float64 {
 	}
 	slices.Sort(t.high)
 	m := (t.high[len(t.high)/2] + t.high[(len(t.high)-1)/2]) / 2
-	return m / math.Ln2 / float64(t.frames)
+	return m / math.Ln2 / float64(t.frames) / t.kept
 }
 
 // backward turns a band-passed spectrum into its series.
