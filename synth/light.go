@@ -20,17 +20,16 @@ type lamp struct {
 	coef     []float32
 	delay    []float64
 	trains   []train
-	acc      [2][][]float64 // line, tuning, frame
+	acc      [2][][]float32 // line, tuning, frame
 }
 
 func (c *Scene) newLamp(second []int) *lamp {
 	l := &lamp{c: c, frames: Frames(c.s), second: second}
 	l.velocity = make([]float32, l.frames)
 	l.atSecond = make([]float32, len(second))
-	l.delay = make([]float64, c.Driver.Rank())
 	for range c.tunings[0] {
-		l.acc[0] = append(l.acc[0], make([]float64, l.frames))
-		l.acc[1] = append(l.acc[1], make([]float64, len(second)))
+		l.acc[0] = append(l.acc[0], make([]float32, l.frames))
+		l.acc[1] = append(l.acc[1], make([]float32, len(second)))
 	}
 	return l
 }
@@ -38,7 +37,7 @@ func (c *Scene) newLamp(second []int) *lamp {
 // shine fills acc with the radiance [erg cm^-2 s^-1 sr^-1] of a ray through every
 // tuning: the sum over samples of each sample's own Gaussian, shifted by its own
 // velocity, through the filter. Nothing is expanded; the exponential of package
-// kernel is good to 3e-7, and the velocity to wave.Tolerance.
+// kernel is good to 4e-7, and the velocity to wave.Tolerance.
 func (l *lamp) shine(ray []sample) {
 	for line := range 2 {
 		for _, a := range l.acc[line] {
@@ -64,7 +63,7 @@ func (l *lamp) shine(ray []sample) {
 			amp := s.j[line] * s.dx * filter.Gaussian(0, 0, s.width, wf)
 			inv := float32(1 / math.Hypot(s.width, wf))
 			for k, d := range c.tunings[line] {
-				kernel.Profile(l.acc[line][k], v, amp, float32(d), inv)
+				kernel.Profile(l.acc[line][k], v, float32(amp), float32(d), inv)
 			}
 		}
 	}
@@ -79,14 +78,16 @@ func (l *lamp) move(s *sample) {
 	l.trains = l.c.trains(&s.point, s.azimuth, l.trains)
 	for i := range l.trains {
 		t := &l.trains[i]
-		at := d.Coefficients(l.delay, t.tau, 0)
+		stretch := d.Stretch(t.tau)
+		var at int
+		l.delay, at = d.Coefficients(l.delay, stretch, t.tau, 0)
 		for _, site := range d.Footpoint(t.colatitude, t.azimuth) {
 			for pol, a := range s.los {
 				k := a * t.factor * site.Weight
 				if math.Abs(k) < 1e-6 { // [km/s]
 					continue
 				}
-				rows := d.Rows(site.ID, pol, t.dir)
+				rows := d.Rows(site.ID, pol, t.dir, stretch)
 				for r, x := range l.delay {
 					l.rows = append(l.rows, rows[r*n+at:r*n+at+l.frames])
 					l.coef = append(l.coef, float32(k*x))

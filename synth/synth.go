@@ -86,10 +86,7 @@ func (c *Scene) observe(ctx context.Context, workers, tile int, progress func(do
 			l.shine(rays[w])
 			for line := range 2 {
 				for k, a := range l.acc[line] {
-					dst := raw[line].Series(q, k)
-					for t, x := range a {
-						dst[t] = float32(x)
-					}
+					copy(raw[line].Series(q, k), a)
 				}
 			}
 		}

@@ -13,7 +13,7 @@ func TestExpNeg(t *testing.T) {
 			t.Fatalf("exp(%g): relative error %.2g", x, rel)
 		}
 	}
-	if expNeg(-88) != 0 || expNeg(0) != 1 {
+	if expNeg(-88) != 0 || expNeg(0) != 1 || expNeg(float32(math.NaN())) != 0 {
 		t.Error("ends")
 	}
 }
@@ -52,14 +52,43 @@ func TestProfileIsTheGaussian(t *testing.T) {
 	for i := range v {
 		v[i] *= 15
 	}
-	acc := make([]float64, len(v))
+	acc := make([]float32, len(v))
 	Profile(acc, v, 2.5, 33.5, 1/40.0)
 	Profile(acc, v, 0.5, 0, 1/30.0)
 	for i, x := range v {
 		a, b := (33.5-float64(x))/40, float64(x)/30
 		want := 2.5*math.Exp(-a*a) + 0.5*math.Exp(-b*b)
-		if math.Abs(acc[i]/want-1) > 1e-6 {
+		if math.Abs(float64(acc[i])/want-1) > 1e-6 {
 			t.Fatalf("v = %g: %.9g, want %.9g", x, acc[i], want)
+		}
+	}
+}
+
+// The vector path and the portable one give the same bits, at every length.
+func TestPathsAgreeToTheBit(t *testing.T) {
+	had := useVector
+	defer func() { useVector = had }()
+	for n := range 150 {
+		v := noise(n, 3, uint64(n))
+		for i := range v {
+			v[i] *= 40 // reaches the dark end of the profile
+		}
+		rows, coef := make([][]float32, n%9), noise(n%9, 4)
+		for i := range rows {
+			rows[i] = noise(n+3, 5, uint64(i))
+		}
+		var sums, profiles [2][]float32
+		for path, vector := range []bool{false, had} {
+			useVector = vector
+			sums[path] = noise(n, 8)
+			Combine(sums[path], rows, coef)
+			profiles[path] = noise(n, 9)
+			Profile(profiles[path], v, 0.7, 33.5, 1/20.0)
+		}
+		for i := range v {
+			if math.Float32bits(sums[0][i]) != math.Float32bits(sums[1][i]) || math.Float32bits(profiles[0][i]) != math.Float32bits(profiles[1][i]) {
+				t.Fatalf("length %d, element %d: %v and %v, %v and %v", n, i, sums[0][i], sums[1][i], profiles[0][i], profiles[1][i])
+			}
 		}
 	}
 }
@@ -79,7 +108,7 @@ func BenchmarkCombine(b *testing.B) {
 
 func BenchmarkProfile(b *testing.B) {
 	v := noise(360, 1)
-	acc := make([]float64, len(v))
+	acc := make([]float32, len(v))
 	for b.Loop() {
 		Profile(acc, v, 1, 33.5, 1/40.0)
 	}

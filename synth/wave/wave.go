@@ -57,14 +57,24 @@ type Settings struct {
 	MaxLead  float64 // latest time within a frame that will be asked, after its start [s]
 }
 
+// A stretch is the decomposition for travel times from, up to the next stretch's from.
+type stretch struct {
+	from        float64
+	basis       [][]complex128 // [rank][bin]
+	nTau, nRest int
+	dTau, dRest float64
+	coef        []float64 // [tau][rest][rank]
+}
+
 // A Driver gives the motion of every surface site as a few rows of frames.
 //
 // Delay and damping of a train are a linear filter exp(-f tau/xi) exp(-2 pi i f tau).
 // The delay is split into whole frames, which only shift the rows, and a rest of at
-// most half a frame. The remaining family of filters, over all rests and all travel
-// times, is written as a sum of Rank fixed filters times coefficients: its singular
-// value decomposition, weighted by the spectrum. The rows of a site are its motion
-// under each fixed filter; any sample's velocity is a sum of Rank shifted rows.
+// most half a frame. The remaining family of filters, over all rests and the travel
+// times of one stretch, is written as a short sum of fixed filters times coefficients:
+// its singular value decomposition, weighted by the spectrum. The rows of a site are
+// its motion under each fixed filter of a stretch; any sample's velocity is a sum of
+// a few shifted rows.
 type Driver struct {
 	s     Settings
 	sites lattice
@@ -72,13 +82,10 @@ type Driver struct {
 	size   int // of the Fourier transform [frames]
 	first  int // first frequency bin; bin k is k/(size*Cadence)
 	amp    []float64
-	basis  [][]complex128 // [rank][bin]
-	lead   int            // frames of the rows before frame 0
-	length int            // of a row
+	lead   int // frames of the rows before frame 0
+	length int // of a row
 
-	nTau, nRest int
-	dTau, dRest float64
-	coef        []float64 // [tau][rest][rank]
+	stretches []stretch
 
 	pool  sync.Pool
 	cache rowCache
@@ -88,6 +95,13 @@ type Driver struct {
 // velocity, over its undamped rms, at any delay. Typical errors are a third of it,
 // and errors of different samples of a line of sight do not add up.
 const Tolerance = 1e-3
+
+// Stretches of travel time [s]: the first is this long, later ones longer by growth
+// times their start, because damping has then taken the high frequencies away.
+const (
+	shortest = 300
+	growth   = 0.3
+)
 
 // cacheBytes bounds the rows kept for reuse.
 const cacheBytes = 800 << 20
@@ -113,10 +127,25 @@ func NewDriver(s Settings) (*Driver, error) {
 	for i := range d.amp {
 		d.amp[i] = math.Sqrt(d.amp[i] / sum)
 	}
-	if err := d.decompose(df); err != nil {
-		return nil, err
+	for from := 0.0; ; {
+		to := from + shortest + growth*from
+		last := d.s.Damping == 0 || to >= d.s.MaxDelay
+		if last {
+			to = max(d.s.MaxDelay, from+1)
+		}
+		st, err := d.decompose(df, from, to)
+		if err != nil {
+			return nil, err
+		}
+		d.stretches = append(d.stretches, st)
+		if last {
+			break
+		}
+		from = to
 	}
-	d.pool.New = func() any { return &workspace{fft: fourier.NewCmplxFFT(d.size), buf: make([]complex128, d.size)} }
+	d.pool.New = func() any {
+		return &workspace{fft: fourier.NewFFT(d.size), bins: make([]complex128, d.size/2+1), row: make([]float64, d.size)}
+	}
 	d.cache.init(cacheBytes)
 	return d, nil
 }
@@ -157,16 +186,14 @@ func (d *Driver) damping(f, tau float64) float64 {
 	return math.Exp(-f * tau / d.s.Damping)
 }
 
-func (d *Driver) decompose(df float64) error {
+// decompose finds the fixed filters for travel times in [from, to].
+func (d *Driver) decompose(df, from, to float64) (stretch, error) {
 	half := d.s.Cadence / 2
-	var taus []float64
-	if d.s.Damping == 0 {
-		taus = []float64{0}
-	} else { // denser where damping changes fast
-		const n = 24
-		for i := range n {
-			u := float64(i) / (n - 1)
-			taus = append(taus, u*u*d.s.MaxDelay)
+	taus := []float64{from}
+	if d.s.Damping > 0 {
+		taus = taus[:0]
+		for i := range 7 {
+			taus = append(taus, from+(to-from)*float64(i)/6)
 		}
 	}
 	const nRest = 13
@@ -179,109 +206,119 @@ func (d *Driver) decompose(df float64) error {
 	}
 	var svd mat.SVD
 	if !svd.Factorize(m, mat.SVDThin) {
-		return fmt.Errorf("waves: the filters of delay and damping could not be decomposed")
+		return stretch{}, fmt.Errorf("waves: the filters of delay and damping could not be decomposed")
 	}
 	var v mat.Dense
 	svd.VTo(&v)
 	_, most := v.Dims()
-	row := make([]float64, 2*n)
-	residual := func(rank int) float64 { // greatest rms over all filters
-		worst := 0.0
-		for _, tau := range taus {
-			for j := range nRest {
-				d.filterAt(row, df, tau, half*(2*float64(j)/(nRest-1)-1))
-				e := 0.0
-				for _, x := range row {
-					e += x * x
-				}
-				for r := range rank {
-					c := 0.0
-					for q, x := range row {
-						c += x * v.At(q, r)
-					}
-					e -= c * c
-				}
-				worst = max(worst, e)
-			}
+	// left[i] is what the filters found so far leave of row i, squared.
+	rows, _ := m.Dims()
+	left := make([]float64, rows)
+	for i := range left {
+		for _, x := range m.RawRowView(i) {
+			left[i] += x * x
 		}
-		return math.Sqrt(max(worst, 0))
 	}
-	rank := 1
-	for rank < most && residual(rank) > Tolerance {
-		rank++
+	rank := 0
+	for worst := 1.0; rank < most && worst > Tolerance; rank++ {
+		worst = 0
+		for i := range left {
+			c := 0.0
+			for q, x := range m.RawRowView(i) {
+				c += x * v.At(q, rank)
+			}
+			left[i] -= c * c
+			worst = max(worst, math.Sqrt(max(left[i], 0)))
+		}
 	}
+	st := stretch{from: from, nRest: 33, dRest: d.s.Cadence / 32, nTau: 1, dTau: 1}
 	// A real coefficient times a complex filter: the basis in frequency is the pair
-	// (real, imaginary) of a right singular vector; the site's own random numbers have
-	// unit variance per bin, so its amplitude stays in the basis.
+	// (real, imaginary) of a right singular vector. The spectrum's amplitude is in it.
 	for r := range rank {
 		b := make([]complex128, n)
 		for i := range b {
 			b[i] = complex(v.At(i, r), v.At(n+i, r))
 		}
-		d.basis = append(d.basis, b)
+		st.basis = append(st.basis, b)
 	}
-	d.nRest, d.dRest = 33, d.s.Cadence/32
-	d.nTau, d.dTau = 1, 1
 	if d.s.Damping > 0 {
-		d.nTau = int(math.Ceil(d.s.MaxDelay/20)) + 2
-		d.dTau = 20
+		st.dTau = 20
+		st.nTau = int(math.Ceil((to-from)/st.dTau)) + 1
 	}
-	d.coef = make([]float64, 0, d.nTau*d.nRest*rank)
-	for i := range d.nTau {
-		for j := range d.nRest {
-			d.filterAt(row, df, float64(i)*d.dTau, float64(j)*d.dRest-half)
+	row := make([]float64, 2*n)
+	for i := range st.nTau {
+		for j := range st.nRest {
+			d.filterAt(row, df, from+float64(i)*st.dTau, float64(j)*st.dRest-half)
 			for r := range rank {
 				c := 0.0
 				for q, x := range row {
 					c += x * v.At(q, r)
 				}
-				d.coef = append(d.coef, c)
+				st.coef = append(st.coef, c)
 			}
 		}
 	}
-	return nil
+	return st, nil
 }
 
-// Rank returns the number of rows per site, polarisation and direction.
-func (d *Driver) Rank() int { return len(d.basis) }
+// Ranks returns the number of rows per site, polarisation and direction for each
+// stretch of travel times.
+func (d *Driver) Ranks() []int {
+	var n []int
+	for i := range d.stretches {
+		n = append(n, len(d.stretches[i].basis))
+	}
+	return n
+}
 
-// Coefficients fills c (Rank values) for a train that has travelled tau [s], seen
-// lead [s] after the start of each frame, and returns the index of the element of
-// the rows that belongs to frame 0.
-func (d *Driver) Coefficients(c []float64, tau, lead float64) int {
+// Stretch returns the number of the stretch that holds the travel time tau [s].
+func (d *Driver) Stretch(tau float64) int {
+	k := len(d.stretches) - 1
+	for k > 0 && tau < d.stretches[k].from {
+		k--
+	}
+	return k
+}
+
+// Coefficients returns the coefficients, appended to c[:0], of a train that has
+// travelled tau [s], in that stretch, seen lead [s] after the start of each frame,
+// and the index of the element of the rows that belongs to frame 0.
+func (d *Driver) Coefficients(c []float64, stretch int, tau, lead float64) ([]float64, int) {
+	st := &d.stretches[stretch]
 	delay := tau - lead
 	m := math.Round(delay / d.s.Cadence)
 	rest := delay - m*d.s.Cadence
-	u := 0.0
-	if d.nTau > 1 {
-		u = tau / d.dTau
-	}
-	v := rest/d.dRest + float64(d.nRest-1)/2
-	i := min(max(int(u), 0), max(d.nTau-2, 0))
-	j := min(max(int(v), 0), d.nRest-2)
-	u -= float64(i)
+	v := rest/st.dRest + float64(st.nRest-1)/2
+	j := min(max(int(v), 0), st.nRest-2)
 	v -= float64(j)
-	rank := len(d.basis)
-	a := d.coef[(i*d.nRest+j)*rank:]
-	b := a[rank:]
-	if d.nTau == 1 {
+	rank := len(st.basis)
+	c = c[:0]
+	if st.nTau == 1 {
+		a := st.coef[j*rank:]
+		b := a[rank:]
 		for r := range rank {
-			c[r] = a[r] + v*(b[r]-a[r])
+			c = append(c, a[r]+v*(b[r]-a[r]))
 		}
-	} else {
-		e := d.coef[((i+1)*d.nRest+j)*rank:]
-		f := e[rank:]
-		for r := range rank {
-			lo, hi := a[r]+v*(b[r]-a[r]), e[r]+v*(f[r]-e[r])
-			c[r] = lo + u*(hi-lo)
-		}
+		return c, d.lead - int(m)
 	}
-	return d.lead - int(m)
+	u := (tau - st.from) / st.dTau
+	i := min(max(int(u), 0), st.nTau-2)
+	u -= float64(i)
+	a := st.coef[(i*st.nRest+j)*rank:]
+	b := a[rank:]
+	e := st.coef[((i+1)*st.nRest+j)*rank:]
+	f := e[rank:]
+	for r := range rank {
+		lo, hi := a[r]+v*(b[r]-a[r]), e[r]+v*(f[r]-e[r])
+		c = append(c, lo+u*(hi-lo))
+	}
+	return c, d.lead - int(m)
 }
 
 type workspace struct {
-	fft *fourier.CmplxFFT
-	buf []complex128
+	fft  *fourier.FFT
+	bins []complex128
+	row  []float64
 }
 
 // amplitudes returns the complex random amplitudes of a site's motion, one a bin,
@@ -296,40 +333,36 @@ func (d *Driver) amplitudes(site uint64, pol, dir int) []complex128 {
 	return z
 }
 
-// Rows returns the rows of a site: Rank rows of RowLength elements one after the
-// other. They are shared and must not be changed. Safe for concurrent use.
-func (d *Driver) Rows(site uint64, pol, dir int) []float32 {
-	key := site<<2 | uint64(pol)<<1 | uint64(dir)
+// Rows returns the rows of a site for one stretch of travel times: as many as its
+// rank, of RowLength elements each, one after the other. They are shared and must not
+// be changed. Safe for concurrent use.
+func (d *Driver) Rows(site uint64, pol, dir, stretch int) []float32 {
+	key := site<<8 | uint64(stretch)<<2 | uint64(pol)<<1 | uint64(dir)
 	if rows := d.cache.get(key); rows != nil {
 		return rows
 	}
+	basis := d.stretches[stretch].basis
 	z := d.amplitudes(site, pol, dir)
-	rows := make([]float32, len(d.basis)*d.length)
+	rows := make([]float32, len(basis)*d.length)
 	w := d.pool.Get().(*workspace)
 	defer d.pool.Put(w)
-	for r := 0; r < len(d.basis); r += 2 { // two real rows per complex transform
-		clear(w.buf)
+	for r, b := range basis {
+		clear(w.bins)
 		for i, a := range z {
-			// Row r is Re X, X = sum over bins of a b exp(+2 pi i k t/size): the sum of
-			// half of X and half of its conjugate, which sits at bin -k. Bins beyond the
-			// Nyquist frequency fold, as frames at this cadence do.
-			k := (d.first + i) % d.size
-			x := a * d.basis[r][i] / 2
-			w.buf[k] += x
-			mirror := (d.size - k) % d.size
-			w.buf[mirror] += complex(real(x), -imag(x))
-			if r+1 < len(d.basis) {
-				y := a * d.basis[r+1][i] / 2
-				w.buf[k] += complex(-imag(y), real(y)) // i y
-				w.buf[mirror] += complex(imag(y), real(y))
+			// The row is Re of the sum over bins of a b exp(+2 pi i k t/size), which is the
+			// transform of half of it with its conjugate at -k. Bins beyond the Nyquist
+			// frequency fold, as frames at this cadence do.
+			k, x := (d.first+i)%d.size, a*b[i]/2
+			if k > d.size/2 {
+				k, x = d.size-k, complex(real(x), -imag(x))
 			}
+			if k == 0 || 2*k == d.size { // its own conjugate
+				x = complex(2*real(x), 0)
+			}
+			w.bins[k] += x
 		}
-		out := w.fft.Sequence(w.buf, w.buf)
-		for t := range d.length {
-			rows[r*d.length+t] = float32(real(out[t]))
-			if r+1 < len(d.basis) {
-				rows[(r+1)*d.length+t] = float32(imag(out[t]))
-			}
+		for t, x := range w.fft.Sequence(w.row, w.bins)[:d.length] {
+			rows[r*d.length+t] = float32(x)
 		}
 	}
 	d.cache.put(key, rows)

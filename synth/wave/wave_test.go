@@ -28,14 +28,15 @@ func TestRowsReproduceTheExactSum(t *testing.T) {
 		"coarse":   {Seed: 3, Cell: 0.01, Spectrum: spectrum, Damping: 2.69, Cadence: 60, Frames: 120, MaxDelay: 1500},
 	} {
 		d := driver(t, s)
-		t.Logf("%s: rank %d, %d bins, rows of %d", name, d.Rank(), len(d.amp), d.length)
-		c := make([]float64, d.Rank())
+		t.Logf("%s: ranks %d, %d bins, rows of %d", name, d.Ranks(), len(d.amp), d.length)
+		var c []float64
 		sum, n, worst := 0.0, 0, 0.0
 		for i := range 60 {
 			tau := s.MaxDelay * math.Mod(float64(i)*0.6180339887, 1)
 			lead := s.MaxLead * math.Mod(float64(i)*0.7548776662, 1)
-			rows := d.Rows(uint64(i), i%2, i%2)
-			at := d.Coefficients(c, tau, lead)
+			k := d.Stretch(tau)
+			rows := d.Rows(uint64(i), i%2, i%2, k)
+			c, at := d.Coefficients(c, k, tau, lead)
 			for j := range s.Frames {
 				got := 0.0
 				for r := range c {
@@ -58,11 +59,10 @@ func TestRowsReproduceTheExactSum(t *testing.T) {
 
 func TestVarianceIsOne(t *testing.T) {
 	d := driver(t, Settings{Seed: 5, Cell: 0.01, Spectrum: spectrum, Cadence: 30, Frames: 200, MaxDelay: 60})
-	c := make([]float64, d.Rank())
-	at := d.Coefficients(c, 40, 0)
+	c, at := d.Coefficients(nil, 0, 40, 0)
 	v, n := 0.0, 0
 	for i := range uint64(500) {
-		rows := d.Rows(i, 0, 0)
+		rows := d.Rows(i, 0, 0, 0)
 		for j := range 200 {
 			x := 0.0
 			for r := range c {
@@ -131,9 +131,9 @@ func TestFootpointWeights(t *testing.T) {
 func TestRowsDoNotDependOnTheCache(t *testing.T) {
 	s := Settings{Seed: 5, Cell: 0.01, Spectrum: spectrum, Damping: 2, Cadence: 30, Frames: 50, MaxDelay: 600}
 	a, b := driver(t, s), driver(t, s)
-	b.cache.init(4 * 3 * len(a.Rows(0, 0, 0)))
+	b.cache.init(4 * 3 * len(a.Rows(0, 0, 0, 0)))
 	for i := range uint64(40) {
-		x, y := a.Rows(i*7%13, 1, 0), b.Rows(i*7%13, 1, 0)
+		x, y := a.Rows(i*7%13, 1, 0, 0), b.Rows(i*7%13, 1, 0, 0)
 		for j := range x {
 			if x[j] != y[j] {
 				t.Fatal("rows differ")
@@ -146,7 +146,7 @@ func BenchmarkRows(b *testing.B) {
 	d := driver(b, Settings{Seed: 1, Cell: 0.01, Spectrum: spectrum, Damping: 2.69, Cadence: 30, Frames: 360, MaxDelay: 4000})
 	i := uint64(0)
 	for b.Loop() {
-		d.Rows(i, 0, 0)
+		d.Rows(i, 0, 0, 0)
 		i++
 	}
 }

@@ -1,0 +1,178 @@
+// Package trial runs one scenario through the whole sentence in memory: scenario,
+// corona, observation, inferred maps, verdict.
+package trial
+
+import (
+	"context"
+	"crypto/sha256"
+	"encoding/hex"
+	"fmt"
+	"os"
+
+	"offplane/compare"
+	"offplane/invert"
+	"offplane/model"
+	"offplane/scenarios"
+	"offplane/synth"
+	"offplane/synth/line"
+	"offplane/synth/obs"
+)
+
+// A File is one file that a scenario names.
+type File = compare.File
+
+// Settings of a trial: what does not change its result, and what names it.
+type Settings struct {
+	Workers  int    // < 1: every core
+	Version  string // of the program, for the verdict
+	Progress func(stage string, done, total int)
+}
+
+func (s *Settings) report(stage string) func(done, total int) {
+	if s.Progress == nil {
+		return nil
+	}
+	return func(done, total int) { s.Progress(stage, done, total) }
+}
+
+// An Outcome holds every noun of the sentence.
+type Outcome struct {
+	Scene       *synth.Scene
+	Observation *obs.Observation // with frames
+	Truth       *synth.Truth
+	Inferred    *invert.Result
+	Verdict     *compare.Verdict
+	Files       []File
+}
+
+// Run runs a scenario.
+func Run(ctx context.Context, l *scenarios.Loaded, s Settings) (*Outcome, error) {
+	o, err := Observe(ctx, l, s)
+	if err != nil {
+		return nil, err
+	}
+	v := l.Scenario.Inversion
+	emitter, _, err := Model(v.Line, v.Helium)
+	if err != nil {
+		return nil, err
+	}
+	if o.Inferred, err = invert.Invert(ctx, o.Observation, emitter, Options(v), s.Workers, s.report("inversion")); err != nil {
+		return nil, err
+	}
+	o.Verdict, err = Judge(l, o.Truth.Grid, o.Truth.Maps, o.Inferred.Maps, o.Files, s.Version)
+	return o, err
+}
+
+// Observe runs a scenario as far as the observation and the truth.
+func Observe(ctx context.Context, l *scenarios.Loaded, s Settings) (*Outcome, error) {
+	c := &l.Scenario
+	light, files, err := Light(c)
+	if err != nil {
+		return nil, err
+	}
+	o := &Outcome{Files: files}
+	if o.Scene, err = synth.NewScene(ctx, c, light, s.Workers); err != nil {
+		return nil, err
+	}
+	o.Observation, o.Truth, err = o.Scene.Observe(ctx, s.Workers, s.report("synthesis"))
+	if err != nil {
+		return nil, err
+	}
+	o.Observation.Scenario = l.SHA256
+	if v := c.Inversion.Line.Data; v != "" {
+		_, file, err := atom(v)
+		if err != nil {
+			return nil, err
+		}
+		if len(o.Files) == 0 || o.Files[0] != *file {
+			o.Files = append(o.Files, *file)
+		}
+	}
+	return o, nil
+}
+
+// Judge compares inferred maps with the truth of a scenario.
+func Judge(l *scenarios.Loaded, g obs.Grid, truth, inferred obs.Maps, files []File, version string) (*compare.Verdict, error) {
+	c := &l.Scenario
+	return compare.Compare(&g, truth, inferred, compare.Options{
+		Scenario: l.Name, Seed: c.Seed, Version: version, SHA256: l.SHA256, Text: string(l.Canonical), Files: files,
+		Estimator: "lag", Mu: c.Inversion.Mu, MuTrue: model.Mu(c.Corona.Helium),
+	})
+}
+
+// Options turns the inversion section of a scenario into the inversion's own options.
+func Options(v scenarios.Inversion) invert.Options {
+	o := invert.Options{
+		Centre: v.Filter.Centre.Hz(), Width: v.Filter.Width.Hz(), WidthIsSigma: v.Filter.Means == "sigma",
+		Box: v.Box, Coherence: v.Coherence, Track: v.Track,
+		Separation: v.Separation, Padding: v.Padding,
+		Temperature: v.Temperature.Kelvin(), Mu: v.Mu,
+	}
+	switch v.KZero {
+	case "kept":
+		o.KZero = invert.Kept
+	case "halved":
+		o.KZero = invert.Halved
+	case "dropped":
+		o.KZero = invert.Dropped
+	}
+	return o
+}
+
+// Model builds the atomic model of one side of a scenario; the file is nil for the
+// embedded data.
+func Model(l scenarios.Line, helium float64) (*line.Model, *File, error) {
+	a, file, err := atom(l.Data)
+	if err != nil {
+		return nil, nil, err
+	}
+	opt := a.Options()
+	opt.Helium, opt.Iron, opt.Ionisation, opt.Photo = helium, l.Iron, l.Ionisation, l.Photo
+	m, err := line.New(a, opt)
+	if err != nil {
+		return nil, nil, fmt.Errorf("line: %w", err)
+	}
+	return m, file, nil
+}
+
+func atom(path string) (*line.Atom, *File, error) {
+	if path == "" {
+		return line.Default(), nil, nil
+	}
+	data, err := os.ReadFile(path)
+	if err != nil {
+		return nil, nil, fmt.Errorf("line.data: %w", err)
+	}
+	a, err := line.Parse(path, data)
+	if err != nil {
+		return nil, nil, err
+	}
+	sum := sha256.Sum256(data)
+	return a, &File{Name: path, SHA256: hex.EncodeToString(sum[:])}, nil
+}
+
+// Light returns the light of a scenario's corona, tabulated over the temperatures that
+// occur in it, and the files it came from.
+func Light(c *scenarios.Scenario) (synth.Light, []File, error) {
+	m, file, err := Model(c.Line, c.Corona.Helium)
+	if err != nil {
+		return synth.Light{}, nil, err
+	}
+	over := m.Range()
+	hot, cold := c.Corona.Temperature.Streamer.Kelvin(), c.Corona.Temperature.Streamer.Kelvin()
+	if c.Corona.Density.Hole != nil {
+		hot, cold = max(hot, c.Corona.Temperature.Hole.Kelvin()), min(cold, c.Corona.Temperature.Hole.Kelvin())
+	}
+	over.Temperature = [2]float64{cold, hot}
+	outer := float64(c.Image.Outer) + float64(c.Sight.Reach) + 0.2
+	over.Height = [2]float64{1, outer}
+	t, err := m.Table(over)
+	if err != nil {
+		return synth.Light{}, nil, fmt.Errorf("corona.temperature: %w", err)
+	}
+	l := synth.Light{Emitter: t, Rest: m.RestWavelengths(), Disc: m.DiscCentre(), Mass: m.Mass()}
+	if file != nil {
+		return l, []File{*file}, nil
+	}
+	return l, nil, nil
+}
