@@ -7,8 +7,8 @@ import (
 	"offplane/synth/kernel"
 )
 
-// A lamp adds up the light of the samples of one ray over the frames. It holds the
-// scratch space of one worker.
+// A lamp adds up the light of the samples of a few neighbouring rays over the frames.
+// It holds the scratch space of one worker.
 type lamp struct {
 	c      *Scene
 	frames int
@@ -20,51 +20,72 @@ type lamp struct {
 	coef     []float32
 	delay    []float64
 	trains   []train
-	acc      [2][][]float32 // line, tuning, frame
+	acc      [][2][][]float32 // ray, line, tuning, frame
 }
 
-func (c *Scene) newLamp(second []int) *lamp {
-	l := &lamp{c: c, frames: Frames(c.s), second: second}
+func (c *Scene) newLamp(second []int, rays int) *lamp {
+	l := &lamp{c: c, frames: Frames(c.s), second: second, acc: make([][2][][]float32, rays)}
 	l.velocity = make([]float32, l.frames)
 	l.atSecond = make([]float32, len(second))
-	for range c.tunings[0] {
-		l.acc[0] = append(l.acc[0], make([]float32, l.frames))
-		l.acc[1] = append(l.acc[1], make([]float32, len(second)))
+	for i := range l.acc {
+		for range c.tunings[0] {
+			l.acc[i][0] = append(l.acc[i][0], make([]float32, l.frames))
+			l.acc[i][1] = append(l.acc[i][1], make([]float32, len(second)))
+		}
 	}
 	return l
 }
 
-// shine fills acc with the radiance [erg cm^-2 s^-1 sr^-1] of a ray through every
+// shine fills acc with the radiance [erg cm^-2 s^-1 sr^-1] of every ray through every
 // tuning: the sum over samples of each sample's own Gaussian, shifted by its own
 // velocity, through the filter. Nothing is expanded; the exponential of package
 // kernel is good to 4e-7, and the velocity to wave.Tolerance.
-func (l *lamp) shine(ray []sample) {
-	for line := range 2 {
-		for _, a := range l.acc[line] {
-			clear(a)
+//
+// The loop over depth is outside and that over rays inside, so that neighbours find
+// the driver's rows in the cache; each ray adds its samples from back to front.
+func (l *lamp) shine(rays [][]sample) {
+	back, front := 0, 0 // samples behind and before the plane of the sky
+	plane := make([]int, len(rays))
+	for i, r := range rays {
+		for line := range 2 {
+			for _, a := range l.acc[i][line] {
+				clear(a)
+			}
+		}
+		for r[plane[i]].x < 0 {
+			plane[i]++
+		}
+		back, front = max(back, plane[i]), max(front, len(r)-plane[i])
+	}
+	for k := -back; k < front; k++ {
+		for i, r := range rays {
+			if q := plane[i] + k; q >= 0 && q < len(r) {
+				l.add(i, &r[q])
+			}
 		}
 	}
+}
+
+// add adds the light of one sample to that of ray i.
+func (l *lamp) add(i int, s *sample) {
 	c := l.c
-	for i := range ray {
-		s := &ray[i]
-		l.move(s)
-		for t, f := range l.second {
-			l.atSecond[t] = l.velocity[f]
+	l.move(s)
+	for t, f := range l.second {
+		l.atSecond[t] = l.velocity[f]
+	}
+	wf := c.filter
+	for line := range 2 {
+		v := l.velocity
+		if line == 1 {
+			v = l.atSecond
+			wf *= c.light.Rest[0] / c.light.Rest[1] // one filter in nm is two in km/s
 		}
-		wf := c.filter
-		for line := range 2 {
-			v := l.velocity
-			if line == 1 {
-				v = l.atSecond
-				wf *= c.light.Rest[0] / c.light.Rest[1] // one filter in nm is two in km/s
-			}
-			// Peak transmission times the share of the line that passes: filter.Gaussian at
-			// the line's own centre.
-			amp := s.j[line] * s.dx * filter.Gaussian(0, 0, s.width, wf)
-			inv := float32(1 / math.Hypot(s.width, wf))
-			for k, d := range c.tunings[line] {
-				kernel.Profile(l.acc[line][k], v, float32(amp), float32(d), inv)
-			}
+		// Peak transmission times the share of the line that passes: filter.Gaussian at
+		// the line's own centre.
+		amp := s.j[line] * s.dx * filter.Gaussian(0, 0, s.width, wf)
+		inv := float32(1 / math.Hypot(s.width, wf))
+		for k, d := range c.tunings[line] {
+			kernel.Profile(l.acc[i][line][k], v, float32(amp), float32(d), inv)
 		}
 	}
 }

@@ -26,9 +26,9 @@ func Synthesize(ctx context.Context, s *scenarios.Scenario, light Light, workers
 	return c.Observe(ctx, workers, progress)
 }
 
-// tile is the number of pixels that a worker takes at a time. It changes nothing but
-// the time taken.
-const tile = 64
+// tile is the number of neighbouring pixels that a worker takes at a time. It changes
+// nothing but the time taken.
+const tile = 16
 
 // Observe is Synthesize for a scene that is ready.
 func (c *Scene) Observe(ctx context.Context, workers int, progress func(done, total int)) (*obs.Observation, *Truth, error) {
@@ -64,28 +64,30 @@ func (c *Scene) observe(ctx context.Context, workers, tile int, progress func(do
 
 	workers = parallel.Workers(workers)
 	lamps := make([]*lamp, workers)
-	rays := make([][]sample, workers)
+	rays := make([][][]sample, workers)
 	done := progressCounter(len(order), progress)
 	err := parallel.For(ctx, (len(order)+tile-1)/tile, workers, func(w, i int) error {
 		if lamps[w] == nil {
-			lamps[w] = c.newLamp(second)
+			lamps[w] = c.newLamp(second, tile)
+			rays[w] = make([][]sample, tile)
 		}
-		l := lamps[w]
 		part := order[i*tile : min((i+1)*tile, len(order))]
-		for _, q := range part {
+		for n, q := range part {
 			p := lit[q]
 			y, z := c.Grid.Sky(int(p)%c.Grid.Nx, int(p)/c.Grid.Nx)
 			var err error
-			if rays[w], err = c.ray(y, z, rays[w]); err != nil {
+			if rays[w][n], err = c.ray(y, z, rays[w][n]); err != nil {
 				return err
 			}
 			if inField[p] {
-				v, structure := c.truthOf(rays[w])
+				v, structure := c.truthOf(rays[w][n])
 				truth.set(p, v, structure)
 			}
-			l.shine(rays[w])
+		}
+		lamps[w].shine(rays[w][:len(part)])
+		for n, q := range part {
 			for line := range 2 {
-				for k, a := range l.acc[line] {
+				for k, a := range lamps[w].acc[n][line] {
 					copy(raw[line].Series(q, k), a)
 				}
 			}

@@ -147,7 +147,6 @@ func TestStuckLevel(t *testing.T) {
 // What Parse accepts, New turns into a model that answers or refuses; neither
 // panics.
 func FuzzParse(f *testing.F) {
-	f.Add(string(embedded))
 	f.Add(small)
 	f.Add("format: 1\nbase: embedded\n")
 	f.Add("format: 1\nbase: embedded\ncollision_strengths:\n  - origin: {source: s, table: t, confidence: read}\n    unit: \"1\"\n    log_t: [6.0, 6.2, 6.4]\n    rows: {1-2: [0.3, 0.2, 0.1], 3-7: [1, 2, 3]}\n")
