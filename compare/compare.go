@@ -18,15 +18,8 @@ import (
 	"strings"
 
 	"offplane/compare/stat"
+	"offplane/synth/ecsv"
 	"offplane/synth/obs"
-)
-
-// Codes of the truth map STRUCTURE; 0 is outside the field.
-const (
-	Closed       = 1
-	Open         = 2
-	NearSheet    = 3
-	ActiveRegion = 4
 )
 
 // Options say what cannot be read from the maps.
@@ -56,11 +49,11 @@ type File struct {
 // A Verdict is all that comparing yields.
 type Verdict struct {
 	Summary Summary
-	Maps    obs.Maps // bias.fits: B_RATIO, SPEED_RATIO, NE_RATIO, ANGLE_DIFF; NaN where there is no ratio
-	Heights Table    // bias.ecsv: one row a height bin
-	Flags   []Flag   // why pixels of the field have no value or a doubtful one
-	Field   []bool   // pixel of the field, in raster order
-	Valid   []bool   // valid pixel
+	Maps    obs.Maps   // bias.fits: B_RATIO, SPEED_RATIO, NE_RATIO, ANGLE_DIFF; NaN where there is no ratio
+	Heights ecsv.Table // bias.ecsv: one row a height bin
+	Flags   []Flag     // why pixels of the field have no value or a doubtful one
+	Field   []bool     // pixel of the field, in raster order
+	Valid   []bool     // valid pixel
 }
 
 // A Flag counts the pixels of the field that carry one bit of the inverted FLAG map.

@@ -323,29 +323,20 @@ func TestErrors(t *testing.T) {
 func TestTable(t *testing.T) {
 	c := comparetest.Wedge(0.02)
 	v := verdict(t, c)
-	rows := len(v.Summary.Heights)
-	seen := map[string]bool{}
-	for _, col := range v.Heights.Columns {
-		if len(col.Float)+len(col.Int) != rows {
-			t.Errorf("column %s has %d rows, want %d", col.Name, len(col.Float)+len(col.Int), rows)
-		}
-		if seen[col.Name] {
-			t.Errorf("column %s twice", col.Name)
-		}
-		seen[col.Name] = true
-		switch col.Name {
-		case "ratio_field_sky":
-			if col.Float[1] != v.Summary.Heights[1].Ratios.Field.Sky.Median {
-				t.Error("ratio_field_sky is not the median of summary.json")
-			}
-		case "b_sky":
-			if col.Unit != "G" || !(col.Float[0] > col.Float[rows-1]) {
-				t.Errorf("b_sky [%s] %v: must fall with height", col.Unit, col.Float)
-			}
-		}
+	var b bytes.Buffer
+	if err := v.Heights.Write(&b); err != nil {
+		t.Fatal(err) // also checks that columns are equally long and names unique
 	}
-	if !seen["ratio_field_sky"] || !seen["b_sky"] || !seen["ratio_density_emission_p97_5"] {
-		t.Errorf("columns %v", seen)
+	ratio, err := v.Heights.Floats("ratio_field_sky")
+	if err != nil || len(ratio) != len(v.Summary.Heights) || ratio[1] != v.Summary.Heights[1].Ratios.Field.Sky.Median {
+		t.Errorf("ratio_field_sky %v, %v: not the medians of summary.json", ratio, err)
+	}
+	sky, err := v.Heights.Floats("b_sky")
+	if err != nil || v.Heights.Column("b_sky").Unit != "G" || !(sky[0] > sky[len(sky)-1]) {
+		t.Errorf("b_sky %v, %v: must fall with height, in G", sky, err)
+	}
+	if v.Heights.Column("ratio_density_emission_p97_5") == nil || v.Heights.Column("angle_error").Unit != "deg" || v.Heights.Column("height_from").Unit != "solRad" {
+		t.Error("columns or units are missing")
 	}
 }
 

@@ -6,6 +6,7 @@ import (
 	"math"
 
 	"offplane/compare/stat"
+	"offplane/model"
 )
 
 // Summary is summary.json, the verdict for machines: units in key names, null
@@ -134,7 +135,7 @@ func (c *comparison) summary() Summary {
 		regions[k] = Region{ValidFraction: fraction(b.valid, b.total, c.hasB), Total: b.total, Valid: b.valid}
 	}
 	if m := c.truth.Get("STRUCTURE"); m != nil && m.Ints != nil {
-		s.Structure = Structure{&regions[Open], &regions[Closed], &regions[NearSheet], &regions[ActiveRegion]}
+		s.Structure = Structure{&regions[model.Open], &regions[model.Closed], &regions[model.Sheet], &regions[model.ActiveRegion]}
 	}
 
 	ratios := func(region int) *Ratios {

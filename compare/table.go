@@ -2,51 +2,36 @@ package compare
 
 import (
 	"math"
-	"strconv"
 
 	"offplane/compare/stat"
+	"offplane/synth/ecsv"
 	"offplane/synth/obs"
 )
 
-// A Table is a table with units, ready for any format that keeps them.
-type Table struct {
-	Columns []Column
-	Meta    []Entry // in order
-}
-
-// A Column holds one value a row, Int or Float.
-type Column struct {
-	Name, Unit, About string
-	Float             []float64
-	Int               []int64
-}
-
-// An Entry is one line of a table's metadata.
-type Entry struct{ Key, Value string }
-
-// table lays the height bins out as bias.ecsv: one row a bin.
-func (c *comparison) table(heights []Height) Table {
-	t := Table{Meta: []Entry{
-		{"program", "offplane " + c.o.Version},
-		{"scenario", c.o.Scenario},
-		{"scenario_sha256", c.o.SHA256},
-		{"seed", strconv.FormatUint(c.o.Seed, 10)},
-		{"estimator", c.o.Estimator},
-		{"domain", "valid pixels: inferred B finite and positive; ratios are inferred over true"},
+// table lays the height bins out as bias.ecsv: one row a bin. A ratio without
+// its maps is NaN with the count 0.
+func (c *comparison) table(heights []Height) ecsv.Table {
+	t := ecsv.Table{Meta: []ecsv.Pair{
+		{Key: "program", Value: "offplane " + c.o.Version},
+		{Key: "scenario", Value: c.o.Scenario},
+		{Key: "scenario_sha256", Value: c.o.SHA256},
+		{Key: "seed", Value: c.o.Seed},
+		{Key: "estimator", Value: c.o.Estimator},
+		{Key: "domain", Value: "valid pixels: inferred B finite and positive; ratios are inferred over true"},
 	}}
 	floats := func(name, unit, about string, of func(h int) float64) {
 		x := make([]float64, len(heights))
 		for h := range x {
 			x[h] = of(h)
 		}
-		t.Columns = append(t.Columns, Column{Name: name, Unit: unit, About: about, Float: x})
+		t.Columns = append(t.Columns, ecsv.Column{Name: name, Unit: unit, About: about, Data: x})
 	}
 	ints := func(name, about string, of func(h int) int) {
 		x := make([]int64, len(heights))
 		for h := range x {
 			x[h] = int64(of(h))
 		}
-		t.Columns = append(t.Columns, Column{Name: name, About: about, Int: x})
+		t.Columns = append(t.Columns, ecsv.Column{Name: name, About: about, Data: x})
 	}
 	summary := func(name, unit, about string, of func(h int) *stat.Summary) {
 		get := func(part func(*stat.Summary) float64) func(int) float64 {
@@ -70,8 +55,8 @@ func (c *comparison) table(heights []Height) Table {
 		})
 	}
 
-	floats("from", "solRad", "lower edge of the bin, heliocentric distance on the plane of the sky", func(h int) float64 { return float64(heights[h].From) })
-	floats("to", "solRad", "upper edge of the bin", func(h int) float64 { return float64(heights[h].To) })
+	floats("height_from", "solRad", "lower edge of the bin, heliocentric distance on the plane of the sky", func(h int) float64 { return float64(heights[h].From) })
+	floats("height_to", "solRad", "upper edge of the bin", func(h int) float64 { return float64(heights[h].To) })
 	ints("pixels", "pixels of the field", func(h int) int { return heights[h].Total })
 	ints("valid", "valid pixels", func(h int) int { return heights[h].Valid })
 	floats("valid_fraction", "", "valid pixels over pixels of the field", func(h int) float64 { return float64(heights[h].ValidFraction) })

@@ -9,6 +9,7 @@ import (
 	"math/rand/v2"
 
 	"offplane/compare"
+	"offplane/model"
 	"offplane/scenarios/units"
 	"offplane/synth/obs"
 )
@@ -60,7 +61,7 @@ func build(nx, ny int, step, east, north, pa0, pa1 float64) *Case {
 	vSky, vWave, angSky, local := add(t, "SPEED_SKY", "km/s"), add(t, "SPEED_WAVE", "km/s"), add(t, "ANGLE_SKY", "deg"), add(t, "DOPPLER_LOCAL", "km/s")
 	structure := make([]int32, size)
 	*t = append(*t, obs.Map{Name: "STRUCTURE", Ints: structure, Codes: []obs.Code{
-		{Value: compare.Closed, Name: "closed"}, {Value: compare.Open, Name: "open"}, {Value: compare.NearSheet, Name: "near the sheet"}, {Value: compare.ActiveRegion, Name: "active region"}}})
+		{Value: model.Closed, Name: "closed"}, {Value: model.Open, Name: "open"}, {Value: model.Sheet, Name: "near the sheet"}, {Value: model.ActiveRegion, Name: "active region"}}})
 	m := &c.Inferred
 	b, ne, v, ang, rms, coherence := add(m, "B", "G"), add(m, "NE", "cm-3"), add(m, "SPEED", "km/s"), add(m, "ANGLE", "deg"), add(m, "DOPPLER_RMS", "km/s"), add(m, "COHERENCE", "")
 	flag := make([]int32, size)
@@ -89,11 +90,11 @@ func build(nx, ny int, step, east, north, pa0, pa1 float64) *Case {
 		local[i] = float32(28 * math.Pow(n/1e8, -0.25))
 		switch {
 		case belt > 0.75:
-			structure[i] = compare.Closed
+			structure[i] = model.Closed
 		case belt > 0.65:
-			structure[i] = compare.NearSheet
+			structure[i] = model.Sheet
 		default:
-			structure[i] = compare.Open
+			structure[i] = model.Open
 		}
 		coherence[i] = float32(math.Max(0.1, 0.95-1.2*(r-1.05)-0.25*math.Abs(math.Sin(3*lat))+0.04*g3))
 		rms[i] = local[i] * float32(0.12*math.Exp(0.1*g1))

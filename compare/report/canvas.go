@@ -257,6 +257,18 @@ func logTicks(lo, hi float64) []tick {
 			ts = append(ts, t)
 		}
 	}
+	labelled := 0
+	for _, t := range ts {
+		if t.label != "" {
+			labelled++
+		}
+	}
+	if labelled < 2 { // less than an octave or so
+		for i, t := range ts {
+			e := math.Floor(math.Log10(t.at) + 1e-9)
+			ts[i].label = power(math.Round(t.at/math.Pow(10, e)), int(e))
+		}
+	}
 	return ts
 }
 

@@ -9,7 +9,7 @@ import (
 // Colours of what is not a number on a map.
 var (
 	noValue  = color.RGBA{0x9e, 0x9e, 0x9e, 0xff} // pixel of the field without a value
-	occulted = color.RGBA{0xe6, 0xe6, 0xe6, 0xff} // inside the field's inner edge
+	occulted = color.RGBA{0xd9, 0xd9, 0xd9, 0xff} // inside the field's inner edge
 	paper    = color.RGBA{0xff, 0xff, 0xff, 0xff} // outside the field
 	ink      = color.RGBA{0x1a, 0x1a, 0x1a, 0xff}
 	faint    = color.RGBA{0xd8, 0xd8, 0xd8, 0xff}
@@ -58,9 +58,9 @@ var viridis = func() (t table) {
 var diverging = func() (t table) {
 	for i := range t {
 		x := (float64(i) - 127.5) / 127.5
-		hue := 288.0
+		hue := divergingLow
 		if x > 0 {
-			hue = 45
+			hue = divergingHigh
 		}
 		x = math.Abs(x)
 		s, c := math.Sincos(hue * math.Pi / 180)
@@ -71,9 +71,11 @@ var diverging = func() (t table) {
 }()
 
 const (
-	divergingL0 = 96.0 // lightness of the middle
-	divergingL1 = 36.0 // of the ends
-	divergingC  = 59.0 // chroma of the ends: the most that both arms have in sRGB
+	divergingLow  = 288.0 // hue below the middle [deg]
+	divergingHigh = 45.0  // above
+	divergingL0   = 96.0  // lightness of the middle
+	divergingL1   = 36.0  // of the ends
+	divergingC    = 59.0  // chroma of the ends: the most that both arms have in sRGB
 )
 
 // fromLab converts CIE 1976 L*a*b* (white point D65) to sRGB (IEC 61966-2-1);

@@ -60,7 +60,11 @@ func WriteHTML(w io.Writer, r *Report) error {
 		Setup: r.Setup, Summary: &r.Verdict.Summary, Sentences: r.Verdict.Summary.Sentences(),
 		Identity: r.identitySentence(), Domain: r.domain(), Pixel: r.pixel(),
 		Ratios: ratioRows(&r.Verdict.Summary), Heights: heightRows(r.Verdict), Structures: structureRows(&r.Verdict.Summary),
-		Flags: r.Verdict.Flags,
+	}
+	for _, f := range r.Verdict.Flags {
+		if f.Pixels > 0 {
+			p.Flags = append(p.Flags, f)
+		}
 	}
 	for _, f := range r.Figures() {
 		c, err := png.DecodeConfig(bytes.NewReader(f.PNG))
@@ -495,12 +499,11 @@ func medianSpan(s *stat.Summary) (median, span string) {
 
 func heightRows(v *compare.Verdict) (rows []heightRow) {
 	at := func(column string, i int) float64 {
-		for _, c := range v.Heights.Columns {
-			if c.Name == column {
-				return c.Float[i]
-			}
+		x, err := v.Heights.Floats(column)
+		if err != nil {
+			panic("report: " + err.Error())
 		}
-		return math.NaN()
+		return x[i]
 	}
 	for i, h := range v.Summary.Heights {
 		row := heightRow{

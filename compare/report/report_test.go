@@ -232,7 +232,7 @@ func TestDivergingTable(t *testing.T) {
 			t.Errorf("entry %d is darker than entry %d", i, i-1)
 		}
 		x := (float64(i) - 127.5) / -127.5
-		for _, hue := range []float64{288, 45} {
+		for _, hue := range []float64{divergingLow, divergingHigh} {
 			s, c := math.Sincos(hue * math.Pi / 180)
 			if _, inside := fromLab(divergingL0+x*(divergingL1-divergingL0), divergingC*x*c, divergingC*x*s); !inside {
 				t.Errorf("entry %d, hue %g is clipped: steps are not uniform", i, hue)
@@ -432,6 +432,7 @@ func TestTicks(t *testing.T) {
 		{linearTicks(1.05, 1.35, 6), "1.05 1.10 1.15 1.20 1.25 1.30 1.35"},
 		{linearTicks(-0.3, 0.3, 6), "−0.3 −0.2 −0.1 0.0 0.1 0.2 0.3"},
 		{logTicks(1e8, 5e8), "10⁸ 2×10⁸   5×10⁸"},
+		{logTicks(2e7, 3e7), "2×10⁷ 3×10⁷"},
 		{logTicks(1e-4, 1e4), strings.Join([]string{"10⁻⁴", "10⁻³", "0.01", "0.1", "1", "10", "100", "1000", "10⁴"}, strings.Repeat(" ", 9))},
 	} {
 		if got := join(c.ts); got != c.want {
