@@ -104,7 +104,7 @@ func (v *Inverter) Density(ratio, r float64) (n, slope float64, why Reason) {
 	y := v.falling * math.Log(ratio)
 	ix, wx := 0, [4]float64{1}
 	if v.x.n > 1 {
-		ix, wx = v.x.stencil(heightCoordinate(r))
+		ix, wx, _ = v.x.stencil(heightCoordinate(r))
 	}
 	at := func(i int) float64 {
 		row := v.lnRatio[i*v.x.n+ix:]
