@@ -245,7 +245,7 @@ func Invert(ctx context.Context, o *obs.Observation, e line.Emitter, opt Options
 		f.index[i] = int32(p)
 	}
 	r := &Result{Maps: mapsOf(&o.Grid, o.Unit), Series: obs.NewCube(np, 1, cube.Frames)}
-	run := &run{field: f, cube: cube, means: means, result: r, variance: make([]float64, np)}
+	run := &run{field: f, cube: cube, means: means, result: r, variance: make([]float64, np), dft: newDFT(b)}
 
 	if means[1] != nil {
 		if run.inverter, err = newInverter(e, opt.Temperature, f); err != nil {
@@ -325,6 +325,7 @@ type run struct {
 	means    [2]*means
 	inverter *line.Inverter // nil without a second line
 	result   *Result
+	dft      *dft      // nil for long series
 	variance []float64 // white-noise variance of the Doppler series [(km/s)^2]; NaN: not known
 }
 
@@ -341,7 +342,7 @@ type worker struct {
 func (r *run) newWorker() *worker {
 	step := r.grid.Step() * units.SolarRadius / 1e5
 	w := &worker{
-		transform: newTransformer(r.band),
+		transform: newTransformer(r.band, r.dft),
 		islands:   newIslander(r.field),
 		track:     tracker{field: r.field},
 		lags:      newLagger(r.band, r.opt, r.opt.Track, step, 1/(lagSteps*r.opt.Centre)),

@@ -487,15 +487,25 @@ func (limited) Emissivities(n, t, r float64) (j1, j2 float64) {
 	return powerLaw{1.4, 1.8}.Emissivities(n, t, r)
 }
 
+// One worker on 60 x 60 pixels of three tunings, 21-pixel window, 31-point track.
 func BenchmarkInvert(b *testing.B) {
-	q := defaultPatch()
-	q.nx, q.ny, q.frames = 60, 60, 180
-	q.tunings = true
-	o := q.observe()
-	for b.Loop() {
-		if _, err := Invert(context.Background(), o, powerLaw{1.4, 1.8}, Default(), 1, nil); err != nil {
-			b.Fatal(err)
-		}
+	for _, c := range []struct {
+		name       string
+		frames     int
+		separation bool
+	}{{"180 frames, separated", 180, true}, {"180 frames", 180, false}, {"360 frames, separated", 360, true}} {
+		q := defaultPatch()
+		q.nx, q.ny, q.frames, q.electrons, q.tunings = 60, 60, c.frames, 5000, true
+		o := q.observe()
+		opt := Default()
+		opt.Separation = c.separation
+		b.Run(c.name, func(b *testing.B) {
+			for b.Loop() {
+				if _, err := Invert(context.Background(), o, powerLaw{1.4, 1.8}, opt, 1, nil); err != nil {
+					b.Fatal(err)
+				}
+			}
+			b.ReportMetric(3600*float64(b.N)/b.Elapsed().Seconds(), "pixels/s")
+		})
 	}
-	b.ReportMetric(3600*float64(b.N)/b.Elapsed().Seconds(), "pixels/s")
 }

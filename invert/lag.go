@@ -12,17 +12,19 @@ const (
 // A lagger measures phase speeds on tracks; one worker's scratch.
 type lagger struct {
 	*band
-	step   float64 // between points [km]
-	kzero  float64 // weight of zero wavenumber in the separation
-	power  float64 // of the coherence in the weights of the fit
-	pad    int
-	grid   float64 // step of the lag search [s]
-	reach  int     // lags searched, in steps either way
-	phasor []float32
-	kernel map[int][]float32
-	wave   [2][]float32
-	cross  []float32
-	fit    []lag
+	step    float64 // between points [km]
+	kzero   float64 // weight of zero wavenumber in the separation
+	power   float64 // of the coherence in the weights of the fit
+	pad     int
+	grid    float64 // step of the lag search [s]
+	reach   int     // lags searched, in steps either way
+	phasor  []float32
+	kernel  map[int][]float32
+	wave    [2][]float32
+	cross   []float32
+	parts   []float32
+	product []float32
+	fit     []lag
 }
 
 // A lag is that of one point of a track against its centre.
@@ -44,6 +46,8 @@ func newLagger(b *band, opt *Options, points int, step, grid float64) *lagger {
 			r[j], r[n+j] = float32(c), float32(-s)
 		}
 	}
+	l.parts = make([]float32, points*b.row)
+	l.product = make([]float32, points*b.row)
 	l.wave[0] = make([]float32, points*b.row)
 	l.wave[1] = make([]float32, points*b.row)
 	l.cross = make([]float32, b.row)
@@ -64,33 +68,58 @@ func newLagger(b *band, opt *Options, points int, step, grid float64) *lagger {
 func (l *lagger) separate(rows []float32, n int) (rising, falling []float32) {
 	row, nf := l.row, len(l.freq)
 	rising, falling = l.wave[0][:n*row], l.wave[1][:n*row]
+	at := func(x []float32, i int) []float32 { return x[i*row : (i+1)*row : (i+1)*row] }
 	h := l.toeplitz(n)
-	z := rising // H x first
-	clear(z)
-	for i := range n {
-		zi := z[i*row : (i+1)*row]
-		for j := range n {
-			if c := h[n-1+i-j]; c != 0 {
-				blas.Saxpy(row, c, rows[j*row:(j+1)*row], 1, zi, 1)
-			}
+
+	// H turns what is even about the middle of the track into what is odd and back,
+	// which halves the work: with e, o the sum and difference of mirrored points,
+	// z_i = D_i + A_i and, mirrored, D_i - A_i, A from e and D from o.
+	m := n / 2
+	parts := l.parts[:2*m*row]
+	for j := range m {
+		x, y := at(rows, j), at(rows, n-1-j)
+		e, o := at(parts, j), at(parts, m+j)
+		for k, a := range x {
+			e[k], o[k] = a+y[k], a-y[k]
 		}
 	}
+	z := l.product[:n*row]
+	clear(z)
+	for i := range m {
+		a, d := at(z, n-1-i), at(z, i)
+		for j := range m {
+			p, q := h[n-1+i-j], h[i+j] // H(i-j), H(i-(n-1-j))
+			blas.Saxpy(row, (p+q)/2, at(parts, j), 1, a, 1)
+			blas.Saxpy(row, (p-q)/2, at(parts, m+j), 1, d, 1)
+		}
+		if n%2 == 1 {
+			blas.Saxpy(row, h[n-1+i-m], at(rows, m), 1, a, 1)
+			blas.Saxpy(row, h[n-1+m-i], at(parts, m+i), 1, at(z, m), 1)
+		}
+		for k, a0 := range a {
+			d0 := d[k]
+			d[k], a[k] = d0+a0, d0-a0
+		}
+	}
+
 	zero := l.cross // the k = 0 part beyond one half, the same at every point
 	clear(zero)
 	if c := float32((l.kzero - 0.5) / float64(l.pad*n)); c != 0 {
 		for j := range n {
-			blas.Saxpy(row, c, rows[j*row:(j+1)*row], 1, zero, 1)
+			blas.Saxpy(row, c, at(rows, j), 1, zero, 1)
 		}
 	}
 	for i := range n {
-		x := rows[i*row : (i+1)*row]
-		up, down := rising[i*row:(i+1)*row], falling[i*row:(i+1)*row]
-		for j := range nf {
-			hr, hi := up[j], up[nf+j]
-			r, q := float32(0.5*x[j])+zero[j], float32(0.5*x[nf+j])+zero[nf+j]
-			// i H x = (-hi, hr); rising waves take its negative.
-			up[j], up[nf+j] = r+hi, q-hr
-			down[j], down[nf+j] = r-hi, q+hr
+		x, y := at(rows, i), at(z, i)
+		up, down := at(rising, i), at(falling, i)
+		// i H x = (-hi, hr); rising waves take its negative.
+		xr, xi, hr, hi := x[:nf], x[nf:2*nf], y[:nf], y[nf:2*nf]
+		upr, upi, dor, doi := up[:nf], up[nf:2*nf], down[:nf], down[nf:2*nf]
+		zr, zi := zero[:nf], zero[nf:2*nf]
+		for j := range xr {
+			r, q := float32(0.5*xr[j])+zr[j], float32(0.5*xi[j])+zi[j]
+			upr[j], upi[j] = r+hi[j], q-hr[j]
+			dor[j], doi[j] = r-hi[j], q+hr[j]
 		}
 	}
 	return rising, falling
@@ -162,11 +191,11 @@ func (l *lagger) speed(rows []float32, n, centre int) speed {
 			}
 			r.power += ps
 			// Cross-spectrum x c*.
-			for j := range nf {
-				a, b := x[j], x[nf+j]
-				p, q := c[j], c[nf+j]
-				l.cross[j] = float32(a*p) + float32(b*q)
-				l.cross[nf+j] = float32(b*p) - float32(a*q)
+			xr, xi, cr, ci, zr, zi := x[:nf], x[nf:2*nf], c[:nf], c[nf:2*nf], l.cross[:nf], l.cross[nf:2*nf]
+			for j, a := range xr {
+				b, p, q := xi[j], cr[j], ci[j]
+				zr[j] = float32(a*p) + float32(b*q)
+				zi[j] = float32(b*p) - float32(a*q)
 			}
 			m, tau, peak, ok := l.peak(start)
 			if !ok {

@@ -107,7 +107,7 @@ func newBench(t *testing.T, frames int, slope float64) bench {
 	opt := Default()
 	opt.Taper = 0 // as the simulations to be met
 	b := mustBand(t, opt, frames, 30)
-	return bench{newTrainMaker(frames, slope), newTransformer(b), b}
+	return bench{newTrainMaker(frames, slope), newTransformer(b, newDFT(b)), b}
 }
 
 func (b bench) lagger(points, pad int, k KZero, grid float64) *lagger {
@@ -259,7 +259,7 @@ func TestTaper(t *testing.T) {
 		opt := Default()
 		opt.Taper = taper
 		b := mustBand(t, opt, 360, 30)
-		tr, m := newTransformer(b), newTrainMaker(360, 1.5)
+		tr, m := newTransformer(b, newDFT(b)), newTrainMaker(360, 1.5)
 		l := newLagger(b, &opt, 31, simStep, 9)
 		s := simulation{v: 400, points: 31, frames: 360}
 		rng := rand.New(rand.NewPCG(77, 1))

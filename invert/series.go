@@ -156,31 +156,70 @@ func fill(v []float64, bad []bool) int {
 	return n
 }
 
+// A dft is the discrete Fourier transform between a series folded about its middle
+// and the bins of the band, as tables: for the few bins of a band cheaper than a
+// fast transform. Read-only.
+type dft struct {
+	half    int       // numbers of a folded series, padded to whole 16-byte blocks
+	forward []float32 // two rows a bin: weight * cos, -weight * sin
+	inverse []float32 // one row a folded frame, laid out like a spectrum: 2/n cos, -2/n sin
+}
+
+// largestDFT is the size of one table [numbers] up to which the tables stay in the
+// second-level cache and beat the fast transform.
+const largestDFT = 1 << 17
+
+// newDFT returns nil if the tables would be too large.
+func newDFT(b *band) *dft {
+	n, nf := b.frames, len(b.freq)
+	folded := n/2 + 1
+	d := &dft{half: (folded + 3) &^ 3}
+	if 2*nf*d.half > largestDFT {
+		return nil
+	}
+	d.forward = make([]float32, 2*nf*d.half)
+	d.inverse = make([]float32, folded*b.row)
+	for j, w := range b.weight {
+		for i := range folded {
+			s, c := math.Sincos(2 * math.Pi * float64(i*(b.first+j)%n) / float64(n))
+			d.forward[2*j*d.half+i] = float32(w * c)
+			d.forward[(2*j+1)*d.half+i] = float32(-w * s)
+			d.inverse[i*b.row+j] = float32(2 * c / float64(n))
+			d.inverse[i*b.row+nf+j] = float32(-2 * s / float64(n))
+		}
+	}
+	return d
+}
+
 // A transformer holds one worker's scratch for Fourier transforms of one length.
 type transformer struct {
 	*band
-	fft   *fourier.FFT
-	v     []float64
-	bad   []bool
-	coeff []complex128
-	high  []float64
+	dft       *dft
+	fft       *fourier.FFT
+	v         []float64
+	bad       []bool
+	even, odd []float32
+	coeff     []complex128
+	high      []float64
 }
 
-func newTransformer(b *band) *transformer {
-	return &transformer{
+func newTransformer(b *band, d *dft) *transformer {
+	t := &transformer{
 		band:  b,
+		dft:   d,
 		fft:   fourier.NewFFT(b.frames), // holds scratch: one per worker
 		v:     make([]float64, b.frames),
 		bad:   make([]bool, b.frames),
 		coeff: make([]complex128, b.frames/2+1),
 	}
+	if d != nil {
+		t.even, t.odd = make([]float32, d.half), make([]float32, d.half)
+	}
+	return t
 }
 
-// forward puts the band-passed spectrum of t.v, tapered about its mean, into row and
-// returns the variance
-// of the white noise as the highest frequencies tell it: the median power of the
-// top quarter of the spectrum, over ln 2 for an exponential distribution. NaN if
-// that quarter is in the band, or if noise is not asked for.
+// forward puts the band-passed spectrum of t.v, tapered about its mean, into row
+// and, if asked, returns the variance of the white noise in it; else NaN.
 func (t *transformer) forward(row []float32, noise bool) float64 {
 	mean := 0.0
 	for _, v := range t.v {
@@ -190,18 +229,49 @@ func (t *transformer) forward(row []float32, noise bool) float64 {
 	for i, w := range t.taper {
 		t.v[i] = (t.v[i] - mean) * w
 	}
-	t.fft.Coefficients(t.coeff, t.v)
 	n := len(t.freq)
-	for j, w := range t.weight {
-		c := t.coeff[t.first+j]
-		row[j] = float32(w * real(c))
-		row[n+j] = float32(w * imag(c))
+	if d := t.dft; d != nil {
+		t.fold()
+		for j := range n {
+			row[j] = blas.Sdot(d.half, t.even, 1, d.forward[2*j*d.half:], 1)
+			row[n+j] = blas.Sdot(d.half, t.odd, 1, d.forward[(2*j+1)*d.half:], 1)
+		}
+		if !noise {
+			return math.NaN()
+		}
+	}
+	t.fft.Coefficients(t.coeff, t.v)
+	if t.dft == nil {
+		for j, w := range t.weight {
+			c := t.coeff[t.first+j]
+			row[j], row[n+j] = float32(w*real(c)), float32(w*imag(c))
+		}
 	}
 	if !noise {
 		return math.NaN()
 	}
+	return t.noise()
+}
+
+// fold adds and subtracts the frames that are mirror images about frame 0: a cosine
+// sees only the sum, a sine the difference.
+func (t *transformer) fold() {
+	v, n := t.v, t.frames
+	t.even[0], t.odd[0] = float32(v[0]), 0
+	for i := 1; 2*i < n; i++ {
+		t.even[i], t.odd[i] = float32(v[i]+v[n-i]), float32(v[i]-v[n-i])
+	}
+	if n%2 == 0 {
+		t.even[n/2], t.odd[n/2] = float32(v[n/2]), 0
+	}
+}
+
+// noise returns the variance of the white noise as the highest frequencies of the
+// spectrum in t.coeff tell it: the median power of their top quarter, over ln 2 for
+// an exponential distribution. NaN if that quarter is in the band.
+func (t *transformer) noise() float64 {
 	top := (t.frames - 1) / 2
-	from := max(top-top/4, t.first+n)
+	from := max(top-top/4, t.first+len(t.freq))
 	if top-from < 8 {
 		return math.NaN()
 	}
@@ -217,11 +287,23 @@ func (t *transformer) forward(row []float32, noise bool) float64 {
 
 // backward turns a band-passed spectrum into its series.
 func (t *transformer) backward(row, series []float32) {
+	n, nf := t.frames, len(t.freq)
+	if d := t.dft; d != nil {
+		for i := range n/2 + 1 {
+			at := d.inverse[i*t.row : (i+1)*t.row]
+			even := blas.Sdot(nf, row, 1, at, 1)
+			odd := blas.Sdot(nf, row[nf:], 1, at[nf:], 1)
+			series[i] = even + odd
+			if i > 0 {
+				series[n-i] = even - odd // for even n the middle frame again: its sines are zero
+			}
+		}
+		return
+	}
 	clear(t.coeff)
-	n := len(t.freq)
-	scale := 1 / float64(t.frames) // gonum leaves the round trip unscaled
-	for j := range n {
-		t.coeff[t.first+j] = complex(scale*float64(row[j]), scale*float64(row[n+j]))
+	scale := 1 / float64(n) // gonum leaves the round trip unscaled
+	for j := range nf {
+		t.coeff[t.first+j] = complex(scale*float64(row[j]), scale*float64(row[nf+j]))
 	}
 	t.fft.Sequence(t.v, t.coeff)
 	for i, v := range t.v {

@@ -43,28 +43,34 @@ func TestBand(t *testing.T) {
 	}
 }
 
-// A sinusoid comes back with the filter's weight; mean and out-of-band vanish.
+// A sinusoid comes back with the filter's weight, by tables and by the fast
+// transform; the mean vanishes.
 func TestBandPassOfASinusoid(t *testing.T) {
 	opt := Default()
 	opt.Taper = 0
 	for _, n := range []int{90, 180, 181, 359} {
 		b := mustBand(t, opt, n, 30)
-		tr := newTransformer(b)
 		j := int(math.Round(4.2e-3 * float64(n) * 30))
 		f := float64(j) / float64(n) / 30
-		for i := range tr.v {
-			tr.v[i] = 13 + 0.7*math.Cos(2*math.Pi*f*30*float64(i)+0.4)
-		}
-		row, out := make([]float32, b.row), make([]float32, n)
-		tr.forward(row, false)
-		tr.backward(row, out)
 		u := (f - 3.5e-3) / 1.5e-3
-		for i, got := range out {
-			want := 0.7 * math.Exp(-u*u) * math.Cos(2*math.Pi*f*30*float64(i)+0.4)
-			if math.Abs(float64(got)-want) > 1e-5 {
-				t.Fatalf("n = %d, frame %d: %g, want %g", n, i, got, want)
+		wave := func(i int) float64 { return 0.7 * math.Cos(2*math.Pi*f*30*float64(i)+0.4) }
+		for _, d := range []*dft{nil, newDFT(b)} {
+			tr := newTransformer(b, d)
+			for i := range tr.v {
+				tr.v[i] = 13 + wave(i)
+			}
+			row, out := make([]float32, b.row), make([]float32, n)
+			tr.forward(row, false)
+			tr.backward(row, out)
+			for i, got := range out {
+				if want := math.Exp(-u*u) * wave(i); math.Abs(float64(got)-want) > 2e-6 {
+					t.Fatalf("n = %d, tables %v, frame %d: %g, want %g", n, d != nil, i, got, want)
+				}
 			}
 		}
+	}
+	if newDFT(mustBand(t, opt, 5000, 30)) != nil {
+		t.Error("huge tables")
 	}
 }
 
@@ -72,7 +78,7 @@ func TestBandPassOfASinusoid(t *testing.T) {
 // estimate from the highest frequencies, on top of a wave spectrum.
 func TestNoiseInBand(t *testing.T) {
 	b := mustBand(t, Default(), 360, 30)
-	tr := newTransformer(b)
+	tr := newTransformer(b, newDFT(b))
 	rng := rand.New(rand.NewPCG(3, 4))
 	const trials = 400
 	row := make([]float32, b.row)

@@ -15,48 +15,45 @@ type point struct{ x, y float64 } // zero-based pixel coordinates
 // share is the part of the bilinear weight that has to fall on pixels with a value.
 const share = 0.5
 
-// corners calls f for the four pixels around (x, y) that lie in the field, with
-// their bilinear weights.
-func (t *tracker) corners(x, y float64, f func(p int, w float64)) {
+// A corner is one of the pixels around a point, with its bilinear weight.
+type corner struct {
+	p int
+	w float64
+}
+
+// corners returns the up to four pixels around (x, y) that have a series, and the
+// sum of their weights.
+func (f *field) corners(x, y float64, cs *[4]corner) (n int, sum float64) {
 	fx, fy := math.Floor(x), math.Floor(y)
-	i, j := int(fx), int(fy)
 	u, v := x-fx, y-fy
-	for k := range 4 {
-		w := 1.0
-		ii, jj := i, j
-		if k&1 == 0 {
-			w *= 1 - u
-		} else {
-			w *= u
-			ii++
-		}
-		if k&2 == 0 {
-			w *= 1 - v
-		} else {
-			w *= v
-			jj++
-		}
+	i, j := int(fx), int(fy)
+	for k, w := range [4]float64{(1 - u) * (1 - v), u * (1 - v), (1 - u) * v, u * v} {
 		if w == 0 {
 			continue
 		}
-		if p := t.find(ii, jj); p >= 0 && t.norm[p] > 0 {
-			f(p, w)
+		if p := f.find(i+k&1, j+k>>1); p >= 0 && f.norm[p] > 0 {
+			cs[n] = corner{p, w}
+			n++
+			sum += w
 		}
 	}
+	return n, sum
 }
 
 // direction returns the unit vector of the axis at (x, y) that points along
 // (dx, dy). Angles of axes are interpolated as unit vectors of the double angle.
-func (t *tracker) direction(x, y, dx, dy float64) (ux, uy float64, ok bool) {
+func (f *field) direction(x, y, dx, dy float64) (ux, uy float64, ok bool) {
+	var cs [4]corner
+	n, _ := f.corners(x, y, &cs)
 	var c, s, sum float64
-	t.corners(x, y, func(p int, w float64) {
-		if a := t.axis[p]; a != ([2]float32{}) {
-			c += w * float64(a[0])
-			s += w * float64(a[1])
-			sum += w
+	for _, q := range cs[:n] {
+		if a := f.axis[q.p]; a != ([2]float32{}) {
+			c += q.w * float64(a[0])
+			s += q.w * float64(a[1])
+			sum += q.w
 		}
-	})
-	m := math.Hypot(c, s)
+	}
+	m := math.Sqrt(c*c + s*s)
 	if sum < share || m < 0.1*sum { // axes at right angles cancel: no direction
 		return 0, 0, false
 	}
@@ -99,9 +96,8 @@ func (t *tracker) trace(p, n int) (centre int, rise float64) {
 				break
 			}
 			nx, ny := x+mx, y+my
-			sum := 0.0
-			t.corners(nx, ny, func(_ int, w float64) { sum += w })
-			if sum < share {
+			var cs [4]corner
+			if _, sum := t.corners(nx, ny, &cs); sum < share {
 				break
 			}
 			x, y, dx, dy = nx, ny, mx, my
@@ -143,11 +139,11 @@ func (t *tracker) sample() []float32 {
 	clear(rows)
 	for i, q := range t.points {
 		out := rows[i*row : (i+1)*row]
-		sum := 0.0
-		t.corners(q.x, q.y, func(_ int, w float64) { sum += w })
-		t.corners(q.x, q.y, func(p int, w float64) {
-			blas.Saxpy(row, float32(w/sum)*t.norm[p], t.spec[p*row:(p+1)*row], 1, out, 1)
-		})
+		var cs [4]corner
+		n, sum := t.corners(q.x, q.y, &cs)
+		for _, c := range cs[:n] {
+			blas.Saxpy(row, float32(c.w/sum)*t.norm[c.p], t.spec[c.p*row:(c.p+1)*row], 1, out, 1)
+		}
 	}
 	return rows
 }
