@@ -83,8 +83,11 @@ func (o *Options) check() error {
 
 // A Result is what the inversion makes of an observation.
 type Result struct {
-	// Maps are on the observation's grid, NaN where there is no value; see
-	// mapsOf for names and units, FlagCodes for the bits of FLAG.
+	// Maps are on the observation's grid, NaN where there is no value: PEAK [unit of
+	// the frames], WIDTH, DOPPLER_RMS [km/s], RATIO, NE, NE_ERR [cm^-3], ANGLE,
+	// ANGLE_ERR [deg], COHERENCE, SPEED, SPEED_ERR, SPEED_IN [km/s], TRACK, B, B_ERR
+	// [G] and FLAG, whose bits FlagCodes explains. NE_ERR and with it B_ERR need
+	// the log to know the electrons per radiance of both lines.
 	Maps obs.Maps
 	// Series holds the band-passed Doppler series [km/s] that the tracker used, one
 	// per pixel of the field, one "tuning". NaN where the series was bad.
@@ -123,11 +126,11 @@ func mapsOf(g *obs.Grid, unit string) obs.Maps {
 		mapAngleErr:   {Name: "ANGLE_ERR", Unit: "deg", About: "formal error of ANGLE"},
 		mapCoherence:  {Name: "COHERENCE", About: "mean in-band coherence with the adjacent pixels"},
 		mapSpeed:      {Name: "SPEED", Unit: "km/s", About: "phase speed on the sky, outward"},
-		mapSpeedErr:   {Name: "SPEED_ERR", Unit: "km/s", About: "formal error of SPEED, a lower limit"},
+		mapSpeedErr:   {Name: "SPEED_ERR", Unit: "km/s", About: "formal error of SPEED, without the method's bias"},
 		mapSpeedIn:    {Name: "SPEED_IN", Unit: "km/s", About: "phase speed on the sky of the inward waves"},
 		mapTrack:      {Name: "TRACK", About: "track length over the wavelength at the band centre"},
 		mapField:      {Name: "B", Unit: "G", About: "magnetic field on the sky, speed sqrt(4 pi rho)"},
-		mapFieldErr:   {Name: "B_ERR", Unit: "G", About: "formal error of B, a lower limit"},
+		mapFieldErr:   {Name: "B_ERR", Unit: "G", About: "formal error of B, without the method's bias"},
 		mapFlag:       {Name: "FLAG", About: "why a pixel has no field, and cautions", Codes: FlagCodes()},
 	}
 	n := g.Nx * g.Ny

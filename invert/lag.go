@@ -34,7 +34,7 @@ type lag struct{ s, tau, coherence, weight float64 } // [km, s]
 // of the lag search [s]: the parabola's error is (2 pi f grid)^2/12 of the distance
 // to the nearest step, 0.3 % of at most half a step at lagSteps.
 func newLagger(b *band, opt *Options, points int, step, grid float64) *lagger {
-	l := &lagger{band: b, step: step, grid: grid, pad: opt.Padding, kzero: opt.KZero.weight(), power: 2, kernel: map[int][]float32{}}
+	l := &lagger{band: b, step: step, grid: grid, pad: opt.Padding, kzero: opt.KZero.weight(), power: 1, kernel: map[int][]float32{}}
 	longest := min(step*float64(points-1)/slowest, float64(b.frames)*b.cadence/4)
 	l.reach = max(int(longest/l.grid), 4)
 	l.phasor = make([]float32, (2*l.reach+1)*b.row)
@@ -156,7 +156,10 @@ type speed struct {
 
 // speed cross-correlates every point of a track with point centre, takes the lag
 // from a parabola through the peak, and fits a straight line, lag = s/v + c, with
-// the squared coherence as weight.
+// the coherence as weight. (Its square takes 1 % off the scatter that noise makes,
+// but where unseparated waves run both ways it favours the middle of the track,
+// which then looks faster still: 1.9 instead of 1.65 of the truth on 63 Mm at a power
+// ratio of 2; unweighted is as good; derived, own simulation.)
 //
 // The search goes outward from the centre, each point starting at the lag of the
 // one before it, so a peak one period off is not taken.
@@ -164,7 +167,8 @@ type speed struct {
 // The error adds two variances of the slope: the scatter of the lags about the
 // line, and the propagated error of the lags from the coherence g of a pair,
 // sqrt(1-g^2) / (g sqrt(2 n) 2 pi f_rms) with n independent spectral samples
-// (derived). Errors along a track are correlated, so it is a lower limit.
+// (derived). For white noise on one wave that is 1.5 times the true scatter; what
+// waves that run both ways and the separation do to a lag is not in it.
 func (l *lagger) speed(rows []float32, n, centre int) speed {
 	row, nf := l.row, len(l.freq)
 	c := rows[centre*row : (centre+1)*row]
