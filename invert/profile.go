@@ -152,7 +152,8 @@ func (g *gaussian) energyScale() float64 {
 }
 
 // A photonNoise gives the variance of an intensity: alpha I + beta. Averaged over
-// the exposures of a line.
+// the exposures of a line. The background was measured for as long as the line, so its
+// photons count twice.
 type photonNoise struct {
 	known       bool
 	alpha, beta float64
@@ -166,7 +167,7 @@ func newPhotonNoise(es []obs.Exposure) photonNoise {
 			return photonNoise{frames: len(es)}
 		}
 		n.alpha += 1 / e.Electrons
-		n.beta += e.Background/e.Electrons + e.ReadNoise*e.ReadNoise/(e.Electrons*e.Electrons)
+		n.beta += 2*e.Background/e.Electrons + e.ReadNoise*e.ReadNoise/(e.Electrons*e.Electrons)
 	}
 	n.alpha /= float64(len(es))
 	n.beta /= float64(len(es))

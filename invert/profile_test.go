@@ -169,8 +169,9 @@ func TestPhotonNoise(t *testing.T) {
 	const trials = 40000
 	m2 := 0.0
 	for range trials {
-		// (30+20)*50 electrons: Poisson noise is Gaussian enough for a variance.
-		el := 2500 + 50*rng.NormFloat64() + 40*rng.NormFloat64()
+		// (30+20)*50 electrons, and 20*50 beside the line that are subtracted: Poisson
+		// noise is Gaussian enough for a variance.
+		el := 2500 + 50*rng.NormFloat64() + math.Sqrt(1000)*rng.NormFloat64() + 40*rng.NormFloat64()
 		m2 += (el/50 - 50) * (el/50 - 50) / trials
 	}
 	s2 := make([]float64, 1)
