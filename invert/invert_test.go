@@ -89,7 +89,7 @@ func (q patch) observe() *obs.Observation {
 				for i := range out {
 					x := 10 * e1 * through(rest1, d, float64(v[i]))
 					if q.electrons > 0 {
-						x += rng.NormFloat64() * math.Sqrt((x+1)/q.electrons+900/(q.electrons*q.electrons))
+						x += rng.NormFloat64() * math.Sqrt((x+2)/q.electrons+900/(q.electrons*q.electrons))
 					}
 					out[i] = float32(x)
 				}

@@ -25,7 +25,7 @@ func Default() Scenario {
 			Nonthermal:  25,
 		},
 		Waves: Waves{
-			Amplitude: 7,
+			Amplitude: 12,
 			AtDensity: 1e8,
 			Growth:    "wkb",
 			Cell:      7,
@@ -37,7 +37,7 @@ func Default() Scenario {
 			FarEnd:     true,
 		},
 		Line:  line,
-		Sight: Sight{Step: 0.5, Reach: 2, Tail: 0.001},
+		Sight: Sight{Step: 1, Reach: 2, Tail: 0.001},
 		Image: Image{Pixel: 4.35, Inner: 1.05, Outer: 1.35, From: 0, To: 360},
 		Camera: Camera{
 			Cadence:     30,

@@ -89,8 +89,8 @@ type Hydrostatic struct {
 
 // Temperature per region, blended like the density.
 type Temperature struct {
-	Streamer units.Temperature `yaml:"streamer" in:"0.63 MK..5 MK"`
-	Hole     units.Temperature `yaml:"hole" in:"0.63 MK..5 MK"`
+	Streamer units.Temperature `yaml:"streamer" in:"0.64 MK..5 MK"`
+	Hole     units.Temperature `yaml:"hole" in:"0.64 MK..5 MK"`
 }
 
 // Waves is the random kink-wave driver.
@@ -169,7 +169,7 @@ type Inversion struct {
 	Separation  bool              `yaml:"separation" about:"split outward and inward waves on the track before the lag fit"`
 	KZero       string            `yaml:"k_zero" one:"kept,halved,dropped" about:"what the separation does with the column of zero wavenumber"`
 	Padding     int               `yaml:"padding" in:"1..16" about:"zero padding of the track for the separation; 1: none"`
-	Temperature units.Temperature `yaml:"temperature" in:"0.63 MK..5 MK" about:"assumed in the ratio density"`
+	Temperature units.Temperature `yaml:"temperature" in:"0.64 MK..5 MK" about:"assumed in the ratio density"`
 	Mu          float64           `yaml:"mu" in:"0.5..2" about:"rho / (m_p n_e) assumed in the field"`
 	Helium      float64           `yaml:"helium" in:"0..0.5" about:"He/H assumed in the ratio density (proton collisions)"`
 	Line        Line              `yaml:"line"`
