@@ -1,0 +1,247 @@
+package main
+
+import (
+	"bufio"
+	"crypto/sha256"
+	"encoding/hex"
+	"encoding/json"
+	"errors"
+	"fmt"
+	"io"
+	"io/fs"
+	"os"
+	"path/filepath"
+)
+
+// Names in a folder of results. A folder is complete when the record stands, which is
+// written last. Until then the marker stands, locked, and says what is being made.
+const (
+	recordName = "run.json"
+	markerName = ".offplane"
+	part       = ".part" // suffix of a file that is being written
+)
+
+var (
+	errHeld    = errors.New("held by another process")
+	errNoLocks = errors.New("this file system has no locks")
+)
+
+// A job is what a command makes in a folder.
+type job struct {
+	Command string   `json:"command"`
+	SHA256  string   `json:"sha256"` // of all that decides the bytes of the files
+	files   []string // their names, without the record
+	inputs  []string // paths that the command reads
+}
+
+// A folder is where a job is being done.
+type folder struct {
+	dir    string
+	job    job
+	marker *os.File
+	made   bool // the folder itself is new
+	fresh  bool // nothing was being made here
+	mine   bool // the marker tells of this job
+	warn   func(format string, args ...any)
+}
+
+// open takes a folder for a job. It refuses one that is complete, that holds another
+// job or files of the same names, unless force is set, and one held by another process
+// in any case. What an earlier try at the same job left is removed: it starts afresh.
+func (p *program) open(dir string, j job, force bool) (*folder, error) {
+	f := &folder{dir: dir, job: j, warn: p.say}
+	for _, in := range j.inputs {
+		for _, name := range j.files {
+			if sameFile(in, f.path(name)) {
+				return nil, misusef("%s would be read and written: choose another folder", in)
+			}
+		}
+	}
+	_, err := os.Stat(dir)
+	f.made = errors.Is(err, fs.ErrNotExist)
+	if err := os.MkdirAll(dir, 0o777); err != nil {
+		return nil, misuse(err)
+	}
+	if err := f.claim(force); err != nil {
+		f.abandon()
+		return nil, err
+	}
+	return f, nil
+}
+
+func (f *folder) claim(force bool) error {
+	if err := f.lock(); err != nil {
+		return err
+	}
+	var old job
+	text, err := io.ReadAll(f.marker)
+	if err != nil {
+		return err
+	}
+	// A marker that its maker had no time to fill in says nothing.
+	unfinished := json.Unmarshal(text, &old) == nil && old.SHA256 != ""
+	same := unfinished && old.Command == f.job.Command && old.SHA256 == f.job.SHA256
+	f.fresh = len(text) == 0
+	complete := exists(f.path(recordName))
+	switch {
+	case force:
+	case complete:
+		return misusef("%s is complete: choose another folder, or write over it with --force", f.dir)
+	case unfinished && !same:
+		return misusef("%s holds an unfinished %s of other input: choose another folder, or write over it with --force", f.dir, old.Command)
+	case !unfinished:
+		for _, name := range f.job.files {
+			if exists(f.path(name)) {
+				return misusef("%s is there already: choose another folder, or write over it with --force", f.path(name))
+			}
+		}
+	}
+	// The record goes first: from here on the folder is not complete.
+	for _, name := range append([]string{recordName}, f.job.files...) {
+		for _, name := range []string{name, name + part} {
+			if err := os.Remove(f.path(name)); err != nil && !errors.Is(err, fs.ErrNotExist) {
+				return err
+			}
+		}
+	}
+	text, err = json.Marshal(f.job)
+	if err != nil {
+		return err
+	}
+	if err := f.marker.Truncate(0); err != nil {
+		return err
+	}
+	_, err = f.marker.WriteAt(append(text, '\n'), 0)
+	f.mine = err == nil
+	return err
+}
+
+// lock opens the marker and locks it.
+func (f *folder) lock() error {
+	for {
+		m, err := os.OpenFile(f.path(markerName), os.O_RDWR|os.O_CREATE, 0o666)
+		if err != nil {
+			return misuse(err)
+		}
+		switch err := lock(m); {
+		case errors.Is(err, errHeld):
+			m.Close()
+			return misusef("%s is held by another process that writes to it", f.dir)
+		case errors.Is(err, errNoLocks):
+			f.warn("%s: %v; take care that no other process writes here", f.dir, err)
+		case err != nil:
+			m.Close()
+			return err
+		}
+		// Its holder may have removed it between opening and locking.
+		if mine, err := m.Stat(); err == nil {
+			if there, err := os.Stat(f.path(markerName)); err == nil && os.SameFile(mine, there) {
+				f.marker = m
+				return nil
+			}
+		}
+		m.Close()
+	}
+}
+
+func (f *folder) path(name string) string { return filepath.Join(f.dir, name) }
+
+// write writes a file under a temporary name and renames it.
+func (f *folder) write(name string, fill func(io.Writer) error) (err error) {
+	out, err := os.Create(f.path(name + part))
+	if err != nil {
+		return err
+	}
+	w := bufio.NewWriterSize(out, 1<<16)
+	err = errors.Join(fill(w), w.Flush(), out.Close())
+	if err == nil {
+		err = os.Rename(out.Name(), f.path(name))
+	}
+	if err != nil {
+		os.Remove(out.Name())
+	}
+	return err
+}
+
+// finish writes the record, which makes the folder complete, and lets go of it.
+func (f *folder) finish(r *record) error {
+	for _, name := range f.job.files {
+		e, err := entryOf(f.path(name))
+		if err != nil {
+			return err
+		}
+		e.Name = name
+		r.Files = append(r.Files, e)
+	}
+	if err := f.write(recordName, r.encode); err != nil {
+		return err
+	}
+	f.release(true)
+	return nil
+}
+
+// abandon lets go of a folder that is not complete; after finish it does nothing. The
+// marker stays if there are files it tells about, so that the same job may start again;
+// else no trace is left.
+func (f *folder) abandon() {
+	if f.marker == nil {
+		return
+	}
+	trace := !f.fresh
+	if f.mine {
+		trace = false
+		for _, name := range f.job.files {
+			os.Remove(f.path(name + part))
+			trace = trace || exists(f.path(name))
+		}
+	}
+	f.release(!trace)
+	if f.made {
+		os.Remove(f.dir) // fails if it is not empty
+	}
+}
+
+// release drops the lock, with or without the marker.
+func (f *folder) release(remove bool) {
+	gone := !remove || os.Remove(f.marker.Name()) == nil
+	f.marker.Close()
+	if !gone {
+		os.Remove(f.path(markerName)) // where an open file cannot be removed
+	}
+	f.marker = nil
+}
+
+func exists(path string) bool {
+	_, err := os.Lstat(path)
+	return err == nil
+}
+
+func sameFile(a, b string) bool {
+	x, err := os.Stat(a)
+	if err != nil {
+		return false
+	}
+	y, err := os.Stat(b)
+	return err == nil && os.SameFile(x, y)
+}
+
+// An entry is one file with its sum.
+type entry struct {
+	Name   string `json:"name"`
+	Bytes  int64  `json:"bytes"`
+	SHA256 string `json:"sha256"`
+}
+
+func entryOf(path string) (entry, error) {
+	f, err := os.Open(path)
+	if err != nil {
+		return entry{}, err
+	}
+	defer f.Close()
+	h := sha256.New()
+	n, err := io.Copy(h, f)
+	if err != nil {
+		return entry{}, fmt.Errorf("%s: %w", path, err)
+	}
+	return entry{path, n, hex.EncodeToString(h.Sum(nil))}, nil
+}

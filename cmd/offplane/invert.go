@@ -1,0 +1,164 @@
+package main
+
+import (
+	"context"
+	"crypto/sha256"
+	"encoding/hex"
+	"fmt"
+	"strings"
+
+	"github.com/spf13/cobra"
+
+	"offplane/compare"
+	"offplane/compare/trial"
+	"offplane/invert"
+	"offplane/scenarios"
+	"offplane/synth/fits"
+	"offplane/synth/obs"
+)
+
+func (p *program) invertCommand() *cobra.Command {
+	var w work
+	var set []string
+	var with string
+	cmd := &cobra.Command{
+		Use:   "invert OBSERVATION.fits -o DIR",
+		Short: "Invert frames to maps of speed, density and field, blind",
+		Long: `invert applies the standard inversion to an observation with its frames. It leaves
+inferred.fits, series.fits and run.json in DIR.
+
+The recipe is the inversion section of a scenario by itself: --with reads it from a file,
+--set changes single keys, and the rest is the default of all scenarios.`,
+		Example: `  offplane invert data/observation.fits -o maps
+  offplane invert data/observation.fits -o maps --with recipe.yaml --set track=21`,
+		Args: argument("an observation file"),
+	}
+	cmd.RunE = do(func(ctx context.Context, args []string) error {
+		v, err := recipe(with, inversionKeys(set))
+		if err != nil {
+			return misuse(err)
+		}
+		in, err := entryOf(args[0])
+		if err != nil {
+			return misuse(err)
+		}
+		j := job{Command: "invert", SHA256: digest(in.SHA256, string(scenarios.EncodeInversion(v))),
+			files: []string{"inferred.fits", "series.fits"}, inputs: []string{args[0]}}
+		f, r, bar, err := p.start(&w, j)
+		if err != nil {
+			return err
+		}
+		defer f.abandon()
+		defer bar.wipe()
+		r.Inputs = append(r.Inputs, in)
+		bar.update("reading", 0, 0)
+		o, err := readFrames(args[0])
+		if err != nil {
+			return misuse(err)
+		}
+		r.stage("reading")
+		r.ScenarioSHA256 = o.Scenario
+		out := &trial.Outcome{Observation: o}
+		if err := p.infer(ctx, out, v, &w, f, r, bar); err != nil {
+			return err
+		}
+		if err := f.finish(r); err != nil {
+			return err
+		}
+		bar.wipe()
+		if w.json {
+			return r.encode(p.stdout)
+		}
+		if !w.quiet {
+			valid := 0
+			for _, flag := range out.Inferred.Maps.Get("FLAG").Ints {
+				if flag&invert.Blocking == 0 {
+					valid++
+				}
+			}
+			fmt.Fprintf(p.stdout, "maps     %s\n", f.path("inferred.fits"))
+			fmt.Fprintf(p.stdout, "valid    %d of %d pixels (%.1f %%)\n", valid, len(o.Pixels), 100*float64(valid)/float64(len(o.Pixels)))
+			fmt.Fprintf(p.stdout, "next     offplane compare --truth TRUTH.fits --inferred %s -o DIR\n", f.path("inferred.fits"))
+		}
+		return nil
+	})
+	w.flags(cmd)
+	cmd.Flags().StringVar(&with, "with", "", "`file` with the inversion section")
+	cmd.Flags().StringArrayVar(&set, "set", nil, "change the inversion section: `KEY=VALUE`, such as track=21; repeatable")
+	return cmd
+}
+
+// recipe returns the inversion section of a file, or the default one.
+func recipe(path string, set []string) (scenarios.Inversion, error) {
+	if path != "" {
+		return scenarios.LoadInversion(path, set...)
+	}
+	return scenarios.ParseInversion("default", scenarios.EncodeInversion(scenarios.Default().Inversion), set...)
+}
+
+// readFrames reads an observation that can be inverted.
+func readFrames(path string) (*obs.Observation, error) {
+	o, err := obs.ReadObservation(path)
+	if err != nil {
+		return nil, err
+	}
+	if o.Frames[0] == nil {
+		return nil, fmt.Errorf("%s: has no frames to invert, only their means: write it with offplane synth, or offplane run --frames", path)
+	}
+	return o, nil
+}
+
+// infer inverts an observation and writes maps and series.
+func (p *program) infer(ctx context.Context, o *trial.Outcome, v scenarios.Inversion, w *work, f *folder, r *record, bar *progress) error {
+	emitter, file, err := trial.Model(v.Line, v.Helium)
+	if err != nil {
+		return misuse(err)
+	}
+	bar.update("inversion", 0, 0)
+	o.Inferred, err = invert.Invert(ctx, o.Observation, emitter, trial.Options(v), w.workers, bar.stageFunc("inversion"))
+	if err != nil {
+		return computing(ctx, err)
+	}
+	r.stage("inversion")
+	bar.update("writing", 0, 0)
+	var files []compare.File
+	if file != nil {
+		files = append(files, *file)
+	}
+	g := &o.Observation.Grid
+	if err := obs.WriteMaps(f.path("inferred.fits"), g, o.Inferred.Maps, primary(), inversionHDU(v, files...)); err != nil {
+		return err
+	}
+	if err := obs.WriteSeries(f.path("series.fits"), g, o.Observation.Pixels, o.Inferred.Series, primary(), timeStep(o.Observation)); err != nil {
+		return err
+	}
+	r.stage("writing")
+	return ctx.Err()
+}
+
+// timeStep returns the card of the mean time step of the first line's frames.
+func timeStep(o *obs.Observation) fits.Header {
+	es := o.LineExposures(1)
+	if n := len(es) - 1; n > 0 {
+		return fits.Header{{Key: "TIMESTEP", Value: (es[n].Time - es[0].Time) / float64(n), Comment: "[s] between the values of a series"}}
+	}
+	return nil
+}
+
+// digest returns the SHA-256 of texts and where they end.
+func digest(parts ...string) string {
+	h := sha256.New()
+	for _, s := range parts {
+		fmt.Fprintf(h, "%d\n%s", len(s), s)
+	}
+	return hex.EncodeToString(h.Sum(nil))
+}
+
+// cut splits name=value.
+func cut(flag, s, form string) (name, value string, err error) {
+	name, value, ok := strings.Cut(s, "=")
+	if !ok || name == "" || value == "" {
+		return "", "", fmt.Errorf("--%s %s: must be %s", flag, s, form)
+	}
+	return name, value, nil
+}

@@ -1,0 +1,147 @@
+package main
+
+import (
+	"context"
+	"fmt"
+	"io"
+
+	"github.com/spf13/cobra"
+
+	"offplane/compare"
+	"offplane/compare/report"
+	"offplane/compare/stat"
+	"offplane/compare/trial"
+	"offplane/scenarios"
+	"offplane/synth/obs"
+)
+
+func (p *program) runCommand() *cobra.Command {
+	var w work
+	var c choice
+	var g gates
+	var frames bool
+	cmd := &cobra.Command{
+		Use:   "run SCENARIO -o DIR",
+		Short: "Make the data of a known corona, invert them, report the bias",
+		Long: `run takes a scenario (the name of an embedded one, or a file) through the whole job
+and leaves in DIR
+
+  report.html       the verdict for people
+  summary.json      the verdict for machines
+  bias.ecsv         the bias by height
+  bias.fits         inferred over true, pixel by pixel
+  truth.fits        the corona as it was
+  observation.fits  the data, without their frames unless --frames is given
+  inferred.fits     what the inversion made of them
+  series.fits       the Doppler series it used
+  run.json          command line, versions, timings, sums of the files; written last
+
+The same scenario, seed and program give the same bytes in every file but run.json.`,
+		Example: `  offplane run quick -o out
+  offplane run quiet-belt --set camera.cadence=15s --seed 7 -o out15
+  offplane run my.yaml -o out --require 'valid_fraction>=0.4'`,
+		Args: argument("the name of a scenario or a file"),
+	}
+	cmd.RunE = do(func(ctx context.Context, args []string) error {
+		l, err := c.load(args[0])
+		if err != nil {
+			return err
+		}
+		if err := g.parse(); err != nil {
+			return err
+		}
+		return p.run(ctx, l, &w, &g, frames)
+	})
+	w.flags(cmd)
+	c.flags(cmd)
+	g.flags(cmd)
+	cmd.Flags().BoolVar(&frames, "frames", false, "keep the frames in observation.fits, so that invert can read it")
+	return cmd
+}
+
+func (p *program) run(ctx context.Context, l *scenarios.Loaded, w *work, g *gates, frames bool) error {
+	f, r, bar, err := p.start(w, job{Command: "run", SHA256: l.SHA256, files: []string{
+		"truth.fits", "observation.fits", "inferred.fits", "bias.fits", "series.fits", "summary.json", "bias.ecsv", "report.html"}})
+	if err != nil {
+		return err
+	}
+	defer f.abandon()
+	defer bar.wipe()
+	o, err := p.observe(ctx, l, w, f, r, bar, frames)
+	if err != nil {
+		return err
+	}
+	if err := p.infer(ctx, o, l.Scenario.Inversion, w, f, r, bar); err != nil {
+		return err
+	}
+	bar.update("verdict", 0, 0)
+	if o.Verdict, err = trial.Judge(l, o.Truth.Grid, o.Truth.Maps, o.Inferred.Maps, o.Files, version().Version); err != nil {
+		return err
+	}
+	if err := writeVerdict(f, &o.Truth.Grid, o.Verdict, l, o.Files); err != nil {
+		return err
+	}
+	err = f.write("report.html", func(w io.Writer) error {
+		return report.WriteHTML(w, &report.Report{
+			Grid: o.Truth.Grid, Truth: o.Truth.Maps, Inferred: o.Inferred.Maps, Verdict: o.Verdict, Setup: setup(&l.Scenario),
+		})
+	})
+	if err != nil {
+		return err
+	}
+	r.stage("verdict")
+	if err := ctx.Err(); err != nil {
+		return err
+	}
+	if err := f.finish(r); err != nil {
+		return err
+	}
+	bar.wipe()
+	if err := p.printVerdict(w, &o.Verdict.Summary); err != nil {
+		return err
+	}
+	if !w.json && !w.quiet {
+		fmt.Fprintf(p.stdout, "report   %s\n", f.path("report.html"))
+		fmt.Fprintf(p.stdout, "next     offplane compare --truth %s --map B=YOURS.fits -o DIR    (your own map of it)\n", f.path("truth.fits"))
+	}
+	return g.check(&o.Verdict.Summary)
+}
+
+// writeVerdict writes the files that run and compare share.
+func writeVerdict(f *folder, g *obs.Grid, v *compare.Verdict, l *scenarios.Loaded, files []compare.File) error {
+	if err := obs.WriteMaps(f.path("bias.fits"), g, v.Maps, primary(), scenarioHDU(l, files)); err != nil {
+		return err
+	}
+	if err := f.write("summary.json", v.Summary.WriteJSON); err != nil {
+		return err
+	}
+	return v.Heights.WriteFile(f.path("bias.ecsv"))
+}
+
+// printVerdict writes the verdict to standard output.
+func (p *program) printVerdict(w *work, s *compare.Summary) error {
+	if w.json {
+		return s.WriteJSON(p.stdout)
+	}
+	if w.quiet {
+		return nil
+	}
+	fmt.Fprintf(p.stdout, "inferred over true in the plane of the sky: median (16-84 %%)\n")
+	for _, q := range []struct {
+		name string
+		s    *stat.Summary
+	}{{"field", s.Ratios.Field.Sky}, {"speed", s.Ratios.Speed.Sky}, {"density", s.Ratios.Density.Sky}} {
+		switch {
+		case q.s == nil:
+			fmt.Fprintf(p.stdout, "%-8s not compared\n", q.name)
+		case q.s.Count == 0:
+			fmt.Fprintf(p.stdout, "%-8s no pixel with a value\n", q.name)
+		default:
+			fmt.Fprintf(p.stdout, "%-8s %.3f (%.3f-%.3f)\n", q.name, q.s.Median, q.s.P16, q.s.P84)
+		}
+	}
+	if s.Ratios.Field.Sky != nil {
+		fmt.Fprintf(p.stdout, "valid    %d of %d pixels (%.1f %%)\n", s.Pixels.Valid, s.Pixels.Total, 100*float64(s.Pixels.ValidFraction))
+	}
+	return nil
+}

@@ -1,0 +1,114 @@
+package main
+
+import (
+	"context"
+	"fmt"
+	"text/tabwriter"
+
+	"github.com/spf13/cobra"
+
+	"offplane/scenarios"
+)
+
+func (p *program) scenarioCommand() *cobra.Command {
+	cmd := &cobra.Command{
+		Use:   "scenario",
+		Short: "The library of scenarios, and a check of your own",
+		Args:  noCommand,
+		RunE:  func(cmd *cobra.Command, _ []string) error { return cmd.Help() },
+	}
+	cmd.AddCommand(p.scenarioList(), p.scenarioShow(), p.scenarioCheck())
+	return cmd
+}
+
+func (p *program) scenarioList() *cobra.Command {
+	var json bool
+	cmd := &cobra.Command{Use: "list", Short: "List the embedded scenarios", Args: noArguments}
+	cmd.RunE = do(func(context.Context, []string) error {
+		type item struct {
+			Name  string `json:"name"`
+			About string `json:"about"`
+		}
+		var list []item
+		for _, name := range scenarios.Names() {
+			about, err := scenarios.About(name)
+			if err != nil {
+				return err
+			}
+			list = append(list, item{name, about})
+		}
+		if json {
+			return writeJSON(p.stdout, struct {
+				Schema    int    `json:"schema"`
+				Scenarios []item `json:"scenarios"`
+			}{1, list})
+		}
+		t := tabwriter.NewWriter(p.stdout, 0, 0, 2, ' ', 0)
+		for _, i := range list {
+			fmt.Fprintf(t, "%s\t%s\n", i.Name, i.About)
+		}
+		return t.Flush()
+	})
+	cmd.Flags().BoolVar(&json, "json", false, "one JSON document")
+	return cmd
+}
+
+func (p *program) scenarioShow() *cobra.Command {
+	var resolved, json bool
+	var c choice
+	cmd := &cobra.Command{
+		Use:   "show SCENARIO",
+		Short: "Print a scenario as it was written, or with every default filled in",
+		Example: `  offplane scenario show quiet-belt > mine.yaml
+  offplane scenario show quick --resolved --set camera.cadence=15s`,
+		Args: argument("the name of a scenario or a file"),
+	}
+	cmd.RunE = do(func(_ context.Context, args []string) error {
+		l, err := c.load(args[0])
+		if err != nil {
+			return err
+		}
+		if json {
+			return writeJSON(p.stdout, struct {
+				Schema int    `json:"schema"`
+				Name   string `json:"name"`
+				About  string `json:"about"`
+				SHA256 string `json:"sha256"`
+				YAML   string `json:"yaml"`
+			}{1, l.Name, l.Scenario.About, l.SHA256, string(l.Canonical)})
+		}
+		text := l.Canonical
+		if source, err := scenarios.Source(args[0]); err == nil && !resolved && !c.changed() {
+			text = source // with its comments
+		}
+		_, err = p.stdout.Write(text)
+		return err
+	})
+	c.flags(cmd)
+	cmd.Flags().BoolVar(&resolved, "resolved", false, "with every default filled in; so are files and changed scenarios in any case")
+	cmd.Flags().BoolVar(&json, "json", false, "one JSON document with the resolved scenario")
+	return cmd
+}
+
+func (p *program) scenarioCheck() *cobra.Command {
+	var json bool
+	var workers int
+	var c choice
+	cmd := &cobra.Command{
+		Use:   "check SCENARIO",
+		Short: "Check a scenario and say what its run would take",
+		Args:  argument("the name of a scenario or a file"),
+	}
+	cmd.RunE = do(func(ctx context.Context, args []string) error {
+		l, err := c.load(args[0])
+		if err != nil {
+			return err
+		}
+		fmt.Fprintln(p.stdout, l.SHA256)
+		return nil
+	})
+	c.flags(cmd)
+	cmd.Flags().IntVar(&workers, "workers", 0, "cores to reckon with; 0: all")
+	cmd.Flags().BoolVar(&json, "json", false, "one JSON document")
+	return cmd
+}
