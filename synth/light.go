@@ -21,6 +21,27 @@ type lamp struct {
 	delay    []float64
 	trains   []train
 	acc      [][2][][]float32 // ray, line, tuning, frame
+
+	// memo remembers the rows that this worker used last, to spare it the driver's
+	// shared cache.
+	memo [4096]struct {
+		key  rowKey
+		rows []float32
+	}
+}
+
+// A rowKey addresses the rows of the driver.
+type rowKey struct {
+	site              uint64
+	pol, dir, stretch int
+}
+
+func (l *lamp) rowsOf(k rowKey) []float32 {
+	m := &l.memo[(k.site*0x9e3779b97f4a7c15+uint64(k.stretch*4+k.pol*2+k.dir)*0xbf58476d1ce4e5b9)>>52]
+	if m.rows == nil || m.key != k {
+		m.key, m.rows = k, l.c.Driver.Rows(k.site, k.pol, k.dir, k.stretch)
+	}
+	return m.rows
 }
 
 func (c *Scene) newLamp(second []int, rays int) *lamp {
@@ -108,7 +129,7 @@ func (l *lamp) move(s *sample) {
 				if math.Abs(k) < 1e-6 { // [km/s]
 					continue
 				}
-				rows := d.Rows(site.ID, pol, t.dir, stretch)
+				rows := l.rowsOf(rowKey{site.ID, pol, t.dir, stretch})
 				for r, x := range l.delay {
 					l.rows = append(l.rows, rows[r*n+at:r*n+at+l.frames])
 					l.coef = append(l.coef, float32(k*x))

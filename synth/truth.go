@@ -1,7 +1,9 @@
 package synth
 
 import (
+	"cmp"
 	"math"
+	"slices"
 
 	"gonum.org/v1/gonum/spatial/r3"
 
@@ -173,6 +175,7 @@ func (c *Scene) truthOf(ray []sample) ([]float64, int32) {
 		bWave += w.Wave[i] * s.bSky
 		slow += w.Wave[i] / (s.point.Speed * s.sky)
 	}
+	depth := depths(ray, w.Emission, 0.5, 0.9)
 	angle := math.Mod(sky.angle*180/math.Pi+360, 180)
 	p := &sky.point
 	var ts []train
@@ -185,7 +188,7 @@ func (c *Scene) truthOf(ray []sample) ([]float64, int32) {
 		p.N, nEmis, p.Kink,
 		p.Speed * sky.sky / kms, 1 / slow / kms,
 		angle,
-		depth(ray, w.Emission, 0.5), depth(ray, w.Emission, 0.9), shareWithin(ray, w.Emission, nearPlane),
+		depth[0], depth[1], shareWithin(ray, w.Emission, nearPlane),
 		math.Sqrt(local),
 	}, p.Structure()
 }
@@ -219,18 +222,39 @@ func stretch(ray []sample, i int) (lo, hi float64) {
 	return lo, hi
 }
 
-// depth returns the half-depth [solar radii] that holds a share of the emission.
-func depth(ray []sample, e []float64, share float64) float64 {
+// depths returns the half-depths [solar radii] that hold the given shares of the
+// emission, in ascending order.
+func depths(ray []sample, e []float64, shares ...float64) []float64 {
+	out := make([]float64, len(shares))
 	if len(ray) == 1 {
-		return 0
+		return out
 	}
-	lo, hi := 0.0, math.Max(-ray[0].x, ray[len(ray)-1].x)
-	for range 50 {
-		if m := (lo + hi) / 2; shareWithin(ray, e, m) < share {
-			lo = m
-		} else {
-			hi = m
+	// Each sample is spread over its stretch, so that the emission within a depth grows
+	// in straight pieces; an edge is where the slope changes.
+	type edge struct{ at, slope float64 }
+	edges := make([]edge, 0, 4*len(ray))
+	for i := range ray {
+		lo, hi := stretch(ray, i)
+		slope := e[i] / (hi - lo)
+		for _, part := range [2][2]float64{{lo, hi}, {-hi, -lo}} {
+			if a, b := math.Max(part[0], 0), part[1]; b > a {
+				edges = append(edges, edge{a, slope}, edge{b, -slope})
+			}
 		}
 	}
-	return (lo + hi) / 2
+	slices.SortFunc(edges, func(a, b edge) int { return cmp.Or(cmp.Compare(a.at, b.at), cmp.Compare(a.slope, b.slope)) })
+	k, within, slope, at := 0, 0.0, 0.0, 0.0
+	for _, g := range edges {
+		next := within + slope*(g.at-at)
+		for k < len(shares) && next >= shares[k] {
+			out[k] = at + (shares[k]-within)/slope
+			k++
+		}
+		within, at = next, g.at
+		slope += g.slope
+	}
+	for ; k < len(shares); k++ { // rounding
+		out[k] = at
+	}
+	return out
 }

@@ -60,7 +60,7 @@ type Settings struct {
 // A stretch is the decomposition for travel times from, up to the next stretch's from.
 type stretch struct {
 	from        float64
-	basis       [][]complex128 // [rank][bin]
+	basis       [][]complex128 // [rank][bin], halved: see Rows
 	nTau, nRest int
 	dTau, dRest float64
 	coef        []float64 // [tau][rest][rank]
@@ -150,16 +150,17 @@ func NewDriver(s Settings) (*Driver, error) {
 	return d, nil
 }
 
-// smooth returns the least n' >= n without prime factors above 5.
+// smooth returns the least n' >= n without prime factors above 3, for which the
+// transform is fast.
 func smooth(n int) int {
 	for ; ; n++ {
 		m := n
-		for _, p := range []int{2, 3, 5} {
+		for _, p := range []int{2, 3} {
 			for m%p == 0 {
 				m /= p
 			}
 		}
-		if m == 1 {
+		if m == 1 && n%2 == 0 {
 			return n
 		}
 	}
@@ -237,7 +238,7 @@ func (d *Driver) decompose(df, from, to float64) (stretch, error) {
 	for r := range rank {
 		b := make([]complex128, n)
 		for i := range b {
-			b[i] = complex(v.At(i, r), v.At(n+i, r))
+			b[i] = complex(v.At(i, r)/2, v.At(n+i, r)/2)
 		}
 		st.basis = append(st.basis, b)
 	}
@@ -352,7 +353,7 @@ func (d *Driver) Rows(site uint64, pol, dir, stretch int) []float32 {
 			// The row is Re of the sum over bins of a b exp(+2 pi i k t/size), which is the
 			// transform of half of it with its conjugate at -k. Bins beyond the Nyquist
 			// frequency fold, as frames at this cadence do.
-			k, x := (d.first+i)%d.size, a*b[i]/2
+			k, x := (d.first+i)%d.size, a*b[i]
 			if k > d.size/2 {
 				k, x = d.size-k, complex(real(x), -imag(x))
 			}
