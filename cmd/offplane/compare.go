@@ -2,9 +2,9 @@ package main
 
 import (
 	"context"
-	"errors"
 	"fmt"
 	"math"
+	"slices"
 	"strings"
 
 	"github.com/spf13/cobra"
@@ -39,8 +39,11 @@ of the truth and say its unit in BUNIT. What is not given is null in summary.jso
 		if err := g.parse(); err != nil {
 			return err
 		}
-		if inferred == "" && len(maps) == 0 {
-			return misuse(errors.New("offplane compare needs --inferred or --map: nothing to compare the truth with"))
+		switch {
+		case truth == "":
+			return misusef("offplane compare needs the truth: --truth TRUTH.fits")
+		case inferred == "" && len(maps) == 0:
+			return misusef("offplane compare needs maps to hold against the truth: --inferred MAPS.fits or --map NAME=FILE.fits")
 		}
 		in, err := readCompared(truth, inferred, maps)
 		if err != nil {
@@ -92,7 +95,6 @@ of the truth and say its unit in BUNIT. What is not given is null in summary.jso
 	cmd.Flags().StringVar(&truth, "truth", "", "`file` with the true maps")
 	cmd.Flags().StringVar(&inferred, "inferred", "", "`file` with inferred maps that run or invert wrote")
 	cmd.Flags().StringArrayVar(&maps, "map", nil, "a map of your own: `NAME=FILE[EXT]`; repeatable")
-	cmd.MarkFlagRequired("truth")
 	return cmd
 }
 
@@ -139,7 +141,7 @@ func readCompared(truth, inferred string, maps []string) (*compared, error) {
 			return nil, err
 		}
 		name = strings.ToUpper(name)
-		if !contains(comparable, name) {
+		if !slices.Contains(comparable, name) {
 			return nil, fmt.Errorf("--map %s: NAME must be one of %s", s, strings.Join(comparable, ", "))
 		}
 		ext := ""
@@ -162,15 +164,6 @@ func readCompared(truth, inferred string, maps []string) (*compared, error) {
 		c.paths = append(c.paths, file)
 	}
 	return c, nil
-}
-
-func contains(list []string, s string) bool {
-	for _, x := range list {
-		if x == s {
-			return true
-		}
-	}
-	return false
 }
 
 // sameSky returns an error unless the pixels of two grids coincide on the sky to a

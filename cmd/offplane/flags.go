@@ -26,11 +26,13 @@ func (w *work) flags(cmd *cobra.Command) {
 	f.BoolVar(&w.quiet, "quiet", false, "no progress, and no results on standard output but with --json")
 	f.BoolVar(&w.json, "json", false, "results on standard output as one JSON document")
 	f.BoolVar(&w.force, "force", false, "write over what is in the folder")
-	cmd.MarkFlagRequired("output")
 }
 
 // start takes the folder of a job and begins its record.
 func (p *program) start(w *work, j job) (*folder, *record, *progress, error) {
+	if w.out == "" {
+		return nil, nil, nil, misusef("offplane %s needs a folder for the results: -o DIR", j.Command)
+	}
 	f, err := p.open(w.out, j, w.force)
 	if err != nil {
 		return nil, nil, nil, err

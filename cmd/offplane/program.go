@@ -11,6 +11,7 @@ import (
 	"syscall"
 
 	"github.com/spf13/cobra"
+	"github.com/spf13/pflag"
 
 	"offplane/scenarios/strict"
 )
@@ -64,6 +65,7 @@ The data are synthetic and every verdict depends on the corona that was assumed.
 		RunE:          func(cmd *cobra.Command, _ []string) error { return cmd.Help() },
 	}
 	root.SetVersionTemplate("{{.Version}}\n")
+	root.SetFlagErrorFunc(flagError)
 	root.AddCommand(p.runCommand(), p.synthCommand(), p.invertCommand(), p.compareCommand(), p.scenarioCommand(), p.lineCommand())
 	return root
 }
@@ -84,6 +86,20 @@ func noCommand(cmd *cobra.Command, args []string) error {
 		hint = fmt.Sprintf("; did you mean %q?", near)
 	}
 	return fmt.Errorf("%s has no command %q%s (there are %s)", cmd.CommandPath(), args[0], hint, strings.Join(names, ", "))
+}
+
+// flagError adds the flag that was most likely meant.
+func flagError(cmd *cobra.Command, err error) error {
+	unknown, ok := strings.CutPrefix(err.Error(), "unknown flag: --")
+	if !ok {
+		return err
+	}
+	var names []string
+	cmd.Flags().VisitAll(func(f *pflag.Flag) { names = append(names, f.Name) })
+	if near := strict.Nearest(unknown, names); near != "" {
+		return fmt.Errorf("%w; did you mean --%s?", err, near)
+	}
+	return err
 }
 
 // A fault is an error with its exit code.

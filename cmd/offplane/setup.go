@@ -1,8 +1,116 @@
 package main
 
 import (
+	"fmt"
+	"math"
+	"strings"
+
 	"offplane/compare/report"
 	"offplane/scenarios"
+	"offplane/scenarios/units"
+	"offplane/synth"
 )
 
-func setup(s *scenarios.Scenario) report.Setup { return report.Setup{About: s.About} }
+// setup says in plain sentences what a scenario simulates.
+func setup(s *scenarios.Scenario) report.Setup {
+	return report.Setup{
+		About: s.About, Corona: coronaText(s), Waves: wavesText(&s.Waves), Sight: sightText(&s.Sight),
+		Observation: observationText(s), Inversion: inversionText(&s.Inversion),
+	}
+}
+
+func coronaText(s *scenarios.Scenario) string {
+	var fields []string
+	for _, f := range s.Corona.Fields {
+		switch {
+		case f.DipoleSheet != nil:
+			d := f.DipoleSheet
+			fields = append(fields, fmt.Sprintf("a dipole of %s with octupole Q = %g and a current sheet of a1 = %s", d.Strength, d.Octupole, d.Sheet))
+		case f.Radial != nil:
+			fields = append(fields, fmt.Sprintf("a radial field of %s at the surface that falls as r^-%g", f.Radial.Strength, f.Radial.Exponent))
+		}
+	}
+	t := s.Corona.Temperature
+	d := s.Corona.Density
+	text := fmt.Sprintf("The field is %s. ", strings.Join(fields, " plus "))
+	if d.Hole == nil {
+		text += fmt.Sprintf("The density is %s at %s everywhere.", lawText(&d.Streamer), t.Streamer)
+	} else {
+		text += fmt.Sprintf("The density is %s at %s in the streamer and %s at %s in the hole, blended over %s of footpoint latitude.",
+			lawText(&d.Streamer), t.Streamer, lawText(d.Hole), t.Hole, d.Boundary)
+	}
+	return text + fmt.Sprintf(" The observer is at latitude %s, %s away.", s.Observer.Latitude, s.Observer.Distance)
+}
+
+func lawText(l *scenarios.Law) string {
+	text := ""
+	switch {
+	case l.Named != "":
+		text = "that of " + l.Named
+	case l.PowerLaw != nil:
+		text = fmt.Sprintf("%s r^-%g", l.PowerLaw.Surface, l.PowerLaw.Exponent)
+	case l.Hydrostatic != nil:
+		text = fmt.Sprintf("hydrostatic with %s at the surface and a scale height of %s", l.Hydrostatic.Surface, l.Hydrostatic.Temperature)
+	}
+	if l.Factor != 1 {
+		text = fmt.Sprintf("%s times %s", units.Number(l.Factor), text)
+	}
+	return text
+}
+
+func wavesText(w *scenarios.Waves) string {
+	text := fmt.Sprintf("Random kink waves of %s rms per polarisation at %s", w.Amplitude, w.AtDensity)
+	if w.Growth == "wkb" {
+		text += ", growing as n^(-1/4),"
+	} else {
+		text += ", the same at every height,"
+	}
+	text += fmt.Sprintf(" are launched by cells of %s at the surface with a bump in the spectrum at %s.", w.Cell, w.Spectrum.BumpAt)
+	if w.Damping > 0 {
+		text += fmt.Sprintf(" They are damped over %g wavelengths.", w.Damping)
+	} else {
+		text += " They are not damped."
+	}
+	if w.Inward > 0 {
+		text += fmt.Sprintf(" Inward waves start at %s on open lines with %g of the outward power.", w.InwardFrom, w.Inward)
+	}
+	if w.FarEnd {
+		text += " Closed lines carry waves from both ends."
+	}
+	return text
+}
+
+func sightText(v *scenarios.Sight) string {
+	if v.Plane {
+		return "Only the plane of the sky emits: there is no line of sight."
+	}
+	return fmt.Sprintf("The full profile is summed along parallel lines of sight in steps of %g cells, as far as %s from the plane of the sky or until less than %g of either line is left out at an end.",
+		v.Step, v.Reach, v.Tail)
+}
+
+func observationText(s *scenarios.Scenario) string {
+	c, i := &s.Camera, &s.Image
+	text := fmt.Sprintf("%d frames, one every %s for %s, from %s to %s", synth.Frames(s), c.Cadence, c.Duration, i.Inner, i.Outer)
+	if math.Abs(float64(i.To-i.From)-360) < 1e-9 {
+		text += " all around,"
+	} else {
+		text += fmt.Sprintf(" and from position angle %s to %s,", i.From, i.To)
+	}
+	text += fmt.Sprintf(" in pixels of %s; %d tunings of a filter of %s; a point spread of %s.", i.Pixel, len(c.Tunings), c.Filter, c.PointSpread)
+	if !c.Noise {
+		return text + " There is no noise."
+	}
+	return text + fmt.Sprintf(" Noise of an aperture of %s with a throughput of %g, %s a tuning in %d co-adds of %g electrons read noise, over a background of %s.",
+		c.Aperture, c.Throughput, c.Exposure, c.Coadds, c.ReadNoise, c.Background)
+}
+
+func inversionText(v *scenarios.Inversion) string {
+	text := fmt.Sprintf("Band-pass at %s, %s wide (%s); coherence above %g in a window of %d pixels; tracks of up to %d pixels; ",
+		v.Filter.Centre, v.Filter.Width, v.Filter.Means, v.Coherence, v.Box, v.Track)
+	if v.Separation {
+		text += fmt.Sprintf("outward and inward waves separated with zero wavenumber %s and the track padded to %d times its length; ", v.KZero, v.Padding)
+	} else {
+		text += "outward and inward waves not separated; "
+	}
+	return text + fmt.Sprintf("density from the line ratio at %s; mu = %g.", v.Temperature, v.Mu)
+}
