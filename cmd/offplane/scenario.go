@@ -4,6 +4,7 @@ import (
 	"context"
 	"fmt"
 	"text/tabwriter"
+	"time"
 
 	"github.com/spf13/cobra"
 
@@ -99,16 +100,51 @@ func (p *program) scenarioCheck() *cobra.Command {
 		Short: "Check a scenario and say what its run would take",
 		Args:  argument("the name of a scenario or a file"),
 	}
-	cmd.RunE = do(func(ctx context.Context, args []string) error {
+	cmd.RunE = do(func(_ context.Context, args []string) error {
 		l, err := c.load(args[0])
 		if err != nil {
 			return err
 		}
-		fmt.Fprintln(p.stdout, l.SHA256)
-		return nil
+		q, err := predict(l, workers)
+		if err != nil {
+			return misuse(err)
+		}
+		if json {
+			return writeJSON(p.stdout, q)
+		}
+		return p.printPrediction(q, &l.Scenario)
 	})
 	c.flags(cmd)
 	cmd.Flags().IntVar(&workers, "workers", 0, "cores to reckon with; 0: all")
 	cmd.Flags().BoolVar(&json, "json", false, "one JSON document")
 	return cmd
+}
+
+func (p *program) printPrediction(q *prediction, s *scenarios.Scenario) error {
+	fmt.Fprintf(p.stdout, "scenario  %s, valid\nsha256    %s\n", q.Scenario, q.SHA256)
+	fmt.Fprintf(p.stdout, "pixels    %d\n", q.Pixels)
+	fmt.Fprintf(p.stdout, "frames    %d of the first line, %d of the second\n", q.Frames, q.Second)
+	fmt.Fprintf(p.stdout, "samples   %.0f per line of sight\n\n", q.Samples)
+	fmt.Fprintf(p.stdout, "estimates of the run with %d workers, good to a factor of two:\n", q.Workers)
+	fmt.Fprintf(p.stdout, "time      %s\n", roundTime(time.Duration(q.Seconds*float64(time.Second))))
+	fmt.Fprintf(p.stdout, "memory    %.2g GB\n", q.Memory/1e9)
+	fmt.Fprintf(p.stdout, "disk      %.2g GB; %.2g GB with the frames\n", q.Disk/1e9, q.Framed/1e9)
+	if len(q.Heights) == 0 {
+		return nil
+	}
+	fmt.Fprintf(p.stdout, "\nfirst line through the streamer, one tuning and exposure:\n")
+	t := tabwriter.NewWriter(p.stdout, 0, 0, 2, ' ', tabwriter.AlignRight)
+	fmt.Fprint(t, "r/Rsun\tpeak/ppm\t")
+	for _, x := range s.Camera.Tunings {
+		fmt.Fprintf(t, "photons at %s\t", x)
+	}
+	fmt.Fprintln(t, "Doppler noise/(km/s)\t")
+	for _, d := range q.Heights {
+		fmt.Fprintf(t, "%.2f\t%.3g\t", d.Height, d.Peak)
+		for _, n := range d.Photons {
+			fmt.Fprintf(t, "%.3g\t", n)
+		}
+		fmt.Fprintf(t, "%.3g\t\n", d.Noise)
+	}
+	return t.Flush()
 }
