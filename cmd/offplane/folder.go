@@ -89,7 +89,7 @@ func (f *folder) claim(force bool) error {
 		return misusef("%s is complete: choose another folder, or write over it with --force", f.dir)
 	case unfinished && !same:
 		return misusef("%s holds an unfinished %s of other input: choose another folder, or write over it with --force", f.dir, old.Command)
-	case !unfinished:
+	case !unfinished && !f.carriesJob():
 		for _, name := range f.job.files {
 			if exists(f.path(name)) {
 				return misusef("%s is there already: choose another folder, or write over it with --force", f.path(name))
@@ -114,6 +114,13 @@ func (f *folder) claim(force bool) error {
 	_, err = f.marker.WriteAt(append(text, '\n'), 0)
 	f.mine = err == nil
 	return err
+}
+
+// carriesJob reports whether the truth in the folder is that of the job's scenario: what
+// is left of a complete folder whose record was taken away.
+func (f *folder) carriesJob() bool {
+	l, _, err := readScenario(f.path("truth.fits"))
+	return err == nil && l.SHA256 == f.job.SHA256
 }
 
 // lock opens the marker and locks it.
