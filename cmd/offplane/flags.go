@@ -49,6 +49,7 @@ type choice struct {
 
 func (c *choice) flags(cmd *cobra.Command) {
 	c.cmd = cmd
+	cmd.ValidArgsFunction = cobra.FixedCompletions(scenarios.Names(), cobra.ShellCompDirectiveDefault)
 	cmd.Flags().StringArrayVar(&c.set, "set", nil, "change the scenario: `KEY=VALUE`, such as camera.duration=2h; repeatable")
 	cmd.Flags().Uint64Var(&c.seed, "seed", 0, "`number` that addresses all randomness; short for --set seed=")
 }

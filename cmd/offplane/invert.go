@@ -5,6 +5,7 @@ import (
 	"crypto/sha256"
 	"encoding/hex"
 	"fmt"
+	"slices"
 	"strings"
 
 	"github.com/spf13/cobra"
@@ -124,6 +125,13 @@ func (p *program) infer(ctx context.Context, o *trial.Outcome, v scenarios.Inver
 	var files []compare.File
 	if file != nil {
 		files = append(files, *file)
+		e, err := entryOf(file.Name)
+		if err != nil {
+			return err
+		}
+		if !slices.Contains(r.Inputs, e) {
+			r.Inputs = append(r.Inputs, e)
+		}
 	}
 	g := &o.Observation.Grid
 	if err := obs.WriteMaps(f.path("inferred.fits"), g, o.Inferred.Maps, primary(), inversionHDU(v, files...)); err != nil {

@@ -36,7 +36,7 @@ func newProgress(w io.Writer, quiet bool) *progress {
 	if f, ok := w.(*os.File); ok && term.IsTerminal(int(f.Fd())) && os.Getenv("TERM") != "dumb" {
 		p.width = func() int {
 			n, _, err := term.GetSize(int(f.Fd()))
-			if err != nil {
+			if err != nil || n < 1 {
 				return 80
 			}
 			return n
@@ -86,6 +86,7 @@ func (p *progress) stageFunc(stage string) func(done, total int) {
 func (p *progress) wipe() {
 	if p != nil && p.width != nil && p.stage != "" {
 		fmt.Fprint(p.w, "\r\x1b[K")
+		p.stage = ""
 	}
 }
 

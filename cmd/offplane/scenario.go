@@ -98,7 +98,14 @@ func (p *program) scenarioCheck() *cobra.Command {
 	cmd := &cobra.Command{
 		Use:   "check SCENARIO",
 		Short: "Check a scenario and say what its run would take",
-		Args:  argument("the name of a scenario or a file"),
+		Long: `check reads a scenario and prints every mistake with its place, or what a run of it
+would take: pixels, frames, and estimates of time, memory and disk. It also estimates
+what its data would be worth: at a few heights, looking through the streamer, the light
+of the first line in one exposure and the rms error of one Doppler shift. No corona is
+built, so it takes no time; a pixel that looks through a hole gets less light.`,
+		Example: `  offplane scenario check quiet-belt
+  offplane scenario check mine.yaml --set camera.exposure=5s`,
+		Args: argument("the name of a scenario or a file"),
 	}
 	cmd.RunE = do(func(_ context.Context, args []string) error {
 		l, err := c.load(args[0])
