@@ -84,7 +84,7 @@ func sightText(v *scenarios.Sight) string {
 	if v.Plane {
 		return "Only the plane of the sky emits: there is no line of sight."
 	}
-	return fmt.Sprintf("The full profile is summed along parallel lines of sight in steps of %g cells, as far as %s from the plane of the sky or until less than %g of either line is left out at an end.",
+	return fmt.Sprintf("The full profile is summed along parallel lines of sight in steps of %g times the size of the cells, as far as %s from the plane of the sky or until less than %g of either line is left out at an end.",
 		v.Step, v.Reach, v.Tail)
 }
 
@@ -108,7 +108,11 @@ func inversionText(v *scenarios.Inversion) string {
 	text := fmt.Sprintf("Band-pass at %s, %s wide (%s); coherence above %g in a window of %d pixels; tracks of up to %d pixels; ",
 		v.Filter.Centre, v.Filter.Width, v.Filter.Means, v.Coherence, v.Box, v.Track)
 	if v.Separation {
-		text += fmt.Sprintf("outward and inward waves separated with zero wavenumber %s and the track padded to %d times its length; ", v.KZero, v.Padding)
+		text += fmt.Sprintf("outward and inward waves separated with zero wavenumber %s", v.KZero)
+		if v.Padding > 1 {
+			text += fmt.Sprintf(" and the track padded to %d times its length", v.Padding)
+		}
+		text += "; "
 	} else {
 		text += "outward and inward waves not separated; "
 	}
