@@ -4,6 +4,9 @@ import (
 	"context"
 	"encoding"
 	"fmt"
+	"io"
+	"math"
+	"path/filepath"
 	"slices"
 	"strconv"
 	"strings"
@@ -11,15 +14,17 @@ import (
 
 	"github.com/spf13/cobra"
 
+	"offplane/compare/report"
 	"offplane/compare/trial"
 	"offplane/model"
 	"offplane/scenarios"
 	"offplane/scenarios/units"
+	"offplane/synth/ecsv"
 	"offplane/synth/line"
 )
 
 func (p *program) lineCommand() *cobra.Command {
-	var density, height, temperature, ratio, law string
+	var density, height, temperature, ratio, law, figure, table string
 	var set []string
 	var json bool
 	cmd := &cobra.Command{
@@ -37,6 +42,10 @@ by which a small relative error of the ratio grows.
 
 --law takes the densities from a published profile at its equator, and adds the total
 radial slope -d ln j / d ln r: the fall of the density and that of the disc's light.
+
+--figure draws the ratio, and the error amplification of the density, against density for
+up to six combinations of height and temperature. --ecsv writes the rows as a table with
+units.
 
 Lists are separated by commas; numbers are in cm-3, solar radii and K, or carry a unit.`,
 		Example: `  offplane line --density 1e7,1e8,1e9 --height 1.1,1.3
@@ -75,6 +84,14 @@ Lists are separated by commas; numbers are in cm-3, solar radii and K, or carry 
 		if err != nil {
 			return misuse(err)
 		}
+		if figure != "" {
+			if err := lineFigure(m, figure, rs, ts); err != nil {
+				return err
+			}
+		}
+		if table != "" && (ratio != "" || law != "") {
+			return misusef("--ecsv goes with --density, not with --ratio or --law")
+		}
 		switch {
 		case ratio != "":
 			q, err := numbers("ratio", ratio)
@@ -85,7 +102,7 @@ Lists are separated by commas; numbers are in cm-3, solar radii and K, or carry 
 		case law != "":
 			return p.lineLaw(m, law, l.Scenario.Corona.Helium, rs, ts, json)
 		}
-		return p.lineRows(m, ns, rs, ts, json)
+		return p.lineRows(m, ns, rs, ts, json, table)
 	})
 	f := cmd.Flags()
 	f.StringVar(&density, "density", "1e7,3e7,1e8,3e8,1e9", "electron densities")
@@ -94,6 +111,8 @@ Lists are separated by commas; numbers are in cm-3, solar radii and K, or carry 
 	f.StringVar(&ratio, "ratio", "", "ratios of energies to turn into densities")
 	f.StringVar(&law, "law", "", "published density profile, such as gibson-1999")
 	f.StringArrayVar(&set, "set", nil, "change the light: `KEY=VALUE`, such as line.photo=0 or corona.helium=0.05; repeatable")
+	f.StringVar(&figure, "figure", "", "draw the ratio against density into this PNG `file`")
+	f.StringVar(&table, "ecsv", "", "write the rows into this ECSV `file`")
 	f.BoolVar(&json, "json", false, "one JSON document")
 	return cmd
 }
@@ -132,10 +151,66 @@ func list[T ~float64, P interface {
 	return out, nil
 }
 
-func (p *program) lineRows(m *line.Model, ns, rs, ts []float64, json bool) error {
+// lineFigure draws the ratio over the density range of the model.
+func lineFigure(m *line.Model, path string, rs, ts []float64) error {
+	if n := len(rs) * len(ts); n > 6 {
+		return misusef("--figure: %d combinations of height and temperature; at most 6 can be told apart", n)
+	}
+	var ns []float64
+	for l := 6.0; l < 10.0001; l += 0.025 {
+		ns = append(ns, min(math.Pow(10, l), line.HighestDensity))
+	}
+	var curves []report.RatioCurve
+	for _, r := range rs {
+		for _, t := range ts {
+			c := report.RatioCurve{Label: fmt.Sprintf("%g R☉, %g MK", r, t/1e6), Density: ns}
+			for _, n := range ns {
+				q, err := m.Ratio(n, t, r)
+				if err != nil {
+					return misuse(err)
+				}
+				c.Ratio = append(c.Ratio, q)
+			}
+			curves = append(curves, c)
+		}
+	}
+	at := folder{dir: filepath.Dir(path)}
+	return at.write(filepath.Base(path), func(w io.Writer) error {
+		_, err := w.Write(report.RatioFigure(curves))
+		return err
+	})
+}
+
+// rowsTable is the table of line.Rows with units.
+func rowsTable(rows []line.Row) *ecsv.Table {
+	column := func(name, unit, about string, of func(*line.Row) float64) ecsv.Column {
+		v := make([]float64, len(rows))
+		for i := range rows {
+			v[i] = of(&rows[i])
+		}
+		return ecsv.Column{Name: name, Unit: unit, About: about, Data: v}
+	}
+	return &ecsv.Table{Columns: []ecsv.Column{
+		column("n_e", "cm-3", "electron density", func(r *line.Row) float64 { return r.Density }),
+		column("height", "solRad", "distance from the centre of the Sun", func(r *line.Row) float64 { return r.Height }),
+		column("temperature", "K", "electron temperature", func(r *line.Row) float64 { return r.Temperature }),
+		column("emissivity_1074", "erg cm-3 s-1 sr-1", "emissivity of the 1074.7 nm line", func(r *line.Row) float64 { return r.Emissivity1 }),
+		column("emissivity_1079", "erg cm-3 s-1 sr-1", "emissivity of the 1079.8 nm line", func(r *line.Row) float64 { return r.Emissivity2 }),
+		column("ratio_1079_1074", "", "ratio of energies", func(r *line.Row) float64 { return r.Ratio }),
+		column("exponent_1074", "", "d ln j / d ln n_e", func(r *line.Row) float64 { return r.Exponent1 }),
+		column("exponent_1079", "", "d ln j / d ln n_e", func(r *line.Row) float64 { return r.Exponent2 }),
+	}}
+}
+
+func (p *program) lineRows(m *line.Model, ns, rs, ts []float64, json bool, table string) error {
 	rows, err := line.Rows(m, ns, rs, ts)
 	if err != nil {
 		return misuse(err)
+	}
+	if table != "" {
+		if err := rowsTable(rows).WriteFile(table); err != nil {
+			return err
+		}
 	}
 	if json {
 		return writeRows(p, rows)

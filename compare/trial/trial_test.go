@@ -3,6 +3,8 @@ package trial
 import (
 	"context"
 	"math"
+	"os"
+	"path/filepath"
 	"testing"
 
 	"gonum.org/v1/gonum/integrate/quad"
@@ -186,5 +188,52 @@ func TestInversionWithOtherAtomicPhysics(t *testing.T) {
 	fa, fb := float64(a.Verdict.Summary.Ratios.Field.Sky.Median), float64(b.Verdict.Summary.Ratios.Field.Sky.Median)
 	if math.Abs(math.Log(fb/fa)-math.Log(nb/na)/2) > 0.002 {
 		t.Errorf("field moves by %.4f, density by %.4f", fb/fa, nb/na)
+	}
+}
+
+// A file of the user's own in the inversion alone: every collision strength within the
+// ground configuration 20 % above the embedded ones.
+const strongerCollisions = `format: 1
+base: embedded
+collision_strengths:
+  - origin: {source: a test, table: "1", confidence: derived}
+    unit: "1"
+    log_t: [5.8, 5.9, 6.0, 6.1, 6.2, 6.3, 6.4, 6.5, 6.6, 6.7]
+    rows:
+      1-2: [0.50496, 0.44112, 0.3804, 0.3246, 0.27444, 0.23028, 0.19212, 0.15936, 0.13176, 0.1085]
+      1-3: [0.44724, 0.40464, 0.36432, 0.32736, 0.29412, 0.26508, 0.23988, 0.21852, 0.20064, 0.18564]
+      1-4: [0.11676, 0.102, 0.088152, 0.075468, 0.064104, 0.054096, 0.045384, 0.037908, 0.031548, 0.026172]
+      1-5: [0.0501, 0.04284, 0.036204, 0.030288, 0.025116, 0.020688, 0.016944, 0.0138, 0.011202, 0.0090612]
+      2-3: [2.1684, 1.9104, 1.6668, 1.4448, 1.248, 1.0754, 0.92724, 0.8016, 0.69624, 0.60864]
+      2-4: [1.4076, 1.2216, 1.0477, 0.88932, 0.74868, 0.62592, 0.52068, 0.43164, 0.35688, 0.29484]
+      2-5: [0.12576, 0.10878, 0.092952, 0.0786, 0.06588, 0.054792, 0.045276, 0.037212, 0.030456, 0.024828]
+      3-4: [1.8132, 1.5996, 1.3968, 1.2096, 1.0423, 0.89496, 0.7674, 0.65856, 0.56664, 0.4896]
+      3-5: [0.11748, 0.10501, 0.09318, 0.08226, 0.072408, 0.063696, 0.0561, 0.049572, 0.044028, 0.039372]
+      4-5: [0.67884, 0.6384, 0.60144, 0.56868, 0.54, 0.5154, 0.49464, 0.47724, 0.46308, 0.45144]
+`
+
+// Synthesis and inversion with different atomic sets: the density moves by -0.023 dex
+// at log n = 8 (derived with 27 levels; 10 % less where the rates through higher levels
+// do not scale along), the field by half of it.
+func TestInversionWithAnotherAtomicFile(t *testing.T) {
+	file := filepath.Join(t.TempDir(), "stronger.yaml")
+	if err := os.WriteFile(file, []byte(strongerCollisions), 0o666); err != nil {
+		t.Fatal(err)
+	}
+	set := []string{"image.from=266 deg", "image.to=274 deg", "image.inner=1.07 Rsun", "image.outer=1.13 Rsun", "camera.duration=60 min"}
+	a := run(t, "plane-wave", set...)
+	b := run(t, "plane-wave", append([]string{"inversion.line.data=" + file}, set...)...)
+	ratio := func(get func(*compare.Ratios) *stat.Summary) float64 {
+		return math.Log10(float64(get(&b.Verdict.Summary.Ratios).Median) / float64(get(&a.Verdict.Summary.Ratios).Median))
+	}
+	n := ratio(func(r *compare.Ratios) *stat.Summary { return r.Density.Sky })
+	if math.Abs(n+0.022) > 0.002 {
+		t.Errorf("density moves by %+.4f dex", n)
+	}
+	if f := ratio(func(r *compare.Ratios) *stat.Summary { return r.Field.Sky }); math.Abs(f-n/2) > 1e-3 {
+		t.Errorf("field moves by %+.4f dex, density by %+.4f", f, n)
+	}
+	if len(b.Files) != 1 || b.Files[0].Name != file || len(b.Files[0].SHA256) != 64 {
+		t.Errorf("files named: %v", b.Files)
 	}
 }
