@@ -44,15 +44,19 @@ func Default() Scenario {
 			Duration:    3 * 3600,
 			Tunings:     []units.Wavelength{-0.12, 0, 0.12},
 			Filter:      0.13,
+			Order:       []int{},
 			SecondLine:  12,
+			Switching:   "together",
+			Blocks:      1,
 			PointSpread: 2,
+			Background:  8,
 			Noise:       true,
 			Aperture:    20,
 			Throughput:  0.05,
 			Exposure:    2.5,
 			Coadds:      10,
 			ReadNoise:   50,
-			Background:  8,
+			Gaps:        []Gap{},
 		},
 		Inversion: Inversion{
 			Filter:      Band{Centre: 3.5, Width: 1.5, Means: "1/e"},
@@ -75,3 +79,37 @@ func (l *Law) Prefill() { l.Factor = 1 }
 
 // Prefill makes the field free of divergence.
 func (r *Radial) Prefill() { r.Exponent = 2 }
+
+// Prefill makes the share fall as the cube of the angle beyond a minute of arc (common
+// practice, no source).
+func (s *Scatter) Prefill() { *s = Scatter{Share: 0.01, Core: 60, Exponent: 3} }
+
+// Prefill makes an edge within the image of the default.
+func (o *Occulter) Prefill() { *o = Occulter{Radius: 1.04, Width: 20} }
+
+// like fills in an example camera and returns its pixel. Aperture, pixel, filter and
+// background are within the ranges of present and planned coronagraphs; throughput,
+// exposure and detector are common practice, no source.
+func (c *Camera) like() units.SkyAngle {
+	c.Stages, c.Sequential = 5, true
+	c.PointSpread, c.Diffraction, c.Seeing = 0, true, 1.5
+	c.Scatter = &Scatter{Share: 0.02, Core: 60, Exponent: 3}
+	c.Pointing = &Pointing{Jitter: 0.3}
+	c.Occulter = &Occulter{Radius: 1.03, Width: 20}
+	c.KCorona = 1
+	c.DeadTime = 0.5
+	c.FullWell, c.Digit, c.FlatField = 2e5, 4, 1e-3
+	switch c.Like {
+	case "20cm-4.35arcsec":
+		return 4.35
+	case "20cm-3arcsec":
+		return 3
+	case "50cm-3arcsec":
+		c.Aperture, c.Coadds = 50, 25
+		return 3
+	case "150cm-2arcsec":
+		c.Aperture, c.Coadds, c.Background = 150, 50, 5
+		return 2
+	}
+	panic("scenarios: no camera is like " + c.Like)
+}

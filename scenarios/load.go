@@ -110,6 +110,13 @@ func Parse(source string, data []byte, assignments ...string) (*Loaded, error) {
 		l.Name = strings.TrimSuffix(l.Name, filepath.Ext(l.Name))
 	}
 	at, err := strict.Read(source, data, &l.Scenario, assignments...)
+	if c := l.Scenario.Camera; c.Like != "" && at.Sound("camera.like") {
+		// Once more, on the example camera: what is written goes before it.
+		l.Scenario = Default()
+		l.Scenario.Camera.Like = c.Like
+		l.Scenario.Image.Pixel = l.Scenario.Camera.like()
+		at, err = strict.Read(source, data, &l.Scenario, assignments...)
+	}
 	problems, _ := err.(strict.Problems)
 	problems = append(problems, Validate(&l.Scenario, at)...)
 	if err := problems.Err(); err != nil {

@@ -143,21 +143,73 @@ type Image struct {
 	Roll  units.Angle    `yaml:"roll" in:"-180 deg..180 deg" about:"rotation of the image's +y from solar north, counter-clockwise"`
 }
 
-// Camera is what stands between the radiance and the frames.
+// Camera is what stands between the radiance and the frames. Each of its stages is
+// off at zero or null.
 type Camera struct {
-	Cadence     units.Duration     `yaml:"cadence" in:"0.1 s..600 s" about:"time between frames of the first line"`
-	Duration    units.Duration     `yaml:"duration" in:"60 s..48 h"`
-	Tunings     []units.Wavelength `yaml:"tunings" in:"-5 nm..5 nm" about:"offsets from the rest wavelength, ascending, of both lines"`
-	Filter      units.Wavelength   `yaml:"filter" in:"0.005 nm..1 nm" about:"full width at half maximum of the Gaussian transmission"`
-	SecondLine  int                `yaml:"second_line" in:"1..10000" about:"frames of the second line, evenly spread over the duration"`
-	PointSpread units.SkyAngle     `yaml:"point_spread" in:"0 arcsec..30 arcsec" about:"full width at half maximum of the Gaussian point spread; 0: none"`
-	Noise       bool               `yaml:"noise" about:"photon and read noise"`
-	Aperture    units.Diameter     `yaml:"aperture" in:"1 cm..1000 cm"`
-	Throughput  float64            `yaml:"throughput" in:">0..1" about:"detected electrons per photon at the entrance"`
-	Exposure    units.Duration     `yaml:"exposure" in:"1 ms..600 s" about:"of one tuning, all co-adds together"`
-	Coadds      int                `yaml:"coadds" in:"1..10000"`
-	ReadNoise   float64            `yaml:"read_noise" in:"0..1000" about:"electrons rms, one read"`
-	Background  units.Brightness   `yaml:"background" in:"0 ppm..1000 ppm" about:"sky and instrument, millionths of the disc-centre continuum"`
+	Like string `yaml:"like" one:",20cm-4.35arcsec,20cm-3arcsec,50cm-3arcsec,150cm-2arcsec" about:"an example camera that stands for what is not written here and for image.pixel; empty: none"`
+
+	Cadence    units.Duration     `yaml:"cadence" in:"0.1 s..600 s" about:"time between frames of the first line"`
+	Duration   units.Duration     `yaml:"duration" in:"60 s..48 h"`
+	Tunings    []units.Wavelength `yaml:"tunings" in:"-5 nm..5 nm" about:"offsets from the rest wavelength, ascending, of both lines"`
+	Filter     units.Wavelength   `yaml:"filter" in:"0.005 nm..1 nm" about:"full width at half maximum of the transmission"`
+	Stages     int                `yaml:"stages" in:"0..6" about:"of a birefringent filter, whose transmission is a product of cos^2; 0: Gaussian transmission"`
+	Sequential bool               `yaml:"sequential" about:"tunings one after the other, not all at once"`
+	TuningTime units.Duration     `yaml:"tuning_time" in:"0 s..600 s" about:"from one tuning to the next, if sequential; 0: the cadence evenly divided"`
+	Order      []int              `yaml:"order" in:"0..100" about:"in which the tunings are taken, counted from 0 by wavelength; empty: ascending"`
+	DeadTime   units.Duration     `yaml:"dead_time" in:"0 s..600 s" about:"of each tuning: setting the filter and reading"`
+	SecondLine int                `yaml:"second_line" in:"1..10000" about:"frames of the second line, evenly spread over the duration"`
+	Switching  string             `yaml:"switching" one:"together,interleaved,blocks" about:"second line: at the same time as the first, after it within its cadence, or instead of it"`
+	Blocks     int                `yaml:"blocks" in:"1..1000" about:"in how many runs the frames of the second line come, if switching is blocks"`
+
+	PointSpread units.SkyAngle   `yaml:"point_spread" in:"0 arcsec..30 arcsec" about:"full width at half maximum of a Gaussian point spread; 0: none"`
+	Diffraction bool             `yaml:"diffraction" about:"of the round aperture"`
+	Seeing      units.SkyAngle   `yaml:"seeing" in:"0 arcsec..10 arcsec" about:"full width at half maximum of the long-exposure seeing; 0: none"`
+	Scatter     *Scatter         `yaml:"scatter" about:"light scattered far; null: none"`
+	Pointing    *Pointing        `yaml:"pointing" about:"errors of the pointing; null: none"`
+	Occulter    *Occulter        `yaml:"occulter" about:"null: none"`
+	FieldStop   units.Height     `yaml:"field_stop" in:"0 Rsun..5 Rsun" about:"radius of the field stop; 0: none"`
+	Background  units.Brightness `yaml:"background" in:"0 ppm..1000 ppm" about:"sky and instrument, millionths of the disc-centre continuum"`
+	KCorona     float64          `yaml:"k_corona" in:"0..100" about:"continuum of the corona, over that of Baumbach 1937, AN 263, 121; 0: none"`
+	Brightening float64          `yaml:"brightening" in:"-10..10" about:"growth of ln(transmission of the sky) in an hour"`
+
+	Noise      bool           `yaml:"noise" about:"photon and read noise"`
+	Aperture   units.Diameter `yaml:"aperture" in:"1 cm..1000 cm"`
+	Throughput float64        `yaml:"throughput" in:">0..1" about:"detected electrons per photon at the entrance"`
+	Exposure   units.Duration `yaml:"exposure" in:"1 ms..600 s" about:"of one tuning, all co-adds together"`
+	Coadds     int            `yaml:"coadds" in:"1..10000"`
+	ReadNoise  float64        `yaml:"read_noise" in:"0..1000" about:"electrons rms, one read"`
+	FullWell   float64        `yaml:"full_well" in:"0..1e9" about:"electrons of one read beyond which a pixel is saturated; 0: never"`
+	Digit      float64        `yaml:"digit" in:"0..1e5" about:"electrons per digital unit; 0: not digitised"`
+	FlatField  float64        `yaml:"flat_field" in:"0..0.1" about:"rms of the gain left over by the flat field, each pixel and tuning its own"`
+	Lost       float64        `yaml:"lost" in:"0..0.5" about:"share of the frames that are lost"`
+	Gaps       []Gap          `yaml:"gaps" about:"spans without frames"`
+}
+
+// Scatter is the light that each point of the image spreads far: a share falling with
+// the angle t as (1 + (t/core)^2)^(-exponent/2).
+type Scatter struct {
+	Share    float64        `yaml:"share" in:">0..0.5" about:"of the light"`
+	Core     units.SkyAngle `yaml:"core" in:"1 arcsec..3600 arcsec"`
+	Exponent float64        `yaml:"exponent" in:">2..10"`
+}
+
+// Pointing says how the image moves on the detector.
+type Pointing struct {
+	Jitter units.SkyAngle `yaml:"jitter" in:"0 arcsec..60 arcsec" about:"rms in each axis, from tuning to tuning"`
+	DriftX units.SkyAngle `yaml:"drift_x" in:"-600 arcsec..600 arcsec" about:"along the rows, in an hour"`
+	DriftY units.SkyAngle `yaml:"drift_y" in:"-600 arcsec..600 arcsec" about:"along the columns, in an hour"`
+}
+
+// Occulter is a round edge that covers a growing part of the aperture inward.
+type Occulter struct {
+	Radius units.Height   `yaml:"radius" in:">0 Rsun..3 Rsun" about:"where half of the aperture is covered"`
+	Width  units.SkyAngle `yaml:"width" in:"0 arcsec..600 arcsec" about:"from all covered to all open"`
+}
+
+// A Gap is a span without frames.
+type Gap struct {
+	From   units.Duration `yaml:"from" in:"0 s..48 h" about:"after the start"`
+	Length units.Duration `yaml:"length" in:">0 s..48 h"`
 }
 
 // Inversion is the observer's recipe. It may not know the corona.

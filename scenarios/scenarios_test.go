@@ -56,11 +56,11 @@ func TestEmbeddedScenarios(t *testing.T) {
 }
 
 // quiet-belt.yaml writes everything out, so it must agree with the defaults in all but
-// its description and hole.
+// its description and hole, and in that its tunings come one after the other.
 func TestQuietBeltIsTheDefaultWithAHole(t *testing.T) {
 	got := load(t, "quiet-belt").Scenario
 	want := scenarios.Default()
-	want.About, want.Corona.Density.Hole = got.About, got.Corona.Density.Hole
+	want.About, want.Corona.Density.Hole, want.Camera.Sequential = got.About, got.Corona.Density.Hole, true
 	if diff := cmp.Diff(want, got); diff != "" {
 		t.Error(diff)
 	}

@@ -1,6 +1,7 @@
 package scenarios
 
 import (
+	"fmt"
 	"math"
 
 	"offplane/scenarios/strict"
@@ -110,8 +111,7 @@ func (v *validator) camera(s *Scenario) {
 		"%v is less than 10 cadences, %v", c.Duration, 10*c.Cadence)
 	n := len(c.Tunings)
 	v.rule(n >= 3, []string{"camera.tunings"}, "%d are too few; the three-point formula needs at least 3, such as [-0.12 nm, 0 nm, 0.12 nm]", n)
-	v.rule(float64(c.Exposure)*float64(n) <= float64(c.Cadence), []string{"camera.exposure", "camera.tunings", "camera.cadence"},
-		"%d tunings of %v take %.4g s, more than the cadence, %v", n, c.Exposure, float64(c.Exposure)*float64(n), c.Cadence)
+	v.timing(c)
 	if n < 3 {
 		return
 	}
@@ -131,6 +131,57 @@ func (v *validator) camera(s *Scenario) {
 	}
 	v.rule(symmetric, []string{"camera.tunings"},
 		"the three-point formula needs an odd number of tunings, symmetric about the middle one, such as [-0.12 nm, 0 nm, 0.12 nm]")
+}
+
+// timing checks that everything finds its time.
+func (v *validator) timing(c *Camera) {
+	n := len(c.Tunings)
+	slots, each := n, float64(c.Exposure+c.DeadTime)
+	what := fmt.Sprintf("%d tunings of %v", n, c.Exposure)
+	if c.DeadTime > 0 {
+		what += fmt.Sprintf(" and %v of dead time", c.DeadTime)
+	}
+	keys := []string{"camera.exposure", "camera.tunings", "camera.cadence", "camera.dead_time"}
+	if c.Sequential && c.TuningTime > 0 {
+		v.rule(each <= float64(c.TuningTime), []string{"camera.tuning_time", "camera.exposure", "camera.dead_time", "camera.sequential"},
+			"%v is less than exposure and dead_time together, %.4g s", c.TuningTime, each)
+		each = float64(c.TuningTime)
+		what = fmt.Sprintf("%d tunings of %v", n, c.TuningTime)
+		keys = []string{"camera.tuning_time", "camera.tunings", "camera.cadence", "camera.sequential"}
+	}
+	if c.Switching == "interleaved" {
+		slots *= 2
+		what += " of each line"
+		keys = append(keys, "camera.switching")
+	}
+	v.rule(each*float64(slots) <= float64(c.Cadence), keys, "%s take %.4g s, more than the cadence, %v", what, each*float64(slots), c.Cadence)
+
+	if len(c.Order) > 0 {
+		seen := make([]bool, n)
+		each := len(c.Order) == n
+		for _, k := range c.Order {
+			if each = each && k < n && !seen[k]; each {
+				seen[k] = true
+			}
+		}
+		v.rule(each, []string{"camera.order", "camera.tunings"}, "must hold each number from 0 to %d once", n-1)
+	}
+	frames := float64(c.Duration) / float64(c.Cadence)
+	if c.Switching == "blocks" {
+		v.rule(4*float64(c.SecondLine) <= frames, []string{"camera.second_line", "camera.switching", "camera.duration", "camera.cadence"},
+			"%d frames of the second line leave the first line less than three quarters of %.4g frames", c.SecondLine, frames)
+		v.rule(c.Blocks <= c.SecondLine, []string{"camera.blocks", "camera.switching", "camera.second_line"},
+			"%d are more than second_line, %d", c.Blocks, c.SecondLine)
+	}
+	gap := units.Duration(0)
+	for _, g := range c.Gaps {
+		gap += g.Length
+	}
+	v.rule(gap <= c.Duration/2, []string{"camera.gaps", "camera.duration"}, "last %v together, more than half of duration, %v", gap, c.Duration)
+	if p := c.Pointing; p != nil {
+		drift := units.SkyAngle(math.Hypot(float64(p.DriftX), float64(p.DriftY)) * float64(c.Duration) / 3600)
+		v.rule(drift <= 600, []string{"camera.pointing", "camera.duration"}, "drifts by %v in all; at most 600 arcsec are allowed", drift)
+	}
 }
 
 func validateInversion(s *Inversion, prefix string, at *strict.Positions) strict.Problems {

@@ -11,6 +11,7 @@ import (
 	"offplane/model"
 	"offplane/scenarios"
 	"offplane/scenarios/units"
+	"offplane/synth/camera"
 	"offplane/synth/filter"
 	"offplane/synth/line"
 	"offplane/synth/obs"
@@ -76,7 +77,7 @@ func NewScene(ctx context.Context, s *scenarios.Scenario, light Light, workers i
 		Spectrum: wave.Spectrum{Slope: sp.Slope, Floor: sp.Floor, Bump: sp.Bump, At: sp.BumpAt.Hz(), Width: sp.BumpWidth, Low: sp.Low.Hz(), High: sp.High.Hz()},
 		Damping:  s.Waves.Damping,
 		Cadence:  float64(s.Camera.Cadence), Frames: Frames(s),
-		MaxDelay: c.longest,
+		MaxDelay: c.longest, MaxLead: camera.Latest(s.Camera),
 	})
 	if err != nil {
 		return nil, err

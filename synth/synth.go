@@ -36,25 +36,25 @@ func (c *Scene) Observe(ctx context.Context, workers int, progress func(done, to
 }
 
 func (c *Scene) observe(ctx context.Context, workers, tile int, progress func(done, total int)) (*obs.Observation, *Truth, error) {
-	cam := camera.New(c.s.Camera, c.s.Seed, c.Grid.Pixel*obs.Arcsec, c.light.Disc, c.light.Rest)
-	field := Field(&c.Grid, c.s)
-	lit := dilate(&c.Grid, field, len(cam.Spread)/2)
 	nt := Frames(c.s)
-	second := secondFrames(nt, c.s.Camera.SecondLine)
 	nk := len(c.s.Camera.Tunings)
-	raw := [2]*obs.Cube{obs.NewCube(len(lit), nk, nt), obs.NewCube(len(lit), nk, len(second))}
+	cam := c.camera()
+	plan := camera.NewSchedule(c.s.Camera, nt, c.s.Seed)
+	d := c.newDevelopment(cam, plan)
+	raw := [2]*obs.Cube{obs.NewCube(len(d.lit), nk, nt), obs.NewCube(len(d.lit), nk, len(plan.Second))}
 	truth := newTruth(c.Grid)
-	inField := make(map[int32]bool, len(field))
-	for _, p := range field {
-		inField[p] = true
+	inField := make(map[int32]int32, len(d.all)) // by place in the wide raster
+	for _, p := range d.all {
+		inField[d.wide.place(&c.Grid, p)] = p
 	}
+	lit, wide := d.lit, &d.wide.Grid
 
 	// Neighbours in position angle share field lines, so they come one after the other:
 	// sectors, and within them pixels outward.
 	order := make([]int, len(lit))
 	key := make([][2]float64, len(lit))
 	for i, p := range lit {
-		r, pa := c.Grid.Polar(int(p)%c.Grid.Nx, int(p)/c.Grid.Nx)
+		r, pa := wide.Polar(int(p)%wide.Nx, int(p)/wide.Nx)
 		order[i] = i
 		key[i] = [2]float64{math.Floor(pa), r}
 	}
@@ -68,20 +68,20 @@ func (c *Scene) observe(ctx context.Context, workers, tile int, progress func(do
 	done := progressCounter(len(order), progress)
 	err := parallel.For(ctx, (len(order)+tile-1)/tile, workers, func(w, i int) error {
 		if lamps[w] == nil {
-			lamps[w] = c.newLamp(second, tile)
+			lamps[w] = c.newLamp(plan, tile)
 			rays[w] = make([][]sample, tile)
 		}
 		part := order[i*tile : min((i+1)*tile, len(order))]
 		for n, q := range part {
 			p := lit[q]
-			y, z := c.Grid.Sky(int(p)%c.Grid.Nx, int(p)/c.Grid.Nx)
+			y, z := wide.Sky(int(p)%wide.Nx, int(p)/wide.Nx)
 			var err error
 			if rays[w][n], err = c.ray(y, z, rays[w][n]); err != nil {
 				return err
 			}
-			if inField[p] {
+			if q, ok := inField[p]; ok {
 				v, structure := c.truthOf(rays[w][n])
-				truth.set(p, v, structure)
+				truth.set(q, v, structure)
 			}
 		}
 		lamps[w].shine(rays[w][:len(part)])
@@ -99,117 +99,101 @@ func (c *Scene) observe(ctx context.Context, workers, tile int, progress func(do
 		return nil, nil, err
 	}
 
-	o := &obs.Observation{Grid: c.Grid, Pixels: field, Unit: Unit}
-	toNM := c.s.Camera.Tunings
+	o := &obs.Observation{Grid: c.Grid, Pixels: d.field, Unit: Unit}
 	for l := range 2 {
-		for k, off := range toNM {
-			o.Tunings = append(o.Tunings, obs.Tuning{Line: l + 1, Index: k, Wavelength: c.light.Rest[l] + float64(off),
-				FilterFWHM: float64(c.s.Camera.Filter), Offset: float64(off)})
+		for k, off := range c.s.Camera.Tunings {
+			o.Tunings = append(o.Tunings, obs.Tuning{Line: l + 1, Index: k, Wavelength: c.light.Rest[l] + float64(off), Delay: plan.Delay[k],
+				FilterFWHM: float64(c.s.Camera.Filter), Offset: float64(off), Stages: c.s.Camera.Stages})
 		}
 	}
-	for t := range nt {
-		o.Exposures = append(o.Exposures, c.exposure(cam, 0, t, t))
-	}
-	for i, t := range second {
-		o.Exposures = append(o.Exposures, c.exposure(cam, 1, i, t))
+	for l := range 2 {
+		background := d.background(l)
+		for f := range raw[l].Frames {
+			o.Exposures = append(o.Exposures, obs.Exposure{
+				Line: l + 1, Frame: f, Time: plan.Time(l, f, float64(c.s.Camera.Cadence)), Exposure: float64(c.s.Camera.Exposure),
+				Electrons: cam.Electrons[l], Background: background, ReadNoise: cam.ReadNoise,
+			})
+		}
 	}
 	for l := range 2 {
-		o.Frames[l] = obs.NewCube(len(field), nk, raw[l].Frames)
-		if err := c.expose(ctx, o, cam, raw[l], lit, l, workers); err != nil {
+		if o.Frames[l], err = d.develop(ctx, raw[l], l, workers); err != nil {
 			return nil, nil, err
 		}
 		raw[l] = nil
 		o.Mean[l] = means(o.Frames[l])
 	}
-	return o, truth, nil
+	return withoutDark(o), truth, nil
 }
 
-// exposure is the log entry of one frame. Without noise the camera is not named.
-func (c *Scene) exposure(cam *camera.Camera, line, frame, slot int) obs.Exposure {
-	e := obs.Exposure{Line: line + 1, Frame: frame, Time: float64(slot) * float64(c.s.Camera.Cadence), Exposure: float64(c.s.Camera.Exposure)}
-	e.Electrons, e.Background, e.ReadNoise = cam.Electrons[line], cam.Background[line], cam.ReadNoise
-	return e
+// camera returns the camera of the scene.
+func (c *Scene) camera() *camera.Camera {
+	return camera.New(c.s.Camera, c.s.Seed, c.Grid.Pixel*obs.Arcsec, c.light.Disc, c.light.Rest)
 }
 
-// secondFrames returns the frames at which the second line is exposed too: n of them,
-// each in the middle of its share of the time.
-func secondFrames(frames, n int) []int {
-	n = min(n, frames)
-	out := make([]int, n)
-	for i := range out {
-		out[i] = (2*i + 1) * frames / (2 * n)
-	}
-	return out
-}
-
-// dilate returns the pixels within r pixels (both ways) of the field, ascending: light
-// from beside the field is spread into it.
-func dilate(g *obs.Grid, field []int32, r int) []int32 {
-	if r == 0 {
-		return field
-	}
-	in := make([]bool, g.Nx*g.Ny)
-	for _, p := range field {
-		x, y := int(p)%g.Nx, int(p)/g.Nx
-		for v := max(y-r, 0); v <= min(y+r, g.Ny-1); v++ {
-			for u := max(x-r, 0); u <= min(x+r, g.Nx-1); u++ {
-				in[v*g.Nx+u] = true
-			}
-		}
-	}
-	var out []int32
-	for p, ok := range in {
-		if ok {
-			out = append(out, int32(p))
-		}
-	}
-	return out
-}
-
-// expose spreads the raw radiance of one line and adds the noise.
-func (c *Scene) expose(ctx context.Context, o *obs.Observation, cam *camera.Camera, raw *obs.Cube, lit []int32, line, workers int) error {
-	at := make([]int32, c.Grid.Nx*c.Grid.Ny) // index in lit, plus one
-	for i, p := range lit {
-		at[p] = int32(i) + 1
-	}
-	half := len(cam.Spread) / 2
-	return parallel.For(ctx, len(o.Pixels), workers, func(_, i int) error {
-		p := o.Pixels[i]
-		x, y := int(p)%c.Grid.Nx, int(p)/c.Grid.Nx
-		for k := range raw.Tunings {
-			dst := o.Frames[line].Series(i, k)
-			if half == 0 {
-				copy(dst, raw.Series(int(at[p])-1, k))
-			} else {
-				clear(dst)
-				for v, wy := range cam.Spread {
-					for u, wx := range cam.Spread {
-						q := at[(y+v-half)*c.Grid.Nx+x+u-half]
-						w := float32(wx * wy)
-						for t, a := range raw.Series(int(q)-1, k) {
-							dst[t] += float32(w * a)
-						}
-					}
-				}
-			}
-			cam.Expose(dst, line, p, k, nil)
-		}
-		return nil
-	})
-}
-
-// means returns the mean over frames, per tuning and field pixel.
+// means returns the mean per tuning and field pixel over the frames that are whole, NaN
+// if there is none.
 func means(c *obs.Cube) [][]float32 {
 	out := make([][]float32, c.Tunings)
 	for k := range out {
 		out[k] = make([]float32, c.Pixels)
-		for p := range c.Pixels {
-			sum := 0.0
-			for _, x := range c.Series(p, k) {
-				sum += float64(x)
+	}
+	sums := make([]float64, c.Tunings)
+	for p := range c.Pixels {
+		clear(sums)
+		n := 0.0
+		for t := range c.Frames {
+			whole := true
+			for k := range c.Tunings {
+				x := c.Series(p, k)[t]
+				whole = whole && x == x
 			}
-			out[k][p] = float32(sum / float64(c.Frames))
+			if !whole {
+				continue
+			}
+			n++
+			for k := range c.Tunings {
+				sums[k] += float64(c.Series(p, k)[t])
+			}
+		}
+		for k, sum := range sums {
+			out[k][p] = float32(sum / n)
 		}
 	}
 	return out
+}
+
+// withoutDark takes out of the field the pixels of which no frame of the first line is
+// whole.
+func withoutDark(o *obs.Observation) *obs.Observation {
+	var keep []int
+	for i, x := range o.Mean[0][0] {
+		if x == x {
+			keep = append(keep, i)
+		}
+	}
+	if len(keep) == len(o.Pixels) {
+		return o
+	}
+	pixels := make([]int32, len(keep))
+	for j, i := range keep {
+		pixels[j] = o.Pixels[i]
+	}
+	o.Pixels = pixels
+	for l, c := range o.Frames {
+		kept := obs.NewCube(len(keep), c.Tunings, c.Frames)
+		for j, i := range keep {
+			for k := range c.Tunings {
+				copy(kept.Series(j, k), c.Series(i, k))
+			}
+		}
+		o.Frames[l] = kept
+		for k, m := range o.Mean[l] {
+			mean := make([]float32, len(keep))
+			for j, i := range keep {
+				mean[j] = m[i]
+			}
+			o.Mean[l][k] = mean
+		}
+	}
+	return o
 }

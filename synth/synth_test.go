@@ -11,6 +11,7 @@ import (
 
 	"offplane/scenarios"
 	"offplane/scenarios/units"
+	"offplane/synth/camera"
 	"offplane/synth/line"
 	"offplane/synth/obs"
 )
@@ -60,7 +61,7 @@ func TestLightAgainstTheExactSum(t *testing.T) {
 	for _, amplitude := range []string{"5 km/s", "20 km/s"} {
 		s, l := load(t, "quick", "waves.amplitude="+amplitude, "camera.duration=30 min", "sight.step=1.5")
 		c := scene(t, s, l)
-		lamp := c.newLamp([]int{3}, 2)
+		lamp := c.newLamp(&camera.Schedule{Delay: make([]float64, 3), Second: []int{3}}, 2)
 		var rays [][]sample
 		for _, p := range [][2]float64{{1.12, 0.05}, {1.05, 0.52}} {
 			r, err := c.ray(p[0], p[1], nil)

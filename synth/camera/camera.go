@@ -1,5 +1,10 @@
 // Package camera turns radiance into the frames that an instrument would write. It
-// knows an instrument by its physical parameters only.
+// knows an instrument by its physical parameters only. Each stage is off at zero, and
+// with all of them off the frames are the radiance.
+//
+// In their order: scattered light (Scatter), point spread (Kernel), pointing (Move),
+// brightening (Gain), occulter and field stop (Open), continuum (Continuum), photons
+// and detector (Expose), lost frames (Schedule).
 package camera
 
 import (
@@ -8,24 +13,34 @@ import (
 	"offplane/scenarios"
 	"offplane/scenarios/units"
 	"offplane/synth/filter"
-	"offplane/synth/random"
 )
 
-// A Camera applies the point spread and the noise. Radiance is in erg cm^-2 s^-1
-// sr^-1 through the filter; line 0 is 1074.7 nm, line 1 is 1079.8 nm.
+// A Camera holds the stages. Radiance is in erg cm^-2 s^-1 sr^-1 through the filter;
+// line 0 is 1074.7 nm, line 1 is 1079.8 nm.
 type Camera struct {
-	// Spread holds the one-dimensional weights of the point spread over pixels,
-	// odd in number and symmetric; the spread is their outer product.
-	Spread []float64
+	Spread [2]Kernel // point spread at either line
 	// Electrons per unit radiance in one pixel and tuning.
 	Electrons [2]float64
-	// Background is the continuum behind a tuning. The frames come without it: it is
-	// measured beside the line for as long and subtracted, so that its photon noise
-	// counts twice.
+	// Background is the continuum of sky and instrument behind a tuning. The frames come
+	// without it: it is measured beside the line for as long and subtracted, so that its
+	// photon noise counts twice.
 	Background [2]float64
 	ReadNoise  float64 // electrons rms of a tuning and its background, co-adds included
-	noise      bool
-	seed       uint64
+
+	millionth [2]float64 // of the disc-centre continuum, through the filter
+	k         float64    // of the K corona
+	distance  float64    // of the observer [solar radii]
+	occulter  *scenarios.Occulter
+	stop      float64 // radius of the field stop [solar radii]; 0: none
+	pointing  *pointing
+	cadence   float64 // [s]
+	rate      float64 // of the brightening [1/s]
+	coadds    float64
+	fullWell  float64
+	digit     float64
+	flat      float64
+	noise     bool
+	seed      uint64
 }
 
 // New builds the camera. Pixel is the pitch [rad], disc the radiance of the
@@ -33,68 +48,84 @@ type Camera struct {
 // the two lines.
 func New(c scenarios.Camera, seed uint64, pixel float64, disc, rest [2]float64) *Camera {
 	k := &Camera{
-		Spread:    gaussianSpread(c.PointSpread.Rad(), pixel),
 		ReadNoise: c.ReadNoise * math.Sqrt(2*float64(c.Coadds)),
+		k:         c.KCorona,
+		occulter:  c.Occulter,
+		stop:      float64(c.FieldStop),
+		pointing:  newPointing(c, pixel, seed),
+		cadence:   float64(c.Cadence),
+		rate:      c.Brightening / 3600,
+		coadds:    float64(c.Coadds),
+		fullWell:  c.FullWell,
+		digit:     c.Digit,
+		flat:      c.FlatField,
 		noise:     c.Noise,
 		seed:      seed,
 	}
 	area := math.Pi / 4 * float64(c.Aperture) * float64(c.Aperture) // [cm^2]
-	// Equivalent width of the Gaussian transmission: sqrt(pi) times its 1/e half-width.
-	width := math.Sqrt(math.Pi) * filter.EFolding(float64(c.Filter)) * 10 // [A]
+	width := filter.EquivalentWidth(c.Stages, float64(c.Filter)) * 10
 	for l := range 2 {
 		photon := units.Planck * units.LightSpeed / (rest[l] * 1e-7)
 		k.Electrons[l] = area * pixel * pixel / photon * c.Throughput * float64(c.Exposure)
+		k.millionth[l] = disc[l] * width * 1e-6
 		k.Background[l] = c.Background.Fraction() * disc[l] * width
+		k.Spread[l] = newKernel(c, pixel, rest[l])
 	}
 	return k
 }
 
-// gaussianSpread returns the share of a Gaussian of the given full width at half
-// maximum [rad] that falls into each pixel of a row, cut where less than 1e-4 lies
-// beyond and scaled to conserve light.
-func gaussianSpread(fwhm, pixel float64) []float64 {
-	if fwhm == 0 {
-		return []float64{1}
-	}
-	s := fwhm / (2 * math.Sqrt(2*math.Ln2)) * math.Sqrt2 / pixel
-	within := func(i float64) float64 { return (math.Erf((i+0.5)/s) - math.Erf((i-0.5)/s)) / 2 }
-	half := 0
-	for math.Erfc((float64(half)+0.5)/s) > 1e-4 {
-		half++
-	}
-	w := make([]float64, 2*half+1)
-	sum := 0.0
-	for i := range w {
-		w[i] = within(float64(i - half))
-		sum += w[i]
-	}
-	for i := range w {
-		w[i] /= sum
-	}
-	return w
-}
-
-// Expose adds photon and read noise to the series of one pixel (raster index) at one
-// tuning; frame number of element t is frames[t], or t if frames is nil. Noise is
-// addressed by (seed, line, pixel, tuning, frame).
-func (c *Camera) Expose(series []float32, line int, pixel int32, tuning int, frames []int) {
-	if !c.noise {
-		return
-	}
-	key := random.NewKey(c.seed, 0x6e6f697365, uint64(line), uint64(pixel), uint64(tuning)) // "noise"
-	for t, x := range series {
-		frame := t
-		if frames != nil {
-			frame = frames[t]
-		}
-		series[t] = float32(float64(x) + c.Sigma(line, float64(x))*key.Normal(uint64(frame)))
-	}
-}
-
 // Sigma returns the rms noise of one background-subtracted exposure of the given
-// radiance: photons of the line once and of the background twice, in the limit of
-// many photons (the background alone gives thousands), and the reads.
+// radiance where the aperture is open and without the K corona: photons of the line
+// once and of the background twice, in the limit of many photons, and the reads.
 func (c *Camera) Sigma(line int, radiance float64) float64 {
-	e := c.Electrons[line]
-	return math.Sqrt(e*(max(radiance, 0)+2*c.Background[line])+c.ReadNoise*c.ReadNoise) / e
+	return c.sigma(c.Electrons[line], radiance, c.Background[line])
 }
+
+// SigmaAt returns it at a spot.
+func (c *Camera) SigmaAt(s Spot, radiance float64) float64 {
+	return c.sigma(c.Electrons[s.Line]*s.Open, radiance, s.Background)
+}
+
+// Spot returns what a pixel sees that lies r solar radii from the disc centre; height
+// is the size of an arc second there [solar radii].
+func (c *Camera) Spot(line int, pixel int32, tuning int, r, arcsec float64) Spot {
+	return Spot{line, pixel, tuning, c.Open(r, arcsec), c.Continuum(line, r)}
+}
+
+// Continuum returns the continuum behind a tuning at r solar radii: sky, instrument
+// and the K corona, 1.425 r^-7 + 2.565 r^-17 millionths (Baumbach 1937, AN 263, 121).
+func (c *Camera) Continuum(line int, r float64) float64 {
+	b := c.Background[line]
+	if c.k > 0 {
+		b += c.k * (1.425*math.Pow(r, -7) + 2.565*math.Pow(r, -17)) * c.millionth[line]
+	}
+	return b
+}
+
+// LeastOpen is the share of the aperture below which a pixel is occulted: its frames
+// are not used.
+const LeastOpen = 0.05
+
+// Open returns the share of the aperture that a pixel at r solar radii sees past the
+// occulter, 0 outside the field stop: a straight edge across a round aperture
+// (derived). Calibrated frames are divided by it.
+func (c *Camera) Open(r, arcsec float64) float64 {
+	if c.stop > 0 && r > c.stop {
+		return 0
+	}
+	o := c.occulter
+	if o == nil {
+		return 1
+	}
+	u := 2 * (r - float64(o.Radius)) / (float64(o.Width) * arcsec)
+	switch {
+	case !(u > -1):
+		return 0
+	case u >= 1:
+		return 1
+	}
+	return 0.5 + (u*math.Sqrt(1-u*u)+math.Asin(u))/math.Pi
+}
+
+// Gain returns the transmission of the sky over that at the start [s].
+func (c *Camera) Gain(time float64) float64 { return math.Exp(c.rate * time) }

@@ -74,7 +74,7 @@ func TestExposeHasTheStatedNoise(t *testing.T) {
 	for i := range x {
 		x[i] = level
 	}
-	k.Expose(x, 0, 17, 1, nil)
+	k.Expose(x, Spot{0, 17, 1, 1, k.Background[0]})
 	m, v := 0.0, 0.0
 	for _, a := range x {
 		m += float64(a) / float64(len(x))
@@ -86,14 +86,14 @@ func TestExposeHasTheStatedNoise(t *testing.T) {
 	if math.Abs(math.Sqrt(v)/want-1) > 4/math.Sqrt(2*float64(len(x))) || math.Abs(m-level) > 4*want/math.Sqrt(float64(len(x))) {
 		t.Errorf("mean %g, rms %g, want %g and %g", m, math.Sqrt(v), level, want)
 	}
-	y := []float32{level}
-	k.Expose(y, 0, 17, 1, []int{5})
-	if y[0] != x[5] {
+	y := []float32{level, level, level}
+	k.Expose(y, Spot{0, 17, 1, 1, k.Background[0]})
+	if y[2] != x[2] {
 		t.Error("noise depends on more than its address")
 	}
 	s.Noise = false
 	z := []float32{level}
-	New(s, 1, 4.35*arcsec, disc, rest).Expose(z, 0, 17, 1, nil)
+	New(s, 1, 4.35*arcsec, disc, rest).Expose(z, Spot{0, 17, 1, 1, 3})
 	if z[0] != level {
 		t.Error("noise that was switched off")
 	}

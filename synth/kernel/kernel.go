@@ -1,4 +1,4 @@
-// Package kernel holds the two inner loops of the synthesis, over the frames of one
+// Package kernel holds the inner loops of the synthesis, over the frames of one
 // line-of-sight sample. Products before sums are rounded by explicit conversions, so
 // that no compiler fuses them; the vector code does the same operations in the same
 // order, so that every path gives the same bits.
@@ -94,4 +94,54 @@ func expNeg(x float32) float32 {
 	p = float32(p*r) + 1
 	p = float32(p*r) + 1
 	return p * math.Float32frombits((k+127)<<23)
+}
+
+// Cosines adds one sample's light through one tuning of a filter whose transmission is
+// a sum of cosines: acc[t] += sum over m of coef[m] * cos(2 pi m (d - v[t]) * inv), m
+// from 0. The error is below 2e-6 of the sum of coef (tested).
+func Cosines(acc, v, coef []float32, d, inv float32) {
+	v = v[:len(acc)]
+	done := cosinesVector(acc, v, coef, d, inv)
+	cosines(acc[done:], v[done:], coef, d, inv)
+}
+
+// Taylor series of (2 cos(2 pi y) - 2)/y^2 in y^2, whose error at the end, y = 1/2, is
+// 3e-7; the vector code has it too.
+const (
+	cosT1 = -39.47841760435743
+	cosT2 = 129.87878804533656
+	cosT3 = -170.91363441338743
+	cosT4 = 120.48928274375328
+	cosT5 = -52.852513566748776
+	cosT6 = 15.80707274263693
+	cosT7 = -3.4287814221773423
+	cosT8 = 0.564011936911582
+)
+
+// cosines is the portable path. The sum is that of Clenshaw in Reinsch's form, which
+// keeps its digits where cos is near 1 (Oliver 1977, J. Inst. Maths Applics 20, 379,
+// from memory).
+func cosines(acc, v, coef []float32, d, inv float32) {
+	for t, x := range v {
+		y := float32((d - x) * inv)
+		n := y + rounding
+		n -= rounding
+		y -= n
+		s := float32(y * y)
+		q := float32(s*cosT8) + cosT7
+		q = float32(q*s) + cosT6
+		q = float32(q*s) + cosT5
+		q = float32(q*s) + cosT4
+		q = float32(q*s) + cosT3
+		q = float32(q*s) + cosT2
+		q = float32(q*s) + cosT1
+		q = float32(q * s) // 2 cos - 2
+		var e, b float32
+		for m := len(coef) - 1; m > 0; m-- {
+			e = float32(e+coef[m]) + float32(q*b)
+			b += e
+		}
+		q = float32(q * 0.5)
+		acc[t] += float32(e+coef[0]) + float32(q*b)
+	}
 }

@@ -28,8 +28,21 @@ func profileVector(acc, v []float32, amp, d, invW float32) int {
 	return n
 }
 
+// cosinesVector does the same for Cosines.
+func cosinesVector(acc, v, coef []float32, d, inv float32) int {
+	n := len(acc) &^ 7
+	if !useVector || n == 0 {
+		return 0
+	}
+	cosinesAVX2(&acc[0], &v[0], n, &coef[0], len(coef)-1, d, inv)
+	return n
+}
+
 //go:noescape
 func combineAVX2(dst *float32, n int, rows *[]float32, coef *float32, nrows int)
 
 //go:noescape
 func profileAVX2(acc, v *float32, n int, amp, d, invW float32)
+
+//go:noescape
+func cosinesAVX2(acc, v *float32, n int, coef *float32, m int, d, inv float32)

@@ -69,6 +69,52 @@ DATA bias<>+16(SB)/8, $0x0000007f0000007f
 DATA bias<>+24(SB)/8, $0x0000007f0000007f
 GLOBL bias<>(SB), RODATA|NOPTR, $32
 
+DATA cos1<>+0(SB)/8, $0xc21de9e6c21de9e6
+DATA cos1<>+8(SB)/8, $0xc21de9e6c21de9e6
+DATA cos1<>+16(SB)/8, $0xc21de9e6c21de9e6
+DATA cos1<>+24(SB)/8, $0xc21de9e6c21de9e6
+GLOBL cos1<>(SB), RODATA|NOPTR, $32
+DATA cos2<>+0(SB)/8, $0x4301e0f84301e0f8
+DATA cos2<>+8(SB)/8, $0x4301e0f84301e0f8
+DATA cos2<>+16(SB)/8, $0x4301e0f84301e0f8
+DATA cos2<>+24(SB)/8, $0x4301e0f84301e0f8
+GLOBL cos2<>(SB), RODATA|NOPTR, $32
+DATA cos3<>+0(SB)/8, $0xc32ae9e4c32ae9e4
+DATA cos3<>+8(SB)/8, $0xc32ae9e4c32ae9e4
+DATA cos3<>+16(SB)/8, $0xc32ae9e4c32ae9e4
+DATA cos3<>+24(SB)/8, $0xc32ae9e4c32ae9e4
+GLOBL cos3<>(SB), RODATA|NOPTR, $32
+DATA cos4<>+0(SB)/8, $0x42f0fa8342f0fa83
+DATA cos4<>+8(SB)/8, $0x42f0fa8342f0fa83
+DATA cos4<>+16(SB)/8, $0x42f0fa8342f0fa83
+DATA cos4<>+24(SB)/8, $0x42f0fa8342f0fa83
+GLOBL cos4<>(SB), RODATA|NOPTR, $32
+DATA cos5<>+0(SB)/8, $0xc25368f9c25368f9
+DATA cos5<>+8(SB)/8, $0xc25368f9c25368f9
+DATA cos5<>+16(SB)/8, $0xc25368f9c25368f9
+DATA cos5<>+24(SB)/8, $0xc25368f9c25368f9
+GLOBL cos5<>(SB), RODATA|NOPTR, $32
+DATA cos6<>+0(SB)/8, $0x417ce9c5417ce9c5
+DATA cos6<>+8(SB)/8, $0x417ce9c5417ce9c5
+DATA cos6<>+16(SB)/8, $0x417ce9c5417ce9c5
+DATA cos6<>+24(SB)/8, $0x417ce9c5417ce9c5
+GLOBL cos6<>(SB), RODATA|NOPTR, $32
+DATA cos7<>+0(SB)/8, $0xc05b7128c05b7128
+DATA cos7<>+8(SB)/8, $0xc05b7128c05b7128
+DATA cos7<>+16(SB)/8, $0xc05b7128c05b7128
+DATA cos7<>+24(SB)/8, $0xc05b7128c05b7128
+GLOBL cos7<>(SB), RODATA|NOPTR, $32
+DATA cos8<>+0(SB)/8, $0x3f1063163f106316
+DATA cos8<>+8(SB)/8, $0x3f1063163f106316
+DATA cos8<>+16(SB)/8, $0x3f1063163f106316
+DATA cos8<>+24(SB)/8, $0x3f1063163f106316
+GLOBL cos8<>(SB), RODATA|NOPTR, $32
+DATA half<>+0(SB)/8, $0x3f0000003f000000
+DATA half<>+8(SB)/8, $0x3f0000003f000000
+DATA half<>+16(SB)/8, $0x3f0000003f000000
+DATA half<>+24(SB)/8, $0x3f0000003f000000
+GLOBL half<>(SB), RODATA|NOPTR, $32
+
 // func combineAVX2(dst *float32, n int, rows *[]float32, coef *float32, nrows int)
 // n is a multiple of 8. One block of 64, 32 or 8 elements at a time stays in registers
 // while the rows pass by; products and sums are rounded apart.
@@ -247,5 +293,126 @@ eight:
 	ADDQ    $32, DI
 	SUBQ    $8, CX
 	JNZ     eight
+	VZEROUPPER
+	RET
+
+// func cosinesAVX2(acc, v *float32, n int, coef *float32, m int, d, inv float32)
+// n is a multiple of 8. 32 or 8 elements at a time.
+TEXT ·cosinesAVX2(SB), NOSPLIT, $0-48
+
+// Q = 2 cos(2 pi (d - v) inv) - 2 of the eight v at off(SI).
+#define DELTA(off, Q) \
+	VBROADCASTSS d+40(FP), Q; \
+	VSUBPS       off(SI), Q, Q; \
+	VBROADCASTSS inv+44(FP), Y15; \
+	VMULPS       Y15, Q, Q; \
+	VADDPS       round<>(SB), Q, Y15; \
+	VMOVUPS      round<>(SB), Y14; \
+	VSUBPS       Y14, Y15, Y15; \
+	VSUBPS       Y15, Q, Q; \
+	VMULPS       Q, Q, Q; \
+	VMOVUPS      cos8<>(SB), Y15; \
+	VMULPS       Q, Y15, Y15; \
+	VADDPS       cos7<>(SB), Y15, Y15; \
+	VMULPS       Q, Y15, Y15; \
+	VADDPS       cos6<>(SB), Y15, Y15; \
+	VMULPS       Q, Y15, Y15; \
+	VADDPS       cos5<>(SB), Y15, Y15; \
+	VMULPS       Q, Y15, Y15; \
+	VADDPS       cos4<>(SB), Y15, Y15; \
+	VMULPS       Q, Y15, Y15; \
+	VADDPS       cos3<>(SB), Y15, Y15; \
+	VMULPS       Q, Y15, Y15; \
+	VADDPS       cos2<>(SB), Y15, Y15; \
+	VMULPS       Q, Y15, Y15; \
+	VADDPS       cos1<>(SB), Y15, Y15; \
+	VMULPS       Y15, Q, Q
+
+// One step of the sum.
+#define STEP(Q, E, B) \
+	VADDPS Y14, E, E; \
+	VMULPS Q, B, Y15; \
+	VADDPS Y15, E, E; \
+	VADDPS E, B, B
+
+// The last step, and the sum to the eight acc at off(DI).
+#define LAST(off, Q, E, B) \
+	VADDPS  Y14, E, E; \
+	VMULPS  half<>(SB), Q, Q; \
+	VMULPS  Q, B, B; \
+	VADDPS  B, E, E; \
+	VADDPS  off(DI), E, E; \
+	VMOVUPS E, off(DI)
+
+	MOVQ acc+0(FP), DI
+	MOVQ v+8(FP), SI
+	MOVQ n+16(FP), CX
+	MOVQ coef+24(FP), DX
+	MOVQ m+32(FP), BX
+
+cos32:
+	CMPQ CX, $32
+	JLT  cos8
+	DELTA(0, Y0)
+	DELTA(32, Y1)
+	DELTA(64, Y2)
+	DELTA(96, Y3)
+	VXORPS Y4, Y4, Y4
+	VXORPS Y5, Y5, Y5
+	VXORPS Y6, Y6, Y6
+	VXORPS Y7, Y7, Y7
+	VXORPS Y8, Y8, Y8
+	VXORPS Y9, Y9, Y9
+	VXORPS Y10, Y10, Y10
+	VXORPS Y11, Y11, Y11
+	MOVQ BX, R8
+	TESTQ R8, R8
+	JZ   last32
+
+step32:
+	VBROADCASTSS (DX)(R8*4), Y14
+	STEP(Y0, Y4, Y8)
+	STEP(Y1, Y5, Y9)
+	STEP(Y2, Y6, Y10)
+	STEP(Y3, Y7, Y11)
+	DECQ R8
+	JNZ  step32
+
+last32:
+	VBROADCASTSS (DX), Y14
+	LAST(0, Y0, Y4, Y8)
+	LAST(32, Y1, Y5, Y9)
+	LAST(64, Y2, Y6, Y10)
+	LAST(96, Y3, Y7, Y11)
+	ADDQ $128, SI
+	ADDQ $128, DI
+	SUBQ $32, CX
+	JMP  cos32
+
+cos8:
+	CMPQ CX, $8
+	JLT  cosined
+	DELTA(0, Y0)
+	VXORPS Y4, Y4, Y4
+	VXORPS Y8, Y8, Y8
+	MOVQ BX, R8
+	TESTQ R8, R8
+	JZ   last8
+
+step8:
+	VBROADCASTSS (DX)(R8*4), Y14
+	STEP(Y0, Y4, Y8)
+	DECQ R8
+	JNZ  step8
+
+last8:
+	VBROADCASTSS (DX), Y14
+	LAST(0, Y0, Y4, Y8)
+	ADDQ $32, SI
+	ADDQ $32, DI
+	SUBQ $8, CX
+	JMP  cos8
+
+cosined:
 	VZEROUPPER
 	RET

@@ -118,6 +118,7 @@ type Tuning struct {
 	Delay      float64 // start of this tuning after the frame's time [s]
 	FilterFWHM float64 // full width at half maximum of the transmission [nm]; 0: not known
 	Offset     float64 // Wavelength minus the rest wavelength [nm]
+	Stages     int     // of a birefringent filter; 0: Gaussian transmission
 }
 
 // An Exposure is one frame of one line: what an observer's log would say.

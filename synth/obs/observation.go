@@ -226,11 +226,12 @@ func (c *Cube) blocks(do func(from, to int, planes [][]float32) error) error {
 
 func (o *Observation) tuningTable() fits.Table {
 	n := len(o.Tunings)
-	line, index := make([]int32, n), make([]int32, n)
+	line, index, stages := make([]int32, n), make([]int32, n), make([]int32, n)
 	wavelength, delay, fwhm, offset := make([]float64, n), make([]float64, n), make([]float64, n), make([]float64, n)
 	for i, t := range o.Tunings {
 		line[i], index[i] = int32(t.Line), int32(t.Index)
 		wavelength[i], delay[i], fwhm[i], offset[i] = t.Wavelength, t.Delay, t.FilterFWHM, t.Offset
+		stages[i] = int32(t.Stages)
 	}
 	return fits.Table{Name: "TUNINGS", Columns: []fits.Column{
 		{Name: "line", About: "1: 1074.7 nm, 2: 1079.8 nm", Data: line},
@@ -239,6 +240,7 @@ func (o *Observation) tuningTable() fits.Table {
 		{Name: "delay_s", Unit: "s", About: "start after the time of the frame", Data: delay},
 		{Name: "filter_fwhm_nm", Unit: "nm", About: "of the transmission; 0: not known", Data: fwhm},
 		{Name: "offset_nm", Unit: "nm", About: "from the rest wavelength", Data: offset},
+		{Name: "stages", About: "of a birefringent filter; 0: Gaussian", Data: stages},
 	}}
 }
 
@@ -321,12 +323,12 @@ func columns(f *fits.File, table string, required int, names ...string) (out [][
 }
 
 func (o *Observation) readTables(f *fits.File) error {
-	c, n, err := columns(f, "TUNINGS", 5, "line", "index", "wavelength_nm", "delay_s", "offset_nm", "filter_fwhm_nm")
+	c, n, err := columns(f, "TUNINGS", 5, "line", "index", "wavelength_nm", "delay_s", "offset_nm", "filter_fwhm_nm", "stages")
 	if err != nil {
 		return err
 	}
 	for i := range n {
-		o.Tunings = append(o.Tunings, Tuning{Line: int(c[0][i]), Index: int(c[1][i]), Wavelength: c[2][i], Delay: c[3][i], Offset: c[4][i], FilterFWHM: c[5][i]})
+		o.Tunings = append(o.Tunings, Tuning{Line: int(c[0][i]), Index: int(c[1][i]), Wavelength: c[2][i], Delay: c[3][i], Offset: c[4][i], FilterFWHM: c[5][i], Stages: int(c[6][i])})
 	}
 	c, n, err = columns(f, "EXPOSURES", 4, "line", "frame", "time_s", "exposure_s", "electrons", "background", "read_noise")
 	if err != nil {

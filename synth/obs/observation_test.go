@@ -25,7 +25,7 @@ func testObservation(frames1, frames2 int) *Observation {
 		rest := []float64{1074.7, 1079.8}[line]
 		for k := range 3 + line {
 			d := 0.11 * float64(k-1)
-			o.Tunings = append(o.Tunings, Tuning{line + 1, k, rest + d, 1.3 * float64(k), 0.13, d})
+			o.Tunings = append(o.Tunings, Tuning{line + 1, k, rest + d, 1.3 * float64(k), 0.13, d, 5 * line})
 		}
 		c := NewCube(len(o.Pixels), 3+line, n)
 		for i := range c.Data {
