@@ -21,6 +21,7 @@ const (
 	FlagOneSided
 	FlagUndirected
 	FlagInward
+	FlagNoOther
 )
 
 // Blocking holds the bits that leave a pixel without B.
@@ -46,5 +47,6 @@ func FlagCodes() []obs.Code {
 		{Value: FlagOneSided, Name: "ONE_SIDED", About: "one arm of the track is less than half the other"},
 		{Value: FlagUndirected, Name: "UNDIRECTED", About: "track runs along the limb: outward undefined; dominant wave taken"},
 		{Value: FlagInward, Name: "INWARD", About: "unseparated waves run inward; speed is the absolute value"},
+		{Value: FlagNoOther, Name: "NO_OTHER", About: "no significant phase speed from another estimator than the first"},
 	}
 }

@@ -35,11 +35,17 @@ type Options struct {
 	Box          int     // diameter of the round window of the coherence island [pixels], odd, 5 or more. The default is 21.
 	Coherence    float64 // threshold of the island, between 0 and 1. The default is 0.5.
 	Track        int     // most points of a track, one pixel apart, odd, 5 or more. The default is 31.
-	Separation   bool    // split outward and inward waves before the lag fit. The default is true.
+	Separation   bool    // the estimator lag splits outward and inward waves first. The default is true.
 	KZero        KZero   // weight of zero wavenumber in the separation. The default is Halved.
 	Padding      int     // length of the separation's transform over the track's, 1 or more. The default is 1.
 	Temperature  float64 // assumed in the density [K]. The default is 1.6e6.
 	Mu           float64 // rho / (m_p n_e) assumed in the field. The default is 1.167, for He/H = 0.1.
+
+	// Estimators of the phase speed, all on the same tracks: Lag, Unsplit, Pair. The
+	// first fills SPEED, SPEED_ERR, B, B_ERR; the others fill maps of the same names with
+	// their own at the end, such as SPEED_PAIR. The default, and what none stands for, is
+	// Lag alone.
+	Estimators []string
 }
 
 // Default returns the customary recipe (common practice; see the fields).
@@ -49,6 +55,7 @@ func Default() Options {
 		Box: 21, Coherence: 0.5, Track: 31,
 		Separation: true, KZero: Halved, Padding: 1,
 		Temperature: 1.6e6, Mu: 1.167,
+		Estimators: []string{Lag},
 	}
 }
 
@@ -78,7 +85,7 @@ func (o *Options) check() error {
 	case !(o.Mu > 0):
 		return bad("mu", "more than 0", o.Mu)
 	}
-	return nil
+	return o.checkEstimators()
 }
 
 // A Result is what the inversion makes of an observation.
@@ -87,7 +94,8 @@ type Result struct {
 	// the frames], WIDTH, DOPPLER_RMS [km/s], RATIO, NE, NE_ERR [cm^-3], ANGLE,
 	// ANGLE_ERR [deg], COHERENCE, SPEED, SPEED_ERR, SPEED_IN [km/s], TRACK, B, B_ERR
 	// [G] and FLAG, whose bits FlagCodes explains. NE_ERR and with it B_ERR need
-	// the log to know the electrons per radiance of both lines.
+	// the log to know the electrons per radiance of both lines. After them come the
+	// maps of further estimators, and INWARD of the pair fit.
 	Maps obs.Maps
 	// Series holds the band-passed Doppler series [km/s] that the tracker used, one
 	// per pixel of the field, one "tuning". NaN where the series was bad.
@@ -114,7 +122,7 @@ const (
 	mapFlag
 )
 
-func mapsOf(g *obs.Grid, unit string) obs.Maps {
+func mapsOf(g *obs.Grid, unit string, estimators []string) (obs.Maps, []estimatorMaps) {
 	ms := obs.Maps{
 		mapPeak:       {Name: "PEAK", Unit: unit, About: "peak intensity of the first line through the filter"},
 		mapWidth:      {Name: "WIDTH", Unit: "km/s", About: "1/e half-width of the first line, filter removed"},
@@ -133,6 +141,7 @@ func mapsOf(g *obs.Grid, unit string) obs.Maps {
 		mapFieldErr:   {Name: "B_ERR", Unit: "G", About: "formal error of B, without the method's bias"},
 		mapFlag:       {Name: "FLAG", About: "why a pixel has no field, and cautions", Codes: FlagCodes()},
 	}
+	es := addEstimators(&ms, estimators)
 	n := g.Nx * g.Ny
 	for i := range ms {
 		if i == mapFlag {
@@ -147,7 +156,7 @@ func mapsOf(g *obs.Grid, unit string) obs.Maps {
 			ms[i].Data[j] = float32(math.NaN())
 		}
 	}
-	return ms
+	return ms, es
 }
 
 // A field is the state that the steps share. Each step writes only the entries of
@@ -192,11 +201,11 @@ const chunk = 64
 // light but need equal widths); it is taken at the pixel's projected distance
 // from the Sun.
 //
-// With separation SPEED is the speed of the outward waves and SPEED_IN that of the
-// inward ones; without it SPEED is the speed of whatever waves dominate the lags
+// With separation SPEED of Lag is the speed of the outward waves and SPEED_IN that of
+// the inward ones; without it SPEED is the speed of whatever waves dominate the lags
 // and SPEED_IN is empty. A track that gains less than a fifth of its length in
 // distance from the Sun has no outward side: SPEED is then that of the stronger
-// waves.
+// waves. Pair has one speed for both.
 func Invert(ctx context.Context, o *obs.Observation, e line.Emitter, opt Options, workers int, progress func(done, total int)) (*Result, error) {
 	if err := opt.check(); err != nil {
 		return nil, err
@@ -247,8 +256,12 @@ func Invert(ctx context.Context, o *obs.Observation, e line.Emitter, opt Options
 		}
 		f.index[i] = int32(p)
 	}
-	r := &Result{Maps: mapsOf(&o.Grid, o.Unit), Series: obs.NewCube(np, 1, cube.Frames)}
-	run := &run{field: f, cube: cube, means: means, result: r, variance: make([]float64, np), dft: newDFT(b)}
+	if len(opt.Estimators) == 0 {
+		opt.Estimators = []string{Lag}
+	}
+	maps, estimators := mapsOf(&o.Grid, o.Unit, opt.Estimators)
+	r := &Result{Maps: maps, Series: obs.NewCube(np, 1, cube.Frames)}
+	run := &run{estimatorMaps: estimators, field: f, cube: cube, means: means, result: r, variance: make([]float64, np), dft: newDFT(b)}
 
 	if means[1] != nil {
 		if run.inverter, err = newInverter(e, opt.Temperature, f); err != nil {
@@ -324,22 +337,25 @@ func newMeans(o *obs.Observation, i, pixels int) (*means, error) {
 // A run is one inversion under way.
 type run struct {
 	*field
-	cube     *obs.Cube
-	means    [2]*means
-	inverter *line.Inverter // nil without a second line
-	result   *Result
-	dft      *dft      // nil for long series
-	variance []float64 // white-noise variance of the Doppler series [(km/s)^2]; NaN: not known
+	cube          *obs.Cube
+	means         [2]*means
+	inverter      *line.Inverter // nil without a second line
+	result        *Result
+	dft           *dft      // nil for long series
+	variance      []float64 // white-noise variance of the Doppler series [(km/s)^2]; NaN: not known
+	estimatorMaps []estimatorMaps
 }
 
 // A worker is one goroutine's scratch.
 type worker struct {
-	transform *transformer
-	islands   *islander
-	track     tracker
-	lags      *lagger
-	I, s2     [2][]float64
-	frame     []float64
+	transform  *transformer
+	islands    *islander
+	track      tracker
+	lags       *lagger
+	pairs      *pairer // nil if nobody asks for it
+	estimators []estimator
+	I, s2      [2][]float64
+	frame      []float64
 }
 
 func (r *run) newWorker() *worker {
@@ -350,6 +366,12 @@ func (r *run) newWorker() *worker {
 		track:     tracker{field: r.field},
 		lags:      newLagger(r.band, r.opt, r.opt.Track, step, 1/(lagSteps*r.opt.Centre)),
 		frame:     make([]float64, r.cube.Tunings),
+	}
+	for _, name := range r.opt.Estimators {
+		w.estimators = append(w.estimators, newEstimator(name, r.opt))
+		if name == Pair {
+			w.pairs = newPairer(r.band, r.opt.Track, step)
+		}
 	}
 	for i, m := range r.means {
 		if m != nil {
@@ -550,39 +572,42 @@ func (r *run) measure(w *worker, p int) {
 		r.flag[p] |= FlagUndirected
 	}
 	rows := t.sample()
-	var out speed
-	if r.opt.Separation {
-		rising, falling := w.lags.separate(rows, n)
-		out = w.lags.speed(rising, n, centre)
-		in := w.lags.speed(falling, n, centre)
-		in.v = -in.v
-		if rise < leastRise && in.power > out.power {
-			out, in = in, out
-		}
-		if in.ok && in.v > 0 {
-			r.set(mapSpeedIn, p, in.v)
-		}
-	} else {
-		out = w.lags.speed(rows, n, centre)
-		if out.v < 0 {
-			if rise >= leastRise {
-				r.flag[p] |= FlagInward
-			}
-			out.v = -out.v
+	for i, e := range w.estimators {
+		m := e.measure(w, rows, n, centre, rise >= leastRise)
+		r.note(p, i, m, n, w.lags.step)
+		if i == 0 && m.against && rise >= leastRise {
+			r.flag[p] |= FlagInward
 		}
 	}
-	if !out.ok || !(out.v > 0) {
-		r.flag[p] |= FlagNoSpeed
+}
+
+// note writes the maps of estimator i of a pixel with a track of n points.
+func (r *run) note(p, i int, m estimate, n int, step float64) {
+	maps := &r.estimatorMaps[i]
+	if maps.in != 0 && m.in > 0 {
+		r.set(maps.in, p, m.in)
+	}
+	if !m.ok || !(m.v > 0) {
+		if i == 0 {
+			r.flag[p] |= FlagNoSpeed
+		} else {
+			r.flag[p] |= FlagNoOther
+		}
 		return
 	}
-	r.set(mapSpeed, p, out.v)
-	r.set(mapSpeedErr, p, out.err)
-	r.set(mapTrack, p, float64(n-1)*w.lags.step*r.opt.Centre/out.v)
-	if r.flag[p]&Blocking != 0 {
+	r.set(maps.speed, p, m.v)
+	r.set(maps.err, p, m.err)
+	if maps.share != 0 {
+		r.set(maps.share, p, m.share)
+	}
+	if i == 0 {
+		r.set(mapTrack, p, float64(n-1)*step*r.opt.Centre/m.v)
+	}
+	if r.flag[p]&Blocking&^FlagNoSpeed != 0 {
 		return
 	}
-	i := r.pixels[p]
-	b, err := fieldStrength(out.v, out.err, float64(r.result.Maps[mapDensity].Data[i]), float64(r.result.Maps[mapDensityErr].Data[i]), r.opt.Mu)
-	r.set(mapField, p, b)
-	r.set(mapFieldErr, p, err)
+	raster := r.pixels[p]
+	b, err := fieldStrength(m.v, m.err, float64(r.result.Maps[mapDensity].Data[raster]), float64(r.result.Maps[mapDensityErr].Data[raster]), r.opt.Mu)
+	r.set(maps.field, p, b)
+	r.set(maps.fieldErr, p, err)
 }

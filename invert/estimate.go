@@ -1,0 +1,145 @@
+package invert
+
+import (
+	"fmt"
+	"math"
+	"slices"
+	"strings"
+
+	"offplane/synth/obs"
+)
+
+// The phase-speed estimators.
+const (
+	Lag     = "lag"     // lags against the track's centre, of the waves as Options.Separation says
+	Unsplit = "unsplit" // lags of the waves as they are
+	Pair    = "pair"    // least-squares fit of an outward and an inward wave of one speed
+)
+
+// Estimators lists every estimator.
+func Estimators() []string { return []string{Lag, Unsplit, Pair} }
+
+func (o *Options) checkEstimators() error {
+	for i, e := range o.Estimators {
+		if !slices.Contains(Estimators(), e) {
+			return fmt.Errorf("inversion: estimators has %q: want %s", e, strings.Join(Estimators(), ", "))
+		}
+		if slices.Contains(o.Estimators[:i], e) {
+			return fmt.Errorf("inversion: estimators has %q twice: want each once", e)
+		}
+	}
+	return nil
+}
+
+// An estimator measures one track. rows holds the spectra of n points; outward is
+// toward rising index, if the track has an outward side.
+type estimator interface {
+	measure(w *worker, rows []float32, n, centre int, outward bool) estimate
+}
+
+type estimate struct {
+	speed
+	against bool    // the waves run toward falling index; v is the absolute value
+	in      float64 // speed of the inward waves [km/s]; 0: none
+	share   float64 // of the inward waves in the power; NaN: not known
+}
+
+func newEstimator(name string, opt *Options) estimator {
+	switch {
+	case name == Pair:
+		return pairEstimator{}
+	case name == Lag && opt.Separation:
+		return splitEstimator{}
+	}
+	return unsplitEstimator{}
+}
+
+type splitEstimator struct{}
+
+func (splitEstimator) measure(w *worker, rows []float32, n, centre int, outward bool) estimate {
+	rising, falling := w.lags.separate(rows, n)
+	out := w.lags.speed(rising, n, centre)
+	in := w.lags.speed(falling, n, centre)
+	in.v = -in.v
+	if !outward && in.power > out.power {
+		out, in = in, out
+	}
+	e := estimate{speed: out, share: math.NaN()}
+	if in.ok && in.v > 0 {
+		e.in = in.v
+	}
+	return e
+}
+
+type unsplitEstimator struct{}
+
+func (unsplitEstimator) measure(w *worker, rows []float32, n, centre int, _ bool) estimate {
+	e := estimate{speed: w.lags.speed(rows, n, centre), share: math.NaN()}
+	if e.v < 0 {
+		e.v, e.against = -e.v, true
+	}
+	return e
+}
+
+type pairEstimator struct{}
+
+func (pairEstimator) measure(w *worker, rows []float32, n, _ int, outward bool) estimate {
+	q := w.pairs.fit(rows, n)
+	e := estimate{speed: speed{v: q.v, err: q.err, ok: q.ok}, share: q.inward, against: q.inward > 0.5}
+	if !outward {
+		e.share = math.NaN()
+	}
+	return e
+}
+
+// estimatorMaps are the indices of an estimator's maps; 0: it has none.
+type estimatorMaps struct{ speed, err, in, share, field, fieldErr int }
+
+// addEstimators adds the maps of the estimators. The first fills those of the result's
+// own names; the others' names end in the estimator's.
+func addEstimators(ms *obs.Maps, names []string) []estimatorMaps {
+	out := make([]estimatorMaps, len(names))
+	for i, name := range names {
+		suffix, about := "", ""
+		add := func(m obs.Map) int {
+			m.Name += suffix
+			m.About += about
+			*ms = append(*ms, m)
+			return len(*ms) - 1
+		}
+		if i == 0 {
+			out[i] = estimatorMaps{speed: mapSpeed, err: mapSpeedErr, in: mapSpeedIn, field: mapField, fieldErr: mapFieldErr}
+		} else {
+			suffix, about = "_"+strings.ToUpper(name), ", estimator "+name
+			out[i] = estimatorMaps{
+				speed: add((*ms)[mapSpeed]), err: add((*ms)[mapSpeedErr]),
+				field: add((*ms)[mapField]), fieldErr: add((*ms)[mapFieldErr]),
+			}
+			if name == Lag {
+				out[i].in = add((*ms)[mapSpeedIn])
+			}
+		}
+		if name == Pair {
+			out[i].share = add(obs.Map{Name: "INWARD", About: "share of the inward waves in the power of both"})
+		}
+	}
+	return out
+}
+
+// sandwich returns the variance of a sum of the terms of neighbouring frequencies, by
+// blocks that count as independent.
+func sandwich(terms []float64) float64 {
+	sum := 0.0
+	for i := 0; i < len(terms); i += errorBins {
+		s := 0.0
+		for _, t := range terms[i:min(i+errorBins, len(terms))] {
+			s += t
+		}
+		sum += s * s
+	}
+	return sum
+}
+
+// errorBins is the number of neighbouring frequencies that count as one independent
+// part of a series: a taper correlates neighbours.
+const errorBins = 2
