@@ -4,30 +4,67 @@ import (
 	"context"
 	"math"
 
+	"gonum.org/v1/gonum/spatial/r3"
+
 	"offplane/scenarios/units"
 	"offplane/synth/parallel"
 )
 
-// A Line is what the field line through a point tells the waves. The azimuth of
-// both footpoints is the point's own.
+// A Line is what the field line through a point tells the waves. None of its numbers
+// is NaN.
 type Line struct {
+	Kind LineKind
 	// Closed: both ends are at the surface and the apex lies below the radius
 	// above which the scenario counts lines as open.
 	Closed bool
-	Apex   float64 // greatest distance along the line [solar radii]
-	// Foot holds the colatitudes [rad] at which the line meets r = 1: one for an
-	// open line (Foot[1] is NaN), two for a closed one, the northern first.
-	Foot [2]float64
+	Ends   int     // how many of Foot and Tau hold: 0, 1 or 2
+	Apex   float64 // greatest distance along the line as far as it was followed [solar radii]
+	// Foot holds where the line meets the surface: two points for a closed line, one
+	// for an open one. Of a closed line's the first is the northern one in an
+	// axisymmetric corona, that of outgoing field in any other.
+	Foot [2]Foot
 	// Tau holds the kink travel times from each foot to the point [s].
 	Tau [2]float64
 	// TauTop is the travel time [s] from where an open line crosses the launch
-	// radius of the inward trains down to the point; negative above that radius.
+	// radius of the inward trains down to the point; negative above that radius
+	// and where no such train comes from.
+	TauTop float64
+}
+
+// A Foot is a point of the surface in the solar frame [rad].
+type Foot struct{ Colatitude, Azimuth float64 }
+
+func footOf(v r3.Vec) Foot {
+	return Foot{math.Acos(max(-1, min(1, v.Z/r3.Norm(v)))), math.Atan2(v.Y, v.X)}
+}
+
+// Vector returns the foot as a unit vector.
+func (f Foot) Vector() r3.Vec { return spherical(f.Colatitude, f.Azimuth) }
+
+// A LineKind says where the two ends of a field line lie.
+type LineKind uint8
+
+// Kinds of field lines.
+const (
+	ClosedLine   LineKind = iota // both on the surface, and the apex is low enough
+	OpenLine                     // one on the surface; or both, but the apex is too high
+	DetachedLine                 // none on the surface: in from afar and out again
+	NullLine                     // one end runs into a null of the field, where waves stop
+)
+
+// A flatLine is a line of an axisymmetric corona in its own half-plane: Foot holds
+// colatitudes, NaN for an end that is not on the surface or does not count.
+type flatLine struct {
+	Closed bool
+	Apex   float64
+	Foot   [2]float64
+	Tau    [2]float64
 	TauTop float64
 }
 
 // latitude returns the latitude [rad] of the line's most poleward footpoint; the
 // equator for a line that never meets the surface.
-func (l *Line) latitude() float64 {
+func (l *flatLine) latitude() float64 {
 	lat := 0.0
 	for _, f := range l.Foot {
 		if a := math.Abs(math.Pi/2 - f); a > lat { // false for NaN
@@ -64,13 +101,14 @@ type vertex struct {
 	r, theta, b          float64
 	rMid, thetaMid, bMid float64
 	ds                   float64 // length of the step that led here [solar radii]
+	seconds              float64 // and its travel time, once known
 }
 
 // follow walks along the field (dir = +1) or against it (-1) from (r, theta) until
 // the surface or the distance far is met, by classical Runge-Kutta steps.
 func (c *Corona) follow(path []vertex, r, theta, dir, far float64) (_ []vertex, landed bool) {
 	slope := func(r, th float64) (dr, dth, b float64) {
-		br, bt := c.field.Meridional(r, th)
+		br, bt := c.flat.Meridional(r, th)
 		b = math.Hypot(br, bt)
 		return dir * br / b, dir * bt / b / r, b
 	}
@@ -156,28 +194,33 @@ func (c *Corona) traceTimes(r, theta, far, top float64) traced {
 	back, a := c.follow(make([]vertex, 0, 256), r, theta, -1, far)
 	fore, b := c.follow(make([]vertex, 0, 256), r, theta, +1, far)
 	t.fill(back, fore, a, b)
-	line := Line{Foot: t.foot}
+	line := flatLine{Foot: t.foot}
 	w := c.share(line.latitude())
-	slow := func(r, theta, b float64) float64 { // 1/c_k [s per solar radius]
-		return units.SolarRadius / KinkSpeed(b, c.density(r, math.Pi/2-theta, w), c.mu)
+	open := !t.closes || t.apex > c.closedBelow
+	slow := func(r, theta, b, sense float64) float64 { // 1/(c_k + sense u) [s per solar radius]
+		v := KinkSpeed(b, c.kinkOf(c.background(r, math.Pi/2-theta, w)), c.mu)
+		if open && c.outflow != nil {
+			v = max(v+sense*c.outflow(r), weakest)
+		}
+		return units.SolarRadius / v
 	}
-	// times fills ds with the time of each step: ds/c_k by Simpson's rule.
-	times := func(p []vertex) {
-		s0 := slow(p[0].r, p[0].theta, p[0].b)
+	// times fills the time of each step: ds/(c_k + sense u) by Simpson's rule.
+	times := func(p []vertex, sense float64) {
+		s0 := slow(p[0].r, p[0].theta, p[0].b, sense)
 		for i := 1; i < len(p); i++ {
-			s1 := slow(p[i].r, p[i].theta, p[i].b)
-			p[i].ds *= (s0 + 4*slow(p[i].rMid, p[i].thetaMid, p[i].bMid) + s1) / 6
+			s1 := slow(p[i].r, p[i].theta, p[i].b, sense)
+			p[i].seconds = p[i].ds * (s0 + 4*slow(p[i].rMid, p[i].thetaMid, p[i].bMid, sense) + s1) / 6
 			s0 = s1
 		}
 	}
-	times(back)
-	times(fore)
+	times(back, 1)
+	times(fore, 1)
 	// walk sums the times of a path; crossing is the time at which it first rises
 	// through top, or of its apex if it never does.
 	walk := func(p []vertex) (total, crossing float64, crossed bool) {
 		rmax := p[0].r
 		for i := 1; i < len(p); i++ {
-			d := p[i].ds
+			d := p[i].seconds
 			if !crossed {
 				if p[i-1].r < top && p[i].r >= top {
 					crossing = total + d*(top-p[i-1].r)/(p[i].r-p[i-1].r)
@@ -192,6 +235,12 @@ func (c *Corona) traceTimes(r, theta, far, top float64) traced {
 	}
 	tauBack, topBack, crossBack := walk(back)
 	tauFore, topFore, crossFore := walk(fore)
+	if open && c.outflow != nil { // inward trains run against the flow
+		times(back, -1)
+		times(fore, -1)
+		_, topBack, crossBack = walk(back)
+		_, topFore, crossFore = walk(fore)
+	}
 	if a {
 		t.tau[0] = tauBack
 	}
@@ -219,12 +268,12 @@ func (c *Corona) traceTimes(r, theta, far, top float64) traced {
 	return t
 }
 
-// timeDownTo returns the time along a path, whose ds are times, until it first sinks
+// timeDownTo returns the time along a path until it first sinks
 // to the radius top.
 func timeDownTo(p []vertex, top float64) float64 {
 	total := 0.0
 	for i := 1; i < len(p); i++ {
-		d := p[i].ds
+		d := p[i].seconds
 		if p[i].r <= top {
 			return total + d*(p[i-1].r-top)/(p[i-1].r-p[i].r)
 		}
@@ -259,7 +308,7 @@ func (c *Corona) traceAll(ctx context.Context, s Settings) (*lineTable, error) {
 
 // at returns the line through (r, theta): bilinear where the four nodes around
 // belong to one family of lines, traced afresh where a separatrix passes between.
-func (t *lineTable) at(c *Corona, r, theta float64) Line {
+func (t *lineTable) at(c *Corona, r, theta float64) flatLine {
 	south := theta > math.Pi/2
 	if south {
 		theta = math.Pi - theta
@@ -290,7 +339,7 @@ func (t *lineTable) at(c *Corona, r, theta float64) Line {
 	} else {
 		m = c.traceTimes(r, theta, closeBelow, t.top)
 	}
-	l := Line{Closed: m.closes && m.apex <= c.closedBelow, Apex: m.apex, Foot: m.foot, Tau: m.tau, TauTop: m.top}
+	l := flatLine{Closed: m.closes && m.apex <= c.closedBelow, Apex: m.apex, Foot: m.foot, Tau: m.tau, TauTop: m.top}
 	if !l.Closed {
 		l.Foot[1], l.Tau[1] = math.NaN(), math.NaN()
 	}
@@ -318,26 +367,6 @@ func family(a, b *traced, ends int) bool {
 		}
 	}
 	return true
-}
-
-// LongestDelay returns the longest travel time [s] of a train that a sample may ask
-// for: from the first end of its line and, if asked, from the far end of a closed
-// line or from the launch radius of inward trains.
-func (c *Corona) LongestDelay(farEnd, inward bool) float64 {
-	longest := 0.0
-	for i := range c.lines.node {
-		n := &c.lines.node[i]
-		closed := n.closes && n.apex <= c.closedBelow
-		longest = math.Max(longest, finite(n.tau[0]))
-		// A neighbour of a closed line's node may be closed, so high lines count too.
-		if n.closes && n.apex <= 1.3*c.closedBelow && (farEnd || closed) {
-			longest = math.Max(longest, finite(n.tau[1]))
-		}
-		if inward && !closed {
-			longest = math.Max(longest, n.top)
-		}
-	}
-	return longest
 }
 
 func finite(x float64) float64 {

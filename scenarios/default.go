@@ -18,6 +18,7 @@ func Default() Scenario {
 			Density: Density{
 				Streamer: Law{Named: "gibson-1999", Factor: 1},
 				Boundary: 3,
+				Active:   []Active{},
 			},
 			Temperature: Temperature{Streamer: 1.6, Hole: 1},
 			ClosedBelow: 2.5,

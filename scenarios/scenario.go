@@ -33,18 +33,112 @@ type Observer struct {
 
 // Corona is the truth: field, density, temperature, composition.
 type Corona struct {
+	Grid        *Grid        `yaml:"grid" about:"the user's own corona from a file, in place of fields, belt, density and temperature"`
 	Fields      []Field      `yaml:"fields" about:"magnetic field components; they add"`
+	Belt        *Belt        `yaml:"belt" about:"tilt and warp of dipole_sheet fields and of the latitudes of density laws"`
 	Density     Density      `yaml:"density"`
 	Temperature Temperature  `yaml:"temperature"`
 	ClosedBelow units.Height `yaml:"closed_below" in:">1 Rsun..5 Rsun" about:"lines with an apex above this count as open"`
 	Helium      float64      `yaml:"helium" in:"0..0.5" about:"He/H by number; sets mu and the proton share"`
 	Nonthermal  units.Speed  `yaml:"nonthermal" in:"0 km/s..200 km/s" about:"1/e speed of unresolved motions at waves.at_density; scales as n^(-1/4)"`
+	Strands     *Strands     `yaml:"strands" about:"fine structure of the density across the field"`
+	Mix         *Mix         `yaml:"mix" about:"unresolved dense and thin plasma side by side"`
+	Outflow     *Outflow     `yaml:"outflow" about:"steady flow along open field lines"`
+	Rotation    *Rotation    `yaml:"rotation" about:"rigid rotation about the solar axis: a steady Doppler shift"`
 }
+
+// Grid names a FITS file; see model.ReadGrid for its format.
+type Grid struct {
+	File string `yaml:"file" need:"given" about:"FITS file with NE, T, BR, BTHETA, BPHI on R, THETA, PHI"`
+}
+
+// Belt is the geometry of the streamer belt; see model for the formula of the warp.
+type Belt struct {
+	Tilt      units.Angle `yaml:"tilt" in:"0 deg..90 deg" about:"between the belt's axis and the Sun's"`
+	Toward    units.Angle `yaml:"toward" in:"-360 deg..360 deg" about:"longitude toward which the axis is tipped"`
+	Warp      units.Angle `yaml:"warp" in:"0 deg..30 deg" about:"greatest shift of the belt in latitude"`
+	Waves     int         `yaml:"waves" in:"1..8" about:"of the warp, around the Sun"`
+	Longitude units.Angle `yaml:"longitude" in:"-360 deg..360 deg" about:"at which the warp is greatest to the north"`
+}
+
+// Prefill gives the warp, if there is one, two waves.
+func (b *Belt) Prefill() { b.Waves = 2 }
+
+// Strands is a log-normal density factor, constant along field lines.
+type Strands struct {
+	Size   units.Length `yaml:"size" in:"0.1 Mm..100 Mm" about:"at the surface"`
+	Spread float64      `yaml:"spread" in:"0..1.5" about:"standard deviation of ln n"`
+	Waves  string       `yaml:"waves" one:"collective,own" about:"collective: all strands move at the speed of the mean density; own: each rides its own density"`
+}
+
+// Prefill makes strands that move together.
+func (s *Strands) Prefill() { s.Size, s.Spread, s.Waves = 1, 0.5, "collective" }
+
+// Mix is a two-component plasma below every scale of the observation.
+type Mix struct {
+	Filling  float64 `yaml:"filling" in:">0..<1" about:"share of the volume that is dense"`
+	Contrast float64 `yaml:"contrast" in:"1..1000" about:"dense over thin"`
+	Tubes    string  `yaml:"tubes" one:"bundle,isolated" about:"bundle: the wave feels the mean density; isolated: the mean of dense and thin, for few thin tubes"`
+}
+
+// Prefill makes a bundle.
+func (m *Mix) Prefill() { m.Filling, m.Contrast, m.Tubes = 0.3, 3, "bundle" }
+
+// Outflow is u(r) = Terminal (1 - 1/r)^Exponent along open lines.
+type Outflow struct {
+	Terminal units.Speed `yaml:"terminal" in:">0 km/s..1000 km/s" about:"far from the Sun"`
+	Exponent float64     `yaml:"exponent" in:"0.5..10"`
+}
+
+// Prefill makes the usual velocity law.
+func (o *Outflow) Prefill() { o.Exponent = 1 }
+
+// Rotation is that of a rigid corona.
+type Rotation struct {
+	Period units.Duration `yaml:"period" in:"100 h..2000 h" about:"as the observer sees it"`
+}
+
+// Prefill gives the synodic Carrington period, 27.2753 days.
+func (r *Rotation) Prefill() { r.Period = 27.2753 * 86400 }
 
 // A Field is exactly one of its members.
 type Field struct {
 	DipoleSheet *DipoleSheet `yaml:"dipole_sheet" choice:"field" about:"dipole, octupole and azimuthal current sheet (Banaszkiewicz et al. 1998, A&A 337, 940)"`
 	Radial      *Radial      `yaml:"radial" choice:"field" about:"radial test field, falling as a power of r; r^-2 is free of divergence"`
+
+	SourceSurface *SourceSurface `yaml:"source_surface" choice:"field" about:"potential field of a table of harmonics with source surface (Schatten, Wilcox & Ness 1969, Sol. Phys. 6, 442)"`
+	BuriedDipole  *BuriedDipole  `yaml:"buried_dipole" choice:"field" about:"point dipole below the surface: an active region"`
+	Uniform       *Uniform       `yaml:"uniform" choice:"field" about:"uniform test field"`
+}
+
+// SourceSurface: see model.Harmonics for the table.
+type SourceSurface struct {
+	Table  string       `yaml:"table" about:"file of coefficients; empty: the embedded example"`
+	Height units.Height `yaml:"height" in:">1.2 Rsun..10 Rsun" about:"of the source surface"`
+	Factor float64      `yaml:"factor" in:"-1000..1000" about:"multiplies the coefficients"`
+}
+
+// Prefill puts the source surface at its usual place.
+func (f *SourceSurface) Prefill() { f.Height, f.Factor = 2.5, 1 }
+
+// BuriedDipole: see model.BuriedDipole for the formula.
+type BuriedDipole struct {
+	Latitude  units.Angle  `yaml:"latitude" in:"-90 deg..90 deg"`
+	Longitude units.Angle  `yaml:"longitude" in:"-360 deg..360 deg"`
+	Depth     units.Length `yaml:"depth" in:"10 Mm..500 Mm"`
+	Strength  units.Field  `yaml:"strength" in:">0 G..5000 G" about:"at the surface straight above"`
+	Heading   units.Angle  `yaml:"heading" in:"-360 deg..360 deg" about:"of the moment, from west toward north"`
+	Elevation units.Angle  `yaml:"elevation" in:"-90 deg..90 deg" about:"of the moment above the horizontal"`
+}
+
+// Prefill puts the dipole where its loops reach the field of view.
+func (f *BuriedDipole) Prefill() { f.Depth = 100 }
+
+// Uniform points to a latitude and longitude of the sky.
+type Uniform struct {
+	Strength  units.Field `yaml:"strength" in:">0 G..1000 G"`
+	Latitude  units.Angle `yaml:"latitude" in:"-90 deg..90 deg"`
+	Longitude units.Angle `yaml:"longitude" in:"-360 deg..360 deg"`
 }
 
 // DipoleSheet: see model.DipoleSheet for the formula.
@@ -65,11 +159,28 @@ type Density struct {
 	Streamer Law         `yaml:"streamer" about:"inside the closed region and around the sheet; everywhere if there is no hole"`
 	Hole     *Law        `yaml:"hole" about:"on open field lines"`
 	Boundary units.Angle `yaml:"boundary" in:">0 deg..30 deg" about:"half-width in footpoint latitude of the passage from streamer to hole"`
+	Active   []Active    `yaml:"active" about:"denser plasma on the field lines of active regions; it adds"`
+}
+
+// Active is the plasma on the field lines that are rooted around a point: its share
+// falls with the distance d of the footpoints as exp(-(d/Radius)^2).
+type Active struct {
+	Latitude    units.Angle       `yaml:"latitude" in:"-90 deg..90 deg"`
+	Longitude   units.Angle       `yaml:"longitude" in:"-360 deg..360 deg"`
+	Radius      units.Length      `yaml:"radius" in:"10 Mm..500 Mm" about:"1/e, of the footpoints' distance"`
+	Law         Law               `yaml:"law"`
+	Temperature units.Temperature `yaml:"temperature" in:"0.64 MK..5 MK"`
+}
+
+// Prefill makes a usual active region; without this its law would have to be written.
+func (a *Active) Prefill() {
+	a.Radius, a.Temperature = 150, 2
+	a.Law = Law{Named: "vrsnak-2004", Factor: 1}
 }
 
 // A Law is exactly one of its members, times Factor.
 type Law struct {
-	Named       string       `yaml:"named" choice:"law" one:"baumbach-allen,cranmer-1999-hole,doyle-1999-hole,gibson-1999,guhathakurta-1996-pole,guhathakurta-1996-sheet,leblanc-1998,mann-1999,newkirk-1961,saito-1970,saito-1970-equator,saito-1970-pole,saito-poland-munro-1977,sittler-guhathakurta-1999,sittler-guhathakurta-1999-pole,vrsnak-2004" about:"a published profile by author and year"`
+	Named       string       `yaml:"named" choice:"law" one:"baumbach-allen,cranmer-1999-hole,doyle-1999-hole,gibson-1999,guhathakurta-1996,guhathakurta-1996-pole,guhathakurta-1996-sheet,leblanc-1998,mann-1999,newkirk-1961,saito-1970,saito-1970-equator,saito-1970-pole,saito-poland-munro-1977,sittler-guhathakurta-1999,sittler-guhathakurta-1999-pole,vrsnak-2004" about:"a published profile by author and year"`
 	PowerLaw    *PowerLaw    `yaml:"power_law" choice:"law"`
 	Hydrostatic *Hydrostatic `yaml:"hydrostatic" choice:"law"`
 	Factor      float64      `yaml:"factor" in:">0..1000" about:"multiplies the law"`
@@ -91,6 +202,16 @@ type Hydrostatic struct {
 type Temperature struct {
 	Streamer units.Temperature `yaml:"streamer" in:"0.64 MK..5 MK"`
 	Hole     units.Temperature `yaml:"hole" in:"0.64 MK..5 MK"`
+	Profile  *Profile          `yaml:"profile" about:"fall with height of both; without it they are isothermal"`
+}
+
+// Profile multiplies a temperature by (a+1)/(a + b r^alpha + (1-b) r^-beta) (Vasquez,
+// van Ballegooijen & Raymond 2003, ApJ 598, 1361; form from memory).
+type Profile struct {
+	A     float64 `yaml:"a" in:"0..10"`
+	B     float64 `yaml:"b" in:"0..1"`
+	Alpha float64 `yaml:"alpha" in:"0..10"`
+	Beta  float64 `yaml:"beta" in:"0..20"`
 }
 
 // Waves is the random kink-wave driver.

@@ -288,7 +288,7 @@ func TestRules(t *testing.T) {
 		{"image.pixel=1.3 arcsec", ""}, // (2 * 1.35 * 959.2 / 1.3)^2 = 3.97e6
 		{"image.pixel=0.2 arcsec|image.from=265 deg|image.to=275 deg", ""},
 		{"corona.fields=[]", "--set corona.fields: is empty; give at least one field"},
-		{"corona.fields=[{radial: {strength: 3 G}}]", "quiet-belt:" + line(t, "    hole:") + ":5: corona.density.hole: a hole needs closed lines beside the open ones, but every line of a radial field is open; leave hole out or add a dipole_sheet to fields"},
+		{"corona.fields=[{radial: {strength: 3 G}}]", "quiet-belt:" + line(t, "    hole:") + ":5: corona.density.hole: a hole needs closed lines beside the open ones, but every line of a radial field is open; leave hole out or add a dipole_sheet or source_surface to fields"},
 		{"corona.fields=[{radial: {strength: 3 G}}]|corona.density.hole=null", ""},
 		{"waves.inward_from=1.3 Rsun", "--set waves.inward_from: 1.3 Rsun must be more than image.outer, 1.35 Rsun, so that inward waves cross the whole image"},
 		{"waves.inward_from=3 Rsun", "--set waves.inward_from: 3 Rsun must be at most corona.closed_below, 2.5 Rsun: lower open lines do not reach it"},

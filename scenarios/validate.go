@@ -38,18 +38,52 @@ func Validate(s *Scenario, at *strict.Positions) strict.Problems {
 	return v.problems
 }
 
+// RefusedLaws are copies of density laws that are known to be wrong, and what to write.
+var RefusedLaws = map[string]string{
+	"baumbach":              "copies of the Baumbach-Allen law without its r^-1.5 term, or with 1e6 for 1e8, are wrong; write baumbach-allen",
+	"saito":                 "copies with 2.51e4 for 2.51e6 give a hundredth of the density at 1 au; write saito-1970, which has 2.51e6",
+	"saito-1977":            "write saito-poland-munro-1977",
+	"saito-1977-hole":       "the hole forms of Saito, Poland & Munro 1977 are ten times too thin below 2 solar radii; write guhathakurta-1996-pole or doyle-1999-hole",
+	"sittler-1999":          "copies call the polar coefficients a streamer; write sittler-guhathakurta-1999 for the streamer, sittler-guhathakurta-1999-pole for the hole",
+	"sittler-1999-streamer": "copies call the polar coefficients a streamer; write sittler-guhathakurta-1999",
+}
+
 func (v *validator) corona(s *Scenario) {
 	c := &s.Corona
+	v.refused("corona.density.streamer.named", c.Density.Streamer.Named)
+	if c.Density.Hole != nil {
+		v.refused("corona.density.hole.named", c.Density.Hole.Named)
+	}
+	for i := range c.Density.Active {
+		v.refused(fmt.Sprintf("corona.density.active.%d.law.named", i), c.Density.Active[i].Law.Named)
+	}
+	v.rule(len(c.Density.Active) <= MaxActive, []string{"corona.density.active"}, "holds more than %d regions", MaxActive)
+	v.rule(c.Outflow == nil || c.Strands == nil || c.Strands.Waves != "own", []string{"corona.outflow", "corona.strands"},
+		"cannot be given with strands whose waves ride their own density; leave one out or write strands.waves: collective")
+	v.rule(c.Mix == nil || c.Strands == nil, []string{"corona.mix", "corona.strands"}, "cannot be given with strands; leave one out")
+	if c.Grid != nil {
+		return
+	}
 	v.rule(len(c.Fields) > 0, []string{"corona.fields"}, "is empty; give at least one field")
 	if c.Density.Hole == nil || len(c.Fields) == 0 {
 		return
 	}
 	closed := false // has any field both open and closed lines?
 	for _, f := range c.Fields {
-		closed = closed || f.DipoleSheet != nil
+		closed = closed || f.DipoleSheet != nil || f.SourceSurface != nil
 	}
 	v.rule(closed, []string{"corona.density.hole", "corona.fields"},
-		"a hole needs closed lines beside the open ones, but every line of a radial field is open; leave hole out or add a dipole_sheet to fields")
+		"a hole needs closed lines beside the open ones, but every line of a radial field is open; leave hole out or add a dipole_sheet or source_surface to fields")
+}
+
+// MaxActive is the greatest number of active regions.
+const MaxActive = 8
+
+// refused says why a wrong copy of a law is refused, beside the list of right ones.
+func (v *validator) refused(path, name string) {
+	if why := RefusedLaws[name]; why != "" {
+		v.problems = append(v.problems, v.at.Problem(path, "%s", why))
+	}
 }
 
 func (v *validator) waves(s *Scenario) {

@@ -52,7 +52,7 @@ func (c *Scene) ray(y, z float64, dst []sample) ([]sample, error) {
 				}
 				rest = max(rest, share)
 			}
-			if math.IsNaN(e[0]) || math.IsNaN(e[1]) {
+			if math.IsNaN(e[0] + e[1] + s.j[0] + s.j[1]) {
 				// Beyond the atomic data: fine if what was left before it was little.
 				if before := max(last[0]/total[0], last[1]/total[1]); before > c.s.Sight.Tail {
 					return s.lit()
@@ -82,12 +82,13 @@ func (c *Scene) ray(y, z float64, dst []sample) ([]sample, error) {
 	return dst, side(+1)
 }
 
-// emission returns the radiance of the sample [erg cm^-2 s^-1 sr^-1] in both lines.
-func (s *sample) emission() [2]float64 { return [2]float64{s.j[0] * s.dx, s.j[1] * s.dx} }
+// emission returns the radiance of the sample [erg cm^-2 s^-1 sr^-1] in both lines,
+// without strands: where the ray ends is no matter of chance.
+func (s *sample) emission() [2]float64 { return [2]float64{s.smooth[0] * s.dx, s.smooth[1] * s.dx} }
 
 // lit returns an error if the atomic data do not cover the sample.
 func (s *sample) lit() error {
-	if math.IsNaN(s.j[0]) || math.IsNaN(s.j[1]) {
+	if math.IsNaN(s.j[0] + s.j[1] + s.smooth[0] + s.smooth[1]) {
 		return &darkError{s.point.N, s.point.T, s.point.R}
 	}
 	return nil

@@ -33,15 +33,14 @@ type Scene struct {
 	Corona *model.Corona
 	Driver *wave.Driver
 
-	s         *scenarios.Scenario
-	light     Light
-	view      model.View
-	longitude float64 // of the observer [rad]
-	cell      float64 // [solar radii]
-	longest   float64 // travel time of any train [s]
-	band      bandTable
-	filter    float64      // 1/e half-width [km/s], first line; the second scales
-	tunings   [2][]float64 // Doppler offsets [km/s] per line
+	s       *scenarios.Scenario
+	light   Light
+	view    model.View
+	cell    float64 // [solar radii]
+	longest float64 // travel time of any train [s]
+	band    bandTable
+	filter  float64      // 1/e half-width [km/s], first line; the second scales
+	tunings [2][]float64 // Doppler offsets [km/s] per line
 }
 
 // kms is one km/s in cgs.
@@ -53,15 +52,15 @@ func NewScene(ctx context.Context, s *scenarios.Scenario, light Light, workers i
 	if s.Sight.Plane {
 		outer = float64(s.Image.Outer) + 0.1
 	}
-	corona, err := model.New(ctx, s.Corona, model.Settings{Outer: outer, InwardFrom: float64(s.Waves.InwardFrom), Workers: workers})
+	view := model.NewView(s.Observer.Latitude.Rad(), s.Observer.Longitude.Rad())
+	grid := NewGrid(s, light.Rest[0])
+	corona, err := model.New(ctx, s.Corona, model.Settings{
+		Outer: outer, InwardFrom: float64(s.Waves.InwardFrom), Seed: s.Seed, Workers: workers, Seen: seen(s, view, grid.Step()),
+	})
 	if err != nil {
 		return nil, err
 	}
-	c := &Scene{
-		Grid: NewGrid(s, light.Rest[0]), Corona: corona,
-		s: s, light: light, view: model.NewView(s.Observer.Latitude.Rad()),
-		longitude: s.Observer.Longitude.Rad(), cell: s.Waves.Cell.Rsun(),
-	}
+	c := &Scene{Grid: grid, Corona: corona, s: s, light: light, view: view, cell: s.Waves.Cell.Rsun()}
 	for l := range 2 {
 		toKms := units.LightSpeed / kms / light.Rest[l]
 		for _, t := range s.Camera.Tunings {
@@ -84,6 +83,33 @@ func NewScene(ctx context.Context, s *scenarios.Scenario, light Light, workers i
 	}
 	c.band = newBandTable(c.Driver, s.Inversion.Filter, c.longest)
 	return c, nil
+}
+
+// seen returns whether the lines of sight of the field, or of what the point spread
+// brings into it, pass within a margin [solar radii] of a point of the solar frame.
+func seen(s *scenarios.Scenario, view model.View, step float64) func(p r3.Vec, margin float64) bool {
+	m := &s.Image
+	beside := 3*s.Camera.PointSpread.Rad()*s.Observer.Distance.Rsun() + 2*step
+	from, width := m.From.Rad(), (m.To - m.From).Rad()
+	return func(p r3.Vec, margin float64) bool {
+		q := view.ToSky(p)
+		reach := float64(s.Sight.Reach)
+		if s.Sight.Plane {
+			reach = 0
+		}
+		margin += beside
+		if math.Abs(q.X) > reach+margin {
+			return false
+		}
+		r := math.Hypot(q.Y, q.Z)
+		if r < float64(m.Inner)-margin || r > float64(m.Outer)+margin {
+			return false
+		}
+		slack := math.Asin(min(1, margin/r))
+		pa := math.Atan2(-q.Y, q.Z) - from + slack
+		pa -= 2 * math.Pi * math.Floor(pa/(2*math.Pi))
+		return pa <= width+2*slack
+	}
 }
 
 // Frames returns the number of frames of the first line.
@@ -176,30 +202,37 @@ type train struct {
 	tau                 float64 // travel time [s]
 	dir                 int     // wave.Outward or wave.Inward
 	factor              float64 // amplitude over the outward train's, before damping
+	end                 int     // of the line: which foot it is
 }
 
 // trains lists the trains that pass the point. A train that took longer than any on
 // the model's table came past a null of the field, where waves do not pass: left out.
-func (c *Scene) trains(p *model.Point, azimuth float64, dst []train) []train {
+func (c *Scene) trains(p *model.Point, _ float64, dst []train) []train {
 	dst = dst[:0]
-	az := azimuth + c.longitude
 	l := &p.Line
-	if !math.IsNaN(l.Foot[0]) {
-		dst = append(dst, train{l.Foot[0], az, l.Tau[0], wave.Outward, 1})
+	if l.Ends == 0 {
+		return dst
 	}
+	near := func(end int) train {
+		f := l.Foot[end]
+		return train{f.Colatitude, f.Azimuth, l.Tau[end], wave.Outward, 1, end}
+	}
+	dst = append(dst, near(0))
 	switch {
 	case l.Closed && c.s.Waves.FarEnd:
-		dst = append(dst, train{l.Foot[1], az, l.Tau[1], wave.Outward, 1})
+		dst = append(dst, near(1))
 	case l.Closed && l.Tau[1] < l.Tau[0]: // one train a line: that of the nearer end
-		dst[0] = train{l.Foot[1], az, l.Tau[1], wave.Outward, 1}
-	case !l.Closed && c.s.Waves.Inward > 0 && l.TauTop >= 0 && len(dst) > 0:
-		dst = append(dst, train{l.Foot[0], az, l.TauTop, wave.Inward, math.Sqrt(c.s.Waves.Inward)})
+		dst[0] = near(1)
+	case !l.Closed && c.s.Waves.Inward > 0 && l.TauTop >= 0:
+		t := near(0)
+		t.tau, t.dir, t.factor = l.TauTop, wave.Inward, math.Sqrt(c.s.Waves.Inward)
+		dst = append(dst, t)
 	}
 	return slices.DeleteFunc(dst, func(t train) bool { return !(t.tau <= c.longest) })
 }
 
 // amplitude returns the rms speed [km/s] of one polarisation of an undamped outward
-// train at density n: WKB waves keep their energy flux, v ~ n^(-1/4) (observed:
+// train where it feels the density n: WKB waves keep their energy flux, v ~ n^(-1/4) (observed:
 // Doyle, Banerjee & Perez 1998, Sol. Phys. 181, 91). The reference density is one
 // for all lines.
 func (c *Scene) amplitude(n float64) float64 {
@@ -213,7 +246,7 @@ func (c *Scene) amplitude(n float64) float64 {
 // width returns the 1/e half-width of a line [km/s] without the filter's: thermal
 // motion and unresolved motions, which scale like the waves.
 func (c *Scene) width(p *model.Point) float64 {
-	xi := float64(c.s.Corona.Nonthermal) * kms * math.Pow(p.N/float64(c.s.Waves.AtDensity), -0.25)
+	xi := float64(c.s.Corona.Nonthermal) * kms * math.Pow(p.Kink/float64(c.s.Waves.AtDensity), -0.25)
 	return line.Width(c.light.Mass, p.T, xi) / kms
 }
 
@@ -222,31 +255,44 @@ type sample struct {
 	x       float64 // toward the observer [solar radii]
 	dx      float64 // its share of the ray [cm]
 	point   model.Point
-	azimuth float64    // of the point in the solar frame [rad]
+	azimuth float64    // no longer used
 	sky     float64    // plane-of-sky component of the unit vector along B
 	angle   float64    // of B on the sky [rad], counter-clockwise from north
 	bSky    float64    // plane-of-sky component of B [G]
 	j       [2]float64 // emissivities [erg cm^-3 s^-1 sr^-1]
 	width   float64    // of the lines [km/s]
 	los     [2]float64 // Doppler velocity [km/s] of unit motion in each polarisation
+	flow    float64    // steady Doppler velocity [km/s]
+	smooth  [2]float64 // emissivities without strands
 }
 
 // sampleAt evaluates the corona at (x, y, z) of the observer's frame.
 func (c *Scene) sampleAt(x, dx, y, z float64) sample {
 	pos := c.view.ToSun(r3.Vec{X: x, Y: y, Z: z})
-	s := sample{x: x, dx: dx, point: c.Corona.At(pos), azimuth: math.Atan2(pos.Y, pos.X)}
+	s := sample{x: x, dx: dx, point: c.Corona.At(pos)}
 	p := &s.point
 	b := c.view.ToSky(p.B)
 	bSky := math.Hypot(b.Y, b.Z)
 	s.bSky = bSky
 	s.sky = bSky / r3.Norm(b)
 	s.angle = math.Atan2(-b.Y, b.Z)
-	s.j[0], s.j[1] = c.light.Emissivities(p.N, p.T, r3.Norm(pos))
+	for _, part := range p.Parts {
+		if part.Share > 0 {
+			j1, j2 := c.light.Emissivities(part.N, p.T, p.R)
+			s.j[0] += part.Share * j1
+			s.j[1] += part.Share * j2
+		}
+	}
+	s.smooth = s.j
+	if p.N != p.Mean {
+		s.smooth[0], s.smooth[1] = c.light.Emissivities(p.Mean, p.T, p.R)
+	}
 	s.width = c.width(p)
-	e1, e2 := model.Frame(pos, p.B)
-	a := c.amplitude(p.N)
+	e1, e2 := p.Frame()
+	a := c.amplitude(p.Kink)
 	// Doppler velocity is positive away from the observer.
 	s.los = [2]float64{-a * c.view.ToSky(e1).X, -a * c.view.ToSky(e2).X}
+	s.flow = -c.view.ToSky(p.Flow).X / kms
 	return s
 }
 

@@ -120,11 +120,7 @@ func (c *Scene) waveWeights(ray []sample) []float64 {
 		power := 0.0
 		for k := range ts {
 			t := &ts[k]
-			end := 0
-			if s.point.Line.Closed && t.colatitude == s.point.Line.Foot[1] {
-				end = 1
-			}
-			power += c.inBand(s, t) * c.coherent(a, b, end)
+			power += c.inBand(s, t) * c.coherent(a, b, t.end)
 		}
 		w[i] = s.j[0] * s.j[0] * s.dx * power
 	}
@@ -135,10 +131,10 @@ func (c *Scene) waveWeights(ray []sample) []float64 {
 // within one cell, from the neighbours a and b of a sample.
 func (c *Scene) coherent(a, b *sample, end int) float64 {
 	dx := math.Abs(b.x - a.x)
-	moved := footDistance(a, b, end)
-	if math.IsNaN(moved) { // the class changes here: both neighbours have a first foot at least
-		moved = footDistance(a, b, 0)
+	if end >= min(a.point.Line.Ends, b.point.Line.Ends) { // the class changes here
+		end = 0
 	}
+	moved := footDistance(a, b, end)
 	if !(moved > 0) {
 		return float64(c.s.Sight.Reach)
 	}
@@ -147,15 +143,8 @@ func (c *Scene) coherent(a, b *sample, end int) float64 {
 
 // footDistance returns the angle [rad] between two samples' footpoints.
 func footDistance(a, b *sample, end int) float64 {
-	u := footVector(a.point.Line.Foot[end], a.azimuth)
-	v := footVector(b.point.Line.Foot[end], b.azimuth)
+	u, v := a.point.Line.Foot[end].Vector(), b.point.Line.Foot[end].Vector()
 	return 2 * math.Asin(min(r3.Norm(r3.Sub(u, v))/2, 1))
-}
-
-func footVector(colatitude, azimuth float64) r3.Vec {
-	st, ct := math.Sincos(colatitude)
-	sa, ca := math.Sincos(azimuth)
-	return r3.Vec{X: st * ca, Y: st * sa, Z: ct}
 }
 
 // truthOf returns the truth of one pixel, in the order of truthMaps, and its class.
