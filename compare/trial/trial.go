@@ -159,12 +159,12 @@ func Light(c *scenarios.Scenario) (synth.Light, []File, error) {
 		return synth.Light{}, nil, err
 	}
 	over := m.Range()
-	hot, cold := c.Corona.Temperature.Streamer.Kelvin(), c.Corona.Temperature.Streamer.Kelvin()
-	if c.Corona.Density.Hole != nil {
-		hot, cold = max(hot, c.Corona.Temperature.Hole.Kelvin()), min(cold, c.Corona.Temperature.Hole.Kelvin())
+	outer := float64(c.Image.Outer) + float64(c.Sight.Reach) + 0.2
+	cold, hot, err := model.TemperatureRange(c.Corona, outer)
+	if err != nil {
+		return synth.Light{}, nil, err
 	}
 	over.Temperature = [2]float64{cold, hot}
-	outer := float64(c.Image.Outer) + float64(c.Sight.Reach) + 0.2
 	over.Height = [2]float64{1, outer}
 	t, err := m.Table(over)
 	if err != nil {
