@@ -61,9 +61,11 @@ func Default() Scenario {
 		},
 		Inversion: Inversion{
 			Filter:      Band{Centre: 3.5, Width: 1.5, Means: "1/e"},
+			Taper:       0.1,
 			Box:         21,
 			Coherence:   0.5,
 			Track:       31,
+			Estimators:  []string{"lag"},
 			Separation:  true,
 			KZero:       "halved",
 			Padding:     1,

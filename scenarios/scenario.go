@@ -336,10 +336,12 @@ type Gap struct {
 // Inversion is the observer's recipe. It may not know the corona.
 type Inversion struct {
 	Filter      Band              `yaml:"filter"`
+	Taper       float64           `yaml:"taper" in:"0..0.5" about:"share of the series under the cosine bell at each end"`
 	Box         int               `yaml:"box" in:"5..101" about:"side of the coherence box [pixels], odd"`
 	Coherence   float64           `yaml:"coherence" in:">0..<1" about:"threshold of the island"`
 	Track       int               `yaml:"track" in:"5..201" about:"points along the track, one pixel apart, odd"`
-	Separation  bool              `yaml:"separation" about:"split outward and inward waves on the track before the lag fit"`
+	Estimators  []string          `yaml:"estimators" one:"lag,unsplit,pair" about:"of the phase speed, side by side; the first fills SPEED and B, others SPEED_PAIR and so on"`
+	Separation  bool              `yaml:"separation" about:"lag splits outward and inward waves on the track first"`
 	KZero       string            `yaml:"k_zero" one:"kept,halved,dropped" about:"what the separation does with the column of zero wavenumber"`
 	Padding     int               `yaml:"padding" in:"1..16" about:"zero padding of the track for the separation; 1: none"`
 	Temperature units.Temperature `yaml:"temperature" in:"0.64 MK..5 MK" about:"assumed in the ratio density"`

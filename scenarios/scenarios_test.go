@@ -31,7 +31,7 @@ func load(t *testing.T, name string, set ...string) *scenarios.Loaded {
 }
 
 func TestEmbeddedScenarios(t *testing.T) {
-	if diff := cmp.Diff([]string{"plane-wave", "quick", "quiet-belt", "sphere"}, scenarios.Names()); diff != "" {
+	if diff := cmp.Diff([]string{"clumpy-belt", "plane-wave", "quick", "quiet-belt", "source-surface", "sphere", "tilted-belt", "two-loops", "warped-belt"}, scenarios.Names()); diff != "" {
 		t.Error(diff)
 	}
 	for _, name := range scenarios.Names() {
@@ -371,14 +371,14 @@ func TestInversionAlone(t *testing.T) {
 		t.Fatal(err)
 	}
 	got, err := scenarios.LoadInversion(path)
-	if err != nil || got != want {
+	if err != nil || !reflect.DeepEqual(got, want) {
 		t.Errorf("%+v, %v", got, err)
 	}
 	_, err = scenarios.ParseInversion("i.yaml", []byte("box: 20\ntrack: 32\ncoherence: 1\ninversion: {}\n"), "k_zero=halves")
 	if want := `i.yaml:1:1: box: 20 is even; the box needs a middle pixel, so write 19 or 21
 i.yaml:2:1: track: 32 is even; the track needs a middle point, so write 31 or 33
 i.yaml:3:12: coherence: 1 is out of range; it must be more than 0 and less than 1
-i.yaml:4:1: unknown key "inversion"; known here: filter, box, coherence, track, separation, k_zero, padding, temperature, mu, helium, line
+i.yaml:4:1: unknown key "inversion"; known here: filter, taper, box, coherence, track, estimators, separation, k_zero, padding, temperature, mu, helium, line
 --set k_zero: "halves" is not allowed; write one of kept, halved, dropped; did you mean "halved"?`; err == nil || err.Error() != want {
 		t.Error(cmp.Diff(want, err.Error()))
 	}

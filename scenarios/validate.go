@@ -3,6 +3,7 @@ package scenarios
 import (
 	"fmt"
 	"math"
+	"slices"
 
 	"offplane/scenarios/strict"
 	"offplane/scenarios/units"
@@ -60,7 +61,6 @@ func (v *validator) corona(s *Scenario) {
 	v.rule(len(c.Density.Active) <= MaxActive, []string{"corona.density.active"}, "holds more than %d regions", MaxActive)
 	v.rule(c.Outflow == nil || c.Strands == nil || c.Strands.Waves != "own", []string{"corona.outflow", "corona.strands"},
 		"cannot be given with strands whose waves ride their own density; leave one out or write strands.waves: collective")
-	v.rule(c.Mix == nil || c.Strands == nil, []string{"corona.mix", "corona.strands"}, "cannot be given with strands; leave one out")
 	if c.Grid != nil {
 		return
 	}
@@ -222,5 +222,11 @@ func validateInversion(s *Inversion, prefix string, at *strict.Positions) strict
 	v := &validator{at: at}
 	v.rule(s.Box%2 == 1, []string{prefix + "box"}, "%d is even; the box needs a middle pixel, so write %d or %d", s.Box, s.Box-1, s.Box+1)
 	v.rule(s.Track%2 == 1, []string{prefix + "track"}, "%d is even; the track needs a middle point, so write %d or %d", s.Track, s.Track-1, s.Track+1)
+	v.rule(len(s.Estimators) > 0, []string{prefix + "estimators"}, "is empty; give at least one, such as [lag]")
+	once := true
+	for i, e := range s.Estimators {
+		once = once && !slices.Contains(s.Estimators[:i], e)
+	}
+	v.rule(once, []string{prefix + "estimators"}, "names an estimator twice; write each once")
 	return v.problems
 }

@@ -96,15 +96,23 @@ func Judge(l *scenarios.Loaded, g obs.Grid, truth, inferred obs.Maps, files []Fi
 	c := &l.Scenario
 	return compare.Compare(&g, truth, inferred, compare.Options{
 		Scenario: l.Name, Seed: c.Seed, Version: version, SHA256: l.SHA256, Text: string(l.Canonical), Files: files,
-		Estimator: "lag", Mu: c.Inversion.Mu, MuTrue: model.Mu(c.Corona.Helium),
+		Estimator: estimator(c), Mu: c.Inversion.Mu, MuTrue: model.Mu(c.Corona.Helium),
 	})
+}
+
+// estimator returns the estimator behind SPEED and B; empty for a user's own maps.
+func estimator(c *scenarios.Scenario) string {
+	if len(c.Inversion.Estimators) == 0 {
+		return ""
+	}
+	return c.Inversion.Estimators[0]
 }
 
 // Options turns the inversion section of a scenario into the inversion's own options.
 func Options(v scenarios.Inversion) invert.Options {
 	o := invert.Options{
 		Centre: v.Filter.Centre.Hz(), Width: v.Filter.Width.Hz(), WidthIsSigma: v.Filter.Means == "sigma",
-		Box: v.Box, Coherence: v.Coherence, Track: v.Track,
+		Taper: v.Taper, Box: v.Box, Coherence: v.Coherence, Track: v.Track, Estimators: v.Estimators,
 		Separation: v.Separation, Padding: v.Padding,
 		Temperature: v.Temperature.Kelvin(), Mu: v.Mu,
 	}
