@@ -404,8 +404,8 @@ func (r *run) spectrum(w *worker, p int) {
 	if first.ok {
 		m := r.means[0]
 		r.set(mapPeak, p, first.peak)
-		if d := first.w*first.w - m.filter*m.filter; d > 0 {
-			r.set(mapWidth, p, math.Sqrt(d))
+		if width, ok := m.lineWidth(first.w); ok {
+			r.set(mapWidth, p, width)
 		} else {
 			r.flag[p] |= FlagNarrow
 		}
@@ -417,7 +417,7 @@ func (r *run) spectrum(w *worker, p int) {
 	}
 	if second.ok && first.ok {
 		a, b := r.means[0], r.means[1]
-		ratio := second.peak * second.w * b.energyScale() / (first.peak * first.w * a.energyScale())
+		ratio := second.peak * second.w * b.energyScale(second.w) / (first.peak * first.w * a.energyScale(first.w))
 		r.set(mapRatio, p, ratio)
 		ix, iy := r.at(p)
 		dist, _ := r.grid.Polar(ix, iy)

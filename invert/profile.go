@@ -3,6 +3,7 @@ package invert
 import (
 	"fmt"
 	"math"
+	"sort"
 
 	"offplane/scenarios/units"
 	"offplane/synth/filter"
@@ -23,8 +24,9 @@ type gaussian struct {
 	x       []float64
 	a, b, c []float64 // the parabola's coefficients as weights of ln I
 	reach   float64   // largest |x|
-	filter  float64   // 1/e half-width of the filter [km/s]; 0: not known
-	rest    float64   // [nm]
+	filter  float64   // 1/e half-width of the filter [km/s]; 0: not known, or not Gaussian
+	table   []calibration
+	rest    float64 // [nm]
 }
 
 func newGaussian(tunings []obs.Tuning) (*gaussian, error) {
@@ -41,7 +43,9 @@ func newGaussian(tunings []obs.Tuning) (*gaussian, error) {
 		}
 		g.x[k] = lightSpeed * t.Offset / rest
 		g.rest = rest
-		g.filter = max(g.filter, lightSpeed*filter.EFolding(t.FilterFWHM)/rest)
+		if t.Stages == 0 {
+			g.filter = max(g.filter, lightSpeed*filter.EFolding(t.FilterFWHM)/rest)
+		}
 		g.reach = max(g.reach, math.Abs(g.x[k]))
 		if k > 0 && !(g.x[k] > g.x[k-1]) {
 			return nil, fmt.Errorf("tuning %d of line %d: wavelengths have to ascend", t.Index, t.Line)
@@ -67,7 +71,60 @@ func newGaussian(tunings []obs.Tuning) (*gaussian, error) {
 		row := func(i int) float64 { return (cof(0, i) + cof(1, i)*u + cof(2, i)*u*u) / det }
 		g.a[k], g.b[k], g.c[k] = row(0), row(1)/g.reach, row(2)/(g.reach*g.reach)
 	}
+	if t := tunings[0]; t.Stages > 0 && t.FilterFWHM > 0 {
+		g.calibrate(filter.NewBirefringent(t.Stages, lightSpeed*t.FilterFWHM/g.rest))
+	}
 	return g, nil
+}
+
+// A calibration is what the fit makes of a line of known width that rests in the middle
+// of the tunings, through a filter that is not Gaussian. The Doppler shift is left as it
+// is: its scale is off by one or two per cent.
+type calibration struct {
+	fitted, width float64 // 1/e half-widths [km/s]
+	energy        float64 // of the line over fitted peak times fitted width [1/(km/s)]
+}
+
+// calibrate fills the table for widths from a tenth of the outermost tuning to four
+// times it.
+func (g *gaussian) calibrate(b filter.Birefringent) {
+	middle := g.x[len(g.x)/2]
+	I := make([]float64, len(g.x))
+	for w := g.reach / 10; w < 4*g.reach; w *= 1.05 {
+		for k, x := range g.x {
+			I[k] = b.Line(x, middle, w)
+		}
+		p := g.fit(I)
+		if n := len(g.table); p.ok && (n == 0 || p.w > g.table[n-1].fitted) {
+			g.table = append(g.table, calibration{p.w, w, 1 / (p.peak * p.w)})
+		}
+	}
+}
+
+// calibrated returns the table's entry for a fitted width, that of the nearest end
+// beyond it.
+func (g *gaussian) calibrated(w float64) calibration {
+	i := sort.Search(len(g.table), func(i int) bool { return g.table[i].fitted >= w })
+	switch i {
+	case 0:
+		return g.table[0]
+	case len(g.table):
+		return g.table[i-1]
+	}
+	a, b := g.table[i-1], g.table[i]
+	u := (w - a.fitted) / (b.fitted - a.fitted)
+	return calibration{w, a.width + u*(b.width-a.width), a.energy + u*(b.energy-a.energy)}
+}
+
+// lineWidth returns the width of the line without the filter's; false if it is narrower
+// than the filter can tell.
+func (g *gaussian) lineWidth(w float64) (float64, bool) {
+	if len(g.table) > 0 {
+		c := g.calibrated(w)
+		return c.width, w >= g.table[0].fitted
+	}
+	d := w*w - g.filter*g.filter
+	return math.Sqrt(max(d, 0)), d > 0
 }
 
 // A profile is a fitted Gaussian.
@@ -143,9 +200,12 @@ func (g *gaussian) energyVariance(p profile, I, s2 []float64) float64 {
 
 // energyScale times peak times w is the line's energy in the unit of the frames,
 // up to a factor common to both lines: what a filter of unit peak transmission
-// lets through of a line of energy E is E filter/w at its peak.
-func (g *gaussian) energyScale() float64 {
-	if g.filter > 0 {
+// lets through of a line of energy E is E filter/w at its peak if both are Gaussian.
+func (g *gaussian) energyScale(w float64) float64 {
+	switch {
+	case len(g.table) > 0:
+		return g.calibrated(w).energy
+	case g.filter > 0:
 		return 1 / g.filter
 	}
 	return g.rest

@@ -43,7 +43,7 @@ func TestGaussianIsExact(t *testing.T) {
 					got, want float64
 				}{
 					{"shift", p.v, v}, {"width", p.w, seen}, {"peak", p.peak, 7 * g.filter / seen},
-					{"energy", p.peak * p.w * g.energyScale(), 7},
+					{"energy", p.peak * p.w * g.energyScale(p.w), 7},
 				} {
 					if !p.ok || math.Abs(c.got-c.want) > 1e-10 {
 						t.Errorf("offsets %v, v = %g, w = %g: %s %.12g, want %.12g", offsets, v, w, c.what, c.got, c.want)
@@ -198,5 +198,39 @@ func TestFieldStrength(t *testing.T) {
 	}
 	if b, err := fieldStrength(400, 40, 1e8, 2e7, 1.2); math.Abs(err/b-math.Sqrt(0.1*0.1+0.1*0.1)) > 1e-12 {
 		t.Errorf("relative error %g", err/b)
+	}
+}
+
+// Through a five-stage filter width and energy come back from the table, the shift with
+// the scale 0.976, 0.982, 0.988 for lines 0.110, 0.133, 0.160 nm wide (derived).
+func TestBirefringentFilter(t *testing.T) {
+	const rest, fwhm = 1074.7, 0.13
+	var ts []obs.Tuning
+	for k, d := range []float64{-0.12, 0, 0.12} {
+		ts = append(ts, obs.Tuning{Line: 1, Index: k, Wavelength: rest + d, Offset: d, FilterFWHM: fwhm, Stages: 5})
+	}
+	g, err := newGaussian(ts)
+	if err != nil {
+		t.Fatal(err)
+	}
+	kms := lightSpeed / rest
+	b := filter.NewBirefringent(5, fwhm*kms)
+	for _, c := range [][2]float64{{0.110, 0.976}, {0.133, 0.982}, {0.160, 0.988}} {
+		w := c[0] * kms
+		const v = 0.1
+		I := make([]float64, 3)
+		for k, x := range g.x {
+			I[k] = 7 * b.Line(x, v, w)
+		}
+		p := g.fit(I)
+		if got := p.v / v; math.Abs(got-c[1]) > 0.002 {
+			t.Errorf("width %g nm: velocity scale %.4f, want %.3f", c[0], got, c[1])
+		}
+		if got, ok := g.lineWidth(p.w); !ok || math.Abs(got/w-1) > 1e-3 {
+			t.Errorf("width %g nm: %.5g km/s, want %.5g", c[0], got, w)
+		}
+		if got := p.peak * p.w * g.energyScale(p.w); math.Abs(got/7-1) > 1e-3 {
+			t.Errorf("width %g nm: energy %.5g, want 7", c[0], got)
+		}
 	}
 }

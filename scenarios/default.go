@@ -41,6 +41,7 @@ func Default() Scenario {
 		Sight: Sight{Step: 1, Reach: 2, Tail: 0.001},
 		Image: Image{Pixel: 4.35, Inner: 1.05, Outer: 1.35, From: 0, To: 360},
 		Camera: Camera{
+			Like:        "none",
 			Cadence:     30,
 			Duration:    3 * 3600,
 			Tunings:     []units.Wavelength{-0.12, 0, 0.12},

@@ -110,7 +110,7 @@ func Parse(source string, data []byte, assignments ...string) (*Loaded, error) {
 		l.Name = strings.TrimSuffix(l.Name, filepath.Ext(l.Name))
 	}
 	at, err := strict.Read(source, data, &l.Scenario, assignments...)
-	if c := l.Scenario.Camera; c.Like != "" && at.Sound("camera.like") {
+	if c := l.Scenario.Camera; c.Like != "none" && at.Sound("camera.like") {
 		// Once more, on the example camera: what is written goes before it.
 		l.Scenario = Default()
 		l.Scenario.Camera.Like = c.Like

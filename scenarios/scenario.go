@@ -267,7 +267,7 @@ type Image struct {
 // Camera is what stands between the radiance and the frames. Each of its stages is
 // off at zero or null.
 type Camera struct {
-	Like string `yaml:"like" one:",20cm-4.35arcsec,20cm-3arcsec,50cm-3arcsec,150cm-2arcsec" about:"an example camera that stands for what is not written here and for image.pixel; empty: none"`
+	Like string `yaml:"like" one:"none,20cm-4.35arcsec,20cm-3arcsec,50cm-3arcsec,150cm-2arcsec" about:"an example camera that stands for what is not written here and for image.pixel"`
 
 	Cadence    units.Duration     `yaml:"cadence" in:"0.1 s..600 s" about:"time between frames of the first line"`
 	Duration   units.Duration     `yaml:"duration" in:"60 s..48 h"`

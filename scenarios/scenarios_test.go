@@ -280,6 +280,24 @@ func TestRules(t *testing.T) {
 		{"camera.tunings=[-0.2 nm, -0.1 nm, 0 nm, 0.1 nm, 0.2 nm]", ""},
 		{"camera.exposure=10 s", ""},
 		{"camera.exposure=10.1 s", "--set camera.exposure: 3 tunings of 10.1 s take 30.3 s, more than the cadence, 30 s"},
+		{"camera.dead_time=7.5 s", ""},
+		{"camera.dead_time=7.6 s", "quiet-belt:" + line(t, "  exposure:") + ":3: camera.exposure: 3 tunings of 2.5 s and 7.6 s of dead time take 30.3 s, more than the cadence, 30 s"},
+		{"camera.tuning_time=10 s", ""},
+		{"camera.tuning_time=11 s", "--set camera.tuning_time: 3 tunings of 11 s take 33 s, more than the cadence, 30 s"},
+		{"camera.tuning_time=11 s|camera.sequential=false", ""},
+		{"camera.tuning_time=2 s", "--set camera.tuning_time: 2 s is less than exposure and dead_time together, 2.5 s"},
+		{"camera.tuning_time=6 s|camera.switching=interleaved", "--set camera.tuning_time: 3 tunings of 6 s of each line take 36 s, more than the cadence, 30 s"},
+		{"camera.order=[2, 0, 1]", ""},
+		{"camera.order=[2, 0]", "--set camera.order: must hold each number from 0 to 2 once"},
+		{"camera.order=[2, 0, 2]", "--set camera.order: must hold each number from 0 to 2 once"},
+		{"camera.order=[3, 0, 1]", "--set camera.order: must hold each number from 0 to 2 once"},
+		{"camera.switching=blocks|camera.second_line=90|camera.blocks=90", ""},
+		{"camera.switching=blocks|camera.second_line=91", "--set camera.second_line: 91 frames of the second line leave the first line less than three quarters of 360 frames"},
+		{"camera.switching=blocks|camera.blocks=13", "--set camera.blocks: 13 are more than second_line, 12"},
+		{"camera.gaps=[{from: 1 h, length: 90 min}]", ""},
+		{"camera.gaps=[{from: 1 h, length: 90 min}, {from: 0 s, length: 1 s}]", "--set camera.gaps: last 5401 s together, more than half of duration, 10800 s"},
+		{"camera.pointing={drift_x: 240 arcsec}", "--set camera.pointing: drifts by 720 arcsec in all; at most 600 arcsec are allowed"},
+		{"camera.like=30cm", "--set camera.like: \"30cm\" is not allowed; write one of none, 20cm-4.35arcsec, 20cm-3arcsec, 50cm-3arcsec, 150cm-2arcsec"},
 		{"inversion.box=20", "--set inversion.box: 20 is even; the box needs a middle pixel, so write 19 or 21"},
 		{"inversion.track=30", "--set inversion.track: 30 is even; the track needs a middle point, so write 29 or 31"},
 		{"image.to=0 deg", "--set image.to: 0 deg must be more than from, 0 deg"},
@@ -304,6 +322,33 @@ func TestRules(t *testing.T) {
 		}
 		if diff := cmp.Diff(c.want, got); diff != "" {
 			t.Errorf("%s: %s", c.set, diff)
+		}
+	}
+}
+
+// An example camera stands for what is not written; what is written goes before it, and
+// the canonical form says it all.
+func TestLike(t *testing.T) {
+	_, err := scenarios.Parse("x", []byte("camera:\n  like: 150cm-2arcsec\n  stages: 3\n  scatter: null\n"))
+	if err != nil {
+		t.Fatal(err)
+	}
+	for like, want := range map[string][2]float64{"20cm-4.35arcsec": {20, 4.35}, "20cm-3arcsec": {20, 3}, "50cm-3arcsec": {50, 3}, "150cm-2arcsec": {150, 2}} {
+		l := load(t, "quick", "camera.like="+like, "camera.seeing=1 arcsec")
+		c := l.Scenario.Camera
+		if got := [2]float64{float64(c.Aperture), float64(l.Scenario.Image.Pixel)}; got != want || c.Stages != 5 || c.Seeing != 1 || c.Scatter == nil || c.Duration != 5400 {
+			t.Errorf("%s: %+v", like, c)
+		}
+		again, err := scenarios.Parse("again", l.Canonical)
+		if err != nil {
+			t.Fatal(err)
+		}
+		if diff := cmp.Diff(l.Scenario, again.Scenario); diff != "" {
+			t.Error(diff)
+		}
+		c = load(t, "quick", "camera.like="+like, "camera.stages=3", "camera.scatter=null", "image.pixel=5 arcsec").Scenario.Camera
+		if c.Stages != 3 || c.Scatter != nil || c.Like != like {
+			t.Errorf("%s: %+v", like, c)
 		}
 	}
 }

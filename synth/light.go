@@ -10,6 +10,9 @@ import (
 	"offplane/synth/kernel"
 )
 
+// lightSpeed in km/s.
+const lightSpeed = units.LightSpeed / kms
+
 // A lamp adds up the light of the samples of a few neighbouring rays over the frames.
 // It holds the scratch space of one worker.
 type lamp struct {
@@ -89,7 +92,7 @@ func (c *Scene) newLamp(plan *camera.Schedule, rays int) *lamp {
 	}
 	if n := c.s.Camera.Stages; n > 0 {
 		for line := range 2 {
-			l.lyot[line] = filter.NewBirefringent(n, float64(c.s.Camera.Filter)*units.LightSpeed/kms/c.light.Rest[line])
+			l.lyot[line] = filter.NewBirefringent(n, float64(c.s.Camera.Filter)*lightSpeed/c.light.Rest[line])
 		}
 	}
 	return l
@@ -158,6 +161,7 @@ func (l *lamp) emit(i int, s *sample) {
 		}
 		gathered := -1
 		for k, d := range c.tunings[line] {
+			d -= s.flow
 			v := l.velocity[l.lead[line][k]]
 			if line == 1 {
 				if gathered != l.lead[line][k] {

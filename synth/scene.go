@@ -89,7 +89,7 @@ func NewScene(ctx context.Context, s *scenarios.Scenario, light Light, workers i
 // brings into it, pass within a margin [solar radii] of a point of the solar frame.
 func seen(s *scenarios.Scenario, view model.View, step float64) func(p r3.Vec, margin float64) bool {
 	m := &s.Image
-	beside := 3*s.Camera.PointSpread.Rad()*s.Observer.Distance.Rsun() + 2*step
+	beside := float64(camera.Reach(s.Camera, s.Image.Pixel.Rad())+2) * step
 	from, width := m.From.Rad(), (m.To - m.From).Rad()
 	return func(p r3.Vec, margin float64) bool {
 		q := view.ToSky(p)

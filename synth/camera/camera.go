@@ -25,7 +25,7 @@ type Camera struct {
 	// without it: it is measured beside the line for as long and subtracted, so that its
 	// photon noise counts twice.
 	Background [2]float64
-	ReadNoise  float64 // electrons rms of a tuning and its background, co-adds included
+	ReadNoise  float64 // electrons rms of a tuning and its background, co-adds and digits included
 
 	millionth [2]float64 // of the disc-centre continuum, through the filter
 	k         float64    // of the K corona
@@ -48,7 +48,7 @@ type Camera struct {
 // the two lines.
 func New(c scenarios.Camera, seed uint64, pixel float64, disc, rest [2]float64) *Camera {
 	k := &Camera{
-		ReadNoise: c.ReadNoise * math.Sqrt(2*float64(c.Coadds)),
+		ReadNoise: math.Hypot(c.ReadNoise, c.Digit/math.Sqrt(12)) * math.Sqrt(2*float64(c.Coadds)),
 		k:         c.KCorona,
 		occulter:  c.Occulter,
 		stop:      float64(c.FieldStop),
@@ -86,8 +86,13 @@ func (c *Camera) SigmaAt(s Spot, radiance float64) float64 {
 	return c.sigma(c.Electrons[s.Line]*s.Open, radiance, s.Background)
 }
 
-// Spot returns what a pixel sees that lies r solar radii from the disc centre; height
-// is the size of an arc second there [solar radii].
+// Saturated tells whether a spot of the given radiance fills the well.
+func (c *Camera) Saturated(s Spot, radiance float64) bool {
+	return c.fullWell > 0 && c.Electrons[s.Line]*s.Open*(radiance+s.Background) > c.fullWell*c.coadds
+}
+
+// Spot returns what a pixel sees that lies r solar radii from the disc centre, where an
+// arc second is so many solar radii.
 func (c *Camera) Spot(line int, pixel int32, tuning int, r, arcsec float64) Spot {
 	return Spot{line, pixel, tuning, c.Open(r, arcsec), c.Continuum(line, r)}
 }

@@ -55,18 +55,16 @@ func (c *Camera) Expose(series []float32, s Spot) {
 			if c.fullWell > 0 && n > c.fullWell*c.coadds {
 				n = math.NaN()
 			}
-			// Each co-add is rounded to a digit: the last sum is, and the others' errors add
-			// like the uniform numbers they are.
-			v := 0.0
-			if c.noise {
-				v = c.ReadNoise * c.ReadNoise / 2
-			}
-			if c.digit > 0 {
-				v += (c.coadds - 1) * c.digit * c.digit / 12
-			}
-			n += math.Sqrt(v) * reads[i].Normal(uint64(t))
-			if c.digit > 0 {
-				n = c.digit * math.Round(n/c.digit)
+			switch {
+			case !c.noise && c.digit > 0: // every co-add is the same
+				n = c.coadds * c.digit * math.Round(n/(c.coadds*c.digit))
+			case c.noise:
+				// Each co-add is rounded to a digit: the last sum is, and the others' errors add
+				// like the uniform numbers they are once the noise is more than half a digit.
+				n += math.Sqrt(c.ReadNoise*c.ReadNoise/2-c.digit*c.digit/12) * reads[i].Normal(uint64(t))
+				if c.digit > 0 {
+					n = c.digit * math.Round(n/c.digit)
+				}
 			}
 			counts[i] = n
 		}

@@ -3,6 +3,7 @@ package camera
 import (
 	"context"
 	"math"
+	"slices"
 
 	"offplane/scenarios"
 	"offplane/synth/kernel"
@@ -14,17 +15,17 @@ import (
 // depend on where in the bin it is.
 type Scatter struct {
 	share   float64
-	size    int       // side of a bin [pixels]
-	bins    [][2]int  // the bins that hold light or want it, by their place
-	members [][]int32 // pixels of a bin, as numbers in the list
-	source  []int     // bins that hold light
-	coef    []float32 // [bin][source]
+	size    int         // side of a bin [pixels]
+	bins    [][2]int    // the bins that hold light or want it, by their place
+	members [][]int32   // pixels of a bin, as numbers in the list
+	source  []int       // bins that hold light
+	law     [][]float32 // light by the distance of two bins in x and y
 	corner  [][4]int32
 	weight  [][4]float32
 }
 
 // mostBins bounds the bins that hold light: the convolution costs their square.
-const mostBins = 2500
+const mostBins = 5000
 
 // NewScatter prepares the scattering over the listed pixels of a raster of nx columns;
 // pixel is their pitch [rad]. Nil if there is none.
@@ -34,7 +35,7 @@ func NewScatter(c scenarios.Camera, pixel float64, nx int, pixels []int32) *Scat
 	}
 	s := &Scatter{share: c.Scatter.Share}
 	core := c.Scatter.Core.Rad() / pixel
-	s.size = max(1, int(core/2))
+	s.size = max(1, int(core/4))
 	place := func(p int32) [2]int { return [2]int{int(p) % nx / s.size, int(p) / nx / s.size} }
 	for ; ; s.size++ {
 		n := map[[2]int]bool{}
@@ -75,32 +76,33 @@ func NewScatter(c scenarios.Camera, pixel float64, nx int, pixels []int32) *Scat
 		s.corner = append(s.corner, [4]int32{int32(bin([2]int{ix, iy})), int32(bin([2]int{ix + 1, iy})), int32(bin([2]int{ix, iy + 1})), int32(bin([2]int{ix + 1, iy + 1}))})
 		s.weight = append(s.weight, [4]float32{float32((1 - u) * (1 - v)), float32(u * (1 - v)), float32((1 - u) * v), float32(u * v)})
 	}
+	var span [2]int
+	by := func(i int) func(a, b [2]int) int { return func(a, b [2]int) int { return a[i] - b[i] } }
 	// Light per pixel at a bin's centre from one pixel's light spread over another bin.
 	e, size := c.Scatter.Exponent, float64(s.size)
 	law := func(x, y float64) float64 {
 		return (e - 2) / (2 * math.Pi * core * core) * math.Pow(1+(x*x+y*y)/(core*core), -e/2)
 	}
-	memo := map[[2]int]float32{}
-	for _, t := range s.bins {
-		for _, q := range s.source {
-			d := [2]int{abs(t[0] - s.bins[q][0]), abs(t[1] - s.bins[q][1])}
-			k, ok := memo[d]
-			if !ok {
-				n := 3
-				if max(d[0], d[1]) < 3 {
-					n = 8 * (1 + s.size/max(1, int(core))) // the core is resolved
-				}
-				sum := 0.0
-				for i := range n {
-					for j := range n {
-						x, y := (float64(i)+0.5)/float64(n)-0.5, (float64(j)+0.5)/float64(n)-0.5
-						sum += law(size*(float64(d[0])+x), size*(float64(d[1])+y))
-					}
-				}
-				k = float32(sum / float64(n*n))
-				memo[d] = k
+	for i := range 2 {
+		low, high := slices.MinFunc(s.bins, by(i))[i], slices.MaxFunc(s.bins, by(i))[i]
+		span[i] = high - low + 1
+	}
+	s.law = make([][]float32, span[0])
+	for dx := range s.law {
+		s.law[dx] = make([]float32, span[1])
+		for dy := range s.law[dx] {
+			n := 3
+			if max(dx, dy) < 3 {
+				n = 8 * (1 + s.size/max(1, int(core))) // the core is resolved
 			}
-			s.coef = append(s.coef, k)
+			sum := 0.0
+			for i := range n {
+				for j := range n {
+					x, y := (float64(i)+0.5)/float64(n)-0.5, (float64(j)+0.5)/float64(n)-0.5
+					sum += law(size*(float64(dx)+x), size*(float64(dy)+y))
+				}
+			}
+			s.law[dx][dy] = float32(sum / float64(n*n))
 		}
 	}
 	return s
@@ -124,10 +126,15 @@ func (s *Scatter) Apply(ctx context.Context, series func(i int) []float32, worke
 		return err
 	}
 	glow := make([][]float32, len(s.bins))
-	n := len(s.source)
-	err = parallel.For(ctx, len(s.bins), workers, func(_, b int) error {
+	workers = parallel.Workers(workers)
+	coef := make([][]float32, workers)
+	err = parallel.For(ctx, len(s.bins), workers, func(w, b int) error {
+		coef[w] = coef[w][:0]
+		for _, q := range s.source {
+			coef[w] = append(coef[w], s.law[abs(s.bins[b][0]-s.bins[q][0])][abs(s.bins[b][1]-s.bins[q][1])])
+		}
 		glow[b] = make([]float32, frames)
-		kernel.Combine(glow[b], light, s.coef[b*n:(b+1)*n])
+		kernel.Combine(glow[b], light, coef[w])
 		return nil
 	})
 	if err != nil {

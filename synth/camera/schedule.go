@@ -182,3 +182,17 @@ func (c *Camera) Moves(s *Schedule, line, tuning, frames int) (moves []Move, rea
 	}
 	return moves, reach
 }
+
+// Reach returns how many pixels from the field light may come into it, at most: by the
+// compact point spread and the pointing. Pixel is the pitch [rad].
+func Reach(c scenarios.Camera, pixel float64) int {
+	r := most
+	if !c.Diffraction && c.Seeing == 0 {
+		r = len(gaussianSpread(c.PointSpread.Rad(), pixel)) / 2
+	}
+	if p := newPointing(c, pixel, 0); p != nil {
+		// Among 2^53 normal numbers none is beyond 8.3.
+		r += 3 + int(math.Ceil(8.3*p.jitter+max(math.Abs(p.driftX), math.Abs(p.driftY))*(p.middle+float64(c.Cadence))))
+	}
+	return r
+}

@@ -89,3 +89,48 @@ func TestStreamsAreFrozen(t *testing.T) {
 		t.Errorf("first normal of (1,2,3) = %v, want %v", got, 0.701871268712939)
 	}
 }
+
+// Mean, variance and third central moment of a Poisson number are its mean, on both
+// sides of the change of method; small ones have the exact probabilities.
+func TestPoisson(t *testing.T) {
+	const n = 400000
+	for i, mean := range []float64{0.3, 4, 49.9, 50.1, 400, 2e4} {
+		k := NewKey(1, uint64(i))
+		count := map[float64]int{}
+		var m, m2, m3 float64
+		x := make([]float64, n)
+		for j := range x {
+			x[j] = k.Poisson(uint64(j), mean)
+			if x[j] < 0 || x[j] != math.Trunc(x[j]) {
+				t.Fatalf("mean %g: %g", mean, x[j])
+			}
+			m += x[j] / n
+			count[x[j]]++
+		}
+		for _, a := range x {
+			m2 += (a - m) * (a - m) / n
+			m3 += (a - m) * (a - m) * (a - m) / n
+		}
+		// Four standard deviations of the sample's; of the third moment that of a normal
+		// distribution, 6 mean^3/n, and of a Poisson one with few counts.
+		if math.Abs(m-mean) > 4*math.Sqrt(mean/n) {
+			t.Errorf("mean %g, want %g", m, mean)
+		}
+		if e := math.Sqrt((2*mean*mean + mean) / n); math.Abs(m2-mean) > 4*e+1e-3*mean {
+			t.Errorf("mean %g: variance %g", mean, m2)
+		}
+		if e := math.Sqrt((6*mean*mean*mean + 24*mean*mean + mean) / n); math.Abs(m3-mean) > 4*e+0.05*mean {
+			t.Errorf("mean %g: third moment %g", mean, m3)
+		}
+		for c := 0.0; c < 4 && mean < 5; c++ {
+			g, _ := math.Lgamma(c + 1)
+			p := math.Exp(c*math.Log(mean) - mean - g)
+			if got := float64(count[c]) / n; math.Abs(got-p) > 4*math.Sqrt(p/n) {
+				t.Errorf("mean %g: %g with probability %g, want %g", mean, c, got, p)
+			}
+		}
+	}
+	if NewKey(1).Poisson(3, 0) != 0 {
+		t.Error("light out of nothing")
+	}
+}
