@@ -413,16 +413,19 @@ func (c *Corona) plasma(p r3.Vec, m *mixture) (n, t, active float64) {
 	lat := c.belt.latitude(p)
 	n = c.background(r, lat, m.share)
 	t = c.warmth(r, m.share)
-	base := n
-	t *= n
+	base, heat := n, n*t
+	lo, hi := t, t
 	for i := range c.active {
 		if m.active[i] > 0 {
-			d := m.active[i] * c.active[i].law(r, lat)
+			a := &c.active[i]
+			d := m.active[i] * a.law(r, lat)
 			n += d
-			t += d * c.active[i].temperature
+			heat += d * a.temperature
+			lo, hi = min(lo, a.temperature), max(hi, a.temperature)
 		}
 	}
-	return n, t / n, 1 - base/n
+	// Rounding must not lead out of the range of the table of the light.
+	return n, max(lo, min(hi, heat/n)), 1 - base/n
 }
 
 // warmth returns the temperature [K] of the background where the streamer's share is w.

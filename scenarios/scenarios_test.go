@@ -380,7 +380,7 @@ func TestLoadFindsFilesAndNames(t *testing.T) {
 	}
 	for name, want := range map[string]string{
 		"qiuck":             `no scenario is called "qiuck"; did you mean "quick"?`,
-		"zzzzz":             `no scenario is called "zzzzz" (there are plane-wave, quick, quiet-belt, sphere;`,
+		"zzzzz":             `no scenario is called "zzzzz" (there are clumpy-belt, plane-wave, quick, quiet-belt, source-surface, sphere, tilted-belt, two-loops, warped-belt;`,
 		dir + "/none.yaml":  "no such file",
 		dir + "/quick.yaml": "the embedded scenario is called quick, without suffix",
 	} {

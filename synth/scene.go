@@ -276,16 +276,10 @@ func (c *Scene) sampleAt(x, dx, y, z float64) sample {
 	s.bSky = bSky
 	s.sky = bSky / r3.Norm(b)
 	s.angle = math.Atan2(-b.Y, b.Z)
-	for _, part := range p.Parts {
-		if part.Share > 0 {
-			j1, j2 := c.light.Emissivities(part.N, p.T, p.R)
-			s.j[0] += part.Share * j1
-			s.j[1] += part.Share * j2
-		}
-	}
+	s.j = c.emissivities(p, 1)
 	s.smooth = s.j
 	if p.N != p.Mean {
-		s.smooth[0], s.smooth[1] = c.light.Emissivities(p.Mean, p.T, p.R)
+		s.smooth = c.emissivities(p, p.Mean/p.N)
 	}
 	s.width = c.width(p)
 	e1, e2 := p.Frame()
@@ -294,6 +288,19 @@ func (c *Scene) sampleAt(x, dx, y, z float64) sample {
 	s.los = [2]float64{-a * c.view.ToSky(e1).X, -a * c.view.ToSky(e2).X}
 	s.flow = -c.view.ToSky(p.Flow).X / kms
 	return s
+}
+
+// emissivities returns the mean emissivities of a point's dense and thin plasma, with
+// its density times a factor.
+func (c *Scene) emissivities(p *model.Point, factor float64) (j [2]float64) {
+	for _, part := range p.Parts {
+		if part.Share > 0 {
+			j1, j2 := c.light.Emissivities(part.N*factor, p.T, p.R)
+			j[0] += part.Share * j1
+			j[1] += part.Share * j2
+		}
+	}
+	return j
 }
 
 // inBand returns the variance [km^2/s^2] of the Doppler velocity of one train within
