@@ -134,11 +134,11 @@ func mapsOf(g *obs.Grid, unit string, estimators []string) (obs.Maps, []estimato
 		mapAngleErr:   {Name: "ANGLE_ERR", Unit: "deg", About: "formal error of ANGLE"},
 		mapCoherence:  {Name: "COHERENCE", About: "mean in-band coherence with the adjacent pixels"},
 		mapSpeed:      {Name: "SPEED", Unit: "km/s", About: "phase speed on the sky, outward"},
-		mapSpeedErr:   {Name: "SPEED_ERR", Unit: "km/s", About: "formal error of SPEED, without the method's bias"},
+		mapSpeedErr:   {Name: "SPEED_ERR", Unit: "km/s", About: "error of SPEED, without the method's bias"},
 		mapSpeedIn:    {Name: "SPEED_IN", Unit: "km/s", About: "phase speed on the sky of the inward waves"},
 		mapTrack:      {Name: "TRACK", About: "track length over the wavelength at the band centre"},
 		mapField:      {Name: "B", Unit: "G", About: "magnetic field on the sky, speed sqrt(4 pi rho)"},
-		mapFieldErr:   {Name: "B_ERR", Unit: "G", About: "formal error of B, without the method's bias"},
+		mapFieldErr:   {Name: "B_ERR", Unit: "G", About: "error of B, without the method's bias"},
 		mapFlag:       {Name: "FLAG", About: "why a pixel has no field, and cautions", Codes: FlagCodes()},
 	}
 	es := addEstimators(&ms, estimators)

@@ -33,6 +33,7 @@ type patch struct {
 	v              float64 // [km/s]
 	cell           float64 // transverse size of independent waves [Mm]
 	rms            float64 // [km/s]
+	inward         float64 // power of waves the other way, over that of the outward ones
 	noise          float64 // white, of the Doppler shift [km/s]; Doppler cubes only
 	tunings        bool    // frames through the filter; otherwise a Doppler cube
 	electrons      float64
@@ -128,6 +129,10 @@ func (q patch) waves(g *obs.Grid) *obs.Cube {
 		clear(v)
 		m.add(v, cell(int(i)), q.rms*wa, along*1e3/q.v)
 		m.add(v, cell(int(i)+1), q.rms*wb, along*1e3/q.v)
+		if in := q.rms * math.Sqrt(q.inward); in > 0 {
+			m.add(v, cell(int(i)+1000), in*wa, -along*1e3/q.v)
+			m.add(v, cell(int(i)+1001), in*wb, -along*1e3/q.v)
+		}
 		for t, out := 0, cube.Series(p, 0); t < len(out); t++ {
 			out[t] = float32(v[t] + q.noise*rng.NormFloat64())
 		}

@@ -25,10 +25,13 @@ type lagger struct {
 	parts   []float32
 	product []float32
 	fit     []lag
+	im, re  []float64
+	share   []float64    // of each frequency in the curvature of the peaks
+	pull    [2][]float64 // what each frequency adds to the fit's weighted sums of tau and s tau
 }
 
 // A lag is that of one point of a track against its centre.
-type lag struct{ s, tau, coherence, weight float64 } // [km, s]
+type lag struct{ s, tau, weight float64 } // [km, s]
 
 // points is the longest track, step the distance of its points [km], grid the step
 // of the lag search [s]: the parabola's error is (2 pi f grid)^2/12 of the distance
@@ -51,6 +54,10 @@ func newLagger(b *band, opt *Options, points int, step, grid float64) *lagger {
 	l.wave[0] = make([]float32, points*b.row)
 	l.wave[1] = make([]float32, points*b.row)
 	l.cross = make([]float32, b.row)
+	l.im, l.re, l.share = make([]float64, n), make([]float64, n), make([]float64, n)
+	for i := range l.pull {
+		l.pull[i] = make([]float64, n)
+	}
 	return l
 }
 
@@ -165,27 +172,22 @@ type speed struct {
 // The search goes outward from the centre, each point starting at the lag of the
 // one before it, so a peak one period off is not taken.
 //
-// The error adds two variances of the slope: the scatter of the lags about the
-// line, and the propagated error of the lags from the coherence g of a pair,
-// sqrt(1-g^2) / (g sqrt(2 n) 2 pi f_rms) with n independent spectral samples
-// (derived). For white noise on one wave that is 1.5 times the true scatter; what
-// waves that run both ways and the separation do to a lag is not in it.
+// The error is that of resampled, from what each frequency adds to the slope. The
+// scatter of the lags about the line says nothing about it: all lags share the waves
+// of the centre and of the track.
 func (l *lagger) speed(rows []float32, n, centre int) speed {
 	row, nf := l.row, len(l.freq)
 	c := rows[centre*row : (centre+1)*row]
-	var f2, pc float64
-	for j, f := range l.freq {
-		p := float64(c[j])*float64(c[j]) + float64(c[nf+j])*float64(c[nf+j])
-		pc += p
-		f2 += p * f * f
-	}
+	pc := float64(blas.Sdot(row, c, 1, c, 1))
 	var r speed
 	if !(pc > 0) {
 		return r
 	}
 	r.power = pc
-	omega := 2 * math.Pi * math.Sqrt(f2/pc)
-	l.fit = append(l.fit[:0], lag{coherence: 1})
+	l.fit = append(l.fit[:0], lag{weight: 1})
+	clear(l.pull[0])
+	clear(l.pull[1])
+	clear(l.share)
 	for _, way := range [2]int{1, -1} {
 		start := 0
 		for i := centre + way; i >= 0 && i < n; i += way {
@@ -211,7 +213,9 @@ func (l *lagger) speed(rows []float32, n, centre int) speed {
 				continue
 			}
 			start = m
-			l.fit = append(l.fit, lag{s: float64(i-centre) * l.step, tau: tau, coherence: min(g, 1)})
+			q := lag{s: float64(i-centre) * l.step, tau: tau, weight: math.Pow(min(g, 1), l.power)}
+			l.fit = append(l.fit, q)
+			l.influence(m, q)
 		}
 	}
 	r.points = len(l.fit)
@@ -219,9 +223,7 @@ func (l *lagger) speed(rows []float32, n, centre int) speed {
 		return r
 	}
 	var w, ws, wt float64
-	for i := range l.fit {
-		q := &l.fit[i]
-		q.weight = math.Pow(q.coherence, l.power)
+	for _, q := range l.fit {
 		w += q.weight
 		ws += q.weight * q.s
 		wt += q.weight * q.tau
@@ -234,24 +236,42 @@ func (l *lagger) speed(rows []float32, n, centre int) speed {
 		sxy += q.weight * (q.s - ws) * (q.tau - wt)
 	}
 	slope := sxy / sxx
-	var scatter, own float64
-	for _, q := range l.fit {
-		d := q.tau - wt - slope*(q.s-ws)
-		scatter += q.weight * d * d
-		k := q.weight * (q.s - ws) / sxx
-		own += k * k * lagVariance(q.coherence, l.samples, omega)
+	for j, g := range l.pull[0] {
+		l.pull[0][j] = (l.pull[1][j] - ws*g) / sxx
 	}
-	variance := scatter/(float64(r.points-2)*sxx) + own
+	for j := range l.share {
+		l.share[j] /= float64(r.points - 1)
+	}
+	variance := resampled(l.pull[0], l.share)
 	r.v = 1 / slope
 	r.err = r.v * r.v * math.Sqrt(variance)
 	r.ok = r.err < math.Abs(r.v)
 	return r
 }
 
-// lagVariance returns the variance of the lag [s^2] of a pair of coherence g with
-// n independent spectral samples about the angular frequency omega [rad/s].
-func lagVariance(g, n, omega float64) float64 {
-	return (1 - g*g) / (g * g * 2 * n * omega * omega)
+// influence adds what each frequency did to a lag, found at step m of the search, to
+// l.pull. With Z the cross-spectrum turned by the lag, the peak is where the sum of
+// omega Im Z is zero, and a frequency moved it by its omega Im Z over the sum of
+// omega^2 Re Z.
+func (l *lagger) influence(m int, q lag) {
+	nf := len(l.freq)
+	r := l.phasor[(m+l.reach)*l.row:]
+	zr, zi, c, s := l.cross[:nf], l.cross[nf:2*nf], r[:nf], r[nf:2*nf] // s is -sin
+	off := 2 * math.Pi * (q.tau - float64(m)*l.grid)
+	curve := 0.0
+	im, bend := l.im[:nf], l.re[:nf]
+	for j, f := range l.freq {
+		re := float64(zr[j])*float64(c[j]) + float64(zi[j])*float64(s[j])
+		im[j] = -f * (float64(zi[j])*float64(c[j]) - float64(zr[j])*float64(s[j]) + off*f*re)
+		bend[j] = f * f * re
+		curve += bend[j]
+	}
+	k := q.weight / (2 * math.Pi * curve)
+	for j, x := range im {
+		l.pull[0][j] += k * x
+		l.pull[1][j] += k * q.s * x
+		l.share[j] += bend[j] / curve
+	}
 }
 
 // peak climbs from step start to the nearest maximum of the cross-correlation

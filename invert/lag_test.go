@@ -200,6 +200,12 @@ func TestCounterPropagation(t *testing.T) {
 	}
 }
 
+// lagVariance returns the variance of the lag [s^2] of a pair of coherence g with
+// n independent spectral samples about the angular frequency omega [rad/s].
+func lagVariance(g, n, omega float64) float64 {
+	return (1 - g*g) / (g * g * 2 * n * omega * omega)
+}
+
 // The rms error of the lag of a pair of coherence g, against simulated pairs in
 // 3 h: within 10 % (derived; own simulation, 10.6 s against 10.2 at g = 0.5, 4.31
 // against 4.46 at 0.8, 2.03 against 2.12 at 0.94).

@@ -257,12 +257,13 @@ refine:
 	if !(p > 0) || !(curve < 0) || math.Abs(d) > 0.5 {
 		return r
 	}
-	// The slope of each frequency's power at the maximum: their sum is zero.
+	// What each frequency moved the maximum, and its share in the curvature.
 	for i := range b {
-		b[i] = (c[i]-a[i])/2 + d*(a[i]+c[i]-2*b[i])
+		k := a[i] + c[i] - 2*b[i]
+		a[i], c[i] = ((a[i]-c[i])/2-d*k)*h/curve, k/curve
 	}
 	r.v = 1 / p
-	r.err = r.v * r.v * h * math.Sqrt(sandwich(b)) / -curve
+	r.err = r.v * r.v * math.Sqrt(resampled(a, c))
 	r.ok = r.err < r.v
 	r.inward = q.inward(n)
 	return r
