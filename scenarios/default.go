@@ -112,7 +112,7 @@ func (c *Camera) like() units.SkyAngle {
 		c.Aperture, c.Coadds = 50, 25
 		return 3
 	case "150cm-2arcsec":
-		c.Aperture, c.Coadds, c.Background = 150, 50, 5
+		c.Aperture, c.Coadds, c.Background = 150, 100, 5
 		return 2
 	}
 	panic("scenarios: no camera is like " + c.Like)

@@ -5,6 +5,7 @@ import (
 	"math"
 
 	"offplane/synth/camera"
+	"offplane/synth/kernel"
 	"offplane/synth/obs"
 	"offplane/synth/parallel"
 )
@@ -143,6 +144,8 @@ func (d *development) develop(ctx context.Context, raw *obs.Cube, line, workers 
 		spread = obs.NewCube(len(d.moved), 1, raw.Frames)
 	}
 	lost := d.plan.Lost[line]
+	workers = parallel.Workers(workers)
+	spreaders := make([]spreader, workers)
 	for k := range raw.Tunings {
 		source := func(i int) []float32 { return raw.Series(i, k) }
 		if scatter != nil {
@@ -151,8 +154,8 @@ func (d *development) develop(ctx context.Context, raw *obs.Cube, line, workers 
 			}
 		}
 		if spread != nil {
-			err := parallel.For(ctx, len(d.moved), workers, func(_, i int) error {
-				d.spread(spread.Series(i, 0), int(d.moved[i]), lit, source, line)
+			err := parallel.For(ctx, len(d.moved), workers, func(w, i int) error {
+				spreaders[w].spread(spread.Series(i, 0), &d.cam.Spread[line], d.wide.Nx, int(d.moved[i]), lit, source)
 				return nil
 			})
 			if err != nil {
@@ -165,14 +168,14 @@ func (d *development) develop(ctx context.Context, raw *obs.Cube, line, workers 
 				gain = append(gain, float32(d.cam.Gain(d.plan.Time(line, f, float64(d.c.s.Camera.Cadence))+d.plan.Delay[k])))
 			}
 		}
-		err := parallel.For(ctx, len(d.field), workers, func(_, i int) error {
+		err := parallel.For(ctx, len(d.field), workers, func(w, i int) error {
 			dst := frames.Series(i, k)
 			p := d.field[i]
 			place := int(d.wide.place(&d.c.Grid, p))
 			if spread != nil {
 				d.move(dst, place, moved, spread, d.moves[line][k])
 			} else {
-				d.spread(dst, place, lit, source, line)
+				spreaders[w].spread(dst, &d.cam.Spread[line], d.wide.Nx, place, lit, source)
 			}
 			for t, g := range gain {
 				dst[t] *= g
@@ -192,28 +195,31 @@ func (d *development) develop(ctx context.Context, raw *obs.Cube, line, workers 
 	return frames, nil
 }
 
-// spread fills dst with the light that the point spread brings to a place.
-func (d *development) spread(dst []float32, place int, lit []int32, source func(i int) []float32, line int) {
-	s := &d.cam.Spread[line]
-	if s.Half == 0 {
+// A spreader adds up the light that the point spread brings to a place. It holds the
+// scratch space of one worker.
+type spreader struct {
+	rows [][]float32
+	coef []float32
+}
+
+// spread fills dst; lit numbers the places of source.
+func (s *spreader) spread(dst []float32, k *camera.Kernel, columns, place int, lit []int32, source func(i int) []float32) {
+	if k.Half == 0 {
 		copy(dst, source(int(lit[place])-1))
 		return
 	}
-	clear(dst)
+	s.rows, s.coef = s.rows[:0], s.coef[:0]
 	i := 0
-	for v := -s.Half; v <= s.Half; v++ {
-		for u := -s.Half; u <= s.Half; u++ {
-			q := int(lit[place+v*d.wide.Nx+u])
-			w := float32(s.Weight[i])
+	for v := -k.Half; v <= k.Half; v++ {
+		for u := -k.Half; u <= k.Half; u++ {
+			if q := int(lit[place+v*columns+u]); q > 0 {
+				s.rows = append(s.rows, source(q-1))
+				s.coef = append(s.coef, float32(k.Weight[i]))
+			}
 			i++
-			if q == 0 {
-				continue
-			}
-			for t, a := range source(q - 1) {
-				dst[t] += float32(w * a)
-			}
 		}
 	}
+	kernel.Combine(dst, s.rows, s.coef)
 }
 
 // move fills dst with the light at a place, frame by frame from where the image stands.

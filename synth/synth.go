@@ -3,6 +3,7 @@ package synth
 import (
 	"cmp"
 	"context"
+	"errors"
 	"math"
 	"slices"
 
@@ -122,7 +123,10 @@ func (c *Scene) observe(ctx context.Context, workers, tile int, progress func(do
 		raw[l] = nil
 		o.Mean[l] = means(o.Frames[l])
 	}
-	return withoutDark(o), truth, nil
+	if o = withoutDark(o); len(o.Pixels) == 0 {
+		return nil, nil, errors.New("camera: no pixel of the field has a whole frame; all are occulted, saturated or lost")
+	}
+	return o, truth, nil
 }
 
 // camera returns the camera of the scene.
