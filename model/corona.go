@@ -284,8 +284,7 @@ func TemperatureRange(c scenarios.Corona, outer float64) (lo, hi float64, err er
 		if err != nil {
 			return 0, 0, fmt.Errorf("corona.grid: %w", err)
 		}
-		lo, hi = g.temperatures()
-		return lo, hi, nil
+		return g.cold, g.hot, nil
 	}
 	lo, hi = math.Inf(1), 0.0
 	add := func(t float64) { lo, hi = min(lo, t), max(hi, t) }
@@ -303,6 +302,7 @@ func TemperatureRange(c scenarios.Corona, outer float64) (lo, hi float64, err er
 		for i := range n + 1 {
 			add(t * profile(1+(outer-1)*float64(i)/n))
 		}
+		lo, hi = lo*(1-1e-5), hi*(1+1e-5) // extremes between the samples
 	}
 	for _, a := range c.Density.Active {
 		add(a.Temperature.Kelvin())

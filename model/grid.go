@@ -38,6 +38,7 @@ import (
 type Grid struct {
 	r, theta, phi []float64 // [solar radii, rad, rad]
 	node          [][gridValues]float32
+	cold, hot     float64 // least and greatest temperature [K]
 }
 
 // The values of a node: ln NE, T, r^2 B.
@@ -103,7 +104,15 @@ func ReadGrid(path string) (*Grid, error) {
 	if gap < 1e-9 || gap > 1.5*widest {
 		return nil, fmt.Errorf("%s: PHI runs from %g to %g deg; it must go once around the Sun, without the first longitude again at the end", path, g.phi[0]*deg, g.phi[np-1]*deg)
 	}
-	return g, g.readImages(f, path)
+	if err := g.readImages(f, path); err != nil {
+		return nil, err
+	}
+	g.cold, g.hot = math.Inf(1), 0
+	for i := range g.node {
+		t := float64(g.node[i][1])
+		g.cold, g.hot = min(g.cold, t), max(g.hot, t)
+	}
+	return g, nil
 }
 
 func (g *Grid) readImages(f *fits.File, path string) error {
@@ -154,16 +163,6 @@ func (g *Grid) Reaches(outer float64) error {
 		return fmt.Errorf("the grid ends at r = %.4g solar radii, but lines of sight reach %.4g; write a smaller sight.reach or a larger grid", last, outer)
 	}
 	return nil
-}
-
-// temperatures returns the least and the greatest temperature [K].
-func (g *Grid) temperatures() (lo, hi float64) {
-	lo, hi = math.Inf(1), 0
-	for i := range g.node {
-		t := float64(g.node[i][1])
-		lo, hi = min(lo, t), max(hi, t)
-	}
-	return lo, hi
 }
 
 // cell returns the index of the cell of x among ascending nodes, the first or last one
@@ -233,7 +232,9 @@ func (g *Grid) B(p r3.Vec) r3.Vec {
 // plasma returns n_e [cm^-3] and the temperature [K].
 func (g *Grid) plasma(p r3.Vec) (n, t float64) {
 	v, _, fall := g.at(p)
-	return math.Exp(v[0]) * fall, v[1]
+	// Neither rounding nor the half cell beyond a last node leads out of the range of
+	// the table of the light.
+	return math.Exp(v[0]) * fall, max(g.cold, min(g.hot, v[1]))
 }
 
 // WriteGrid writes field, mean density and temperature of a corona on a grid that
@@ -260,7 +261,14 @@ func (c *Corona) WriteGrid(path string, r, theta, phi []float64) error {
 		for j := range nt {
 			for k := range np {
 				up := spherical(theta[j]*deg, phi[k]*deg)
-				q := c.At(r3.Scale(r[i], up))
+				p := r3.Scale(r[i], up)
+				var q Point
+				if c.flat == nil && c.depths == nil && len(c.active) == 0 { // no line need be followed
+					q.B = c.field.B(p)
+					q.Mean, q.T, _ = c.plasma(p, &mixture{share: 1})
+				} else {
+					q = c.At(p)
+				}
 				west := r3.Vec{X: -math.Sin(phi[k] * deg), Y: math.Cos(phi[k] * deg)}
 				south := r3.Cross(west, up)
 				values[(i*nt+j)*np+k] = [gridValues]float64{q.Mean, q.T, r3.Dot(q.B, up), r3.Dot(q.B, south), r3.Dot(q.B, west)}
