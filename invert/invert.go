@@ -100,6 +100,10 @@ type Result struct {
 	// Series holds the band-passed Doppler series [km/s] that the tracker used, one
 	// per pixel of the field, one "tuning". NaN where the series was bad.
 	Series *obs.Cube
+	// Cadence is the time between the values of a series [s]. Frames that are not evenly
+	// spaced are put on even times, so that a series may have more values than the
+	// observation has frames.
+	Cadence float64
 }
 
 // The maps of a result, in file order, and their indices.
@@ -222,11 +226,11 @@ func Invert(ctx context.Context, o *obs.Observation, e line.Emitter, opt Options
 	if len(es) != cube.Frames {
 		return nil, fmt.Errorf("log of line 1 has %d exposures for %d frames", len(es), cube.Frames)
 	}
-	dt, err := cadence(es)
+	when, err := newTiming(es)
 	if err != nil {
 		return nil, err
 	}
-	b, err := newBand(&opt, cube.Frames, dt)
+	b, err := newBand(&opt, when.frames, when.cadence)
 	if err != nil {
 		return nil, err
 	}
@@ -260,8 +264,8 @@ func Invert(ctx context.Context, o *obs.Observation, e line.Emitter, opt Options
 		opt.Estimators = []string{Lag}
 	}
 	maps, estimators := mapsOf(&o.Grid, o.Unit, opt.Estimators)
-	r := &Result{Maps: maps, Series: obs.NewCube(np, 1, cube.Frames)}
-	run := &run{estimatorMaps: estimators, field: f, cube: cube, means: means, result: r, variance: make([]float64, np), dft: newDFT(b)}
+	r := &Result{Maps: maps, Series: obs.NewCube(np, 1, when.frames), Cadence: when.cadence}
+	run := &run{estimatorMaps: estimators, field: f, cube: cube, timing: when, means: means, result: r, variance: make([]float64, np), dft: newDFT(b)}
 
 	if means[1] != nil {
 		if run.inverter, err = newInverter(e, opt.Temperature, f); err != nil {
@@ -338,6 +342,7 @@ func newMeans(o *obs.Observation, i, pixels int) (*means, error) {
 type run struct {
 	*field
 	cube          *obs.Cube
+	timing        timing
 	means         [2]*means
 	inverter      *line.Inverter // nil without a second line
 	result        *Result
@@ -356,6 +361,8 @@ type worker struct {
 	estimators []estimator
 	I, s2      [2][]float64
 	frame      []float64
+	v          []float64 // a series of frames that are not evenly spaced
+	bad        []bool
 }
 
 func (r *run) newWorker() *worker {
@@ -366,6 +373,9 @@ func (r *run) newWorker() *worker {
 		track:     tracker{field: r.field},
 		lags:      newLagger(r.band, r.opt, r.opt.Track, step, 1/(lagSteps*r.opt.Centre)),
 		frame:     make([]float64, r.cube.Tunings),
+	}
+	if r.timing.from != nil {
+		w.v, w.bad = make([]float64, r.cube.Frames), make([]bool, r.cube.Frames)
 	}
 	for _, name := range r.opt.Estimators {
 		w.estimators = append(w.estimators, newEstimator(name, r.opt))
@@ -456,27 +466,34 @@ func (r *run) spectrum(w *worker, p int) {
 // returns the number of bad frames.
 func (r *run) series(w *worker, p int) (bad int) {
 	t := w.transform
+	v, broken := t.v, t.bad
+	if w.v != nil {
+		v, broken = w.v, w.bad
+	}
 	switch r.cube.Tunings {
 	case 1:
-		for i, v := range r.cube.Series(p, 0) {
-			t.v[i], t.bad[i] = float64(v), math.IsNaN(float64(v)) || math.IsInf(float64(v), 0)
+		for i, x := range r.cube.Series(p, 0) {
+			v[i], broken[i] = float64(x), math.IsNaN(float64(x)) || math.IsInf(float64(x), 0)
 		}
 	case 3:
 		g := r.means[0].gaussian
 		i1, i2, i3 := r.cube.Series(p, 0), r.cube.Series(p, 1), r.cube.Series(p, 2)
-		for i := range t.v {
-			v, ok := g.doppler(i1[i], i2[i], i3[i])
-			t.v[i], t.bad[i] = v, !ok
+		for i := range v {
+			x, ok := g.doppler(i1[i], i2[i], i3[i])
+			v[i], broken[i] = x, !ok
 		}
 	default:
 		g := r.means[0].gaussian
-		for i := range t.v {
+		for i := range v {
 			for k := range w.frame {
 				w.frame[k] = float64(r.cube.Series(p, k)[i])
 			}
 			fit := g.fit(w.frame)
-			t.v[i], t.bad[i] = fit.v, !fit.ok
+			v[i], broken[i] = fit.v, !fit.ok
 		}
+	}
+	if w.v != nil {
+		r.timing.spread(v, broken, t.v, t.bad)
 	}
 	return repair(t.v, t.bad)
 }

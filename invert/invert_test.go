@@ -464,9 +464,13 @@ func TestErrors(t *testing.T) {
 		"frequencies in the": func(_ *obs.Observation, opt *Options) { opt.Centre = 0.03 },
 		"no frames":          func(o *obs.Observation, _ *Options) { o.Frames[0] = nil },
 		"exposures":          func(o *obs.Observation, _ *Options) { o.Exposures = o.Exposures[:80] },
-		"evenly spaced":      func(o *obs.Observation, _ *Options) { o.Exposures[40].Time += 10 },
-		"ascend":             func(o *obs.Observation, _ *Options) { o.Pixels[3] = 2 },
-		"density at":         func(_ *obs.Observation, opt *Options) { opt.Temperature = 1e12 },
+		"have no frame": func(o *obs.Observation, _ *Options) {
+			for i := 40; i < 90; i++ {
+				o.Exposures[i].Time += 3000
+			}
+		},
+		"ascend":     func(o *obs.Observation, _ *Options) { o.Pixels[3] = 2 },
+		"density at": func(_ *obs.Observation, opt *Options) { opt.Temperature = 1e12 },
 	} {
 		o, opt := q.observe(), Default()
 		change(o, &opt)

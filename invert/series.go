@@ -6,8 +6,6 @@ import (
 	"slices"
 
 	"gonum.org/v1/gonum/dsp/fourier"
-
-	"offplane/synth/obs"
 )
 
 // least is the smallest weight of the amplitude filter that is kept: what is left
@@ -79,21 +77,6 @@ func newBand(opt *Options, frames int, cadence float64) (*band, error) {
 	// sums depends on the alignment of its arguments.
 	b.row = (2*len(b.freq) + 3) &^ 3
 	return b, nil
-}
-
-// cadence returns the interval between the frames of a line [s].
-func cadence(es []obs.Exposure) (float64, error) {
-	n := len(es)
-	if n < 2 {
-		return 0, fmt.Errorf("log of line 1 has %d exposures: needs two or more", n)
-	}
-	dt := (es[n-1].Time - es[0].Time) / float64(n-1)
-	for i := 1; i < n; i++ {
-		if d := es[i].Time - es[i-1].Time; !(d > 0) || math.Abs(d-dt) > 0.1*dt {
-			return 0, fmt.Errorf("frame %d of line 1 follows the one before by %g s, the mean is %g s: frames have to be evenly spaced (put in empty frames where some are missing)", i, d, dt)
-		}
-	}
-	return dt, nil
 }
 
 // outlier is the distance from the mean, in rms of the series, beyond which a

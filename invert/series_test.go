@@ -123,20 +123,6 @@ func TestRepair(t *testing.T) {
 	}
 }
 
-func TestCadence(t *testing.T) {
-	var es []obs.Exposure
-	for i := range 50 {
-		es = append(es, obs.Exposure{Time: 30 * float64(i)})
-	}
-	if dt, err := cadence(es); err != nil || dt != 30 {
-		t.Errorf("%g, %v", dt, err)
-	}
-	es = slices.Delete(es, 20, 25)
-	if _, err := cadence(es); err == nil {
-		t.Error("a gap passed")
-	}
-}
-
 // ring is a field of random independent waves in cells of position angle.
 func ring(t *testing.T, from, to float64) *field {
 	opt := Default()
