@@ -6,6 +6,8 @@
 // The steps, in the order of the files:
 //
 //	profile.go    a Gaussian through the tunings: peak, Doppler shift, width, energy
+//	fit.go        a line on a background by least squares, for four tunings or more
+//	timing.go     frames that are late or missing
 //	series.go     Doppler series: repair, band-pass, noise, trend of the whole field
 //	direction.go  coherence islands and the direction of their axis
 //	track.go      a track along the directions, the wave signal on it

@@ -31,6 +31,7 @@ type Options struct {
 	Centre       float64 // of the Gaussian band-pass [Hz]. The default is 3.5e-3.
 	Width        float64 // of the band-pass amplitude [Hz]. The default is 1.5e-3.
 	WidthIsSigma bool    // Width is the standard deviation; otherwise the 1/e half-width. The default is false.
+	Background   bool    // fit profiles by least squares with a constant background, which needs four tunings. The default is false.
 	Taper        float64 // share of the series under the cosine bell at each end, 0 to 0.5. The default is 0.1.
 	Box          int     // diameter of the round window of the coherence island [pixels], odd, 5 or more. The default is 21.
 	Coherence    float64 // threshold of the island, between 0 and 1. The default is 0.5.
@@ -236,7 +237,7 @@ func Invert(ctx context.Context, o *obs.Observation, e line.Emitter, opt Options
 	}
 	var means [2]*means
 	for i := range means {
-		if means[i], err = newMeans(o, i, np); err != nil {
+		if means[i], err = newMeans(o, i, np, opt.Background); err != nil {
 			return nil, err
 		}
 	}
@@ -312,12 +313,13 @@ func Invert(ctx context.Context, o *obs.Observation, e line.Emitter, opt Options
 // means is one line's mean profiles and their noise.
 type means struct {
 	*gaussian
-	noise photonNoise
-	data  [][]float32
+	fitter *fitter // nil without background
+	noise  photonNoise
+	data   [][]float32
 }
 
 // newMeans returns nil if the observation has no mean profile of line i+1.
-func newMeans(o *obs.Observation, i, pixels int) (*means, error) {
+func newMeans(o *obs.Observation, i, pixels int, background bool) (*means, error) {
 	data := o.Mean[i]
 	if len(data) == 0 {
 		return nil, nil
@@ -335,7 +337,11 @@ func newMeans(o *obs.Observation, i, pixels int) (*means, error) {
 	if err != nil {
 		return nil, err
 	}
-	return &means{gaussian: g, noise: newPhotonNoise(o.LineExposures(i + 1)), data: data}, nil
+	m := &means{gaussian: g, noise: newPhotonNoise(o.LineExposures(i + 1)), data: data}
+	if background {
+		m.fitter, err = newFitter(g, ts)
+	}
+	return m, err
 }
 
 // A run is one inversion under way.
@@ -360,6 +366,10 @@ type worker struct {
 	pairs      *pairer // nil if nobody asks for it
 	estimators []estimator
 	I, s2      [2][]float64
+	fitters    [2]*fitter // nil without background
+	fitted     [2]fitted
+	weight     [2][]float64
+	usable     []float64
 	frame      []float64
 	v          []float64 // a series of frames that are not evenly spaced
 	bad        []bool
@@ -373,6 +383,7 @@ func (r *run) newWorker() *worker {
 		track:     tracker{field: r.field},
 		lags:      newLagger(r.band, r.opt, r.opt.Track, step, 1/(lagSteps*r.opt.Centre)),
 		frame:     make([]float64, r.cube.Tunings),
+		usable:    make([]float64, r.cube.Tunings),
 	}
 	if r.timing.from != nil {
 		w.v, w.bad = make([]float64, r.cube.Frames), make([]bool, r.cube.Frames)
@@ -385,7 +396,11 @@ func (r *run) newWorker() *worker {
 	}
 	for i, m := range r.means {
 		if m != nil {
-			w.I[i], w.s2[i] = make([]float64, len(m.x)), make([]float64, len(m.x))
+			w.I[i], w.s2[i], w.weight[i] = make([]float64, len(m.x)), make([]float64, len(m.x)), make([]float64, len(m.x))
+			if m.fitter != nil {
+				f := *m.fitter // holds scratch
+				w.fitters[i] = &f
+			}
 		}
 	}
 	return w
@@ -393,18 +408,29 @@ func (r *run) newWorker() *worker {
 
 func (r *run) set(m, p int, v float64) { r.result.Maps[m].Data[r.pixels[p]] = float32(v) }
 
-// profile fits the mean profile of line i+1 of a pixel and leaves intensities and
-// the variances of one frame in the worker.
-func (r *run) profile(w *worker, i, p int) profile {
+// profile reads the mean profile of line i+1 of a pixel and leaves intensities and
+// the variances of one frame in the worker, and of a fit with background its result.
+func (r *run) profile(w *worker, i, p int) reading {
 	m := r.means[i]
 	if m == nil {
-		return profile{}
+		return reading{}
 	}
 	for k := range w.I[i] {
 		w.I[i][k] = float64(m.data[k][p])
 	}
 	m.noise.variances(w.I[i], w.s2[i])
-	return m.fit(w.I[i])
+	f := w.fitters[i]
+	if f == nil {
+		return m.reading(m.fit(w.I[i]), w.I[i], w.s2[i])
+	}
+	for k, s2 := range w.s2[i] {
+		w.weight[i][k] = 1
+		if s2 > 0 && m.noise.known {
+			w.weight[i][k] = 1 / s2
+		}
+	}
+	w.fitted[i] = f.fit(f.start(w.I[i]), w.I[i], w.weight[i])
+	return f.reading(w.fitted[i])
 }
 
 // spectrum: mean profiles, Doppler series, band-passed spectrum.
@@ -412,30 +438,28 @@ func (r *run) spectrum(w *worker, p int) {
 	first, second := r.profile(w, 0, p), r.profile(w, 1, p)
 	r.variance[p] = math.NaN()
 	if first.ok {
-		m := r.means[0]
 		r.set(mapPeak, p, first.peak)
-		if width, ok := m.lineWidth(first.w); ok {
-			r.set(mapWidth, p, width)
-		} else {
+		if first.narrow {
 			r.flag[p] |= FlagNarrow
+		} else {
+			r.set(mapWidth, p, first.width)
 		}
-		if m.noise.known {
-			r.variance[p] = m.shiftVariance(first, w.I[0], w.s2[0])
+		if r.means[0].noise.known {
+			r.variance[p] = first.shiftVar
 		}
 	} else {
 		r.flag[p] |= FlagNoLine
 	}
 	if second.ok && first.ok {
 		a, b := r.means[0], r.means[1]
-		ratio := second.peak * second.w * b.energyScale(second.w) / (first.peak * first.w * a.energyScale(first.w))
+		ratio := second.energy / first.energy
 		r.set(mapRatio, p, ratio)
 		ix, iy := r.at(p)
 		dist, _ := r.grid.Polar(ix, iy)
 		if n, slope, why := r.inverter.Density(ratio, dist); why == line.Found {
 			r.set(mapDensity, p, n)
 			if a.noise.known && b.noise.known {
-				v := a.energyVariance(first, w.I[0], w.s2[0])/float64(a.noise.frames) +
-					b.energyVariance(second, w.I[1], w.s2[1])/float64(b.noise.frames)
+				v := first.energyVar/float64(a.noise.frames) + second.energyVar/float64(b.noise.frames)
 				r.set(mapDensityErr, p, n*math.Abs(slope)*math.Sqrt(v))
 			}
 		} else {
@@ -475,7 +499,7 @@ func (r *run) series(w *worker, p int) (bad int) {
 		for i, x := range r.cube.Series(p, 0) {
 			v[i], broken[i] = float64(x), math.IsNaN(float64(x)) || math.IsInf(float64(x), 0)
 		}
-	case 3:
+	case 3: // never with a background
 		g := r.means[0].gaussian
 		i1, i2, i3 := r.cube.Series(p, 0), r.cube.Series(p, 1), r.cube.Series(p, 2)
 		for i := range v {
@@ -487,6 +511,11 @@ func (r *run) series(w *worker, p int) (bad int) {
 		for i := range v {
 			for k := range w.frame {
 				w.frame[k] = float64(r.cube.Series(p, k)[i])
+			}
+			if f := w.fitters[0]; f != nil {
+				fit := f.frame(&w.fitted[0], w.frame, w.weight[0], w.usable)
+				v[i], broken[i] = fit.shape[1], !fit.ok
+				continue
 			}
 			fit := g.fit(w.frame)
 			v[i], broken[i] = fit.v, !fit.ok

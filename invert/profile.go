@@ -127,6 +127,30 @@ func (g *gaussian) lineWidth(w float64) (float64, bool) {
 	return math.Sqrt(max(d, 0)), d > 0
 }
 
+// A reading is what the inversion needs of a line.
+type reading struct {
+	peak       float64 // through the filter, background removed [unit of the frames]
+	v          float64 // Doppler shift [km/s]
+	width      float64 // 1/e half-width without the filter's [km/s]
+	energy     float64 // in the unit of the frames, up to a factor common to both lines
+	ok, narrow bool    // narrow: narrower than the filter can tell
+	// Variances of the Doppler shift [(km/s)^2] and of the logarithm of the energy, for
+	// one frame.
+	shiftVar, energyVar float64
+}
+
+// reading turns a fit to intensities I of variances s2 into what the inversion needs.
+func (g *gaussian) reading(p profile, I, s2 []float64) reading {
+	if !p.ok {
+		return reading{}
+	}
+	width, ok := g.lineWidth(p.w)
+	return reading{
+		peak: p.peak, v: p.v, width: width, narrow: !ok, ok: true, energy: p.peak * p.w * g.energyScale(p.w),
+		shiftVar: g.shiftVariance(p, I, s2), energyVar: g.energyVariance(p, I, s2),
+	}
+}
+
 // A profile is a fitted Gaussian.
 type profile struct {
 	peak    float64 // [unit of the frames]
