@@ -195,8 +195,8 @@ func (f *field) find(ix, iy int) int {
 const chunk = 64
 
 // Invert turns an observation into maps, with emitter e for the density. It
-// needs the frames of the first line; without a mean profile of the second there
-// is no density and no field. Frames with a single "tuning" are taken for a
+// needs the frames of the first line; without a mean profile of the second, or a
+// user's own map of density or ratio, there is no density and no field. Frames with a single "tuning" are taken for a
 // Doppler cube [km/s]. Workers < 1 means every core; the result does not depend
 // on their number. Progress, if not nil, is called now and then, one call at a
 // time.
@@ -268,7 +268,13 @@ func Invert(ctx context.Context, o *obs.Observation, e line.Emitter, opt Options
 	r := &Result{Maps: maps, Series: obs.NewCube(np, 1, when.frames), Cadence: when.cadence}
 	run := &run{estimatorMaps: estimators, field: f, cube: cube, timing: when, means: means, result: r, variance: make([]float64, np), dft: newDFT(b)}
 
-	if means[1] != nil {
+	for i, m := range [2][]float32{o.Density, o.Ratio} {
+		if m != nil && len(m) != np {
+			return nil, fmt.Errorf("%s map holds %d pixels, the field has %d", [2]string{"density", "ratio"}[i], len(m), np)
+		}
+	}
+	run.own.density, run.own.ratio = o.Density, o.Ratio
+	if means[1] != nil || o.Ratio != nil {
 		if run.inverter, err = newInverter(e, opt.Temperature, f); err != nil {
 			return nil, err
 		}
@@ -349,6 +355,7 @@ type run struct {
 	*field
 	cube          *obs.Cube
 	timing        timing
+	own           struct{ density, ratio []float32 }
 	means         [2]*means
 	inverter      *line.Inverter // nil without a second line
 	result        *Result
@@ -447,27 +454,10 @@ func (r *run) spectrum(w *worker, p int) {
 		if r.means[0].noise.known {
 			r.variance[p] = first.shiftVar
 		}
-	} else {
+	} else if r.means[0] != nil { // a Doppler cube has no profile
 		r.flag[p] |= FlagNoLine
 	}
-	if second.ok && first.ok {
-		a, b := r.means[0], r.means[1]
-		ratio := second.energy / first.energy
-		r.set(mapRatio, p, ratio)
-		ix, iy := r.at(p)
-		dist, _ := r.grid.Polar(ix, iy)
-		if n, slope, why := r.inverter.Density(ratio, dist); why == line.Found {
-			r.set(mapDensity, p, n)
-			if a.noise.known && b.noise.known {
-				v := first.energyVar/float64(a.noise.frames) + second.energyVar/float64(b.noise.frames)
-				r.set(mapDensityErr, p, n*math.Abs(slope)*math.Sqrt(v))
-			}
-		} else {
-			r.flag[p] |= FlagDensity
-		}
-	} else {
-		r.flag[p] |= FlagNoRatio
-	}
+	r.density(p, first, second)
 
 	t := w.transform
 	bad := r.series(w, p)
@@ -484,6 +474,41 @@ func (r *run) spectrum(w *worker, p int) {
 		r.variance[p] = noise
 	}
 	r.norm[p] = norm(row)
+}
+
+// density: ratio and electron density of a pixel, a user's own maps before the profiles.
+func (r *run) density(p int, first, second reading) {
+	ratio := math.NaN()
+	switch {
+	case r.own.density != nil:
+		if n := float64(r.own.density[p]); n > 0 && !math.IsInf(n, 1) {
+			r.set(mapDensity, p, n)
+		} else {
+			r.flag[p] |= FlagDensity
+		}
+		return
+	case r.own.ratio != nil:
+		ratio = float64(r.own.ratio[p])
+	case first.ok && second.ok:
+		ratio = second.energy / first.energy
+	}
+	if math.IsNaN(ratio) {
+		r.flag[p] |= FlagNoRatio
+		return
+	}
+	r.set(mapRatio, p, ratio)
+	ix, iy := r.at(p)
+	dist, _ := r.grid.Polar(ix, iy)
+	n, slope, why := r.inverter.Density(ratio, dist)
+	if why != line.Found {
+		r.flag[p] |= FlagDensity
+		return
+	}
+	r.set(mapDensity, p, n)
+	if r.own.ratio == nil && r.means[0].noise.known && r.means[1].noise.known {
+		v := first.energyVar/float64(r.means[0].noise.frames) + second.energyVar/float64(r.means[1].noise.frames)
+		r.set(mapDensityErr, p, n*math.Abs(slope)*math.Sqrt(v))
+	}
 }
 
 // series puts the repaired Doppler series of a pixel into the transformer and

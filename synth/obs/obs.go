@@ -160,7 +160,10 @@ type Observation struct {
 	Exposures []Exposure
 	Mean      [2][][]float32 // mean over frames: line, tuning, field pixel
 	Frames    [2]*Cube       // nil where frames are not kept
-	Scenario  string         // SHA-256 of the scenario that made it; empty for real data
+	// A user's own maps over the field, in place of a second line; nil as a rule.
+	Density  []float32 // electron density [cm^-3]
+	Ratio    []float32 // of the lines' energies, second over first
+	Scenario string    // SHA-256 of the scenario that made it; empty for real data
 }
 
 // LineTunings returns the tunings of line (1 or 2) in order of wavelength.
