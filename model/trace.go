@@ -335,3 +335,21 @@ func normalTo(t, e, other r3.Vec) r3.Vec {
 	}
 	return r3.Vec{X: 1}
 }
+
+// Trace follows the field line through p (solar frame) both ways, to the surface or
+// out to the farthest distance of the corona, and returns its points in order along
+// the field.
+func (c *Corona) Trace(p r3.Vec) []r3.Vec {
+	how := c.tracing()
+	how.longest = 0.04
+	back, _ := how.follow(nil, c.field, p, -1)
+	fore, _ := how.follow(nil, c.field, p, 1)
+	line := make([]r3.Vec, 0, len(back)+len(fore)-1)
+	for i := len(back) - 1; i > 0; i-- {
+		line = append(line, back[i].p)
+	}
+	for _, k := range fore {
+		line = append(line, k.p)
+	}
+	return line
+}
