@@ -9,6 +9,7 @@
 //  3. truth.go turns the samples into the truth maps: values on the plane of the sky
 //     and means weighted by emission and by wave power.
 //  4. light.go adds up, frame by frame, the light of every sample through every filter
-//     tuning, Doppler shifted by its own velocity (package kernel).
-//  5. The camera (package camera) spreads and exposes it: the Observation.
+//     tuning, Doppler shifted by its own velocity at that tuning's time (package kernel).
+//  5. develop.go takes the light through the stages of the camera (package camera): the
+//     Observation. budget.go says beforehand what it will be worth.
 package synth

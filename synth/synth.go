@@ -141,29 +141,43 @@ func means(c *obs.Cube) [][]float32 {
 	for k := range out {
 		out[k] = make([]float32, c.Pixels)
 	}
-	sums := make([]float64, c.Tunings)
 	for p := range c.Pixels {
-		clear(sums)
-		n := 0.0
-		for t := range c.Frames {
-			whole := true
-			for k := range c.Tunings {
-				x := c.Series(p, k)[t]
-				whole = whole && x == x
+		whole := true
+		for k := range c.Tunings {
+			sum := 0.0
+			for _, x := range c.Series(p, k) {
+				sum += float64(x)
 			}
-			if !whole {
-				continue
-			}
-			n++
-			for k := range c.Tunings {
-				sums[k] += float64(c.Series(p, k)[t])
-			}
+			out[k][p] = float32(sum / float64(c.Frames))
+			whole = whole && sum == sum
 		}
-		for k, sum := range sums {
-			out[k][p] = float32(sum / n)
+		if !whole {
+			meanOfWhole(out, c, p)
 		}
 	}
 	return out
+}
+
+// meanOfWhole fills in the means of a pixel some of whose frames are not whole.
+func meanOfWhole(out [][]float32, c *obs.Cube, p int) {
+	sums, n := make([]float64, c.Tunings), 0.0
+	for t := range c.Frames {
+		whole := true
+		for k := range sums {
+			x := c.Series(p, k)[t]
+			whole = whole && x == x
+		}
+		if !whole {
+			continue
+		}
+		n++
+		for k := range sums {
+			sums[k] += float64(c.Series(p, k)[t])
+		}
+	}
+	for k, sum := range sums {
+		out[k][p] = float32(sum / n)
+	}
 }
 
 // withoutDark takes out of the field the pixels of which no frame of the first line is
