@@ -15,6 +15,7 @@
 //	lag.go        outward and inward waves, lags along the track, phase speed
 //	pair.go       an outward and an inward wave of one speed, fitted together
 //	field.go      density from the ratio of the lines, field strength
+//	diagnose.go   how one pixel came by its values
 //
 // All wave work is done on the complex Fourier coefficients inside the band; a
 // pixel's series is turned back into time only for the caller.

@@ -212,6 +212,19 @@ const chunk = 64
 // distance from the Sun has no outward side: SPEED is then that of the stronger
 // waves. Pair has one speed for both.
 func Invert(ctx context.Context, o *obs.Observation, e line.Emitter, opt Options, workers int, progress func(done, total int)) (*Result, error) {
+	r, err := newRun(o, e, opt)
+	if err != nil {
+		return nil, err
+	}
+	if err := r.steps(ctx, workers, progress, r.spectrum, r.normalise, r.direct, r.measure); err != nil {
+		return nil, err
+	}
+	r.finish()
+	return r.result, nil
+}
+
+// newRun checks an observation and a recipe and prepares their inversion.
+func newRun(o *obs.Observation, e line.Emitter, opt Options) (*run, error) {
 	if err := opt.check(); err != nil {
 		return nil, err
 	}
@@ -280,12 +293,18 @@ func Invert(ctx context.Context, o *obs.Observation, e line.Emitter, opt Options
 		}
 	}
 
+	return run, nil
+}
+
+// steps runs steps one after the other over the field, the first of which has to be
+// spectrum.
+func (r *run) steps(ctx context.Context, workers int, progress func(done, total int), steps ...func(w *worker, p int)) error {
+	np := len(r.pixels)
 	workers = parallel.Workers(workers)
 	scratch := make([]*worker, workers)
 	for i := range scratch {
-		scratch[i] = run.newWorker()
+		scratch[i] = r.newWorker()
 	}
-	steps := []func(w *worker, p int){run.spectrum, run.normalise, run.direct, run.measure}
 	var mu sync.Mutex
 	done, total := 0, len(steps)*np
 	for i, step := range steps {
@@ -303,17 +322,21 @@ func Invert(ctx context.Context, o *obs.Observation, e line.Emitter, opt Options
 			return nil
 		})
 		if err != nil {
-			return nil, err
+			return err
 		}
 		if i == 0 {
-			f.removeTrend()
+			r.removeTrend()
 		}
 	}
-	flags := r.Maps[mapFlag].Ints
-	for p, i := range f.pixels {
-		flags[i] = f.flag[p]
+	return nil
+}
+
+// finish copies the flags into their map.
+func (r *run) finish() {
+	flags := r.result.Maps[mapFlag].Ints
+	for p, i := range r.pixels {
+		flags[i] = r.flag[p]
 	}
-	return r, nil
 }
 
 // means is one line's mean profiles and their noise.

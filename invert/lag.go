@@ -222,20 +222,7 @@ func (l *lagger) speed(rows []float32, n, centre int) speed {
 	if r.points < leastLags {
 		return r
 	}
-	var w, ws, wt float64
-	for _, q := range l.fit {
-		w += q.weight
-		ws += q.weight * q.s
-		wt += q.weight * q.tau
-	}
-	ws /= w
-	wt /= w
-	var sxx, sxy float64
-	for _, q := range l.fit {
-		sxx += q.weight * (q.s - ws) * (q.s - ws)
-		sxy += q.weight * (q.s - ws) * (q.tau - wt)
-	}
-	slope := sxy / sxx
+	slope, _, ws, sxx := straight(l.fit)
 	for j, g := range l.pull[0] {
 		l.pull[0][j] = (l.pull[1][j] - ws*g) / sxx
 	}
@@ -247,6 +234,25 @@ func (l *lagger) speed(rows []float32, n, centre int) speed {
 	r.err = r.v * r.v * math.Sqrt(variance)
 	r.ok = r.err < math.Abs(r.v)
 	return r
+}
+
+// straight fits lag = slope s + intercept by weighted least squares; ws is the weighted
+// mean of s, sxx the weighted sum of squares about it.
+func straight(fit []lag) (slope, intercept, ws, sxx float64) {
+	var w, wt, sxy float64
+	for _, q := range fit {
+		w += q.weight
+		ws += q.weight * q.s
+		wt += q.weight * q.tau
+	}
+	ws /= w
+	wt /= w
+	for _, q := range fit {
+		sxx += q.weight * (q.s - ws) * (q.s - ws)
+		sxy += q.weight * (q.s - ws) * (q.tau - wt)
+	}
+	slope = sxy / sxx
+	return slope, wt - slope*ws, ws, sxx
 }
 
 // influence adds what each frequency did to a lag, found at step m of the search, to
