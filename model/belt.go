@@ -98,7 +98,7 @@ func (f beltField) B(p r3.Vec) r3.Vec {
 	if f.warp == 0 {
 		return f.out(f.Meridional.B(q))
 	}
-	r := r3.Norm(q)
+	r := norm(q)
 	rho := math.Hypot(q.X, q.Y)
 	st, ct := rho/r, q.Z/r
 	s := f.shift(math.Atan2(q.Y, q.X))

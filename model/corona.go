@@ -197,6 +197,20 @@ func New(ctx context.Context, c scenarios.Corona, s Settings) (*Corona, error) {
 	return k, err
 }
 
+// Files returns the paths of the files that a corona is read from.
+func Files(c scenarios.Corona) []string {
+	if c.Grid != nil {
+		return []string{c.Grid.File}
+	}
+	var paths []string
+	for _, f := range c.Fields {
+		if f.SourceSurface != nil && f.SourceSurface.Table != "" {
+			paths = append(paths, f.SourceSurface.Table)
+		}
+	}
+	return paths
+}
+
 // describe reads fields and density laws.
 func (k *Corona) describe(c scenarios.Corona) error {
 	if len(c.Fields) == 0 {
@@ -389,7 +403,7 @@ func (c *Corona) mixOf(l *spatialLine) mixture {
 	for i := range c.active {
 		a := &c.active[i]
 		for e := range l.ends {
-			d := 2 * math.Asin(min(1, r3.Norm(r3.Sub(l.foot[e], a.centre))/2)) / a.radius
+			d := 2 * math.Asin(min(1, norm(r3.Sub(l.foot[e], a.centre))/2)) / a.radius
 			m.active[i] += math.Exp(-d*d) / float64(l.ends)
 		}
 	}
@@ -409,7 +423,7 @@ func (c *Corona) plasma(p r3.Vec, m *mixture) (n, t, active float64) {
 		n, t = c.grid.plasma(p)
 		return n, t, 0
 	}
-	r := r3.Norm(p)
+	r := norm(p)
 	lat := c.belt.latitude(p)
 	n = c.background(r, lat, m.share)
 	t = c.warmth(r, m.share)
@@ -466,7 +480,7 @@ func (c *Corona) Mu() float64 { return c.mu }
 
 // At returns the corona at p (solar frame, solar radii, outside the Sun).
 func (c *Corona) At(p r3.Vec) Point {
-	q := Point{R: r3.Norm(p)}
+	q := Point{R: norm(p)}
 	if c.flat != nil {
 		c.flatAt(p, &q)
 	} else {
@@ -485,7 +499,7 @@ func (c *Corona) At(p r3.Vec) Point {
 		}
 	}
 	q.Parts = c.parts(q.N)
-	b := r3.Norm(q.B)
+	b := norm(q.B)
 	q.Speed = KinkSpeed(b, q.Kink, c.mu)
 	// Electrons and ions: n_i/n_e = (1+A)/(1+2A) = (mu+2)/6.
 	q.Beta = q.N * (1 + (c.mu+2)/6) * units.Boltzmann * q.T * 8 * math.Pi / (b * b)
@@ -548,7 +562,7 @@ func (c *Corona) spaceAt(p r3.Vec, q *Point) {
 	m := c.mixOf(&l)
 	q.Mean, q.T, q.Active = c.plasma(p, &m)
 	q.Streamer = m.share
-	if b := r3.Norm(q.B); b > 0 {
+	if b := norm(q.B); b > 0 {
 		q.e1 = normalTo(r3.Scale(1/b, q.B), l.e1, azimuthal(p))
 	} else {
 		q.e1 = azimuthal(p)
@@ -568,7 +582,7 @@ func (c *Corona) Expansion(q *Point) float64 {
 	if q.Line.Ends == 0 {
 		return 0
 	}
-	return r3.Norm(c.field.B(q.Line.Foot[0].Vector())) / (r3.Norm(q.B) * q.R * q.R)
+	return norm(c.field.B(q.Line.Foot[0].Vector())) / (norm(q.B) * q.R * q.R)
 }
 
 // LongestDelay returns the longest travel time [s] of a train that a sample may ask

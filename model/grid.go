@@ -175,7 +175,7 @@ func cell(nodes []float64, x float64) (int, float64) {
 
 // at interpolates.
 func (g *Grid) at(p r3.Vec) (v [gridValues]float64, r, fall float64) {
-	r = r3.Norm(p)
+	r = norm(p)
 	i, u := cell(g.r, r)
 	fall = 1
 	if u > 1 {

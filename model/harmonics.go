@@ -159,8 +159,8 @@ const maxDegree = 90
 // 76, 279); those of order m > 0 are carried divided by sin(theta), so that nothing is
 // divided by it and the poles are ordinary points.
 func (f *SourceSurface) B(p r3.Vec) r3.Vec {
-	r := r3.Norm(p)
-	rho := math.Hypot(p.X, p.Y)
+	r := norm(p)
+	rho := math.Sqrt(p.X*p.X + p.Y*p.Y)
 	st, ct := rho/r, p.Z/r
 	sp, cp := 0.0, 1.0
 	if rho > 0 {

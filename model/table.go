@@ -66,7 +66,7 @@ func (c *Corona) traceSpace(ctx context.Context, s Settings) (*spaceTable, error
 				n := (i*t.nt+j)*t.np + k
 				t.at[n] = -1
 				p := t.position(i, j, k)
-				if s.Seen == nil || s.Seen(p, 3*spaceTheta*r3.Norm(p)) {
+				if s.Seen == nil || s.Seen(p, 3*spaceTheta*norm(p)) {
 					t.at[n] = int32(len(wanted))
 					wanted = append(wanted, [3]int16{int16(i), int16(j), int16(k)})
 				}
@@ -136,7 +136,7 @@ func (n *spaceNode) akin(o *spaceNode) bool {
 // differences along each axis taken from the nodes around it. It returns false where
 // the cell or its neighbourhood does not hold one family of lines.
 func (t *spaceTable) lookup(p r3.Vec) (l spatialLine, ok bool) {
-	r := r3.Norm(p)
+	r := norm(p)
 	u := math.Log(r) / spaceLnR
 	v := math.Acos(max(-1, min(1, p.Z/r))) / math.Pi * float64(t.nt-1)
 	w := math.Atan2(p.Y, p.X) / (2 * math.Pi) * float64(t.np)

@@ -58,7 +58,7 @@ const maxSteps = 500
 func (t *tracer) follow(path []knot, f Field, p r3.Vec, sign float64) ([]knot, ending) {
 	slope := func(p r3.Vec) (r3.Vec, float64) {
 		b := f.B(p)
-		n := r3.Norm(b)
+		n := norm(b)
 		if !(n > 0) {
 			return r3.Vec{}, 0
 		}
@@ -69,7 +69,7 @@ func (t *tracer) follow(path []knot, f Field, p r3.Vec, sign float64) ([]knot, e
 	if b == 0 {
 		return path, lost
 	}
-	if r3.Norm(p) <= 1 && r3.Dot(p, dir) < 0 {
+	if norm(p) <= 1 && r3.Dot(p, dir) < 0 {
 		return path, landed
 	}
 	var k [7]r3.Vec
@@ -92,9 +92,9 @@ func (t *tracer) follow(path []knot, f Field, p r3.Vec, sign float64) ([]knot, e
 		for i, w := range dpE {
 			e = r3.Add(e, r3.Scale(h*w, k[i]))
 		}
-		return q, b, r3.Norm(e)
+		return q, b, norm(e)
 	}
-	r := r3.Norm(p)
+	r := norm(p)
 	h := t.longest * r / 2
 	for range maxSteps {
 		h = min(h, t.longest*r)
@@ -108,7 +108,7 @@ func (t *tracer) follow(path []knot, f Field, p r3.Vec, sign float64) ([]knot, e
 			return path, lost
 		}
 		grow := min(4, max(0.3, 0.9*math.Pow(t.tolerance/max(err, 1e-300), 0.2)))
-		rq := r3.Norm(q)
+		rq := norm(q)
 		down := rq < 1
 		if down { // shorten the step to end on the surface: by the cubic first, then by Newton
 			end := k[6]
@@ -117,7 +117,7 @@ func (t *tracer) follow(path []knot, f Field, p r3.Vec, sign float64) ([]knot, e
 				y := 1 - x
 				c := r3.Add(r3.Scale(y*y*(1+2*x), p), r3.Scale(x*x*(3-2*x), q))
 				c = r3.Add(c, r3.Add(r3.Scale(h*x*y*y, dir), r3.Scale(-h*x*x*y, end)))
-				if r3.Norm(c) > 1 {
+				if norm(c) > 1 {
 					lo = x
 				} else {
 					hi = x
@@ -127,7 +127,7 @@ func (t *tracer) follow(path []knot, f Field, p r3.Vec, sign float64) ([]knot, e
 			h *= x
 			for range 6 {
 				q, bq, _ = try(h)
-				d := r3.Norm(q) - 1
+				d := norm(q) - 1
 				fall := r3.Dot(k[6], q)
 				if math.Abs(d) < 1e-9 || fall > -1e-3 {
 					break
@@ -177,7 +177,7 @@ func (c *Corona) line(t tracer, p r3.Vec, scratch *[2][]knot) spatialLine {
 	var peak [2]float64
 	for i, path := range scratch {
 		for _, k := range path {
-			peak[i] = max(peak[i], r3.Norm(k.p))
+			peak[i] = max(peak[i], norm(k.p))
 		}
 	}
 	l.apex = max(peak[0], peak[1])
@@ -234,7 +234,7 @@ func (c *Corona) time(path []knot, m *mixture, sense float64) {
 	slow := func(p r3.Vec, b float64) float64 {
 		v := KinkSpeed(max(b, weakest), c.kinkOf(c.density(p, m)), c.mu)
 		if !m.closed && c.outflow != nil {
-			v = max(v+sense*c.outflow(r3.Norm(p)), weakest)
+			v = max(v+sense*c.outflow(norm(p)), weakest)
 		}
 		return units.SolarRadius / v
 	}
@@ -252,7 +252,7 @@ func (c *Corona) time(path []knot, m *mixture, sense float64) {
 // point above that radius, and -Inf where no train comes from.
 func (c *Corona) fromTop(down, away []knot, m *mixture) float64 {
 	top := c.inwardFrom
-	if r := r3.Norm(down[0].p); r > top {
+	if r := norm(down[0].p); r > top {
 		c.time(down, m, -1)
 		if t, ok := crossing(down, top); ok {
 			return -t
@@ -269,15 +269,15 @@ func (c *Corona) fromTop(down, away []knot, m *mixture) float64 {
 // crossing returns the time along a path to where it first meets the radius top.
 func crossing(path []knot, top float64) (float64, bool) {
 	sum := 0.0
-	a := r3.Norm(path[0].p)
+	a := norm(path[0].p)
 	for i := 1; i < len(path); i++ {
 		k := &path[i]
-		b := r3.Norm(k.p)
+		b := norm(k.p)
 		if (a-top)*(b-top) <= 0 && a != b {
 			// The radius along the step is the parabola through its ends and its middle;
 			// time runs along it like length, the step being short (quadratic terms of time
 			// are below 1e-3 of a step's).
-			m := r3.Norm(k.mid)
+			m := norm(k.mid)
 			x := (top - a) / (b - a)
 			for range 5 {
 				r := a*(1-x)*(1-2*x) + 4*m*x*(1-x) + b*x*(2*x-1)
@@ -329,7 +329,7 @@ func reflect(v, x r3.Vec) r3.Vec {
 func normalTo(t, e, other r3.Vec) r3.Vec {
 	for _, x := range [4]r3.Vec{e, other, {X: 1}, {Y: 1}} {
 		x = r3.Sub(x, r3.Scale(r3.Dot(x, t), t))
-		if n := r3.Norm(x); n > 1e-6 {
+		if n := norm(x); n > 1e-6 {
 			return r3.Scale(1/n, x)
 		}
 	}

@@ -7,6 +7,7 @@ import (
 	"crypto/sha256"
 	"encoding/hex"
 	"fmt"
+	"io"
 	"os"
 
 	"offplane/compare"
@@ -179,8 +180,30 @@ func Light(c *scenarios.Scenario) (synth.Light, []File, error) {
 		return synth.Light{}, nil, fmt.Errorf("corona.temperature: %w", err)
 	}
 	l := synth.Light{Emitter: t, Rest: m.RestWavelengths(), Disc: m.DiscCentre(), Mass: m.Mass()}
+	var files []File
 	if file != nil {
-		return l, []File{*file}, nil
+		files = append(files, *file)
 	}
-	return l, nil, nil
+	for _, path := range model.Files(c.Corona) {
+		sum, err := digest(path)
+		if err != nil {
+			return synth.Light{}, nil, err
+		}
+		files = append(files, File{Name: path, SHA256: sum})
+	}
+	return l, files, nil
+}
+
+// digest returns the SHA-256 of a file.
+func digest(path string) (string, error) {
+	f, err := os.Open(path)
+	if err != nil {
+		return "", err
+	}
+	defer f.Close()
+	h := sha256.New()
+	if _, err := io.Copy(h, f); err != nil {
+		return "", err
+	}
+	return hex.EncodeToString(h.Sum(nil)), nil
 }
