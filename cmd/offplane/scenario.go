@@ -3,12 +3,17 @@ package main
 import (
 	"context"
 	"fmt"
+	"io"
+	"path/filepath"
 	"text/tabwriter"
 	"time"
 
 	"github.com/spf13/cobra"
 
+	"offplane/compare/report"
+	"offplane/compare/trial"
 	"offplane/scenarios"
+	"offplane/synth"
 )
 
 func (p *program) scenarioCommand() *cobra.Command {
@@ -56,18 +61,23 @@ func (p *program) scenarioList() *cobra.Command {
 
 func (p *program) scenarioShow() *cobra.Command {
 	var resolved, json bool
+	var figure string
 	var c choice
 	cmd := &cobra.Command{
 		Use:   "show SCENARIO",
 		Short: "Print a scenario as it was written, or with every default filled in",
 		Example: `  offplane scenario show quiet-belt > mine.yaml
-  offplane scenario show quick --resolved --set camera.cadence=15s`,
+  offplane scenario show quick --resolved --set camera.cadence=15s
+  offplane scenario show two-loops --figure corona.png`,
 		Args: argument("the name of a scenario or a file"),
 	}
-	cmd.RunE = do(func(_ context.Context, args []string) error {
+	cmd.RunE = do(func(ctx context.Context, args []string) error {
 		l, err := c.load(args[0])
 		if err != nil {
 			return err
+		}
+		if figure != "" {
+			return p.showFigure(ctx, l, figure)
 		}
 		if json {
 			return writeJSON(p.stdout, struct {
@@ -86,9 +96,36 @@ func (p *program) scenarioShow() *cobra.Command {
 		return err
 	})
 	c.flags(cmd)
+	cmd.Flags().StringVar(&figure, "figure", "", "draw the corona into this PNG `file` instead: density, field lines, border of the closed region")
 	cmd.Flags().BoolVar(&resolved, "resolved", false, "with every default filled in; so are files and changed scenarios in any case")
 	cmd.Flags().BoolVar(&json, "json", false, "one JSON document with the resolved scenario")
 	return cmd
+}
+
+// showFigure draws the truth at a glance and prints how much of its light comes from
+// where the kink speed of low beta does not hold.
+func (p *program) showFigure(ctx context.Context, l *scenarios.Loaded, path string) error {
+	light, _, err := trial.Light(&l.Scenario)
+	if err != nil {
+		return misuse(err)
+	}
+	scene, err := synth.NewScene(ctx, &l.Scenario, light, 0)
+	if err != nil {
+		return misuse(err)
+	}
+	v, err := scene.Survey(ctx, 0)
+	if err != nil {
+		return err
+	}
+	at := folder{dir: filepath.Dir(path)}
+	if err := at.write(filepath.Base(path), func(w io.Writer) error {
+		_, err := w.Write(report.CoronaFigure(v, l.Name))
+		return err
+	}); err != nil {
+		return err
+	}
+	_, err = fmt.Fprintf(p.stdout, "%.2g %% of the emission comes from where beta > 1; the kink speed of low beta fails there\n", 100*v.HighBeta)
+	return err
 }
 
 func (p *program) scenarioCheck() *cobra.Command {
@@ -99,20 +136,21 @@ func (p *program) scenarioCheck() *cobra.Command {
 		Use:   "check SCENARIO",
 		Short: "Check a scenario and say what its run would take",
 		Long: `check reads a scenario and prints every mistake with its place, or what a run of it
-would take: pixels, frames, and estimates of time, memory and disk. It also estimates
-what its data would be worth: at a few heights, looking through the streamer, the light
-of the first line in one exposure and the rms error of one Doppler shift. No corona is
-built, so it takes no time; a pixel that looks through a hole gets less light.`,
+would take: pixels, frames, and estimates of time, memory and disk. It also says what the
+data would be worth: at a few heights, at the limb of the field of view that is nearest
+to the equator, the electrons of each line in one tuning and exposure, and the rms error
+of the Doppler shift, of one frame and in the inversion's band. For that the corona is
+built, without waves: a second or two, longer for a corona without symmetry.`,
 		Example: `  offplane scenario check quiet-belt
   offplane scenario check mine.yaml --set camera.exposure=5s`,
 		Args: argument("the name of a scenario or a file"),
 	}
-	cmd.RunE = do(func(_ context.Context, args []string) error {
+	cmd.RunE = do(func(ctx context.Context, args []string) error {
 		l, err := c.load(args[0])
 		if err != nil {
 			return err
 		}
-		q, err := predict(l, workers)
+		q, err := predict(ctx, l, workers)
 		if err != nil {
 			return misuse(err)
 		}
@@ -139,19 +177,22 @@ func (p *program) printPrediction(q *prediction, s *scenarios.Scenario) error {
 	if len(q.Heights) == 0 {
 		return nil
 	}
-	fmt.Fprintf(p.stdout, "\nfirst line through the streamer, one tuning and exposure:\n")
+	fmt.Fprintf(p.stdout, "\nat position angle %.0f deg, one tuning and exposure:\n", q.Heights[0].PA)
 	t := tabwriter.NewWriter(p.stdout, 0, 0, 2, ' ', tabwriter.AlignRight)
-	fmt.Fprint(t, "r/Rsun\tpeak/ppm\t")
+	fmt.Fprint(t, "line/nm\tr/Rsun\tpeak/ppm\t")
 	for _, x := range s.Camera.Tunings {
-		fmt.Fprintf(t, "photons at %s\t", x)
+		fmt.Fprintf(t, "e- at %s\t", x)
 	}
-	fmt.Fprintln(t, "Doppler noise/(km/s)\t")
-	for _, d := range q.Heights {
-		fmt.Fprintf(t, "%.2f\t%.3g\t", d.Height, d.Peak)
-		for _, n := range d.Photons {
-			fmt.Fprintf(t, "%.3g\t", n)
+	fmt.Fprintln(t, "e- of continuum\tDoppler noise/(km/s)\tin band/(km/s)\t")
+	for i, name := range []string{"1074.7", "1079.8"} {
+		for _, d := range q.Heights {
+			l := &d.Lines[i]
+			fmt.Fprintf(t, "%s\t%.2f\t%.3g\t", name, d.Height, l.Peak)
+			for _, n := range l.Electrons {
+				fmt.Fprintf(t, "%.3g\t", n)
+			}
+			fmt.Fprintf(t, "%.3g\t%.3g\t%.3g\t\n", l.Continuum, l.Noise, l.InBand)
 		}
-		fmt.Fprintf(t, "%.3g\t\n", d.Noise)
 	}
 	return t.Flush()
 }
