@@ -28,18 +28,58 @@ func coronaText(s *scenarios.Scenario) string {
 			fields = append(fields, fmt.Sprintf("a dipole of %s with octupole Q = %g and a current sheet of a1 = %s", d.Strength, d.Octupole, d.Sheet))
 		case f.Radial != nil:
 			fields = append(fields, fmt.Sprintf("a radial field of %s at the surface that falls as r^-%g", f.Radial.Strength, f.Radial.Exponent))
+		case f.SourceSurface != nil:
+			table := "the embedded table"
+			if f.SourceSurface.Table != "" {
+				table = f.SourceSurface.Table
+			}
+			fields = append(fields, fmt.Sprintf("a potential field of harmonics (%s, times %g) with a source surface at %s", table, f.SourceSurface.Factor, f.SourceSurface.Height))
+		case f.BuriedDipole != nil:
+			b := f.BuriedDipole
+			fields = append(fields, fmt.Sprintf("a dipole buried %s deep at latitude %s and longitude %s with %s above it", b.Depth, b.Latitude, b.Longitude, b.Strength))
+		case f.Uniform != nil:
+			fields = append(fields, fmt.Sprintf("a uniform field of %s", f.Uniform.Strength))
 		}
 	}
-	t := s.Corona.Temperature
-	d := s.Corona.Density
+	c := &s.Corona
+	seen := fmt.Sprintf(" The observer is at latitude %s, %s away.", s.Observer.Latitude, s.Observer.Distance)
+	if c.Grid != nil {
+		return fmt.Sprintf("Field, density and temperature are those of the file %s.", c.Grid.File) + extras(c) + seen
+	}
+	t := c.Temperature
+	d := c.Density
 	text := fmt.Sprintf("The field is %s. ", strings.Join(fields, " plus "))
+	if c.Belt != nil {
+		text += fmt.Sprintf("The belt is tilted by %s and warped by %s with %d waves around the Sun. ", c.Belt.Tilt, c.Belt.Warp, c.Belt.Waves)
+	}
 	if d.Hole == nil {
 		text += fmt.Sprintf("The density is %s at %s everywhere.", lawText(&d.Streamer), t.Streamer)
 	} else {
 		text += fmt.Sprintf("The density is %s at %s in the streamer and %s at %s in the hole, blended over %s of footpoint latitude.",
 			lawText(&d.Streamer), t.Streamer, lawText(d.Hole), t.Hole, d.Boundary)
 	}
-	return text + fmt.Sprintf(" The observer is at latitude %s, %s away.", s.Observer.Latitude, s.Observer.Distance)
+	for _, a := range d.Active {
+		text += fmt.Sprintf(" An active region within %s of latitude %s and longitude %s adds a density %s at %s.", a.Radius, a.Latitude, a.Longitude, lawText(&a.Law), a.Temperature)
+	}
+	return text + extras(c) + seen
+}
+
+// extras tells of what is off in most scenarios.
+func extras(c *scenarios.Corona) string {
+	text := ""
+	if v := c.Strands; v != nil {
+		text += fmt.Sprintf(" Strands of %s scatter ln n by %g (%s).", v.Size, v.Spread, v.Waves)
+	}
+	if v := c.Mix; v != nil {
+		text += fmt.Sprintf(" Unresolved plasma %g times as dense fills %g of the volume (%s).", v.Contrast, v.Filling, v.Tubes)
+	}
+	if v := c.Outflow; v != nil {
+		text += fmt.Sprintf(" On open lines it flows out at up to %s.", v.Terminal)
+	}
+	if v := c.Rotation; v != nil {
+		text += fmt.Sprintf(" It rotates rigidly once in %s.", v.Period)
+	}
+	return text
 }
 
 func lawText(l *scenarios.Law) string {
@@ -96,11 +136,32 @@ func observationText(s *scenarios.Scenario) string {
 	} else {
 		text += fmt.Sprintf(" and from position angle %s to %s,", i.From, i.To)
 	}
-	text += fmt.Sprintf(" in pixels of %s; %d tunings of a filter of %s; a point spread of %s.", i.Pixel, len(c.Tunings), c.Filter, c.PointSpread)
-	if !c.Noise {
-		return text + " There is no noise."
+	text += fmt.Sprintf(" in pixels of %s; %d tunings", i.Pixel, len(c.Tunings))
+	if c.Sequential {
+		text += " one after the other"
 	}
-	return text + fmt.Sprintf(" Noise of an aperture of %s with a throughput of %g, %s a tuning in %d co-adds of %g electrons read noise, over a background of %s.",
+	if c.Stages > 0 {
+		text += fmt.Sprintf(" of a birefringent filter of %d stages and %s", c.Stages, c.Filter)
+	} else {
+		text += fmt.Sprintf(" of a filter of %s", c.Filter)
+	}
+	text += fmt.Sprintf("; a point spread of %s", c.PointSpread)
+	for _, on := range []struct {
+		on   bool
+		text string
+	}{
+		{c.Diffraction, "diffraction"}, {c.Seeing > 0, "seeing of " + c.Seeing.String()}, {c.Scatter != nil, "scattered light"},
+		{c.Pointing != nil, "pointing errors"}, {c.Occulter != nil, "an occulter"}, {c.KCorona > 0, "the K corona"},
+		{c.FlatField > 0, "a rest of the flat field"}, {c.Digit > 0, "digitisation"}, {c.Lost > 0 || len(c.Gaps) > 0, "lost frames"},
+	} {
+		if on.on {
+			text += "; " + on.text
+		}
+	}
+	if !c.Noise {
+		return text + ". There is no noise."
+	}
+	return text + fmt.Sprintf(". Noise of an aperture of %s with a throughput of %g, %s a tuning in %d co-adds of %g electrons read noise, over a background of %s.",
 		c.Aperture, c.Throughput, c.Exposure, c.Coadds, c.ReadNoise, c.Background)
 }
 
