@@ -126,12 +126,12 @@ func Diagnose(ctx context.Context, o *obs.Observation, e line.Emitter, opt Optio
 
 func (d *Diagnosis) island(r *run, w *worker, p int) {
 	s := w.islands
-	island := s.island(p)
+	island := s.adapt(p)
 	if island.count >= leastIsland && !island.round() {
 		d.Angle = island.angle
 	}
 	d.Major, d.Minor, d.WindowFilled = island.major, island.minor, island.full()
-	row, nf, n := r.band.row, len(r.band.freq), r.opt.Box
+	row, nf, n := r.band.row, len(r.band.freq), s.n
 	a := r.spec[p*row : (p+1)*row]
 	for k, state := range s.state {
 		x, y := d.X+k%n-s.half, d.Y+k/n-s.half

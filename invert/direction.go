@@ -17,25 +17,57 @@ const (
 // An islander holds one worker's scratch for coherence islands.
 type islander struct {
 	*field
-	half    int
-	inside  []bool // window
-	state   []uint8
+	*window
+	windows map[int]*window
 	stack   []int32
 	rotated []float32
 }
 
-// The window is the disc inscribed in the box: the corners of a square would pull
-// every axis toward its diagonals.
+// A window is the disc inscribed in a box: the corners of a square would pull every
+// axis toward its diagonals.
+type window struct {
+	n, half int
+	inside  []bool
+	state   []uint8
+}
+
 func newIslander(f *field) *islander {
-	n := f.opt.Box
-	s := &islander{field: f, half: n / 2, inside: make([]bool, n*n), state: make([]uint8, n*n), rotated: make([]float32, f.band.row)}
-	for j := range n {
-		for i := range n {
-			x, y := float64(i-s.half), float64(j-s.half)
-			s.inside[j*n+i] = x*x+y*y <= (float64(s.half)+0.5)*(float64(s.half)+0.5)
-		}
-	}
+	s := &islander{field: f, windows: map[int]*window{}, rotated: make([]float32, f.band.row)}
+	s.use(f.opt.Box)
 	return s
+}
+
+// use makes n the diameter of the window.
+func (s *islander) use(n int) {
+	w := s.windows[n]
+	if w == nil {
+		w = &window{n: n, half: n / 2, inside: make([]bool, n*n), state: make([]uint8, n*n)}
+		for j := range n {
+			for i := range n {
+				x, y := float64(i-w.half), float64(j-w.half)
+				w.inside[j*n+i] = x*x+y*y <= (float64(w.half)+0.5)*(float64(w.half)+0.5)
+			}
+		}
+		s.windows[n] = w
+	}
+	s.window = w
+}
+
+// largest is the greatest diameter of a window that grows, over the box asked for.
+const largest = 3
+
+// adapt finds the island of field pixel p in the box asked for and, if allowed, in larger
+// ones as long as it fills its window.
+func (s *islander) adapt(p int) island {
+	n := s.opt.Box
+	for {
+		s.use(n)
+		r := s.island(p)
+		if !s.opt.Adaptive || !r.full() || n >= largest*s.opt.Box {
+			return r
+		}
+		n = min(n*3/2|1, largest*s.opt.Box)
+	}
 }
 
 // An island is the set of pixels whose coherence with a pixel exceeds the
@@ -43,7 +75,7 @@ func newIslander(f *field) *islander {
 // window around it.
 type island struct {
 	count        int     // pixels, the pixel itself included
-	window       int     // pixels of the field in the window; counted only if the island may fill it
+	available    int     // pixels of the field in the window; counted only if the island may fill it
 	coherence    float64 // mean over the adjacent pixels, up to eight; NaN without any
 	angle        float64 // of the axis, from +x to +y of the image [rad], -pi/2..pi/2
 	err          float64 // [rad]
@@ -57,7 +89,7 @@ type island struct {
 // error is that of a straight line fitted to independent pixels.
 func (s *islander) island(p int) island {
 	f := s.field
-	n, row, nf := s.opt.Box, f.band.row, len(f.band.freq)
+	n, row, nf := s.n, f.band.row, len(f.band.freq)
 	x0, y0 := f.at(p)
 	a := f.spec[p*row : (p+1)*row]
 	copy(s.rotated, a[nf:2*nf])
@@ -118,7 +150,7 @@ func (s *islander) island(p int) island {
 		for j := range n {
 			for i := range n {
 				if q := f.find(x0+i-s.half, y0+j-s.half); s.inside[j*n+i] && q >= 0 && f.norm[q] > 0 {
-					r.window++
+					r.available++
 				}
 			}
 		}
@@ -128,7 +160,7 @@ func (s *islander) island(p int) island {
 
 // full says whether the island fills its window.
 func (r island) full() bool {
-	return r.window > 0 && float64(r.count) > fullIsland*float64(r.window)
+	return r.available > 0 && float64(r.count) > fullIsland*float64(r.available)
 }
 
 // round says whether the island has no axis.

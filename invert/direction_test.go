@@ -149,3 +149,27 @@ func TestTrackFollowsAnArc(t *testing.T) {
 		}
 	}
 }
+
+// Waves that are wide against the box fill it; a box that grows finds their direction.
+func TestAdaptiveBox(t *testing.T) {
+	q := defaultPatch()
+	q.cell, q.frames, q.angle, q.noise = 22, 180, q.pa+25, 0.1
+	opt := Default()
+	opt.Box = 9
+	fills, wrong, pixels := map[bool]float64{}, map[bool]float64{}, map[bool]float64{}
+	for _, adaptive := range []bool{false, true} {
+		opt.Adaptive = adaptive
+		r := q.invert(t, opt)
+		checkFlags(t, r)
+		fills[adaptive] = flagged(r.Maps.Get("FLAG"), FlagIslandFills)
+		_, wrong[adaptive] = angleErrors(r.Maps.Get("ANGLE"), q.angle)
+		pixels[adaptive] = median(values(r.Maps.Get("ISLAND")))
+		if e := median(values(r.Maps.Get("ELONGATION"))); !(e >= 1) {
+			t.Errorf("elongation %g", e)
+		}
+	}
+	t.Logf("fills %v, angle error %v deg, island %v pixels", fills, wrong, pixels)
+	if fills[false] < 0.3 || fills[true] > 0.1 || wrong[true] > 0.5*wrong[false] || pixels[true] < 1.5*pixels[false] {
+		t.Errorf("fills %v, angle error %v deg, island %v pixels", fills, wrong, pixels)
+	}
+}

@@ -34,6 +34,7 @@ type Options struct {
 	Background   bool    // fit profiles by least squares with a constant background, which needs four tunings. The default is false.
 	Taper        float64 // share of the series under the cosine bell at each end, 0 to 0.5. The default is 0.1.
 	Box          int     // diameter of the round window of the coherence island [pixels], odd, 5 or more. The default is 21.
+	Adaptive     bool    // an island that fills its window gets larger ones, up to 3 boxes. The default is false.
 	Coherence    float64 // threshold of the island, between 0 and 1. The default is 0.5.
 	Track        int     // most points of a track, one pixel apart, odd, 5 or more. The default is 31.
 	Separation   bool    // the estimator lag splits outward and inward waves first. The default is true.
@@ -96,7 +97,7 @@ type Result struct {
 	// ANGLE_ERR [deg], COHERENCE, SPEED, SPEED_ERR, SPEED_IN [km/s], TRACK, B, B_ERR
 	// [G] and FLAG, whose bits FlagCodes explains. NE_ERR and with it B_ERR need
 	// the log to know the electrons per radiance of both lines. After them come the
-	// maps of further estimators, and INWARD of the pair fit.
+	// maps ISLAND and ELONGATION, those of further estimators, and INWARD of the pair fit.
 	Maps obs.Maps
 	// Series holds the band-passed Doppler series [km/s] that the tracker used, one
 	// per pixel of the field, one "tuning". NaN where the series was bad.
@@ -125,6 +126,8 @@ const (
 	mapField
 	mapFieldErr
 	mapFlag
+	mapIsland
+	mapElongation
 )
 
 func mapsOf(g *obs.Grid, unit string, estimators []string) (obs.Maps, []estimatorMaps) {
@@ -145,6 +148,8 @@ func mapsOf(g *obs.Grid, unit string, estimators []string) (obs.Maps, []estimato
 		mapField:      {Name: "B", Unit: "G", About: "magnetic field on the sky, speed sqrt(4 pi rho)"},
 		mapFieldErr:   {Name: "B_ERR", Unit: "G", About: "error of B, without the method's bias"},
 		mapFlag:       {Name: "FLAG", About: "why a pixel has no field, and cautions", Codes: FlagCodes()},
+		mapIsland:     {Name: "ISLAND", About: "pixels of the coherence island"},
+		mapElongation: {Name: "ELONGATION", About: "extent of the island along its axis over that across"},
 	}
 	es := addEstimators(&ms, estimators)
 	n := g.Nx * g.Ny
@@ -616,7 +621,8 @@ func (r *run) direct(w *worker, p int) {
 	if r.norm[p] == 0 {
 		return
 	}
-	s := w.islands.island(p)
+	s := w.islands.adapt(p)
+	r.set(mapIsland, p, float64(s.count))
 	r.set(mapCoherence, p, s.coherence)
 	switch {
 	case s.count < leastIsland:
@@ -624,6 +630,9 @@ func (r *run) direct(w *worker, p int) {
 		return
 	case s.full():
 		r.flag[p] |= FlagIslandFills
+	}
+	if s.minor > 0 {
+		r.set(mapElongation, p, s.major/s.minor)
 	}
 	if s.round() {
 		r.flag[p] |= FlagIslandRound
