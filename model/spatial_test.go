@@ -387,3 +387,22 @@ func BenchmarkAtSourceSurface(b *testing.B) {
 		i++
 	}
 }
+
+// The table is the same to the last bit whatever the number of workers.
+func TestTableDoesNotDependOnWorkers(t *testing.T) {
+	few := func(p r3.Vec, margin float64) bool {
+		return r3.Norm(r3.Sub(p, r3.Vec{Y: 1.2})) < 0.1+margin
+	}
+	var first []spaceNode
+	for _, workers := range []int{1, 3} {
+		k, err := New(context.Background(), surfaceCorona(), Settings{Outer: 1.5, InwardFrom: 2.5, Seen: few, Workers: workers})
+		if err != nil {
+			t.Fatal(err)
+		}
+		if first == nil {
+			first = k.space.node
+		} else if !slices.Equal(first, k.space.node) {
+			t.Error("other bits")
+		}
+	}
+}
