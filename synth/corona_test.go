@@ -116,3 +116,37 @@ func TestTiltIsLatitude(t *testing.T) {
 		}
 	}
 }
+
+// Rotation shifts the line by Omega times the distance to the west, away from the
+// observer in the west, and does nothing else.
+func TestRotationShiftsTheLine(t *testing.T) {
+	see := func(set ...string) ([]float32, []float64, []float64) {
+		s, l := load(t, "quick", append(append(set, "sight.plane=true", "camera.noise=false", "camera.point_spread=0 arcsec", "waves.amplitude=0 km/s"), small...)...)
+		c := scene(t, s, l)
+		o, tr, err := c.Observe(t.Context(), 0, nil)
+		if err != nil {
+			t.Fatal(err)
+		}
+		var v, west []float64
+		for i, p := range o.Pixels {
+			m := o.Mean[0]
+			v = append(v, doppler(float64(m[0][i]), float64(m[1][i]), float64(m[2][i]), c.tunings[0][2]))
+			y, _ := c.Grid.Sky(int(p)%c.Grid.Nx, int(p)/c.Grid.Nx)
+			west = append(west, y)
+		}
+		return tr.Maps.Get("SPEED_SKY").Data, v, west
+	}
+	a, still, _ := see()
+	b, turning, west := see("corona.rotation={period: 654.6072 h}")
+	for i := range still {
+		want := 2 * math.Pi * 6.957e5 / (654.6072 * 3600) * west[i] // [km/s]
+		if math.Abs(still[i]) > 1e-3 || math.Abs(turning[i]-want) > 2e-3 {
+			t.Fatalf("at %.3f solar radii west: %.4f km/s still, %.4f turning, want %.4f", west[i], still[i], turning[i], want)
+		}
+	}
+	for i := range a {
+		if a[i] != b[i] && a[i] == a[i] {
+			t.Fatal("rotation changes the truth")
+		}
+	}
+}
