@@ -56,6 +56,10 @@ func newEstimator(name string, opt *Options) estimator {
 
 type splitEstimator struct{}
 
+// aboveLeak is how far the power of inward waves has to exceed the leak of the outward
+// ones for its speed to be told: the leak is that of the band's centre alone.
+const aboveLeak = 2
+
 func (splitEstimator) measure(w *worker, rows []float32, n, centre int, outward bool) estimate {
 	rising, falling := w.lags.separate(rows, n)
 	out := w.lags.speed(rising, n, centre)
@@ -65,7 +69,9 @@ func (splitEstimator) measure(w *worker, rows []float32, n, centre int, outward 
 		out, in = in, out
 	}
 	e := estimate{speed: out, share: math.NaN()}
-	if in.ok && in.v > 0 {
+	// What outward waves leak into the other direction has a speed too, but it is not
+	// that of inward waves.
+	if in.ok && in.v > 0 && !(out.ok && in.power < aboveLeak*out.power*w.lags.leak(n, 2*math.Pi*w.lags.centre*w.lags.step/out.v)) {
 		e.in = in.v
 	}
 	return e

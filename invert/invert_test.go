@@ -502,12 +502,13 @@ func BenchmarkInvert(b *testing.B) {
 		name       string
 		frames     int
 		separation bool
-	}{{"180 frames, separated", 180, true}, {"180 frames", 180, false}, {"360 frames, separated", 360, true}} {
+		estimator  string
+	}{{"180 frames, separated", 180, true, Lag}, {"180 frames", 180, false, Lag}, {"360 frames, separated", 360, true, Lag}, {"180 frames, pair", 180, true, Pair}} {
 		q := defaultPatch()
 		q.nx, q.ny, q.frames, q.electrons, q.tunings = 60, 60, c.frames, 5000, true
 		o := q.observe()
 		opt := Default()
-		opt.Separation = c.separation
+		opt.Separation, opt.Estimators = c.separation, []string{c.estimator}
 		b.Run(c.name, func(b *testing.B) {
 			for b.Loop() {
 				if _, err := Invert(context.Background(), o, powerLaw{1.4, 1.8}, opt, 1, nil); err != nil {

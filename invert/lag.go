@@ -16,6 +16,7 @@ type lagger struct {
 	kzero   float64 // weight of zero wavenumber in the separation
 	power   float64 // of the coherence in the weights of the fit
 	pad     int
+	centre  float64 // of the band [Hz]
 	grid    float64 // step of the lag search [s]
 	reach   int     // lags searched, in steps either way
 	phasor  []float32
@@ -23,11 +24,13 @@ type lagger struct {
 	wave    [2][]float32
 	cross   []float32
 	parts   []float32
+	pure    []complex128
 	product []float32
 	fit     []lag
-	im, re  []float64
-	share   []float64    // of each frequency in the curvature of the peaks
-	pull    [2][]float64 // what each frequency adds to the fit's weighted sums of tau and s tau
+	terms   [2][]float64
+	omega   []float32
+	share   []float32    // of each frequency in the curvature of the peaks
+	pull    [2][]float32 // what each frequency adds to the fit's weighted sums of tau and s tau
 }
 
 // A lag is that of one point of a track against its centre.
@@ -37,7 +40,7 @@ type lag struct{ s, tau, weight float64 } // [km, s]
 // of the lag search [s]: the parabola's error is (2 pi f grid)^2/12 of the distance
 // to the nearest step, 0.3 % of at most half a step at lagSteps.
 func newLagger(b *band, opt *Options, points int, step, grid float64) *lagger {
-	l := &lagger{band: b, step: step, grid: grid, pad: opt.Padding, kzero: opt.KZero.weight(), power: 1, kernel: map[int][]float32{}}
+	l := &lagger{band: b, step: step, grid: grid, pad: opt.Padding, centre: opt.Centre, kzero: opt.KZero.weight(), power: 1, kernel: map[int][]float32{}}
 	longest := min(step*float64(points-1)/slowest, float64(b.frames)*b.cadence/4)
 	l.reach = max(int(longest/l.grid), 4)
 	l.phasor = make([]float32, (2*l.reach+1)*b.row)
@@ -54,9 +57,15 @@ func newLagger(b *band, opt *Options, points int, step, grid float64) *lagger {
 	l.wave[0] = make([]float32, points*b.row)
 	l.wave[1] = make([]float32, points*b.row)
 	l.cross = make([]float32, b.row)
-	l.im, l.re, l.share = make([]float64, n), make([]float64, n), make([]float64, n)
+	l.share, l.omega = make([]float32, n), make([]float32, n)
+	for j, f := range b.freq {
+		l.omega[j] = float32(2 * math.Pi * f)
+	}
+	for i := range l.terms {
+		l.terms[i] = make([]float64, n)
+	}
 	for i := range l.pull {
-		l.pull[i] = make([]float64, n)
+		l.pull[i] = make([]float32, n)
 	}
 	return l
 }
@@ -132,6 +141,37 @@ func (l *lagger) separate(rows []float32, n int) (rising, falling []float32) {
 	return rising, falling
 }
 
+// leak returns the power that the separation of n points lets a pure wave toward rising
+// index lose to the other direction, over what it keeps; theta is its phase from one point
+// to the next.
+func (l *lagger) leak(n int, theta float64) float64 {
+	h := l.toeplitz(n)
+	zero := complex(0, 0)
+	if cap(l.pure) < n {
+		l.pure = make([]complex128, n)
+	}
+	x := l.pure[:n]
+	for i := range x {
+		s, c := math.Sincos(theta * float64(i))
+		x[i] = complex(c, -s)
+		zero += x[i] * complex((l.kzero-0.5)/float64(l.pad*n), 0)
+	}
+	var up, down float64
+	for i := range x {
+		var zr, zi float64
+		for j, y := range x {
+			w := float64(h[n-1+i-j])
+			zr += w * real(y)
+			zi += w * imag(y)
+		}
+		r := x[i]/2 + zero
+		u, d := r-complex(-zi, zr), r+complex(-zi, zr)
+		up += real(u)*real(u) + imag(u)*imag(u)
+		down += real(d)*real(d) + imag(d)*imag(d)
+	}
+	return down / up
+}
+
 // toeplitz returns H(d) for d = -(n-1)..n-1.
 func (l *lagger) toeplitz(n int) []float32 {
 	if h := l.kernel[n]; h != nil {
@@ -204,7 +244,7 @@ func (l *lagger) speed(rows []float32, n, centre int) speed {
 				zr[j] = float32(a*p) + float32(b*q)
 				zi[j] = float32(b*p) - float32(a*q)
 			}
-			m, tau, peak, ok := l.peak(start)
+			m, tau, peak, curve, ok := l.peak(start)
 			if !ok {
 				continue
 			}
@@ -215,7 +255,7 @@ func (l *lagger) speed(rows []float32, n, centre int) speed {
 			start = m
 			q := lag{s: float64(i-centre) * l.step, tau: tau, weight: math.Pow(min(g, 1), l.power)}
 			l.fit = append(l.fit, q)
-			l.influence(m, q)
+			l.influence(m, q, curve)
 		}
 	}
 	r.points = len(l.fit)
@@ -224,12 +264,10 @@ func (l *lagger) speed(rows []float32, n, centre int) speed {
 	}
 	slope, _, ws, sxx := straight(l.fit)
 	for j, g := range l.pull[0] {
-		l.pull[0][j] = (l.pull[1][j] - ws*g) / sxx
+		l.terms[0][j] = (float64(l.pull[1][j]) - ws*float64(g)) / sxx
+		l.terms[1][j] = float64(l.share[j]) / float64(r.points-1)
 	}
-	for j := range l.share {
-		l.share[j] /= float64(r.points - 1)
-	}
-	variance := resampled(l.pull[0], l.share)
+	variance := resampled(l.terms[0], l.terms[1])
 	r.v = 1 / slope
 	r.err = r.v * r.v * math.Sqrt(variance)
 	r.ok = r.err < math.Abs(r.v)
@@ -258,31 +296,29 @@ func straight(fit []lag) (slope, intercept, ws, sxx float64) {
 // influence adds what each frequency did to a lag, found at step m of the search, to
 // l.pull. With Z the cross-spectrum turned by the lag, the peak is where the sum of
 // omega Im Z is zero, and a frequency moved it by its omega Im Z over the sum of
-// omega^2 Re Z.
-func (l *lagger) influence(m int, q lag) {
+// omega^2 Re Z, the curvature [1/s^2] of the peak.
+func (l *lagger) influence(m int, q lag, curve float64) {
 	nf := len(l.freq)
 	r := l.phasor[(m+l.reach)*l.row:]
 	zr, zi, c, s := l.cross[:nf], l.cross[nf:2*nf], r[:nf], r[nf:2*nf] // s is -sin
-	off := 2 * math.Pi * (q.tau - float64(m)*l.grid)
-	curve := 0.0
-	im, bend := l.im[:nf], l.re[:nf]
-	for j, f := range l.freq {
-		re := float64(zr[j])*float64(c[j]) + float64(zi[j])*float64(s[j])
-		im[j] = -f * (float64(zi[j])*float64(c[j]) - float64(zr[j])*float64(s[j]) + off*f*re)
-		bend[j] = f * f * re
-		curve += bend[j]
-	}
-	k := q.weight / (2 * math.Pi * curve)
-	for j, x := range im {
-		l.pull[0][j] += k * x
-		l.pull[1][j] += k * q.s * x
-		l.share[j] += bend[j] / curve
+	omega, pull, slope, share := l.omega[:nf], l.pull[0][:nf], l.pull[1][:nf], l.share[:nf]
+	off := float32(q.tau - float64(m)*l.grid)
+	k, x, inverse := float32(-q.weight/curve), float32(q.s), float32(1/curve)
+	for j, f := range omega {
+		re := float32(zr[j]*c[j]) + float32(zi[j]*s[j])
+		im := float32(zi[j]*c[j]) - float32(zr[j]*s[j])
+		bend := float32(f * re)
+		y := float32(k * f * (im + float32(off*bend)))
+		pull[j] += y
+		slope[j] += float32(x * y)
+		share[j] += float32(f * bend * inverse)
 	}
 }
 
 // peak climbs from step start to the nearest maximum of the cross-correlation
-// whose cross-spectrum is in l.cross, and puts a parabola through it.
-func (l *lagger) peak(start int) (m int, tau, height float64, ok bool) {
+// whose cross-spectrum is in l.cross, and puts a parabola through it. curve is minus the
+// second derivative [1/s^2].
+func (l *lagger) peak(start int) (m int, tau, height, curve float64, ok bool) {
 	at := func(m int) float32 {
 		r := (m + l.reach) * l.row
 		return blas.Sdot(l.row, l.cross, 1, l.phasor[r:r+l.row], 1)
@@ -293,21 +329,21 @@ func (l *lagger) peak(start int) (m int, tau, height float64, ok bool) {
 		if hi >= lo {
 			m++
 			if m >= l.reach {
-				return 0, 0, 0, false
+				return 0, 0, 0, 0, false
 			}
 			lo, mid, hi = mid, hi, at(m+1)
 		} else {
 			m--
 			if m <= -l.reach {
-				return 0, 0, 0, false
+				return 0, 0, 0, 0, false
 			}
 			lo, mid, hi = at(m-1), lo, mid
 		}
 	}
 	a, b := float64(hi)-float64(lo), float64(lo)+float64(hi)-2*float64(mid)
 	if !(b < 0) {
-		return 0, 0, 0, false
+		return 0, 0, 0, 0, false
 	}
 	d := -a / (2 * b)
-	return m, (float64(m) + d) * l.grid, float64(mid) - a*a/(8*b), true
+	return m, (float64(m) + d) * l.grid, float64(mid) - a*a/(8*b), -b / (l.grid * l.grid), true
 }

@@ -234,7 +234,7 @@ func TestLagError(t *testing.T) {
 				z := x * complex(real(c), -imag(c))
 				l.cross[j], l.cross[nf+j] = float32(real(z)), float32(imag(z))
 			}
-			_, tau, _, ok := l.peak(0)
+			_, tau, _, _, ok := l.peak(0)
 			if !ok {
 				t.Fatal("no peak")
 			}
@@ -353,5 +353,39 @@ func TestSeparationIsAProjection(t *testing.T) {
 				}
 			}
 		}
+	}
+}
+
+// The leak is what the separation makes of a plane wave, and keeps the speeds of inward
+// waves from being told where there are none.
+func TestLeak(t *testing.T) {
+	b := newBench(t, 480, 1.5)
+	nf := len(b.b.freq)
+	for _, n := range []int{11, 20, 31} {
+		for _, k := range []KZero{Kept, Halved, Dropped} {
+			l := b.lagger(n, 1, k, 9)
+			rows := make([]float32, n*b.b.row)
+			const theta = 0.15
+			for i := range n {
+				s, c := math.Sincos(theta * float64(i))
+				rows[i*b.b.row], rows[i*b.b.row+nf] = float32(c), float32(-s)
+			}
+			up, down := l.separate(rows, n)
+			want := float64(norm(down)) * float64(norm(down)) / (float64(norm(up)) * float64(norm(up)))
+			if got := l.leak(n, theta); math.Abs(got-want) > 1e-5 {
+				t.Errorf("%d points, zero wavenumber %d: leak %.5f, separated %.5f", n, k, got, want)
+			}
+		}
+	}
+	share := map[float64]float64{}
+	for _, inward := range []float64{0, 0.5} {
+		q := defaultPatch()
+		q.nx, q.ny, q.frames, q.v, q.inward = 34, 34, 240, 300, inward
+		r := q.invert(t, Default())
+		share[inward] = float64(len(values(r.Maps.Get("SPEED_IN")))) / float64(len(values(r.Maps.Get("SPEED"))))
+	}
+	t.Logf("share of pixels with an inward speed: %v", share)
+	if share[0] > 0.1 || share[0.5] < 0.5 {
+		t.Errorf("share of pixels with an inward speed: %v", share)
 	}
 }

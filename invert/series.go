@@ -8,9 +8,9 @@ import (
 	"gonum.org/v1/gonum/dsp/fourier"
 )
 
-// least is the smallest weight of the amplitude filter that is kept: what is left
-// out holds less than 1e-8 of a flat spectrum's power.
-const least = 1e-4
+// least is the smallest weight of the amplitude filter that is kept: what is left out
+// holds 2e-5 of a flat spectrum's power, and three frequencies in ten.
+const least = 0.01
 
 // A band is the Gaussian band-pass on the frequencies of a series.
 type band struct {
