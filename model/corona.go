@@ -19,6 +19,7 @@ import (
 	"errors"
 	"fmt"
 	"math"
+	"sync"
 
 	"gonum.org/v1/gonum/spatial/r3"
 
@@ -551,12 +552,16 @@ func (c *Corona) flatAt(p r3.Vec, q *Point) {
 	}
 }
 
+// walks keeps the scratch space of lines that are traced afresh.
+var walks = sync.Pool{New: func() any { return new([2][]knot) }}
+
 // spaceAt fills in field, line and plasma of any other corona.
 func (c *Corona) spaceAt(p r3.Vec, q *Point) {
 	l, ok := c.space.lookup(p)
 	if !ok {
-		var scratch [2][]knot
-		l = c.line(c.tracing(), p, &scratch)
+		scratch := walks.Get().(*[2][]knot)
+		l = c.line(c.tracing(), p, scratch)
+		walks.Put(scratch)
 	}
 	q.B = c.field.B(p)
 	m := c.mixOf(&l)
