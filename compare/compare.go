@@ -42,8 +42,9 @@ type Options struct {
 
 // A File is one file that a scenario names.
 type File struct {
-	Name   string `json:"name"`
+	Name   string `json:"name"` // without its folder, which differs between machines
 	SHA256 string `json:"sha256"`
+	Path   string `json:"-"`
 }
 
 // A Verdict is all that comparing yields.

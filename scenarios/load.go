@@ -8,6 +8,7 @@ import (
 	"io"
 	"os"
 	"path/filepath"
+	"slices"
 	"strings"
 
 	"offplane/scenarios/strict"
@@ -22,6 +23,8 @@ type Loaded struct {
 	Name      string // of the embedded scenario, or the file's name without folder and suffix
 	Canonical []byte // the scenario with every default filled in; the same scenario gives the same bytes
 	SHA256    string // of Canonical, hexadecimal
+	// Paths in Scenario lead from the folder in which the program runs; those in
+	// Canonical are as they were written: beside the scenario's file.
 
 	source      string // for messages
 	data        []byte
@@ -125,7 +128,35 @@ func Parse(source string, data []byte, assignments ...string) (*Loaded, error) {
 	l.Canonical = strict.Encode(l.Scenario)
 	sum := sha256.Sum256(l.Canonical)
 	l.SHA256 = hex.EncodeToString(sum[:])
+	s := &l.Scenario
+	beside(source, assignments, "line.data", &s.Line.Data)
+	beside(source, assignments, "inversion.line.data", &s.Inversion.Line.Data)
+	if s.Corona.Grid != nil {
+		beside(source, assignments, "corona.grid.file", &s.Corona.Grid.File)
+	}
+	s.Corona.Fields = slices.Clone(s.Corona.Fields)
+	for i := range s.Corona.Fields {
+		if f := &s.Corona.Fields[i]; f.SourceSurface != nil {
+			v := *f.SourceSurface
+			beside(source, assignments, fmt.Sprintf("corona.fields.%d.source_surface.table", i), &v.Table)
+			f.SourceSurface = &v
+		}
+	}
 	return l, nil
+}
+
+// beside makes a relative path that was written in a file one beside that file; paths
+// in assignments are relative to the folder in which the program runs.
+func beside(source string, assignments []string, key string, path *string) {
+	if *path == "" || filepath.IsAbs(*path) || !isFile(source) {
+		return
+	}
+	for _, a := range assignments {
+		if name, _, _ := strings.Cut(a, "="); strings.TrimSpace(name) == key {
+			return
+		}
+	}
+	*path = filepath.Join(filepath.Dir(source), *path)
 }
 
 // With returns the scenario with further assignments applied and validated; l stays
@@ -161,6 +192,7 @@ func ParseInversion(source string, data []byte, assignments ...string) (Inversio
 	at, err := strict.Read(source, data, &v, assignments...)
 	problems, _ := err.(strict.Problems)
 	problems = append(problems, validateInversion(&v, "", at)...)
+	beside(source, assignments, "line.data", &v.Line.Data)
 	return v, problems.Err()
 }
 

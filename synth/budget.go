@@ -81,9 +81,10 @@ func (c *Scene) lineBudget(cam *camera.Camera, ray []sample, l int, spot camera.
 	for i := range ray {
 		s := &ray[i]
 		energy := s.j[l] * s.dx
-		b.Peak += energy / (math.Sqrt(math.Pi) * s.width * toAngstrom) / c.light.Disc[l] * 1e6
+		width := c.broadened(s)
+		b.Peak += energy / (math.Sqrt(math.Pi) * width * toAngstrom) / c.light.Disc[l] * 1e6
 		for k, d := range x {
-			b.Radiance[k] += energy * pass(d-s.flow, s.width)
+			b.Radiance[k] += energy * pass(d-s.flow, width)
 		}
 	}
 	e := cam.Electrons[l] * spot.Open
@@ -103,6 +104,16 @@ func (c *Scene) lineBudget(cam *camera.Camera, ray []sample, l int, spot camera.
 	}
 	b.InBand = b.Noise * math.Sqrt(2*float64(c.s.Camera.Cadence)*band)
 	return b
+}
+
+// broadened returns the 1/e half-width of a sample's line [km/s] in the mean over many
+// periods of its waves: w^2 = w0^2 + 2 <v^2>.
+func (c *Scene) broadened(s *sample) float64 {
+	v2 := 0.0
+	for _, t := range c.trains(&s.point, nil) {
+		v2 += t.factor * t.factor * c.Driver.BandVariance(t.tau, func(float64) float64 { return 1 })
+	}
+	return math.Sqrt(s.width*s.width + 2*v2*(s.los[0]*s.los[0]+s.los[1]*s.los[1]))
 }
 
 // passing returns the part of a resting line of unit energy and given width that passes

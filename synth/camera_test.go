@@ -261,7 +261,7 @@ func TestSecondLineHasItsOwnTime(t *testing.T) {
 	for i, slot := range plan.Second {
 		for k, d := range c.tunings[1] {
 			v := 0.0
-			ts = c.trains(&q.point, q.azimuth, ts)
+			ts = c.trains(&q.point, ts)
 			for _, tr := range ts {
 				for _, site := range c.Driver.Footpoint(tr.colatitude, tr.azimuth) {
 					for pol, a := range q.los {

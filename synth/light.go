@@ -190,7 +190,7 @@ func (l *lamp) move(s *sample) {
 	d := l.c.Driver
 	n := d.RowLength()
 	l.rows, l.coef = l.rows[:0], l.coef[:0]
-	l.trains = l.c.trains(&s.point, s.azimuth, l.trains)
+	l.trains = l.c.trains(&s.point, l.trains)
 	for i := range l.trains {
 		t := &l.trains[i]
 		stretch := d.Stretch(t.tau)
@@ -222,7 +222,7 @@ func (l *lamp) moveApart(s *sample) {
 		l.parts[k], l.weights[k] = l.parts[k][:0], l.weights[k][:0]
 	}
 	used := 0
-	l.trains = l.c.trains(&s.point, s.azimuth, l.trains)
+	l.trains = l.c.trains(&s.point, l.trains)
 	for i := range l.trains {
 		t := &l.trains[i]
 		stretch := d.Stretch(t.tau)

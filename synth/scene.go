@@ -43,6 +43,15 @@ type Scene struct {
 	tunings [2][]float64 // Doppler offsets [km/s] per line
 }
 
+// Trains that have travelled so long that damping leaves less than wave.Tolerance of
+// their amplitude at the frequency oldest [Hz], far below the band of the inversion, are
+// left out. Without damping a corona is refused whose waves need longer than tooLong [s]:
+// the memory for the driver grows with it.
+const (
+	oldest  = 1e-3
+	tooLong = 24 * 3600
+)
+
 // kms is one km/s in cgs.
 const kms = 1e5
 
@@ -70,6 +79,12 @@ func NewScene(ctx context.Context, s *scenarios.Scenario, light Light, workers i
 	c.filter = filter.EFolding(float64(s.Camera.Filter)) * units.LightSpeed / kms / light.Rest[0]
 	// Lines traced between the nodes of the model's table may take a little longer.
 	c.longest = 1.02*corona.LongestDelay(s.Waves.FarEnd, s.Waves.Inward > 0) + 60
+	if xi := s.Waves.Damping; xi > 0 {
+		c.longest = min(c.longest, xi*math.Log(1/wave.Tolerance)/oldest)
+	}
+	if c.longest > tooLong {
+		return nil, fmt.Errorf("waves need %.3g h along the slowest field line, more than %.3g h: a stronger field, a thinner corona or damped waves (waves.damping) would do", c.longest/3600, tooLong/3600.)
+	}
 	sp := s.Waves.Spectrum
 	c.Driver, err = wave.NewDriver(wave.Settings{
 		Seed: s.Seed, Cell: c.cell,
@@ -207,7 +222,7 @@ type train struct {
 
 // trains lists the trains that pass the point. A train that took longer than any on
 // the model's table came past a null of the field, where waves do not pass: left out.
-func (c *Scene) trains(p *model.Point, _ float64, dst []train) []train {
+func (c *Scene) trains(p *model.Point, dst []train) []train {
 	dst = dst[:0]
 	l := &p.Line
 	if l.Ends == 0 {
@@ -252,18 +267,17 @@ func (c *Scene) width(p *model.Point) float64 {
 
 // A sample is one point of a ray.
 type sample struct {
-	x       float64 // toward the observer [solar radii]
-	dx      float64 // its share of the ray [cm]
-	point   model.Point
-	azimuth float64    // no longer used
-	sky     float64    // plane-of-sky component of the unit vector along B
-	angle   float64    // of B on the sky [rad], counter-clockwise from north
-	bSky    float64    // plane-of-sky component of B [G]
-	j       [2]float64 // emissivities [erg cm^-3 s^-1 sr^-1]
-	width   float64    // of the lines [km/s]
-	los     [2]float64 // Doppler velocity [km/s] of unit motion in each polarisation
-	flow    float64    // steady Doppler velocity [km/s]
-	smooth  [2]float64 // emissivities without strands
+	x      float64 // toward the observer [solar radii]
+	dx     float64 // its share of the ray [cm]
+	point  model.Point
+	sky    float64    // plane-of-sky component of the unit vector along B
+	angle  float64    // of B on the sky [rad], counter-clockwise from north
+	bSky   float64    // plane-of-sky component of B [G]
+	j      [2]float64 // emissivities [erg cm^-3 s^-1 sr^-1]
+	width  float64    // of the lines [km/s]
+	los    [2]float64 // Doppler velocity [km/s] of unit motion in each polarisation
+	flow   float64    // steady Doppler velocity [km/s]
+	smooth [2]float64 // emissivities without strands
 }
 
 // sampleAt evaluates the corona at (x, y, z) of the observer's frame.

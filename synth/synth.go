@@ -108,11 +108,14 @@ func (c *Scene) observe(ctx context.Context, workers, tile int, progress func(do
 		}
 	}
 	for l := range 2 {
-		background := d.background(l)
+		background, electrons, readNoise := d.background(l), cam.Electrons[l], cam.ReadNoise
+		if !c.s.Camera.Noise { // as if every photon were endlessly many electrons
+			electrons, readNoise = math.Inf(1), 0
+		}
 		for f := range raw[l].Frames {
 			o.Exposures = append(o.Exposures, obs.Exposure{
 				Line: l + 1, Frame: f, Time: plan.Time(l, f, float64(c.s.Camera.Cadence)), Exposure: float64(c.s.Camera.Exposure),
-				Electrons: cam.Electrons[l], Background: background, ReadNoise: cam.ReadNoise,
+				Electrons: electrons, Background: background, ReadNoise: readNoise,
 			})
 		}
 	}

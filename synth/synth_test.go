@@ -82,7 +82,7 @@ func TestLightAgainstTheExactSum(t *testing.T) {
 				for i := range ray {
 					q := &ray[i]
 					v := 0.0
-					ts = c.trains(&q.point, q.azimuth, ts)
+					ts = c.trains(&q.point, ts)
 					for _, tr := range ts {
 						for _, site := range c.Driver.Footpoint(tr.colatitude, tr.azimuth) {
 							for pol, a := range q.los {

@@ -116,7 +116,7 @@ func (c *Scene) waveWeights(ray []sample) []float64 {
 	for i := range ray {
 		s := &ray[i]
 		a, b := &ray[max(i-1, 0)], &ray[min(i+1, len(ray)-1)]
-		ts = c.trains(&s.point, s.azimuth, ts)
+		ts = c.trains(&s.point, ts)
 		power := 0.0
 		for k := range ts {
 			t := &ts[k]
@@ -169,7 +169,7 @@ func (c *Scene) truthOf(ray []sample) ([]float64, int32) {
 	p := &sky.point
 	var ts []train
 	local := 0.0
-	for _, t := range c.trains(p, sky.azimuth, ts) {
+	for _, t := range c.trains(p, ts) {
 		local += c.inBand(sky, &t)
 	}
 	return []float64{

@@ -128,6 +128,9 @@ func readCompared(truth, inferred string, maps []string) (*compared, error) {
 		if err := sameSky(&c.grid, &g); err != nil {
 			return nil, fmt.Errorf("%s: %w", inferred, err)
 		}
+		if !slices.ContainsFunc(c.inferred, func(m obs.Map) bool { return slices.Contains(comparable, m.Name) }) {
+			return nil, fmt.Errorf("%s holds none of the maps %s: is it a file of inferred maps?", inferred, strings.Join(comparable, ", "))
+		}
 		if v, _, err = readInversion(inferred); err != nil {
 			return nil, err
 		}

@@ -33,6 +33,9 @@ func (p *program) start(w *work, j job) (*folder, *record, *progress, error) {
 	if w.out == "" {
 		return nil, nil, nil, misusef("offplane %s needs a folder for the results: -o DIR", j.Command)
 	}
+	if w.workers < 0 {
+		return nil, nil, nil, misusef("--workers %d: write 0 for all cores, or their number", w.workers)
+	}
 	f, err := p.open(w.out, j, w.force)
 	if err != nil {
 		return nil, nil, nil, err

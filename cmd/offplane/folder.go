@@ -96,8 +96,13 @@ func (f *folder) claim(force bool) error {
 			}
 		}
 	}
-	// The record goes first: from here on the folder is not complete.
-	for _, name := range append([]string{recordName}, f.job.files...) {
+	// The record goes first: from here on the folder is not complete. What another
+	// command left goes too, so that nothing of it stands beside the new files.
+	gone := append([]string{recordName}, f.job.files...)
+	if complete {
+		gone = append(gone, recorded(f.path(recordName))...)
+	}
+	for _, name := range gone {
 		for _, name := range []string{name, name + part} {
 			if err := os.Remove(f.path(name)); err != nil && !errors.Is(err, fs.ErrNotExist) {
 				return err
@@ -251,4 +256,21 @@ func entryOf(path string) (entry, error) {
 		return entry{}, fmt.Errorf("%s: %w", path, err)
 	}
 	return entry{path, n, hex.EncodeToString(h.Sum(nil))}, nil
+}
+
+// recorded returns the names of the files that a record lists; files elsewhere are
+// nobody's to remove.
+func recorded(path string) []string {
+	var r record
+	text, err := os.ReadFile(path)
+	if err != nil || json.Unmarshal(text, &r) != nil {
+		return nil
+	}
+	var names []string
+	for _, e := range r.Files {
+		if e.Name == filepath.Base(e.Name) {
+			names = append(names, e.Name)
+		}
+	}
+	return names
 }

@@ -111,7 +111,7 @@ func readFrames(path string) (*obs.Observation, error) {
 
 // infer inverts an observation and writes maps and series.
 func (p *program) infer(ctx context.Context, o *trial.Outcome, v scenarios.Inversion, w *work, f *folder, r *record, bar *progress) error {
-	emitter, file, err := trial.Model(v.Line, v.Helium)
+	emitter, file, err := trial.Model("line", v.Line, v.Helium)
 	if err != nil {
 		return misuse(err)
 	}
@@ -125,7 +125,7 @@ func (p *program) infer(ctx context.Context, o *trial.Outcome, v scenarios.Inver
 	var files []compare.File
 	if file != nil {
 		files = append(files, *file)
-		e, err := entryOf(file.Name)
+		e, err := entryOf(file.Path)
 		if err != nil {
 			return err
 		}

@@ -80,7 +80,7 @@ Lists are separated by commas; numbers are in cm-3, solar radii and K, or carry 
 		if err != nil {
 			return misuse(err)
 		}
-		m, _, err := trial.Model(l.Scenario.Line, l.Scenario.Corona.Helium)
+		m, _, err := trial.Model("line", l.Scenario.Line, l.Scenario.Corona.Helium)
 		if err != nil {
 			return misuse(err)
 		}
@@ -216,7 +216,7 @@ func (p *program) lineRows(m *line.Model, ns, rs, ts []float64, json bool, table
 		return writeRows(p, rows)
 	}
 	t := tabwriter.NewWriter(p.stdout, 0, 0, 2, ' ', tabwriter.AlignRight)
-	fmt.Fprintln(t, "n_e/cm-3\tr/Rsun\tT/K\tj(1074.7)\tj(1079.8)\tratio\texponent\texponent\t")
+	fmt.Fprintln(t, "n_e/cm-3\tr/Rsun\tT/K\tj(1074.7)\tj(1079.8)\tratio\texponent(1074.7)\texponent(1079.8)\t")
 	for _, r := range rows {
 		fmt.Fprintf(t, "%.4g\t%.4g\t%.4g\t%.4e\t%.4e\t%.5f\t%.4f\t%.4f\t\n", r.Density, r.Height, r.Temperature, r.Emissivity1, r.Emissivity2, r.Ratio, r.Exponent1, r.Exponent2)
 	}
@@ -290,7 +290,7 @@ func (p *program) lineLaw(m *line.Model, name string, helium float64, rs, ts []f
 		return writeRows(p, rows)
 	}
 	t := tabwriter.NewWriter(p.stdout, 0, 0, 2, ' ', tabwriter.AlignRight)
-	fmt.Fprintln(t, "r/Rsun\tn_e/cm-3\tT/K\tj(1074.7)\tj(1079.8)\tratio\tslope\tslope\t")
+	fmt.Fprintln(t, "r/Rsun\tn_e/cm-3\tT/K\tj(1074.7)\tj(1079.8)\tratio\tslope(1074.7)\tslope(1079.8)\t")
 	for _, r := range rows {
 		fmt.Fprintf(t, "%.4g\t%.4g\t%.4g\t%.4e\t%.4e\t%.5f\t%.3f\t%.3f\t\n", r.Height, r.Density, r.Temperature, r.Emissivity1, r.Emissivity2, r.Ratio, r.Slope1, r.Slope2)
 	}

@@ -2,6 +2,7 @@ package main
 
 import (
 	"context"
+	"errors"
 	"time"
 
 	"offplane/compare/trial"
@@ -69,10 +70,16 @@ func predict(ctx context.Context, l *scenarios.Loaded, workers int) (*prediction
 	if err != nil {
 		return nil, err
 	}
+	if _, _, err := trial.Model("inversion.line", s.Inversion.Line, s.Inversion.Helium); err != nil {
+		return nil, err
+	}
 	started := time.Now()
 	scene, err := synth.NewScene(ctx, s, light, workers)
 	if err != nil {
 		return nil, err
+	}
+	if len(synth.Field(&scene.Grid, s)) == 0 {
+		return nil, errors.New("image: the centre of no pixel lies in the field of view: a wider wedge or smaller pixels would do")
 	}
 	build := time.Since(started).Seconds()
 	inner, outer := float64(s.Image.Inner), float64(s.Image.Outer)

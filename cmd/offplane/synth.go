@@ -72,7 +72,7 @@ func (p *program) observe(ctx context.Context, l *scenarios.Loaded, w *work, f *
 		return nil, computing(ctx, err)
 	}
 	for _, file := range o.Files {
-		e, err := entryOf(file.Name)
+		e, err := entryOf(file.Path)
 		if err != nil {
 			return nil, err
 		}

@@ -3,6 +3,7 @@ package report
 import (
 	"image/color"
 	"math"
+	"slices"
 
 	"gonum.org/v1/plot/text"
 	"gonum.org/v1/plot/vg"
@@ -249,7 +250,7 @@ func partsFigure(heights []float64, edges [2]float64, factors []curve, valid []f
 	xt := linearTicks(edges[0], edges[1], 6)
 	lo, hi := 0.7, 1.4
 	for _, f := range factors {
-		for _, v := range f.median {
+		for _, v := range slices.Concat(f.median, f.lo, f.hi) {
 			if v > 0 && !math.IsInf(v, 0) {
 				lo, hi = min(lo, v*0.97), max(hi, v*1.03)
 			}

@@ -48,8 +48,9 @@ func RatioFigure(curves []RatioCurve) []byte {
 		for k, n := range q.Density {
 			x[k] = math.Log10(n)
 		}
-		for k := range x {
-			l, r := max(k-1, 0), min(k+1, len(x)-1)
+		grows[0], grows[len(x)-1] = math.NaN(), math.NaN() // central differences end before the ends
+		for k := 1; k < len(x)-1; k++ {
+			l, r := k-1, k+1
 			grows[k] = math.Log(q.Density[r]/q.Density[l]) / math.Log(q.Ratio[r]/q.Ratio[l])
 		}
 		a.line(s, x, q.Ratio, false)

@@ -25,7 +25,7 @@ func chain(t *testing.T, l *scenarios.Loaded, e line.Emitter) (*obs.Observation,
 		t.Fatal(err)
 	}
 	if e == nil {
-		if e, _, err = Model(l.Scenario.Line, 0.1); err != nil {
+		if e, _, err = Model("line", l.Scenario.Line, 0.1); err != nil {
 			t.Fatal(err)
 		}
 	} else {
@@ -90,7 +90,7 @@ func TestClumpsWithTheLine(t *testing.T) {
 			t.Fatal(err)
 		}
 		o, _, r := chain(t, l2, nil)
-		m, _, err := Model(l.Scenario.Line, 0.1)
+		m, _, err := Model("line", l.Scenario.Line, 0.1)
 		if err != nil {
 			t.Fatal(err)
 		}

@@ -6,9 +6,11 @@ import (
 	"context"
 	"crypto/sha256"
 	"encoding/hex"
+	"errors"
 	"fmt"
 	"io"
 	"os"
+	"path/filepath"
 
 	"offplane/compare"
 	"offplane/invert"
@@ -53,7 +55,7 @@ func Run(ctx context.Context, l *scenarios.Loaded, s Settings) (*Outcome, error)
 		return nil, err
 	}
 	v := l.Scenario.Inversion
-	emitter, _, err := Model(v.Line, v.Helium)
+	emitter, _, err := Model("inversion.line", v.Line, v.Helium)
 	if err != nil {
 		return nil, err
 	}
@@ -75,13 +77,16 @@ func Observe(ctx context.Context, l *scenarios.Loaded, s Settings) (*Outcome, er
 	if o.Scene, err = synth.NewScene(ctx, c, light, s.Workers); err != nil {
 		return nil, err
 	}
+	if len(synth.Field(&o.Scene.Grid, c)) == 0 {
+		return nil, errors.New("image: the centre of no pixel lies in the field of view: a wider wedge or smaller pixels would do")
+	}
 	o.Observation, o.Truth, err = o.Scene.Observe(ctx, s.Workers, s.report("synthesis"))
 	if err != nil {
 		return nil, err
 	}
 	o.Observation.Scenario = l.SHA256
 	if v := c.Inversion.Line.Data; v != "" {
-		_, file, err := atom(v)
+		_, file, err := atom("inversion.line", v)
 		if err != nil {
 			return nil, err
 		}
@@ -128,10 +133,10 @@ func Options(v scenarios.Inversion) invert.Options {
 	return o
 }
 
-// Model builds the atomic model of one side of a scenario; the file is nil for the
-// embedded data.
-func Model(l scenarios.Line, helium float64) (*line.Model, *File, error) {
-	a, file, err := atom(l.Data)
+// Model builds the atomic model of one side of a scenario, whose key is for messages;
+// the file is nil for the embedded data.
+func Model(key string, l scenarios.Line, helium float64) (*line.Model, *File, error) {
+	a, file, err := atom(key, l.Data)
 	if err != nil {
 		return nil, nil, err
 	}
@@ -139,31 +144,31 @@ func Model(l scenarios.Line, helium float64) (*line.Model, *File, error) {
 	opt.Helium, opt.Iron, opt.Ionisation, opt.Photo = helium, l.Iron, l.Ionisation, l.Photo
 	m, err := line.New(a, opt)
 	if err != nil {
-		return nil, nil, fmt.Errorf("line: %w", err)
+		return nil, nil, fmt.Errorf("%s: %w", key, err)
 	}
 	return m, file, nil
 }
 
-func atom(path string) (*line.Atom, *File, error) {
+func atom(key, path string) (*line.Atom, *File, error) {
 	if path == "" {
 		return line.Default(), nil, nil
 	}
 	data, err := os.ReadFile(path)
 	if err != nil {
-		return nil, nil, fmt.Errorf("line.data: %w", err)
+		return nil, nil, fmt.Errorf("%s.data: %w", key, err)
 	}
 	a, err := line.Parse(path, data)
 	if err != nil {
 		return nil, nil, err
 	}
 	sum := sha256.Sum256(data)
-	return a, &File{Name: path, SHA256: hex.EncodeToString(sum[:])}, nil
+	return a, &File{Name: filepath.Base(path), Path: path, SHA256: hex.EncodeToString(sum[:])}, nil
 }
 
 // Light returns the light of a scenario's corona, tabulated over the temperatures that
 // occur in it, and the files it came from.
 func Light(c *scenarios.Scenario) (synth.Light, []File, error) {
-	m, file, err := Model(c.Line, c.Corona.Helium)
+	m, file, err := Model("line", c.Line, c.Corona.Helium)
 	if err != nil {
 		return synth.Light{}, nil, err
 	}
@@ -189,7 +194,7 @@ func Light(c *scenarios.Scenario) (synth.Light, []File, error) {
 		if err != nil {
 			return synth.Light{}, nil, err
 		}
-		files = append(files, File{Name: path, SHA256: sum})
+		files = append(files, File{Name: filepath.Base(path), Path: path, SHA256: sum})
 	}
 	return l, files, nil
 }

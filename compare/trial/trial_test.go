@@ -94,7 +94,7 @@ func TestSphere(t *testing.T) {
 	full := run(t, "sphere", wedge...)
 	plane := run(t, "sphere", append([]string{"sight.plane=true"}, wedge...)...)
 	c := &full.Scene.Grid
-	m, _, err := Model(load(t, "sphere").Scenario.Line, 0.1)
+	m, _, err := Model("line", load(t, "sphere").Scenario.Line, 0.1)
 	if err != nil {
 		t.Fatal(err)
 	}
@@ -233,7 +233,7 @@ func TestInversionWithAnotherAtomicFile(t *testing.T) {
 	if f := ratio(func(r *compare.Ratios) *stat.Summary { return r.Field.Sky }); math.Abs(f-n/2) > 1e-3 {
 		t.Errorf("field moves by %+.4f dex, density by %+.4f", f, n)
 	}
-	if len(b.Files) != 1 || b.Files[0].Name != file || len(b.Files[0].SHA256) != 64 {
+	if len(b.Files) != 1 || b.Files[0].Name != "stronger.yaml" || len(b.Files[0].SHA256) != 64 {
 		t.Errorf("files named: %v", b.Files)
 	}
 }
