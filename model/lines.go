@@ -368,10 +368,3 @@ func family(a, b *traced, ends int) bool {
 	}
 	return true
 }
-
-func finite(x float64) float64 {
-	if math.IsNaN(x) {
-		return 0
-	}
-	return x
-}

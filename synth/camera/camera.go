@@ -29,7 +29,6 @@ type Camera struct {
 
 	millionth [2]float64 // of the disc-centre continuum, through the filter
 	k         float64    // of the K corona
-	distance  float64    // of the observer [solar radii]
 	occulter  *scenarios.Occulter
 	stop      float64 // radius of the field stop [solar radii]; 0: none
 	pointing  *pointing
