@@ -20,40 +20,60 @@ import (
 
 func (p *program) invertCommand() *cobra.Command {
 	var w work
+	var own ownFrames
 	var set []string
-	var with string
+	var with, estimator string
 	cmd := &cobra.Command{
 		Use:   "invert OBSERVATION.fits -o DIR",
 		Short: "Invert frames to maps of speed, density and field, blind",
 		Long: `invert applies the standard inversion to an observation with its frames. It leaves
 inferred.fits, series.fits and run.json in DIR.
 
+Frames of your own are taken too: tunings (x, y, wavelength, time) with a second line, or
+Doppler shifts (x, y, time) with a map of the line ratio or the density. What their
+headers do not say, flags do.
+
 The recipe is the inversion section of a scenario by itself: --with reads it from a file,
 --set changes single keys, and the rest is the default of all scenarios.`,
 		Example: `  offplane invert data/observation.fits -o maps
-  offplane invert data/observation.fits -o maps --with recipe.yaml --set track=21`,
+  offplane invert data/observation.fits -o maps --with recipe.yaml --set track=21
+  offplane invert mine.fits --second-line second.fits --filter 0.13 --estimator pair,lag -o maps`,
 		Args: argument("an observation file"),
 	}
 	cmd.RunE = do(func(ctx context.Context, args []string) error {
-		v, err := recipe(with, inversionKeys(set))
+		keys := inversionKeys(set)
+		if estimator != "" {
+			keys = append(keys, "estimators=["+estimator+"]")
+		}
+		v, err := recipe(with, keys)
 		if err != nil {
 			return misuse(err)
 		}
-		in, err := entryOf(args[0])
+		paths := append([]string{args[0]}, own.inputs()...)
+		parts := []string{string(scenarios.EncodeInversion(v)), fmt.Sprintf("%+v", own)}
+		var ins []entry
+		for _, path := range paths {
+			in, err := entryOf(path)
+			if err != nil {
+				return misuse(err)
+			}
+			ins = append(ins, in)
+			parts = append(parts, in.SHA256)
+		}
+		m, _, err := trial.Model("line", v.Line, v.Helium)
 		if err != nil {
 			return misuse(err)
 		}
-		j := job{Command: "invert", SHA256: digest(in.SHA256, string(scenarios.EncodeInversion(v))),
-			files: []string{"inferred.fits", "series.fits"}, inputs: []string{args[0]}}
+		j := job{Command: "invert", SHA256: digest(parts...), files: []string{"inferred.fits", "series.fits"}, inputs: paths}
 		f, r, bar, err := p.start(&w, j)
 		if err != nil {
 			return err
 		}
 		defer f.abandon()
 		defer bar.wipe()
-		r.Inputs = append(r.Inputs, in)
+		r.Inputs = append(r.Inputs, ins...)
 		bar.update("reading", 0, 0)
-		o, err := readFrames(args[0])
+		o, err := own.read(cmd, args[0], m.RestWavelengths())
 		if err != nil {
 			return misuse(err)
 		}
@@ -84,6 +104,8 @@ The recipe is the inversion section of a scenario by itself: --with reads it fro
 		return nil
 	})
 	w.flags(cmd)
+	own.flags(cmd)
+	cmd.Flags().StringVar(&estimator, "estimator", "", "estimators of the phase speed, the first for SPEED and B: lag, unsplit, pair; short for --set estimators=[...]")
 	cmd.Flags().StringVar(&with, "with", "", "`file` with the inversion section")
 	cmd.Flags().StringArrayVar(&set, "set", nil, "change the inversion section: `KEY=VALUE`, such as track=21; repeatable")
 	return cmd
@@ -137,20 +159,11 @@ func (p *program) infer(ctx context.Context, o *trial.Outcome, v scenarios.Inver
 	if err := obs.WriteMaps(f.path("inferred.fits"), g, o.Inferred.Maps, primary(), inversionHDU(v, files...)); err != nil {
 		return err
 	}
-	if err := obs.WriteSeries(f.path("series.fits"), g, o.Observation.Pixels, o.Inferred.Series, primary(), timeStep(o.Observation)); err != nil {
+	if err := obs.WriteSeries(f.path("series.fits"), g, o.Observation.Pixels, o.Inferred.Series, primary(), fits.Header{{Key: "TIMESTEP", Value: o.Inferred.Cadence, Comment: "[s] between the values of a series"}}); err != nil {
 		return err
 	}
 	r.stage("writing")
 	return ctx.Err()
-}
-
-// timeStep returns the card of the mean time step of the first line's frames.
-func timeStep(o *obs.Observation) fits.Header {
-	es := o.LineExposures(1)
-	if n := len(es) - 1; n > 0 {
-		return fits.Header{{Key: "TIMESTEP", Value: (es[n].Time - es[0].Time) / float64(n), Comment: "[s] between the values of a series"}}
-	}
-	return nil
 }
 
 // digest returns the SHA-256 of texts and where they end.

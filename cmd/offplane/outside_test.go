@@ -4,7 +4,9 @@ package main
 
 import (
 	"bytes"
+	"os"
 	"path/filepath"
+	"strings"
 	"testing"
 
 	"offplane/synth/fits/fitstest"
@@ -31,7 +33,7 @@ import hashlib, json
 import astropy.units as u
 from astropy.table import QTable
 d = sys.argv[1] + "/"
-counts = {"truth": 15, "inferred": 16, "bias": 4}
+counts = {"truth": 15, "inferred": 18, "bias": 4}
 for name, n in counts.items():
     maps = sunpy.map.Map(d + name + ".fits")
     assert len(maps) == n, (name, len(maps))
@@ -63,4 +65,84 @@ assert len(t) > 0 and t.colnames
 with fits.open(d + "series.fits", checksum=True) as f:
     assert len(f[1].data) > 0
 `, dir)
+}
+
+// Frames that somebody wrote with numpy: Doppler shifts in m/s of waves that run outward
+// at 400 km/s beside the west limb, and a map of the line ratio in a file of its own.
+func TestOwnFramesOutside(t *testing.T) {
+	dir := t.TempDir()
+	fitstest.Python(t, fitstest.Strict+`
+d = sys.argv[1] + "/"
+rng = np.random.default_rng(1)
+nt, ny, nx, dt, pixel = 240, 40, 60, 30.0, 4.35
+x = np.arange(nx) * pixel * 725.27
+tt = np.arange(nt) * dt
+f = np.arange(1.5e-3, 6e-3, 1 / (nt * dt))
+v = np.zeros((nt, ny, nx))
+cells = rng.normal(size=(ny // 2 + 2, 2, len(f)))
+for j in range(ny):
+    u = (j % 2) / 2
+    a = np.cos(u * np.pi / 2) * cells[j // 2] + np.sin(u * np.pi / 2) * cells[j // 2 + 1]
+    for k, w in enumerate(2 * np.pi * f):
+        p = w * (tt[:, None] - x / 400)
+        v[:, j] += a[0, k] * np.cos(p) + a[1, k] * np.sin(p)
+v *= 500 / v.std()
+v += 50 * rng.normal(size=v.shape)
+h = fits.Header()
+axes = [("HPLN-TAN", "arcsec", pixel, 1010.0, 1), ("HPLT-TAN", "arcsec", pixel, 0.0, (ny + 1) / 2), ("UTC", "s", dt, 0.0, 1)]
+for i, (kind, unit, step, value, ref) in enumerate(axes, 1):
+    h[f"CTYPE{i}"], h[f"CUNIT{i}"], h[f"CDELT{i}"], h[f"CRVAL{i}"], h[f"CRPIX{i}"] = kind, unit, step, value, ref
+h["DSUN_OBS"], h["RSUN_REF"], h["DATE-OBS"], h["HGLN_OBS"], h["HGLT_OBS"], h["BUNIT"] = 1.495978707e11, 6.957e8, "2025-03-20T18:00:00", 0.0, 0.0, "m/s"
+fits.PrimaryHDU(v.astype("f4"), h).writeto(d + "mine.fits")
+del h["CTYPE3"], h["CUNIT3"], h["CDELT3"], h["CRVAL3"], h["CRPIX3"], h["BUNIT"]
+fits.PrimaryHDU(np.full((ny, nx), 0.38, "f4"), h).writeto(d + "ratio.fits")
+`, dir)
+	var stdout, stderr bytes.Buffer
+	out := filepath.Join(dir, "maps")
+	if code := Main([]string{"invert", dir + "/mine.fits", "--ratio", dir + "/ratio.fits", "--estimator", "pair,lag", "--quiet", "-o", out}, &stdout, &stderr); code != 0 {
+		t.Fatalf("exit %d: %s", code, stderr.String())
+	}
+	fitstest.Verify(t, filepath.Join(out, "inferred.fits"), filepath.Join(out, "series.fits"))
+	fitstest.Python(t, fitstest.Strict+`
+with fits.open(sys.argv[1] + "/inferred.fits", checksum=True) as f:
+    v = float(np.nanmedian(f["SPEED"].data))
+    assert abs(v / 400 - 1) < 0.03, v
+    assert np.isfinite(f["B"].data).mean() > 0.5
+    assert "SPEED_LAG" in f
+`, out)
+	stdout.Reset()
+	stderr.Reset()
+	if code := Main([]string{"invert", dir + "/mine.fits", "--ratio", dir + "/none.fits", "-o", out + "2"}, &stdout, &stderr); code != 2 {
+		t.Fatalf("exit %d: %s", code, stderr.String())
+	}
+}
+
+// The Python of the README writes files that invert and scenario check accept.
+func TestReadmePythonOutside(t *testing.T) {
+	text, err := os.ReadFile("../../README.md")
+	if err != nil {
+		t.Fatal(err)
+	}
+	blocks := strings.Split(string(text), "```python\n")[1:]
+	if len(blocks) != 2 {
+		t.Fatalf("%d blocks of Python", len(blocks))
+	}
+	dir := t.TempDir()
+	for _, b := range blocks {
+		b, _, _ = strings.Cut(b, "```")
+		fitstest.Python(t, "import os, sys\nos.chdir(sys.argv[1])\n"+b, dir)
+	}
+	scenario := filepath.Join(dir, "mine.yaml")
+	if err := os.WriteFile(scenario, []byte("about: a corona from numpy\ncorona:\n  grid:\n    file: corona.fits\nimage:\n  from: 268 deg\n  to: 272 deg\n"), 0o666); err != nil {
+		t.Fatal(err)
+	}
+	for _, args := range [][]string{
+		{"scenario", "check", scenario},
+		{"invert", filepath.Join(dir, "mine.fits"), "--filter", "0.13", "--quiet", "-o", filepath.Join(dir, "maps")},
+	} {
+		var stdout, stderr bytes.Buffer
+		if code := Main(args, &stdout, &stderr); code != 0 {
+			t.Errorf("%v: exit %d: %s", args, code, stderr.String())
+		}
+	}
 }
