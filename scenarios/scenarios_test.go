@@ -303,6 +303,7 @@ func TestRules(t *testing.T) {
 		{"image.to=0 deg", "--set image.to: 0 deg must be more than from, 0 deg"},
 		{"image.to=360.5 deg", "--set image.to: 360.5 deg is more than 360 deg beyond from, 0 deg"},
 		{"image.pixel=1.2 arcsec", "--set image.pixel: 1.2 arcsec makes an image of 4.66e+06 pixels; at most 4e+06 are allowed"},
+		{"camera.cadence=0.1 s|camera.exposure=10 ms|camera.duration=20 h", "--set camera.cadence: 3.55e+05 pixels, 3 tunings and a frame every 0.1 s for 72000 s make 3.07e+03 GB of frames; at most 200 GB are allowed"},
 		{"image.pixel=1.3 arcsec", ""}, // (2 * 1.35 * 959.2 / 1.3)^2 = 3.97e6
 		{"image.pixel=0.2 arcsec|image.from=265 deg|image.to=275 deg", ""},
 		{"corona.fields=[]", "--set corona.fields: is empty; give at least one field"},

@@ -9,8 +9,12 @@ import (
 	"offplane/scenarios/units"
 )
 
-// maxPixels bounds the rectangle around the field of view.
-const maxPixels = 4e6
+// maxPixels bounds the rectangle around the field of view, maxFrames the bytes of all
+// its frames: beyond lie mistyped numbers.
+const (
+	maxPixels = 4e6
+	maxFrames = 200e9
+)
 
 // A validator notes broken rules, each at the key to change.
 type validator struct {
@@ -105,6 +109,9 @@ func (v *validator) image(s *Scenario) {
 	n := m.pixels(s.Observer.Distance)
 	v.rule(n <= maxPixels, []string{"image.pixel", "image.inner", "image.outer", "image.from", "image.to", "image.roll", "observer.distance"},
 		"%v makes an image of %.3g pixels; at most %.3g are allowed", m.Pixel, n, float64(maxPixels))
+	bytes := 4 * n * float64(len(s.Camera.Tunings)) * float64(s.Camera.Duration/s.Camera.Cadence)
+	v.rule(bytes <= maxFrames, []string{"camera.cadence", "camera.duration", "image.pixel"},
+		"%.3g pixels, %d tunings and a frame every %v for %v make %.3g GB of frames; at most %.3g GB are allowed", n, len(s.Camera.Tunings), s.Camera.Cadence, s.Camera.Duration, bytes/1e9, maxFrames/1e9)
 	if !s.Sight.Plane {
 		step := s.Sight.Step * s.Waves.Cell.Rsun() * float64(m.Outer)
 		v.rule(float64(s.Sight.Reach) >= 10*step, []string{"sight.reach", "sight.step", "waves.cell", "image.outer"},
