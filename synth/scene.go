@@ -2,6 +2,7 @@ package synth
 
 import (
 	"context"
+	"errors"
 	"fmt"
 	"math"
 	"slices"
@@ -63,6 +64,9 @@ func NewScene(ctx context.Context, s *scenarios.Scenario, light Light, workers i
 	}
 	view := model.NewView(s.Observer.Latitude.Rad(), s.Observer.Longitude.Rad())
 	grid := NewGrid(s, light.Rest[0])
+	if len(Field(&grid, s)) == 0 {
+		return nil, errors.New("image: the centre of no pixel lies in the field of view: a wider wedge or smaller pixels would do")
+	}
 	corona, err := model.New(ctx, s.Corona, model.Settings{
 		Outer: outer, InwardFrom: float64(s.Waves.InwardFrom), Seed: s.Seed, Workers: workers, Seen: seen(s, view, grid.Step()),
 	})

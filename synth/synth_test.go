@@ -392,12 +392,11 @@ func TestAmplitudesKeepTheEnergyFlux(t *testing.T) {
 
 // Superposition: the Doppler rms is 0.12 to 0.13 of the local line-of-sight rms for
 // cells of 7 Mm (derived, stratified radial corona), and within the published 4.5-10 %
-// only for finer strands (Pant et al. 2019, ApJ 881, 95); here a loose check that many
-// independent cells were really added up.
+// only for finer strands (Pant et al. 2019, ApJ 881, 95).
 func TestSuperpositionReducesTheDopplerRms(t *testing.T) {
 	s, l := load(t, "sphere", "image.from=255 deg", "image.to=285 deg", "image.pixel=20 arcsec", "camera.duration=2 h", "sight.step=0.7")
 	c := scene(t, s, l)
-	o, tr, err := c.Observe(context.Background(), 0, nil)
+	o, _, err := c.Observe(context.Background(), 0, nil)
 	if err != nil {
 		t.Fatal(err)
 	}
@@ -415,9 +414,9 @@ func TestSuperpositionReducesTheDopplerRms(t *testing.T) {
 		v2 += m2/k - m*m/k/k
 		n++
 	}
-	_ = tr
 	got := math.Sqrt(v2/n) / float64(s.Waves.Amplitude) // one polarisation is along the ray at x = 0
-	if got < 0.10 || got > 0.15 {
+	// The range derived, widened by the 5 % that some 400 correlated pixels scatter.
+	if got < 0.114 || got > 0.137 {
 		t.Errorf("Doppler rms over local rms: %.3f", got)
 	}
 }

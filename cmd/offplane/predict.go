@@ -2,7 +2,6 @@ package main
 
 import (
 	"context"
-	"errors"
 	"time"
 
 	"offplane/compare/trial"
@@ -77,9 +76,6 @@ func predict(ctx context.Context, l *scenarios.Loaded, workers int) (*prediction
 	scene, err := synth.NewScene(ctx, s, light, workers)
 	if err != nil {
 		return nil, err
-	}
-	if len(synth.Field(&scene.Grid, s)) == 0 {
-		return nil, errors.New("image: the centre of no pixel lies in the field of view: a wider wedge or smaller pixels would do")
 	}
 	build := time.Since(started).Seconds()
 	inner, outer := float64(s.Image.Inner), float64(s.Image.Outer)

@@ -6,7 +6,6 @@ import (
 	"context"
 	"crypto/sha256"
 	"encoding/hex"
-	"errors"
 	"fmt"
 	"io"
 	"os"
@@ -76,9 +75,6 @@ func Observe(ctx context.Context, l *scenarios.Loaded, s Settings) (*Outcome, er
 	o := &Outcome{Files: files}
 	if o.Scene, err = synth.NewScene(ctx, c, light, s.Workers); err != nil {
 		return nil, err
-	}
-	if len(synth.Field(&o.Scene.Grid, c)) == 0 {
-		return nil, errors.New("image: the centre of no pixel lies in the field of view: a wider wedge or smaller pixels would do")
 	}
 	o.Observation, o.Truth, err = o.Scene.Observe(ctx, s.Workers, s.report("synthesis"))
 	if err != nil {

@@ -90,7 +90,8 @@ type Map struct {
 	Codes []Code // meaning of the bits or codes of Ints, written to the header
 }
 
-// A Code names one bit (flags) or one value (classes) of an integer map.
+// A Code names one bit (flags: Value is its mask) or one value (classes) of an integer
+// map.
 type Code struct {
 	Value int32
 	Name  string

@@ -6,10 +6,11 @@ import (
 	"slices"
 	"strings"
 
+	"offplane/scenarios/units"
 	"offplane/synth/fits"
 )
 
-const lightSpeed = 299792.458 // [km/s] exact
+const lightSpeed = units.LightSpeed / 1e5 // [km/s]
 
 // UserData names the files of somebody's own observation, each as FILE or FILE[EXT],
 // and says what their headers do not. Only First is needed.
