@@ -1,8 +1,11 @@
 package invert
 
 import (
+	"context"
 	"math"
 	"math/rand/v2"
+	"slices"
+	"strings"
 	"testing"
 
 	"offplane/synth/obs"
@@ -171,5 +174,37 @@ func TestAdaptiveBox(t *testing.T) {
 	t.Logf("fills %v, angle error %v deg, island %v pixels", fills, wrong, pixels)
 	if fills[false] < 0.3 || fills[true] > 0.1 || wrong[true] > 0.5*wrong[false] || pixels[true] < 1.5*pixels[false] {
 		t.Errorf("fills %v, angle error %v deg, island %v pixels", fills, wrong, pixels)
+	}
+}
+
+// Directions from outside: those that the islands gave bring the same speeds back, but
+// for their rounding to float32; tracks at an angle to waves that are coherent all along
+// their fronts see them faster by its secant (derived).
+func TestDirectionsFromOutside(t *testing.T) {
+	opt := Default()
+	opt.Separation = false
+	q := defaultPatch()
+	q.frames, q.roll, q.angle = 240, 33, q.pa+20
+	own := q.invert(t, opt)
+	opt.Directions = slices.Clone(own.Maps.Get("ANGLE").Data)
+	again := q.invert(t, opt)
+	checkFlags(t, again)
+	for i, v := range own.Maps.Get("SPEED").Data {
+		if w := again.Maps.Get("SPEED").Data[i]; (v == v) != (w == w) || math.Abs(float64(w/v)-1) > 1e-3 {
+			t.Fatalf("pixel %d: %g km/s on its own track, %g on the same again", i, v, w)
+		}
+	}
+	const off = 15.0
+	q.cell = 1000
+	for i := range opt.Directions {
+		opt.Directions[i] = float32(q.angle + off)
+	}
+	ratio := median(values(q.invert(t, opt).Maps.Get("SPEED"))) / q.v
+	if want := 1 / math.Cos(off*math.Pi/180); math.Abs(ratio/want-1) > 0.01 {
+		t.Errorf("tracks %g deg off the waves: %.4f of the speed, want %.4f", off, ratio, want)
+	}
+	opt.Directions = opt.Directions[1:]
+	if _, err := Invert(context.Background(), q.observe(), powerLaw{1.4, 1.8}, opt, 0, nil); err == nil || !strings.Contains(err.Error(), "directions") {
+		t.Errorf("too few directions: %v", err)
 	}
 }

@@ -48,6 +48,10 @@ type Options struct {
 	// their own at the end, such as SPEED_PAIR. The default, and what none stands for, is
 	// Lag alone.
 	Estimators []string
+
+	// Directions, if not nil, are taken in place of the islands' [deg, like ANGLE], one a
+	// pixel of the grid, NaN for none: other data on the tracks of these. The default is nil.
+	Directions []float32
 }
 
 // Default returns the customary recipe (common practice; see the fields).
@@ -252,6 +256,9 @@ func newRun(o *obs.Observation, e line.Emitter, opt Options) (*run, error) {
 	b, err := newBand(&opt, when.frames, when.cadence)
 	if err != nil {
 		return nil, err
+	}
+	if d := opt.Directions; d != nil && len(d) != o.Grid.Nx*o.Grid.Ny {
+		return nil, fmt.Errorf("inversion: %d directions for a grid of %d x %d", len(d), o.Grid.Nx, o.Grid.Ny)
 	}
 	var means [2]*means
 	for i := range means {
@@ -621,6 +628,10 @@ func (r *run) direct(w *worker, p int) {
 	if r.norm[p] == 0 {
 		return
 	}
+	if r.opt.Directions != nil {
+		r.follow(p)
+		return
+	}
 	s := w.islands.adapt(p)
 	r.set(mapIsland, p, float64(s.count))
 	r.set(mapCoherence, p, s.coherence)
@@ -638,8 +649,7 @@ func (r *run) direct(w *worker, p int) {
 		r.flag[p] |= FlagIslandRound
 		return
 	}
-	sin, cos := math.Sincos(2 * s.angle)
-	r.axis[p] = [2]float32{float32(cos), float32(sin)}
+	r.turn(p, s.angle)
 	// PA = atan2(-y, z) of a vector at angle a + roll from west toward north.
 	pa := math.Mod(s.angle*180/math.Pi+r.grid.Roll-90, 180)
 	if pa < 0 {
@@ -650,6 +660,23 @@ func (r *run) direct(w *worker, p int) {
 	}
 	r.set(mapAngle, p, pa)
 	r.set(mapAngleErr, p, s.err*180/math.Pi)
+}
+
+// turn sets the axis of a pixel at an angle of the image [rad].
+func (r *run) turn(p int, angle float64) {
+	sin, cos := math.Sincos(2 * angle)
+	r.axis[p] = [2]float32{float32(cos), float32(sin)}
+}
+
+// follow takes the direction of a pixel from outside.
+func (r *run) follow(p int) {
+	pa := r.opt.Directions[r.pixels[p]]
+	if pa != pa {
+		r.flag[p] |= FlagIslandRound
+		return
+	}
+	r.turn(p, (float64(pa)-r.grid.Roll+90)*math.Pi/180)
+	r.set(mapAngle, p, float64(pa))
 }
 
 // leastRise is the gain in distance from the Sun over a track's length below which
