@@ -72,7 +72,7 @@ func Source(name string) ([]byte, error) {
 // an embedded scenario. The error is of type strict.Problems if the scenario was
 // found but is not valid.
 func Load(nameOrPath string, assignments ...string) (*Loaded, error) {
-	if isFile(nameOrPath) {
+	if IsFile(nameOrPath) {
 		data, err := read(nameOrPath)
 		if err != nil {
 			stem := strings.TrimSuffix(filepath.Base(nameOrPath), filepath.Ext(nameOrPath))
@@ -90,7 +90,9 @@ func Load(nameOrPath string, assignments ...string) (*Loaded, error) {
 	return Parse(nameOrPath, data, assignments...)
 }
 
-func isFile(name string) bool {
+// IsFile reports whether Load takes a name for a file: it has the suffix .yaml or .yml or
+// a path separator.
+func IsFile(name string) bool {
 	ext := filepath.Ext(name)
 	return ext == ".yaml" || ext == ".yml" || strings.ContainsRune(name, '/') || strings.ContainsRune(name, filepath.Separator)
 }
@@ -109,7 +111,7 @@ func read(path string) ([]byte, error) {
 func Parse(source string, data []byte, assignments ...string) (*Loaded, error) {
 	l := &Loaded{Scenario: Default(), source: source, data: data, assignments: assignments}
 	l.Name = filepath.Base(source)
-	if isFile(source) {
+	if IsFile(source) {
 		l.Name = strings.TrimSuffix(l.Name, filepath.Ext(l.Name))
 	}
 	at, err := strict.Read(source, data, &l.Scenario, assignments...)
@@ -148,7 +150,7 @@ func Parse(source string, data []byte, assignments ...string) (*Loaded, error) {
 // beside makes a relative path that was written in a file one beside that file; paths
 // in assignments are relative to the folder in which the program runs.
 func beside(source string, assignments []string, key string, path *string) {
-	if *path == "" || filepath.IsAbs(*path) || !isFile(source) {
+	if *path == "" || filepath.IsAbs(*path) || !IsFile(source) {
 		return
 	}
 	for _, a := range assignments {
