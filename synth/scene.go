@@ -42,6 +42,7 @@ type Scene struct {
 	band    bandTable
 	filter  float64      // 1/e half-width [km/s], first line; the second scales
 	tunings [2][]float64 // Doppler offsets [km/s] per line
+	as      Assume
 }
 
 // Trains that have travelled so long that damping leaves less than wave.Tolerance of
@@ -58,6 +59,11 @@ const kms = 1e5
 
 // NewScene builds the corona, traces its field lines and prepares the driver.
 func NewScene(ctx context.Context, s *scenarios.Scenario, light Light, workers int) (*Scene, error) {
+	return NewSceneAs(ctx, s, light, workers, Assume{})
+}
+
+// NewSceneAs is NewScene under assumptions.
+func NewSceneAs(ctx context.Context, s *scenarios.Scenario, light Light, workers int, as Assume) (*Scene, error) {
 	outer := math.Hypot(float64(s.Image.Outer), float64(s.Sight.Reach)) + 0.1
 	if s.Sight.Plane {
 		outer = float64(s.Image.Outer) + 0.1
@@ -67,13 +73,17 @@ func NewScene(ctx context.Context, s *scenarios.Scenario, light Light, workers i
 	if len(Field(&grid, s)) == 0 {
 		return nil, errors.New("image: the centre of no pixel lies in the field of view: a wider wedge or smaller pixels would do")
 	}
-	corona, err := model.New(ctx, s.Corona, model.Settings{
-		Outer: outer, InwardFrom: float64(s.Waves.InwardFrom), Seed: s.Seed, Workers: workers, Seen: seen(s, view, grid.Step()),
-	})
-	if err != nil {
-		return nil, err
+	corona := as.Corona
+	if corona == nil {
+		var err error
+		corona, err = model.New(ctx, s.Corona, model.Settings{
+			Outer: outer, InwardFrom: float64(s.Waves.InwardFrom), Seed: s.Seed, Workers: workers, Seen: seen(s, view, grid.Step()),
+		})
+		if err != nil {
+			return nil, err
+		}
 	}
-	c := &Scene{Grid: grid, Corona: corona, s: s, light: light, view: view, cell: s.Waves.Cell.Rsun()}
+	c := &Scene{Grid: grid, Corona: corona, s: s, light: light, view: view, cell: s.Waves.Cell.Rsun(), as: as}
 	for l := range 2 {
 		toKms := units.LightSpeed / kms / light.Rest[l]
 		for _, t := range s.Camera.Tunings {
@@ -86,16 +96,20 @@ func NewScene(ctx context.Context, s *scenarios.Scenario, light Light, workers i
 	if xi := s.Waves.Damping; xi > 0 {
 		c.longest = min(c.longest, xi*math.Log(1/wave.Tolerance)/oldest)
 	}
+	if as.Delay > 0 {
+		c.longest = min(c.longest, as.Delay)
+	}
 	if c.longest > tooLong {
 		return nil, fmt.Errorf("waves need %.3g h along the slowest field line, more than %.3g h: a stronger field, a thinner corona or damped waves (waves.damping) would do", c.longest/3600, tooLong/3600.)
 	}
 	sp := s.Waves.Spectrum
+	var err error
 	c.Driver, err = wave.NewDriver(wave.Settings{
 		Seed: s.Seed, Cell: c.cell,
 		Spectrum: wave.Spectrum{Slope: sp.Slope, Floor: sp.Floor, Bump: sp.Bump, At: sp.BumpAt.Hz(), Width: sp.BumpWidth, Low: sp.Low.Hz(), High: sp.High.Hz()},
 		Damping:  s.Waves.Damping,
 		Cadence:  float64(s.Camera.Cadence), Frames: Frames(s),
-		MaxDelay: c.longest, MaxLead: camera.Latest(s.Camera),
+		MaxDelay: max(c.longest, as.Delay), MaxLead: max(camera.Latest(s.Camera), as.Lead),
 	})
 	if err != nil {
 		return nil, err
@@ -289,6 +303,9 @@ func (c *Scene) sampleAt(x, dx, y, z float64) sample {
 	pos := c.view.ToSun(r3.Vec{X: x, Y: y, Z: z})
 	s := sample{x: x, dx: dx, point: c.Corona.At(pos)}
 	p := &s.point
+	if c.as.Projected {
+		p.R = math.Hypot(y, z)
+	}
 	b := c.view.ToSky(p.B)
 	bSky := math.Hypot(b.Y, b.Z)
 	s.bSky = bSky

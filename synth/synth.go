@@ -37,6 +37,16 @@ func (c *Scene) Observe(ctx context.Context, workers int, progress func(done, to
 }
 
 func (c *Scene) observe(ctx context.Context, workers, tile int, progress func(done, total int)) (*obs.Observation, *Truth, error) {
+	e, truth, err := c.expose(ctx, workers, tile, progress)
+	if err != nil {
+		return nil, nil, err
+	}
+	o, err := e.develop(ctx, workers)
+	return o, truth, err
+}
+
+// expose makes the light before the camera's stages.
+func (c *Scene) expose(ctx context.Context, workers, tile int, progress func(done, total int)) (*Exposed, *Truth, error) {
 	nt := Frames(c.s)
 	nk := len(c.s.Camera.Tunings)
 	cam := c.camera()
@@ -99,7 +109,13 @@ func (c *Scene) observe(ctx context.Context, workers, tile int, progress func(do
 	if err != nil {
 		return nil, nil, err
 	}
+	return &Exposed{d, raw}, truth, nil
+}
 
+// develop takes the light through the camera's stages. It uses the light up.
+func (e *Exposed) develop(ctx context.Context, workers int) (*obs.Observation, error) {
+	d := e.development
+	c, cam, plan := d.c, d.cam, d.plan
 	o := &obs.Observation{Grid: c.Grid, Pixels: d.field, Unit: Unit}
 	for l := range 2 {
 		for k, off := range c.s.Camera.Tunings {
@@ -112,7 +128,7 @@ func (c *Scene) observe(ctx context.Context, workers, tile int, progress func(do
 		if !c.s.Camera.Noise { // as if every photon were endlessly many electrons
 			electrons, readNoise = math.Inf(1), 0
 		}
-		for f := range raw[l].Frames {
+		for f := range e.raw[l].Frames {
 			o.Exposures = append(o.Exposures, obs.Exposure{
 				Line: l + 1, Frame: f, Time: plan.Time(l, f, float64(c.s.Camera.Cadence)), Exposure: float64(c.s.Camera.Exposure),
 				Electrons: electrons, Background: background, ReadNoise: readNoise,
@@ -120,16 +136,17 @@ func (c *Scene) observe(ctx context.Context, workers, tile int, progress func(do
 		}
 	}
 	for l := range 2 {
-		if o.Frames[l], err = d.develop(ctx, raw[l], l, workers); err != nil {
-			return nil, nil, err
+		var err error
+		if o.Frames[l], err = d.develop(ctx, e.raw[l], l, workers); err != nil {
+			return nil, err
 		}
-		raw[l] = nil
+		e.raw[l] = nil
 		o.Mean[l] = means(o.Frames[l])
 	}
 	if o = withoutDark(o); len(o.Pixels) == 0 {
-		return nil, nil, errors.New("camera: no pixel of the field has a whole frame; all are occulted, saturated or lost")
+		return nil, errors.New("camera: no pixel of the field has a whole frame; all are occulted, saturated or lost")
 	}
-	return o, truth, nil
+	return o, nil
 }
 
 // camera returns the camera of the scene.

@@ -1,0 +1,100 @@
+package synth
+
+import (
+	"context"
+
+	"offplane/model"
+	"offplane/scenarios"
+	"offplane/synth/camera"
+	"offplane/synth/obs"
+)
+
+// Assume is what a scene takes over from another one, and what it pretends: with it an
+// error budget turns one assumption of the inversion at a time into the truth. The zero
+// value assumes nothing.
+type Assume struct {
+	// Corona is used instead of one of the scene's own, if not nil. It must be that of the
+	// same scenario but for what model.New does not read.
+	Corona *model.Corona
+	// Delay is a travel time [s] that the driver holds in any case, and trains that took
+	// longer are left out; 0: the scene's own. Lead is a time within a frame [s] that it
+	// holds. Scenes of one seed, cadence and duration see the same waves only if these two
+	// agree.
+	Delay, Lead float64
+	// Projected: the disc excites every parcel of plasma as if it lay at the projected
+	// distance of its line of sight.
+	Projected bool
+}
+
+// Delay returns the longest travel time of the scene's trains [s].
+func (c *Scene) Delay() float64 { return c.longest }
+
+// Exposed is the light of a scene before it passes the camera's stages.
+type Exposed struct {
+	*development
+	raw [2]*obs.Cube
+}
+
+// Expose makes the light and the truth of a scene; Develop makes observations of it.
+func (c *Scene) Expose(ctx context.Context, workers int, progress func(done, total int)) (*Exposed, *Truth, error) {
+	return c.expose(ctx, workers, tile, progress)
+}
+
+// Develop makes an observation with a camera that may have fewer stages than the
+// scene's, but no others, and the same tunings, times and field of view. Without lost
+// frames none is lost, whatever the camera says. The light can be used again.
+func (e *Exposed) Develop(ctx context.Context, cam scenarios.Camera, lost bool, workers int) (*obs.Observation, error) {
+	s := *e.c.s
+	s.Camera = cam
+	c := *e.c
+	c.s = &s
+	d := *e.development
+	d.c, d.cam = &c, c.camera()
+	if cam.Pointing == nil {
+		for l := range d.moves {
+			d.moves[l] = make([][]camera.Move, len(d.moves[l]))
+		}
+	}
+	if !lost {
+		plan := *d.plan
+		for l := range plan.Lost {
+			plan.Lost[l] = make([]bool, len(plan.Lost[l]))
+		}
+		d.plan = &plan
+	}
+	n := Exposed{development: &d}
+	for l, raw := range e.raw {
+		n.raw[l] = raw
+		if cam.Scatter != nil && raw.Frames > 0 { // scattering works in place
+			copied := *raw
+			copied.Data = append([]float32(nil), raw.Data...)
+			n.raw[l] = &copied
+		}
+	}
+	return n.develop(ctx, workers)
+}
+
+// Piece returns the k-th of n pieces of equal length of an observation that keeps its
+// frames and has a whole number of frames of each line in each.
+func Piece(o *obs.Observation, k, n int) *obs.Observation {
+	p := *o
+	p.Exposures = nil
+	p.Grid.Duration /= float64(n)
+	for l, c := range o.Frames {
+		part := obs.NewCube(c.Pixels, c.Tunings, c.Frames/n)
+		for i := range c.Pixels {
+			for j := range c.Tunings {
+				copy(part.Series(i, j), c.Series(i, j)[k*part.Frames:])
+			}
+		}
+		p.Frames[l] = part
+		p.Mean[l] = means(part)
+		log := o.LineExposures(l + 1)[k*part.Frames:][:part.Frames]
+		for f := range log {
+			log[f].Frame = f
+			log[f].Time -= float64(k) * o.Grid.Duration / float64(n)
+		}
+		p.Exposures = append(p.Exposures, log...)
+	}
+	return withoutDark(&p)
+}
