@@ -35,6 +35,10 @@ type Options struct {
 	Mu     float64 // rho / (m_p n_e) that the inversion assumed; 0: not known
 	MuTrue float64 // of the corona; 0: not known
 
+	// Plane is SPEED_PLANE [km/s], one number a pixel: what the same tracker finds in the
+	// plane of the sky alone, without noise (trial.Plane). Nil: not known.
+	Plane []float32
+
 	// Edges of the height bins [solar radii], ascending. Nil: steps of 0.05 that
 	// cover the field.
 	Edges []float64
@@ -50,7 +54,7 @@ type File struct {
 // A Verdict is all that comparing yields.
 type Verdict struct {
 	Summary Summary
-	Maps    obs.Maps   // bias.fits: B_RATIO, SPEED_RATIO, NE_RATIO, ANGLE_DIFF; NaN where there is no ratio
+	Maps    obs.Maps   // bias.fits: B_RATIO, SPEED_RATIO, NE_RATIO, ANGLE_DIFF, with Options.Plane METHOD_RATIO; NaN where there is no ratio
 	Heights ecsv.Table // bias.ecsv: one row a height bin
 	Flags   []Flag     // why pixels of the field have no value or a doubtful one
 	Field   []bool     // pixel of the field, in raster order
@@ -91,6 +95,9 @@ func Compare(g *obs.Grid, truth, inferred obs.Maps, o Options) (*Verdict, error)
 	}
 	if err := check(g, inferred, "inferred", inferredUnits); err != nil {
 		return nil, err
+	}
+	if n := g.Nx * g.Ny; o.Plane != nil && len(o.Plane) != n {
+		return nil, fmt.Errorf("speeds of one plane: %d pixels; the grid has %d", len(o.Plane), n)
 	}
 	known := false
 	for i := range truth {
@@ -209,6 +216,12 @@ func (c *comparison) partition() {
 		c.edges = Edges(lo, hi, 20)
 	}
 	c.bins = make([]subset, max(0, len(c.edges)-1))
+	for h := range c.bins {
+		c.bins[h].of = []int{} // nil is the whole field
+	}
+	for k := range c.classes {
+		c.classes[k].of = []int{}
+	}
 	for k, i := range pixels {
 		at := -1
 		use := c.valid[i] || !c.hasB
@@ -309,6 +322,13 @@ func (c *comparison) maps() obs.Maps {
 		}
 		ms = append(ms, m)
 	}
+	if sky := c.truth.Get("SPEED_SKY"); c.o.Plane != nil && sky != nil {
+		m := obs.Map{Name: "METHOD_RATIO", About: "speed by the tracker from one plane, no noise, over true speed", Data: make([]float32, len(c.field))}
+		for i := range m.Data {
+			m.Data[i] = float32(ratio(c.o.Plane[i], sky.Data[i]))
+		}
+		ms = append(ms, m)
+	}
 	return ms
 }
 
@@ -357,8 +377,11 @@ func (c *comparison) flags() []Flag {
 	return fs
 }
 
-// pick returns the values of x at the positions of one subset; x itself if all.
+// pick returns the values of x at the positions of one region; x itself if of is nil.
 func pick(x []float64, of []int) []float64 {
+	if of == nil {
+		return x
+	}
 	y := make([]float64, len(of))
 	for k, p := range of {
 		y[k] = x[p]
@@ -366,23 +389,26 @@ func pick(x []float64, of []int) []float64 {
 	return y
 }
 
-// summarise returns the Summary of x over each bin, class and the whole field,
-// nil everywhere if x is nil.
+// each calls do for the whole field, whose positions are nil, every bin and every class.
+func (c *comparison) each(do func(region int, of []int)) {
+	do(whole, nil)
+	for h := range c.bins {
+		do(h, c.bins[h].of)
+	}
+	for k := range c.classes {
+		do(-1-k, c.classes[k].of)
+	}
+}
+
+// summarise returns the Summary of x over every region; none if x is nil.
 func (c *comparison) summarise(x []float64, put func(region int, s *stat.Summary)) {
 	if x == nil {
 		return
 	}
-	one := func(region int, x []float64) {
-		s := stat.Summarise(x)
+	c.each(func(region int, of []int) {
+		s := stat.Summarise(pick(x, of))
 		put(region, &s)
-	}
-	one(whole, x)
-	for h := range c.bins {
-		one(h, pick(x, c.bins[h].of))
-	}
-	for k := range c.classes {
-		one(-1-k, pick(x, c.classes[k].of))
-	}
+	})
 }
 
 // Regions count height bins from 0, structures downward from -1 (by code), and

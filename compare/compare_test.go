@@ -57,6 +57,45 @@ func TestIdentityCloses(t *testing.T) {
 	}
 }
 
+// A tracker that on one plane finds 0.9 of the speed: ln 0.9 is the method's, the
+// invented 1.03 of SPEED_WAVE the line of sight's, and pixel by pixel the three parts are
+// the speed's.
+func TestMethodAgainstSun(t *testing.T) {
+	c := comparetest.Ring(160)
+	if s := verdict(t, c).Summary; s.Identity.Method != nil || s.Identity.Rest != nil || s.Identity.Sight == nil {
+		t.Error("without a one-plane run the method is not known, the line of sight is")
+	}
+	sky := c.Truth.Get("SPEED_SKY").Data
+	c.Options.Plane = make([]float32, len(sky))
+	for i, v := range sky {
+		c.Options.Plane[i] = 0.9 * v
+	}
+	v := verdict(t, c)
+	for _, id := range []compare.LnParts{v.Summary.Identity, v.Summary.Heights[2].Identity, v.Summary.Structure.Open.Identity} {
+		if math.Abs(id.Method.Median-math.Log(0.9)) > 1e-6 || math.Abs(id.Sight.Median-math.Log(1.03)) > 1e-6 {
+			t.Errorf("method %.7f, want ln 0.9; line of sight %.7f, want ln 1.03", id.Method.Median, id.Sight.Median)
+		}
+		if d := id.Rest.Median - (id.Speed.Median - math.Log(0.9*1.03)); math.Abs(d) > 1e-6 {
+			t.Errorf("the rest is %g off what is left of the speed", d)
+		}
+	}
+	if m := v.Maps.Get("METHOD_RATIO"); m == nil || math.Abs(stat.Median(floats(m.Data))-0.9) > 1e-6 {
+		t.Error("METHOD_RATIO is not 0.9")
+	}
+	c.Options.Plane = c.Options.Plane[1:]
+	if _, err := compare.Compare(&c.Grid, c.Truth, c.Inferred, c.Options); err == nil {
+		t.Error("one pixel too few was taken")
+	}
+}
+
+func floats(x []float32) []float64 {
+	y := make([]float64, len(x))
+	for i, v := range x {
+		y[i] = float64(v)
+	}
+	return y
+}
+
 // The medians of the invented ratios are known: factors of the formulas.
 func TestRatios(t *testing.T) {
 	c := comparetest.Ring(160)
@@ -196,6 +235,7 @@ func keys(t *testing.T, text []byte) string {
 func TestSummaryKeys(t *testing.T) {
 	c := comparetest.Wedge(0.02)
 	c.Options.Edges = []float64{1.05, 1.35}
+	c.Options.Plane = c.Truth.Get("SPEED_SKY").Data
 	v := verdict(t, c)
 	var b bytes.Buffer
 	if err := v.Summary.WriteJSON(&b); err != nil {
@@ -204,8 +244,8 @@ func TestSummaryKeys(t *testing.T) {
 	const (
 		s      = "{median p2_5 p16 p84 p97_5 count }"
 		ratios = "ratios {field {sky " + s + "emission " + s + "wave " + s + "total " + s + "}speed {sky " + s + "wave " + s + "}density {sky " + s + "emission " + s + "}}"
-		region = "{valid_fraction " + ratios + "pixels valid }"
-		parts  = "identity {ln_field " + s + "ln_speed " + s + "half_ln_density " + s + "half_ln_mu minus_half_ln_kink " + s + "residual_max }"
+		parts  = "identity {ln_field " + s + "ln_speed " + s + "half_ln_density " + s + "half_ln_mu minus_half_ln_kink " + s + "residual_max ln_speed_method " + s + "ln_speed_sight " + s + "ln_speed_rest " + s + "}"
+		region = "{valid_fraction " + ratios + "pixels valid " + parts + "}"
 	)
 	want := "{schema scenario seed version scenario_sha256 estimator pixels {total valid valid_fraction }" + ratios +
 		"angle_error_deg " + s + "angle_signed_deg " + s +

@@ -13,6 +13,14 @@ import (
 //
 //	ln(B/B_SKY) = ln(v/SPEED_SKY) + 1/2 ln(n/NE_SKY) + 1/2 ln(mu/mu_true) - 1/2 ln(NE_KINK/NE_SKY)
 //
+// The speed's part is split once more. SPEED_PLANE is what the same tracker finds on the
+// same tracks where only the plane of the sky emits and no camera disturbs (see
+// trial.Plane), SPEED_WAVE the kink speed along the line of sight as the wave power
+// weighs it; what is left over is the camera, and that method and line of sight act
+// on each other:
+//
+//	ln(v/SPEED_SKY) = ln(SPEED_PLANE/SPEED_SKY) + ln(SPEED_WAVE/SPEED_SKY) + rest
+//
 // A part is NaN where one of its maps has no positive value.
 type Parts struct {
 	Field   float64 // ln(B/B_SKY)
@@ -20,6 +28,11 @@ type Parts struct {
 	Density float64 // 1/2 ln(n/NE_SKY)
 	Mu      float64 // 1/2 ln(mu/mu_true)
 	Kink    float64 // -1/2 ln(NE_KINK/NE_SKY)
+
+	// The parts of Speed.
+	Method float64 // ln(SPEED_PLANE/SPEED_SKY): the tracker's own bias
+	Sight  float64 // ln(SPEED_WAVE/SPEED_SKY): the line of sight
+	Rest   float64 // Speed - Method - Sight
 }
 
 // Residual returns what the identity leaves over: rounding of the maps to
@@ -28,8 +41,10 @@ func (p Parts) Residual() float64 { return p.Field - (p.Speed + p.Density + p.Mu
 
 // An Identity splits the bias of B pixel by pixel.
 type Identity struct {
-	b, bSky, v, vSky, n, nSky, kink []float32
-	mu                              float64
+	Plane []float32 // SPEED_PLANE [km/s]; nil: not known, and Method and Rest are NaN
+
+	b, bSky, v, vSky, vWave, n, nSky, kink []float32
+	mu                                     float64
 }
 
 // NewIdentity takes the maps B, SPEED, NE and B_SKY, SPEED_SKY, NE_SKY, NE_KINK;
@@ -44,7 +59,7 @@ func NewIdentity(truth, inferred obs.Maps, mu, muTrue float64) *Identity {
 	}
 	id := &Identity{
 		b: data(inferred, "B"), bSky: data(truth, "B_SKY"),
-		v: data(inferred, "SPEED"), vSky: data(truth, "SPEED_SKY"),
+		v: data(inferred, "SPEED"), vSky: data(truth, "SPEED_SKY"), vWave: data(truth, "SPEED_WAVE"),
 		n: data(inferred, "NE"), nSky: data(truth, "NE_SKY"), kink: data(truth, "NE_KINK"),
 		mu: math.NaN(),
 	}
@@ -62,11 +77,15 @@ func (id *Identity) At(i int) Parts {
 		}
 		return math.Log(ratio(a[i], b[i]))
 	}
-	return Parts{
+	p := Parts{
 		Field:   ln(id.b, id.bSky),
 		Speed:   ln(id.v, id.vSky),
 		Density: 0.5 * ln(id.n, id.nSky),
 		Mu:      id.mu,
 		Kink:    -0.5 * ln(id.kink, id.nSky),
+		Method:  ln(id.Plane, id.vSky),
+		Sight:   ln(id.vWave, id.vSky),
 	}
+	p.Rest = p.Speed - p.Method - p.Sight
+	return p
 }

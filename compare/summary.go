@@ -4,6 +4,7 @@ import (
 	"encoding/json"
 	"io"
 	"math"
+	"slices"
 
 	"offplane/compare/stat"
 	"offplane/model"
@@ -82,6 +83,7 @@ type Region struct {
 	Ratios        Ratios      `json:"ratios"`
 	Total         int         `json:"pixels"`
 	Valid         int         `json:"valid"`
+	Identity      LnParts     `json:"identity"`
 }
 
 // LnParts summarises the Parts of the pixels: natural logarithms of the factors
@@ -93,6 +95,11 @@ type LnParts struct {
 	Mu          stat.Number   `json:"half_ln_mu"`
 	Kink        *stat.Summary `json:"minus_half_ln_kink"`
 	ResidualMax stat.Number   `json:"residual_max"` // largest absolute residual of a pixel
+
+	// The parts of ln_speed.
+	Method *stat.Summary `json:"ln_speed_method"` // the tracker's own
+	Sight  *stat.Summary `json:"ln_speed_sight"`  // the line of sight's
+	Rest   *stat.Summary `json:"ln_speed_rest"`   // the camera's and what none of the two explains alone
 }
 
 // WriteJSON writes the summary as indented JSON with a final newline.
@@ -172,7 +179,15 @@ func (c *comparison) summary() Summary {
 			s.DopplerRMS = x
 		}
 	})
-	c.identity(&s)
+	c.identity(func(region int) *LnParts {
+		switch {
+		case region == whole:
+			return &s.Identity
+		case region >= 0:
+			return &s.Heights[region].Identity
+		}
+		return &regions[-1-region].Identity
+	})
 	return s
 }
 
@@ -191,45 +206,44 @@ var pairs = []struct {
 	{"density_emission", "NE", "NE_EMIS", func(r *Ratios) **stat.Summary { return &r.Density.Emission }},
 }
 
-func (c *comparison) identity(s *Summary) {
-	id := NewIdentity(c.truth, c.inferred, c.o.Mu, c.o.MuTrue)
-	n := len(c.used)
-	field, speed, density, kink, rest := make([]float64, n), make([]float64, n), make([]float64, n), make([]float64, n), make([]float64, n)
-	for k, i := range c.used {
-		p := id.At(i)
-		field[k], speed[k], density[k], kink[k], rest[k] = p.Field, p.Speed, p.Density, p.Kink, math.Abs(p.Residual())
-	}
-	missing := func(a, b []float32, x []float64) []float64 {
-		if a == nil || b == nil {
-			return nil
-		}
-		return x
-	}
-	parts := func(region int) *LnParts {
-		switch {
-		case region == whole:
-			return &s.Identity
-		case region >= 0:
-			return &s.Heights[region].Identity
-		}
-		return new(LnParts) // not reported by structure
-	}
-	c.summarise(missing(id.b, id.bSky, field), func(r int, x *stat.Summary) { parts(r).Field = x })
-	c.summarise(missing(id.v, id.vSky, speed), func(r int, x *stat.Summary) { parts(r).Speed = x })
-	c.summarise(missing(id.n, id.nSky, density), func(r int, x *stat.Summary) { parts(r).Density = x })
-	c.summarise(missing(id.kink, id.nSky, kink), func(r int, x *stat.Summary) { parts(r).Kink = x })
+// lnParts lists the parts of the identity and the maps without which there are none.
+var lnParts = []struct {
+	part func(p *Parts) float64
+	of   func(l *LnParts) **stat.Summary
+	maps func(id *Identity) [][]float32
+}{
+	{func(p *Parts) float64 { return p.Field }, func(l *LnParts) **stat.Summary { return &l.Field }, func(id *Identity) [][]float32 { return [][]float32{id.b, id.bSky} }},
+	{func(p *Parts) float64 { return p.Speed }, func(l *LnParts) **stat.Summary { return &l.Speed }, func(id *Identity) [][]float32 { return [][]float32{id.v, id.vSky} }},
+	{func(p *Parts) float64 { return p.Density }, func(l *LnParts) **stat.Summary { return &l.Density }, func(id *Identity) [][]float32 { return [][]float32{id.n, id.nSky} }},
+	{func(p *Parts) float64 { return p.Kink }, func(l *LnParts) **stat.Summary { return &l.Kink }, func(id *Identity) [][]float32 { return [][]float32{id.kink, id.nSky} }},
+	{func(p *Parts) float64 { return p.Method }, func(l *LnParts) **stat.Summary { return &l.Method }, func(id *Identity) [][]float32 { return [][]float32{id.Plane, id.vSky} }},
+	{func(p *Parts) float64 { return p.Sight }, func(l *LnParts) **stat.Summary { return &l.Sight }, func(id *Identity) [][]float32 { return [][]float32{id.vWave, id.vSky} }},
+	{func(p *Parts) float64 { return p.Rest }, func(l *LnParts) **stat.Summary { return &l.Rest }, func(id *Identity) [][]float32 { return [][]float32{id.v, id.Plane, id.vWave, id.vSky} }},
+}
 
-	largest := func(x []float64) stat.Number {
-		m := math.NaN()
-		for _, v := range x {
-			if finite(v) && !(v <= m) {
-				m = v
-			}
+// identity fills in the parts of every region, in the order of Regions.
+func (c *comparison) identity(parts func(region int) *LnParts) {
+	id := NewIdentity(c.truth, c.inferred, c.o.Mu, c.o.MuTrue)
+	id.Plane = c.o.Plane
+	pixels := make([]Parts, len(c.used))
+	for k, i := range c.used {
+		pixels[k] = id.At(i)
+	}
+	x := make([]float64, len(pixels))
+	for _, q := range lnParts {
+		if slices.ContainsFunc(q.maps(id), func(m []float32) bool { return m == nil }) {
+			continue
 		}
-		return stat.Number(m)
+		for k := range pixels {
+			x[k] = q.part(&pixels[k])
+		}
+		c.summarise(x, func(region int, s *stat.Summary) { *q.of(parts(region)) = s })
 	}
-	s.Identity.Mu, s.Identity.ResidualMax = stat.Number(id.mu), largest(rest)
-	for h := range s.Heights {
-		s.Heights[h].Identity.Mu, s.Heights[h].Identity.ResidualMax = stat.Number(id.mu), largest(pick(rest, c.bins[h].of))
+	for k := range pixels {
+		x[k] = math.Abs(pixels[k].Residual())
 	}
+	c.each(func(region int, of []int) {
+		p := parts(region)
+		p.Mu, p.ResidualMax = stat.Number(id.mu), stat.Number(stat.Quantile(1, pick(x, of)))
+	})
 }

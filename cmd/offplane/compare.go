@@ -67,7 +67,7 @@ of the truth and say its unit in BUNIT. What is not given is null in summary.jso
 		defer bar.wipe()
 		l := in.scenario
 		r.Inputs, r.Scenario, r.ScenarioSHA256, r.Seed = entries, l.Name, l.SHA256, &l.Scenario.Seed
-		v, err := trial.Judge(l, in.grid, in.truth, in.inferred, in.files, version().Version)
+		v, err := trial.Judge(l, in.grid, in.truth, in.inferred, nil, in.files, version().Version)
 		if err != nil {
 			return misuse(err)
 		}

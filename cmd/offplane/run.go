@@ -4,6 +4,7 @@ import (
 	"context"
 	"fmt"
 	"io"
+	"math"
 
 	"github.com/spf13/cobra"
 
@@ -29,7 +30,8 @@ and leaves in DIR
   report.html       the verdict for people
   summary.json      the verdict for machines
   bias.ecsv         the bias by height
-  bias.fits         inferred over true, pixel by pixel
+  bias.fits         inferred over true, pixel by pixel, and METHOD_RATIO: what the
+                    tracker alone makes of the same waves on one plane, without noise
   truth.fits        the corona as it was
   observation.fits  the data, without their frames unless --frames is given
   inferred.fits     what the inversion made of them
@@ -74,8 +76,15 @@ func (p *program) run(ctx context.Context, l *scenarios.Loaded, w *work, g *gate
 	if err := p.infer(ctx, o, l.Scenario.Inversion, w, f, r, bar); err != nil {
 		return err
 	}
+	o.Observation.Frames = [2]*obs.Cube{} // the next run needs their place
+	bar.update("method", 0, 0)
+	o.Plane, err = trial.Plane(ctx, l, o.Inferred.Maps.Get("ANGLE").Data, trial.Settings{Workers: w.workers, Progress: bar.update})
+	if err != nil {
+		return computing(ctx, err)
+	}
+	r.stage("method")
 	bar.update("verdict", 0, 0)
-	if o.Verdict, err = trial.Judge(l, o.Truth.Grid, o.Truth.Maps, o.Inferred.Maps, o.Files, version().Version); err != nil {
+	if o.Verdict, err = trial.Judge(l, o.Truth.Grid, o.Truth.Maps, o.Inferred.Maps, o.Plane, o.Files, version().Version); err != nil {
 		return err
 	}
 	if err := writeVerdict(f, &o.Truth.Grid, o.Verdict, l, o.Files); err != nil {
@@ -139,6 +148,10 @@ func (p *program) printVerdict(w *work, s *compare.Summary) error {
 		default:
 			fmt.Fprintf(p.stdout, "%-8s %.3f (%.3f-%.3f)\n", q.name, q.s.Median, q.s.P16, q.s.P84)
 		}
+	}
+	if id := &s.Identity; id.Method != nil && id.Method.Count > 0 {
+		fmt.Fprintf(p.stdout, "of the speed, medians: method alone %.3f, line of sight %.3f, camera and rest %.3f\n",
+			math.Exp(id.Method.Median), math.Exp(id.Sight.Median), math.Exp(id.Rest.Median))
 	}
 	if s.Ratios.Field.Sky != nil {
 		fmt.Fprintf(p.stdout, "valid    %d of %d pixels (%.1f %%)\n", s.Pixels.Valid, s.Pixels.Total, 100*float64(s.Pixels.ValidFraction))

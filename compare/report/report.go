@@ -154,7 +154,16 @@ func (r *Report) identitySentence() string {
 	if !math.IsNaN(float64(id.ResidualMax)) {
 		s += " Pixel by pixel the factors multiply to the bias of the field within " + scientific(float64(id.ResidualMax), 0) + "."
 	}
-	return s
+	return s + methodSentence(&id)
+}
+
+// methodSentence tells the method's own bias from that of the line of sight.
+func methodSentence(id *compare.LnParts) string {
+	if id.Method == nil || id.Sight == nil || id.Rest == nil || id.Rest.Count == 0 {
+		return ""
+	}
+	return fmt.Sprintf(" Of the speed's factor, the method alone makes ×%.3f: the same tracker on the same tracks, where only the plane of the sky shines and no camera disturbs. The line of sight makes ×%.3f (wave-weighted over plane-of-sky kink speed); ×%.3f is left for the camera and for what method and line of sight do to each other (medians).",
+		math.Exp(id.Method.Median), math.Exp(id.Sight.Median), math.Exp(id.Rest.Median))
 }
 
 // Figures draws the figures that the maps allow, in the order of the report.
@@ -383,6 +392,11 @@ func (r *Report) parts(foot string) (Figure, bool) {
 			return &stat.Summary{Median: float64(p.Mu)}
 		}),
 	}
+	method := ""
+	if r.Verdict.Summary.Identity.Method != nil {
+		method = " The method alone, a factor of the speed's, is the same tracker on the same tracks where only the plane of the sky shines and there is no noise."
+		factors = append(factors, get(key{"of the speed: method alone", stroke{ink, 3.5, []float64{3, 6}}, false}, func(p *compare.LnParts) *stat.Summary { return p.Method }))
+	}
 	e := r.Verdict.Summary.Estimator
 	if e != "" {
 		e = fmt.Sprintf("; phase-speed estimator %q", e)
@@ -391,8 +405,8 @@ func (r *Report) parts(foot string) (Figure, bool) {
 		Name: "identity",
 		PNG:  partsFigure(heights, [2]float64{float64(hs[0].From), float64(hs[n-1].To)}, factors, valid, foot),
 		Alt:  "Left: the median factors of the field's bias against height: speed, square root of density, density that the wave feels, composition, and their product. Right: the fraction of valid pixels against height.",
-		Caption: fmt.Sprintf("Where the bias comes from. Left: factors of B / B_SKY (pure numbers, logarithmic scale), median of each height bin; the band is the 16–84 %% range of the whole. Truths: B_SKY, SPEED_SKY, NE_SKY, NE_KINK%s. In each pixel B / B_SKY is the product of the four; medians of factors need not multiply exactly. Right: valid pixels over pixels of the field. Domain: %s.",
-			e, r.domain()),
+		Caption: fmt.Sprintf("Where the bias comes from. Left: factors of B / B_SKY (pure numbers, logarithmic scale), median of each height bin; the band is the 16–84 %% range of the whole. Truths: B_SKY, SPEED_SKY, NE_SKY, NE_KINK%s. In each pixel B / B_SKY is the product of the four; medians of factors need not multiply exactly.%s Right: valid pixels over pixels of the field. Domain: %s.",
+			e, method, r.domain()),
 	}, true
 }
 
@@ -454,6 +468,14 @@ func scientific(v float64, decimals int) string {
 	return mantissa + "×10" + superscript(e)
 }
 
+// exponential turns a summary of logarithms into one of ratios: quantiles go along.
+func exponential(s *stat.Summary) *stat.Summary {
+	if s == nil {
+		return nil
+	}
+	return &stat.Summary{Median: math.Exp(s.Median), P2_5: math.Exp(s.P2_5), P16: math.Exp(s.P16), P84: math.Exp(s.P84), P97_5: math.Exp(s.P97_5), Count: s.Count}
+}
+
 func ratioRows(s *compare.Summary) (rows []ratioRow) {
 	for _, q := range []struct {
 		quantity, truth, meaning string
@@ -466,6 +488,7 @@ func ratioRows(s *compare.Summary) (rows []ratioRow) {
 		{"B", "BTOT_SKY", "magnitude of the whole field vector at the plane of the sky", s.Ratios.Field.Total, 3},
 		{"SPEED", "SPEED_SKY", "projected kink speed at the plane of the sky, without flow", s.Ratios.Speed.Sky, 3},
 		{"SPEED", "SPEED_WAVE", "projected kink speed weighted by wave power", s.Ratios.Speed.Wave, 3},
+		{"SPEED, one plane", "SPEED_SKY", "the method alone: same tracker and tracks, only the plane of the sky shines, no noise", exponential(s.Identity.Method), 3},
 		{"NE", "NE_SKY", "electron density at the plane of the sky", s.Ratios.Density.Sky, 3},
 		{"NE", "NE_EMIS", "electron density weighted by emission", s.Ratios.Density.Emission, 3},
 		{"DOPPLER_RMS", "DOPPLER_LOCAL", "rms of the local line-of-sight velocity in the band", s.DopplerRMS, 3},

@@ -27,6 +27,7 @@ type File = compare.File
 type Settings struct {
 	Workers  int    // < 1: every core
 	Version  string // of the program, for the verdict
+	Method   bool   // measure the tracker's own bias too, on one plane
 	Progress func(stage string, done, total int)
 }
 
@@ -43,6 +44,7 @@ type Outcome struct {
 	Observation *obs.Observation // with frames
 	Truth       *synth.Truth
 	Inferred    *invert.Result
+	Plane       []float32 // see Plane; nil unless it was asked for
 	Verdict     *compare.Verdict
 	Files       []File
 }
@@ -61,7 +63,12 @@ func Run(ctx context.Context, l *scenarios.Loaded, s Settings) (*Outcome, error)
 	if o.Inferred, err = invert.Invert(ctx, o.Observation, emitter, Options(v), s.Workers, s.report("inversion")); err != nil {
 		return nil, err
 	}
-	o.Verdict, err = Judge(l, o.Truth.Grid, o.Truth.Maps, o.Inferred.Maps, o.Files, s.Version)
+	if s.Method {
+		if o.Plane, err = Plane(ctx, l, o.Inferred.Maps.Get("ANGLE").Data, s); err != nil {
+			return nil, err
+		}
+	}
+	o.Verdict, err = Judge(l, o.Truth.Grid, o.Truth.Maps, o.Inferred.Maps, o.Plane, o.Files, s.Version)
 	return o, err
 }
 
@@ -93,12 +100,14 @@ func Observe(ctx context.Context, l *scenarios.Loaded, s Settings) (*Outcome, er
 	return o, nil
 }
 
-// Judge compares inferred maps with the truth of a scenario.
-func Judge(l *scenarios.Loaded, g obs.Grid, truth, inferred obs.Maps, files []File, version string) (*compare.Verdict, error) {
+// Judge compares inferred maps with the truth of a scenario. plane is what Plane returns;
+// it may be nil.
+func Judge(l *scenarios.Loaded, g obs.Grid, truth, inferred obs.Maps, plane []float32, files []File, version string) (*compare.Verdict, error) {
 	c := &l.Scenario
 	return compare.Compare(&g, truth, inferred, compare.Options{
 		Scenario: l.Name, Seed: c.Seed, Version: version, SHA256: l.SHA256, Text: string(l.Canonical), Files: files,
 		Estimator: estimator(c), Mu: c.Inversion.Mu, MuTrue: model.Mu(c.Corona.Helium),
+		Plane: plane,
 	})
 }
 
