@@ -10,8 +10,6 @@ import (
 	"strconv"
 	"strings"
 	"unicode/utf8"
-
-	"go.yaml.in/yaml/v4"
 )
 
 // Encode writes a struct, or a pointer to one, as canonical YAML: fields in order,
@@ -157,23 +155,21 @@ func scalarText(v reflect.Value) string {
 var dateLike = regexp.MustCompile(`^[0-9]{4}-[0-9]{2}-[0-9]{2}T[0-9:.]+Z$`)
 
 func safe(s string) bool {
-	return plain.MatchString(s) && !strings.Contains(s, "  ") && tagOf(s) != "!!null"
+	return plain.MatchString(s) && !strings.Contains(s, "  ") && !strings.EqualFold(s, "null")
 }
-
-// tagOf returns what YAML takes s for if it stands without quotes.
-func tagOf(s string) string { return (&yaml.Node{Kind: yaml.ScalarNode, Value: s}).ShortTag() }
 
 // word begins what no YAML reader takes for a number or a date.
 var word = regexp.MustCompile(`^([A-Za-z]|1/)`)
 
-var oldBooleans = []string{"y", "n", "yes", "no", "on", "off"} // of YAML 1.1
+// booleans of YAML 1.1 and 1.2.
+var booleans = []string{"y", "n", "yes", "no", "on", "off", "true", "false"}
 
 // quoted writes a string, with quotes unless every YAML reader takes it for text.
 func quoted(s string) string {
 	if !utf8.ValidString(s) {
 		panic(fmt.Sprintf("strict: %q is not UTF-8", s))
 	}
-	if word.MatchString(s) && safe(s) && tagOf(s) == "!!str" && !slices.Contains(oldBooleans, strings.ToLower(s)) {
+	if word.MatchString(s) && safe(s) && !slices.Contains(booleans, strings.ToLower(s)) {
 		return s
 	}
 	return strconv.Quote(s)
