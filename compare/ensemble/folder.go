@@ -17,6 +17,9 @@ const (
 	failedName   = "FAILED"
 )
 
+// Entries are the names in the folder of an ensemble that Run writes.
+var Entries = []string{ensembleName, membersName}
+
 func memberFolder(dir string, number int) string {
 	return filepath.Join(dir, membersName, fmt.Sprintf("%06d", number))
 }

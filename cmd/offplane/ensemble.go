@@ -1,0 +1,328 @@
+package main
+
+import (
+	"context"
+	"errors"
+	"fmt"
+	"os"
+	"path/filepath"
+	"strings"
+	"text/tabwriter"
+
+	"github.com/spf13/cobra"
+
+	"offplane/compare/ensemble"
+	"offplane/synth/parallel"
+)
+
+func (p *program) ensembleCommand() *cobra.Command {
+	cmd := &cobra.Command{
+		Use:   "ensemble",
+		Short: "Many scenarios that differ in chosen parameters, here or on a cluster",
+		Args:  noCommand,
+		RunE:  func(cmd *cobra.Command, _ []string) error { return cmd.Help() },
+	}
+	cmd.AddCommand(p.ensembleList(), p.ensembleShow(), p.ensembleRun(), p.ensembleStatus(), p.ensembleGather(), p.ensembleSubmit())
+	return cmd
+}
+
+func (p *program) ensembleList() *cobra.Command {
+	cmd := &cobra.Command{Use: "list", Short: "List the embedded ensembles", Args: noArguments}
+	cmd.RunE = do(func(context.Context, []string) error {
+		t := tabwriter.NewWriter(p.stdout, 0, 0, 2, ' ', 0)
+		for _, name := range ensemble.Names() {
+			l, err := ensemble.Load(name)
+			if err != nil {
+				return err
+			}
+			fmt.Fprintf(t, "%s\t%s\n", name, l.About)
+		}
+		return t.Flush()
+	})
+	return cmd
+}
+
+func (p *program) ensembleShow() *cobra.Command {
+	member := -1
+	cmd := &cobra.Command{
+		Use:   "show ENSEMBLE",
+		Short: "Print an ensemble as it was written, or the scenario of one member",
+		Args:  argument("the name of an ensemble or a file"),
+	}
+	cmd.RunE = do(func(_ context.Context, args []string) error {
+		l, err := ensemble.Load(args[0])
+		if err != nil {
+			return misuse(err)
+		}
+		text, err := ensemble.Source(args[0])
+		switch {
+		case member >= l.Members || member < 0 && cmd.Flags().Changed("member"):
+			return misusef("--member %d: the members are 0 to %d", member, l.Members-1)
+		case member >= 0:
+			s, _, err := l.Member(member)
+			if err != nil {
+				return err
+			}
+			text = s.Canonical
+		case err != nil:
+			text = l.Canonical
+		}
+		_, err = p.stdout.Write(text)
+		return err
+	})
+	cmd.Flags().IntVar(&member, "member", -1, "print the resolved scenario of member `N`, from 0")
+	return cmd
+}
+
+// members holds the flags that say which members are computed and which may be missing.
+type members struct {
+	work
+	task, tasks int
+	retry       bool
+	accept      bool
+	cmd         *cobra.Command
+}
+
+func (m *members) acceptFlag(cmd *cobra.Command) {
+	cmd.Flags().BoolVar(&m.accept, "accept-failed", false, "gather although members failed; the table is told which")
+}
+
+func (p *program) ensembleRun() *cobra.Command {
+	var m members
+	cmd := &cobra.Command{
+		Use:   "run ENSEMBLE -o DIR",
+		Short: "Compute the members of an ensemble that are not there yet",
+		Long: `run computes the members of an ensemble (the name of an embedded one, or a file), one
+core each, and leaves in DIR
+
+  ensemble.yaml   the ensemble with every default filled in; written first
+  members/NNNNNN  a folder a member: member.fits, or FAILED with the reason
+  members.ecsv    one row a member: parameters, counts, sums; written by gathering
+  run.json        written last, when every member is there
+
+Whatever stops it, the same command goes on: members that are whole stay. A member is
+the same bytes wherever it is computed, so an ensemble may be shared out: --task N of
+--tasks M computes members N, N+M, N+2M, ... and does not gather.`,
+		Example: `  offplane ensemble run small -o small
+  offplane ensemble run mine.yaml -o mine --task 3 --tasks 40
+  offplane ensemble gather mine`,
+		Args: argument("the name of an ensemble or a file"),
+	}
+	m.cmd = cmd
+	m.flags(cmd)
+	m.acceptFlag(cmd)
+	cmd.Flags().IntVar(&m.task, "task", 0, "compute the share of task `N` only, from 0")
+	cmd.Flags().IntVar(&m.tasks, "tasks", 0, "`number` of tasks; 0: one a member")
+	cmd.Flags().BoolVar(&m.retry, "retry-failed", false, "compute again what failed")
+	cmd.RunE = do(func(ctx context.Context, args []string) error {
+		l, err := ensemble.Load(args[0])
+		if err != nil {
+			return misuse(err)
+		}
+		return p.runEnsemble(ctx, l, &m)
+	})
+	return cmd
+}
+
+func (p *program) runEnsemble(ctx context.Context, l *ensemble.Loaded, m *members) error {
+	numbers, err := m.share(l)
+	if err != nil {
+		return err
+	}
+	if err := m.prepare(l); err != nil {
+		return err
+	}
+	bar := newProgress(p.stderr, m.quiet)
+	defer bar.wipe()
+	s := ensemble.Settings{Workers: m.workers, Version: version().Version, RetryFailed: m.retry, Progress: bar.stageFunc("members")}
+	if err := ensemble.Run(ctx, l, m.out, numbers, s); err != nil {
+		return err
+	}
+	bar.wipe()
+	if !m.part() {
+		return p.gather(m)
+	}
+	set, err := ensemble.Open(m.out)
+	if err != nil {
+		return err
+	}
+	return failures(set, numbers)
+}
+
+// part reports whether one task is asked for.
+func (m *members) part() bool { return m.cmd.Flags().Changed("task") }
+
+// share returns the members to compute.
+func (m *members) share(l *ensemble.Loaded) ([]int, error) {
+	switch {
+	case m.out == "":
+		return nil, misusef("offplane ensemble run needs a folder for the results: -o DIR")
+	case m.workers < 0:
+		return nil, misusef("--workers %d: write 0 for all cores, or their number", m.workers)
+	case !m.part() && m.cmd.Flags().Changed("tasks"):
+		return nil, misusef("--tasks goes with --task N")
+	case m.tasks < 0:
+		return nil, misusef("--tasks %d: write how many there are, or 0 for one a member", m.tasks)
+	case !m.part():
+		return l.Share(0, 1), nil
+	}
+	tasks := m.tasks
+	if tasks == 0 {
+		tasks = l.Members
+	}
+	if m.task < 0 || m.task >= tasks {
+		return nil, misusef("--task %d: the tasks are 0 to %d", m.task, tasks-1)
+	}
+	return l.Share(m.task, tasks), nil
+}
+
+// prepare holds the folder against the ensemble. A task never clears it: others may be
+// at work there.
+func (m *members) prepare(l *ensemble.Loaded) error {
+	if m.force && m.part() {
+		return misusef("--force does not go with --task: other tasks may be at work in %s", m.out)
+	}
+	if m.force {
+		if err := clearEnsemble(m.out); err != nil {
+			return err
+		}
+	}
+	err := ensemble.Prepare(l, m.out)
+	switch {
+	case errors.Is(err, ensemble.ErrOther):
+		return misusef("%w: choose another folder, or write over it with --force", err)
+	case err != nil:
+		return misuse(err)
+	case m.part() || m.retry:
+		return nil
+	case exists(filepath.Join(m.out, recordName)):
+		return misusef("%s is complete: choose another folder, or write over it with --force", m.out)
+	}
+	return nil
+}
+
+// clearEnsemble takes away what run and gather leave; the record first, so that the
+// folder is not complete from then on.
+func clearEnsemble(dir string) error {
+	for _, name := range append([]string{recordName, membersFile}, ensemble.Entries...) {
+		if err := os.RemoveAll(filepath.Join(dir, name)); err != nil {
+			return err
+		}
+	}
+	return nil
+}
+
+// failures returns an error if some of these members failed.
+func failures(set *ensemble.Set, numbers []int) error {
+	asked := map[int]bool{}
+	for _, i := range numbers {
+		asked[i] = true
+	}
+	var failed []int
+	for _, i := range set.Failed {
+		if asked[i] {
+			failed = append(failed, i)
+		}
+	}
+	if len(failed) == 0 {
+		return nil
+	}
+	return fmt.Errorf("%d of %d members failed; member %d: %s (compute them again with --retry-failed, or go without them with gather --accept-failed)",
+		len(failed), len(numbers), failed[0], strings.TrimSpace(set.Reason(failed[0])))
+}
+
+func (p *program) ensembleStatus() *cobra.Command {
+	var json bool
+	cmd := &cobra.Command{
+		Use:   "status DIR",
+		Short: "Say how many members of an ensemble are there, failed, missing",
+		Args:  argument("the folder of an ensemble"),
+	}
+	cmd.RunE = do(func(_ context.Context, args []string) error {
+		set, err := ensemble.Open(args[0])
+		if err != nil {
+			return misuse(err)
+		}
+		gathered := exists(filepath.Join(args[0], recordName))
+		if json {
+			return writeJSON(p.stdout, struct {
+				Schema   int    `json:"schema"`
+				SHA256   string `json:"ensemble_sha256"`
+				Members  int    `json:"members"`
+				Done     int    `json:"done"`
+				Failed   []int  `json:"failed"`
+				Missing  []int  `json:"missing"`
+				Gathered bool   `json:"gathered"`
+			}{1, set.Ensemble.SHA256, set.Ensemble.Members, len(set.Done), notNull(set.Failed), notNull(set.Missing), gathered})
+		}
+		fmt.Fprintf(p.stdout, "members  %d\ndone     %d\nfailed   %d\nmissing  %d\n", set.Ensemble.Members, len(set.Done), len(set.Failed), len(set.Missing))
+		for _, i := range set.Failed {
+			fmt.Fprintf(p.stdout, "%d: %s\n", i, strings.TrimSpace(set.Reason(i)))
+		}
+		if gathered {
+			fmt.Fprintln(p.stdout, "gathered")
+		}
+		return nil
+	})
+	cmd.Flags().BoolVar(&json, "json", false, "one JSON document")
+	return cmd
+}
+
+// notNull is n, and [] rather than null in JSON.
+func notNull(n []int) []int { return append([]int{}, n...) }
+
+func (p *program) ensembleGather() *cobra.Command {
+	var m members
+	cmd := &cobra.Command{
+		Use:   "gather DIR",
+		Short: "Check that every member is there and whole, and write their index",
+		Long: `gather reads every member, checks that all belong to the ensemble and were made by one
+version of the program, and writes members.ecsv and run.json. Exit code 75 says that
+members are missing: offplane ensemble run goes on with them.`,
+		Args: argument("the folder of an ensemble"),
+	}
+	m.acceptFlag(cmd)
+	cmd.Flags().BoolVar(&m.quiet, "quiet", false, "no results on standard output")
+	cmd.RunE = do(func(_ context.Context, args []string) error {
+		m.out = args[0]
+		return p.gather(&m)
+	})
+	return cmd
+}
+
+const membersFile = "members.ecsv"
+
+// gather makes the folder complete.
+func (p *program) gather(m *members) error {
+	set, err := ensemble.Open(m.out)
+	if err != nil {
+		return misuse(err)
+	}
+	if n := len(set.Missing); n > 0 {
+		return &fault{exitStopped, fmt.Errorf("%s: %d of %d members are missing, the first is %d; offplane ensemble run goes on with them", m.out, n, set.Ensemble.Members, set.Missing[0])}
+	}
+	if !m.accept {
+		if err := failures(set, set.Ensemble.Share(0, 1)); err != nil {
+			return err
+		}
+	}
+	f, err := p.open(m.out, job{Command: "ensemble", SHA256: set.Ensemble.SHA256, files: []string{membersFile}}, true)
+	if err != nil {
+		return err
+	}
+	defer f.abandon()
+	index, err := set.Index()
+	if err != nil {
+		return err
+	}
+	if err := index.WriteFile(f.path(membersFile)); err != nil {
+		return err
+	}
+	if err := f.finish(newRecord("ensemble", p.args, m.out, parallel.Workers(m.workers))); err != nil {
+		return err
+	}
+	if !m.quiet {
+		fmt.Fprintf(p.stdout, "members  %d, failed %d\nindex    %s\n", len(set.Done), len(set.Failed), f.path(membersFile))
+	}
+	return nil
+}
