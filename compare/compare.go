@@ -39,6 +39,8 @@ type Options struct {
 	// plane of the sky alone, without noise (trial.Plane). Nil: not known.
 	Plane []float32
 
+	Resampled []Resampled // maps that came from another grid
+
 	// Edges of the height bins [solar radii], ascending. Nil: steps of 0.05 that
 	// cover the field.
 	Edges []float64
@@ -49,6 +51,13 @@ type File struct {
 	Name   string `json:"name"` // without its folder, which differs between machines
 	SHA256 string `json:"sha256"`
 	Path   string `json:"-"`
+}
+
+// Resampled says how a map came onto the grid of the truth; see obs.Image.On.
+type Resampled struct {
+	Map    string  `json:"map"`
+	Method string  `json:"method"`
+	Pixel  float64 `json:"pixel_arcsec"` // side of a square as large as one of its own
 }
 
 // A Verdict is all that comparing yields.
@@ -68,32 +77,16 @@ type Flag struct {
 	Invalid     int // of these, without a valid B
 }
 
-// units of the maps that are compared; the first spelling is ours.
-var (
-	gauss    = []string{"G", "Gauss", "gauss"}
-	kms      = []string{"km/s", "km s-1", "km s**-1"}
-	perCubic = []string{"cm-3", "cm**-3", "cm^-3"}
-	degrees  = []string{"deg"}
-
-	truthUnits = map[string][]string{
-		"B_SKY": gauss, "B_EMIS": gauss, "B_WAVE": gauss, "BTOT_SKY": gauss,
-		"NE_SKY": perCubic, "NE_EMIS": perCubic, "NE_KINK": perCubic,
-		"SPEED_SKY": kms, "SPEED_WAVE": kms, "ANGLE_SKY": degrees, "DOPPLER_LOCAL": kms,
-	}
-	inferredUnits = map[string][]string{
-		"B": gauss, "NE": perCubic, "SPEED": kms, "ANGLE": degrees, "DOPPLER_RMS": kms,
-	}
-)
-
 // Compare holds the inferred maps against the truth on the same grid. Any map may
 // be missing, on either side: what depends on it is null in the summary. It
-// returns an error if a map does not fit the grid, has another unit, or if there
+// returns an error if a map does not fit the grid, has another unit (see
+// Standardise), or if there
 // is no truth at all.
 func Compare(g *obs.Grid, truth, inferred obs.Maps, o Options) (*Verdict, error) {
-	if err := check(g, truth, "truth", truthUnits); err != nil {
+	if err := check(g, truth, "truth", truthMaps); err != nil {
 		return nil, err
 	}
-	if err := check(g, inferred, "inferred", inferredUnits); err != nil {
+	if err := check(g, inferred, "inferred", inferredMaps); err != nil {
 		return nil, err
 	}
 	if n := g.Nx * g.Ny; o.Plane != nil && len(o.Plane) != n {
@@ -101,7 +94,7 @@ func Compare(g *obs.Grid, truth, inferred obs.Maps, o Options) (*Verdict, error)
 	}
 	known := false
 	for i := range truth {
-		known = known || truthUnits[truth[i].Name] != nil
+		known = known || truthMaps[truth[i].Name] != nil
 	}
 	if !known {
 		return nil, errors.New("the truth holds none of the maps B_SKY, BTOT_SKY, NE_SKY, SPEED_SKY, ...: nothing to compare with")
@@ -123,7 +116,7 @@ func Compare(g *obs.Grid, truth, inferred obs.Maps, o Options) (*Verdict, error)
 	return v, nil
 }
 
-func check(g *obs.Grid, ms obs.Maps, side string, units map[string][]string) error {
+func check(g *obs.Grid, ms obs.Maps, side string, quantities map[string]*quantity) error {
 	n := g.Nx * g.Ny
 	for i := range ms {
 		m := &ms[i]
@@ -134,18 +127,18 @@ func check(g *obs.Grid, ms obs.Maps, side string, units map[string][]string) err
 		if size != n {
 			return fmt.Errorf("%s map %s has %d pixels; the grid has %d x %d = %d", side, m.Name, size, g.Nx, g.Ny, n)
 		}
-		want := units[m.Name]
-		if want == nil {
+		q := quantities[m.Name]
+		if q == nil {
 			continue
 		}
 		if m.Data == nil {
 			return fmt.Errorf("%s map %s holds integers; it must hold floating-point numbers", side, m.Name)
 		}
-		if !slices.Contains(want, strings.TrimSpace(m.Unit)) {
+		if strings.TrimSpace(m.Unit) != q.unit {
 			if m.Unit == "" {
-				return fmt.Errorf("%s map %s has no unit (BUNIT); it must be in %s", side, m.Name, want[0])
+				return fmt.Errorf("%s map %s has no unit (BUNIT); it must be in %s", side, m.Name, q.unit)
 			}
-			return fmt.Errorf("%s map %s is in %q; it must be in %s", side, m.Name, m.Unit, want[0])
+			return fmt.Errorf("%s map %s is in %q; it must be in %s", side, m.Name, m.Unit, q.unit)
 		}
 	}
 	return nil
@@ -187,7 +180,7 @@ func (c *comparison) partition() {
 		}
 	} else {
 		for _, m := range c.truth {
-			if truthUnits[m.Name] == nil {
+			if truthMaps[m.Name] == nil {
 				continue
 			}
 			for i, v := range m.Data {

@@ -30,6 +30,7 @@ type Summary struct {
 	Identity       LnParts       `json:"identity"`
 	Text           string        `json:"scenario_text,omitempty"` // resolved scenario
 	Files          []File        `json:"files,omitempty"`         // named by the scenario
+	Resampled      []Resampled   `json:"resampled,omitempty"`     // maps that came from another grid
 }
 
 // Pixels counts the field.
@@ -121,7 +122,7 @@ func (c *comparison) summary() Summary {
 	o := c.o
 	s := Summary{
 		Schema: 1, Scenario: o.Scenario, Seed: o.Seed, Version: o.Version, ScenarioSHA256: o.SHA256, Estimator: o.Estimator,
-		Text: o.Text, Files: o.Files,
+		Text: o.Text, Files: o.Files, Resampled: o.Resampled,
 		Heights: make([]Height, len(c.bins)), // [] rather than null
 	}
 	valid := 0

@@ -13,6 +13,7 @@ import (
 	"offplane/compare/stat"
 	"offplane/compare/trial"
 	"offplane/scenarios"
+	"offplane/synth/fits"
 	"offplane/synth/obs"
 )
 
@@ -116,9 +117,14 @@ func (p *program) run(ctx context.Context, l *scenarios.Loaded, w *work, g *gate
 	return g.check(&o.Verdict.Summary)
 }
 
-// writeVerdict writes the files that run and compare share.
+// writeVerdict writes the files that run and compare share; of a user's own truth there
+// is no scenario.
 func writeVerdict(f *folder, g *obs.Grid, v *compare.Verdict, l *scenarios.Loaded, files []compare.File) error {
-	if err := obs.WriteMaps(f.path("bias.fits"), g, v.Maps, primary(), scenarioHDU(l, files)); err != nil {
+	var tables []fits.Table
+	if l != nil {
+		tables = append(tables, scenarioHDU(l, files))
+	}
+	if err := obs.WriteMaps(f.path("bias.fits"), g, v.Maps, primary(), tables...); err != nil {
 		return err
 	}
 	if err := f.write("summary.json", v.Summary.WriteJSON); err != nil {

@@ -103,12 +103,18 @@ func Observe(ctx context.Context, l *scenarios.Loaded, s Settings) (*Outcome, er
 // Judge compares inferred maps with the truth of a scenario. plane is what Plane returns;
 // it may be nil.
 func Judge(l *scenarios.Loaded, g obs.Grid, truth, inferred obs.Maps, plane []float32, files []File, version string) (*compare.Verdict, error) {
+	o := Provenance(l, files, version)
+	o.Plane = plane
+	return compare.Compare(&g, truth, inferred, o)
+}
+
+// Provenance says of a scenario and its recipe what the verdict must name.
+func Provenance(l *scenarios.Loaded, files []File, version string) compare.Options {
 	c := &l.Scenario
-	return compare.Compare(&g, truth, inferred, compare.Options{
+	return compare.Options{
 		Scenario: l.Name, Seed: c.Seed, Version: version, SHA256: l.SHA256, Text: string(l.Canonical), Files: files,
 		Estimator: estimator(c), Mu: c.Inversion.Mu, MuTrue: model.Mu(c.Corona.Helium),
-		Plane: plane,
-	})
+	}
 }
 
 // estimator returns the estimator behind SPEED and B; empty for a user's own maps.

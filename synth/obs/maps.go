@@ -128,13 +128,21 @@ func ReadMap(path, name string) (Grid, Map, error) {
 }
 
 func readMap(f *fits.File, h *fits.HDU) (Grid, Map, error) {
-	img, err := f.ReadImage(h)
+	m, err := readPixels(f, h)
 	if err != nil {
 		return Grid{}, Map{}, err
 	}
 	g, err := readGrid(h.Header, h.Axes)
 	if err != nil {
 		return Grid{}, Map{}, fmt.Errorf("%s[%s]: %w", f.Name, h.Name, err)
+	}
+	return g, m, nil
+}
+
+func readPixels(f *fits.File, h *fits.HDU) (Map, error) {
+	img, err := f.ReadImage(h)
+	if err != nil {
+		return Map{}, err
 	}
 	m := Map{Name: h.Name, Data: img.Data}
 	m.Unit, _ = h.Header.Text("BUNIT")
@@ -143,7 +151,7 @@ func readMap(f *fits.File, h *fits.HDU) (Grid, Map, error) {
 		m.Ints, m.Data = img.Ints, nil
 		m.Codes = readCodes(m.Name, h.Header)
 	}
-	return g, m, nil
+	return m, nil
 }
 
 func readCodes(name string, h fits.Header) []Code {
