@@ -7,6 +7,7 @@ import (
 	"testing"
 
 	"offplane/synth/camera"
+	"offplane/synth/kernel"
 	"offplane/synth/obs"
 )
 
@@ -27,6 +28,16 @@ func plane(t *testing.T, set ...string) *Scene {
 	return scene(t, s, l)
 }
 
+// light returns the radiance of a ray through every tuning of a line.
+func light(l *lamp, ray, line int) [][]float32 {
+	var out [][]float32
+	for k, a := range l.acc[line] {
+		out = append(out, make([]float32, len(a)/kernel.Rays))
+		l.take(out[k], ray, line, k)
+	}
+	return out
+}
+
 // frame returns the intensities of one frame of the first line.
 func frame(o *obs.Observation, p, f int) [3]float64 {
 	var i [3]float64
@@ -41,7 +52,7 @@ func TestEveryStageOffGivesTheRadiance(t *testing.T) {
 	s, l := load(t, "quick", "camera.noise=false", "camera.point_spread=0 arcsec", "image.from=270 deg", "image.to=270.5 deg", "camera.duration=20 min", "image.pixel=8 arcsec")
 	c := scene(t, s, l)
 	o := observe(t, c)
-	lamp := c.newLamp(camera.NewSchedule(s.Camera, Frames(s), s.Seed), 1)
+	lamp := c.newLamp(camera.NewSchedule(s.Camera, Frames(s), s.Seed))
 	for i, p := range o.Pixels {
 		y, z := c.Grid.Sky(int(p)%c.Grid.Nx, int(p)/c.Grid.Nx)
 		ray, err := c.ray(y, z, nil)
@@ -51,7 +62,7 @@ func TestEveryStageOffGivesTheRadiance(t *testing.T) {
 		lamp.shine([][]sample{ray})
 		for line := range 2 {
 			for k := range 3 {
-				if !slices.Equal(lamp.acc[0][line][k], o.Frames[line].Series(i, k)) {
+				if !slices.Equal(light(lamp, 0, line)[k], o.Frames[line].Series(i, k)) {
 					t.Fatalf("pixel %d, line %d, tuning %d differs", p, line+1, k)
 				}
 			}
@@ -164,20 +175,24 @@ func TestBudget(t *testing.T) {
 // (derived): the lamp with its vector code.
 func TestFiveStageFilterScalesTheVelocity(t *testing.T) {
 	c := plane(t, "camera.stages=5")
-	lamp := c.newLamp(camera.NewSchedule(c.s.Camera, Frames(c.s), 1), 1)
+	lamp := c.newLamp(camera.NewSchedule(c.s.Camera, Frames(c.s), 1))
 	toKms := lightSpeed / c.light.Rest[0]
 	for _, q := range [][2]float64{{0.110, 0.976}, {0.133, 0.982}, {0.160, 0.988}} {
 		s := sample{dx: 1, j: [2]float64{5, 2}, width: q[0] * toKms}
 		const v = 0.5
-		for f := range lamp.velocity[0] {
-			lamp.velocity[0][f] = v
+		moving := make([]float32, Frames(c.s)*kernel.Lanes)
+		for i := range moving {
+			moving[i] = v
 		}
-		for _, a := range lamp.acc[0][0] {
+		for _, a := range lamp.acc[0] {
 			clear(a)
 		}
-		lamp.emit(0, &s)
-		a := lamp.acc[0][0]
-		for _, f := range []int{0, Frames(c.s) - 1} { // vector code and its rest
+		for line := range 2 {
+			lamp.kindle(line, &batch{3: &s})
+		}
+		lamp.expose(0, moving)
+		a := light(lamp, 3, 0)
+		for _, f := range []int{0, Frames(c.s) - 1} {
 			got := doppler(float64(a[0][f]), float64(a[1][f]), float64(a[2][f]), c.tunings[0][2]) / v
 			if math.Abs(got-q[1]) > 0.002 {
 				t.Errorf("%g nm: velocity scale %.4f, want %.3f", q[0], got, q[1])
@@ -224,9 +239,9 @@ func TestSequentialTuningReducesAWave(t *testing.T) {
 	q := c.sampleAt(0, 1e10, 1.1, 0.01)
 	d := c.tunings[0][2]
 	rms := func(delay ...float64) float64 {
-		lamp := c.newLamp(&camera.Schedule{Delay: delay}, 1)
+		lamp := c.newLamp(&camera.Schedule{Delay: delay})
 		lamp.shine([][]sample{{q}})
-		a := lamp.acc[0][0]
+		a := light(lamp, 0, 0)
 		sum := 0.0
 		for f := range a[0] {
 			v := doppler(float64(a[0][f]), float64(a[1][f]), float64(a[2][f]), d)
@@ -253,7 +268,7 @@ func TestSecondLineHasItsOwnTime(t *testing.T) {
 	c := scene(t, s, l)
 	q := c.sampleAt(0, 1e10, 1.1, 0.01)
 	plan := camera.NewSchedule(s.Camera, Frames(s), 1)
-	lamp := c.newLamp(plan, 1)
+	lamp := c.newLamp(plan)
 	lamp.shine([][]sample{{q}})
 	var ts []train
 	wf := c.filter * l.Rest[0] / l.Rest[1]
@@ -270,7 +285,7 @@ func TestSecondLineHasItsOwnTime(t *testing.T) {
 				}
 			}
 			want := q.j[1] * q.dx * wf / w * math.Exp(-(d-v)*(d-v)/(w*w))
-			if got := float64(lamp.acc[0][1][k][i]); math.Abs(got/want-1) > 3e-4 {
+			if got := float64(light(lamp, 0, 1)[k][i]); math.Abs(got/want-1) > 3e-4 {
 				t.Errorf("frame %d, tuning %d: %g, want %g", i, k, got, want)
 			}
 		}

@@ -45,13 +45,14 @@ type Scene struct {
 	as      Assume
 }
 
-// Trains that have travelled so long that damping leaves less than wave.Tolerance of
-// their amplitude at the frequency oldest [Hz], far below the band of the inversion, are
-// left out. Without damping a corona is refused whose waves need longer than tooLong [s]:
+// Trains that have travelled so long that damping leaves less than faintest of their
+// amplitude at the frequency oldest [Hz], far below the band of the inversion, are left
+// out. Without damping a corona is refused whose waves need longer than tooLong [s]:
 // the memory for the driver grows with it.
 const (
-	oldest  = 1e-3
-	tooLong = 24 * 3600
+	faintest = 1e-3
+	oldest   = 1e-3
+	tooLong  = 24 * 3600
 )
 
 // kms is one km/s in cgs.
@@ -94,7 +95,7 @@ func NewSceneAs(ctx context.Context, s *scenarios.Scenario, light Light, workers
 	// Lines traced between the nodes of the model's table may take a little longer.
 	c.longest = 1.02*corona.LongestDelay(s.Waves.FarEnd, s.Waves.Inward > 0) + 60
 	if xi := s.Waves.Damping; xi > 0 {
-		c.longest = min(c.longest, xi*math.Log(1/wave.Tolerance)/oldest)
+		c.longest = min(c.longest, xi*math.Log(1/faintest)/oldest)
 	}
 	if as.Delay > 0 {
 		c.longest = min(c.longest, as.Delay)

@@ -9,6 +9,7 @@ import (
 
 	"offplane/scenarios"
 	"offplane/synth/camera"
+	"offplane/synth/kernel"
 	"offplane/synth/obs"
 	"offplane/synth/parallel"
 )
@@ -29,7 +30,7 @@ func Synthesize(ctx context.Context, s *scenarios.Scenario, light Light, workers
 
 // tile is the number of neighbouring pixels that a worker takes at a time. It changes
 // nothing but the time taken.
-const tile = 16
+const tile = 2 * kernel.Rays
 
 // Observe is Synthesize for a scene that is ready.
 func (c *Scene) Observe(ctx context.Context, workers int, progress func(done, total int)) (*obs.Observation, *Truth, error) {
@@ -79,7 +80,7 @@ func (c *Scene) expose(ctx context.Context, workers, tile int, progress func(don
 	done := progressCounter(len(order), progress)
 	err := parallel.For(ctx, (len(order)+tile-1)/tile, workers, func(w, i int) error {
 		if lamps[w] == nil {
-			lamps[w] = c.newLamp(plan, tile)
+			lamps[w] = c.newLamp(plan)
 			rays[w] = make([][]sample, tile)
 		}
 		part := order[i*tile : min((i+1)*tile, len(order))]
@@ -95,11 +96,14 @@ func (c *Scene) expose(ctx context.Context, workers, tile int, progress func(don
 				truth.set(q, v, structure)
 			}
 		}
-		lamps[w].shine(rays[w][:len(part)])
-		for n, q := range part {
-			for line := range 2 {
-				for k, a := range lamps[w].acc[n][line] {
-					copy(raw[line].Series(q, k), a)
+		for at := 0; at < len(part); at += kernel.Rays {
+			few := part[at:min(at+kernel.Rays, len(part))]
+			lamps[w].shine(rays[w][at : at+len(few)])
+			for n, q := range few {
+				for line := range 2 {
+					for k := range nk {
+						lamps[w].take(raw[line].Series(q, k), n, line, k)
+					}
 				}
 			}
 		}

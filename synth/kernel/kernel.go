@@ -1,5 +1,5 @@
-// Package kernel holds the inner loops of the synthesis, over the frames of one
-// line-of-sight sample. Products before sums are rounded by explicit conversions, so
+// Package kernel holds the inner loops of the synthesis, over the frames of
+// line-of-sight samples. Products before sums are rounded by explicit conversions, so
 // that no compiler fuses them; the vector code does the same operations in the same
 // order, so that every path gives the same bits.
 package kernel
@@ -43,66 +43,35 @@ func combine(dst []float32, rows [][]float32, coef []float32, from int) {
 	}
 }
 
-// Profile adds one sample's light through one filter tuning: acc[t] +=
-// amp * exp(-((d - v[t]) * invW)^2), with d the tuning's offset, v the sample's
-// Doppler velocity and 1/invW its 1/e half-width with the filter's, all in one unit.
-// The relative error of a term is below 4e-7 (tested).
-func Profile(acc, v []float32, amp, d, invW float32) {
-	v = v[:len(acc)]
-	done := profileVector(acc, v, amp, d, invW)
-	profile(acc[done:], v[done:], amp, d, invW)
-}
-
-// profile is the portable path.
-func profile(acc, v []float32, amp, d, invW float32) {
-	for t, x := range v {
-		y := float32((d - x) * invW)
-		acc[t] += float32(amp * expNeg(-float32(y*y)))
-	}
-}
-
 // Constants of expNeg; the vector code has them too.
 const (
-	expLow   = -87.0 // below this Gaussians are dark
+	expEnd   = 86.0 // beyond this Gaussians are dark
 	log2e    = 1.44269504
 	rounding = 12582912.0 // 1.5 * 2^23: adding it rounds to an integer
-	ln2High  = 0.693359375
-	ln2Low   = -2.12194440e-4
-	expC2    = 0.5
-	expC3    = 0.166664153
-	expC4    = 0.0416663513
-	expC5    = 0.00837513432
-	expC6    = 0.0013941119
+	ln2      = 0.69314718
+	expC2    = 0.49998868
+	expC3    = -0.16666505
+	expC4    = 0.041917559
+	expC5    = -0.0083691552
 )
 
-// expNeg is exp(x) for x <= 0 in single precision: x = n ln 2 + r, |r| <= ln 2 / 2,
-// and the polynomial of degree 6 that interpolates exp at the Chebyshev nodes of that
-// interval to 2e-8 (derived). Below -87 it is 0.
-func expNeg(x float32) float32 {
-	if !(x >= expLow) {
+// expNeg is exp(-s) for s >= 0 in single precision: -s = n ln 2 - r, |r| <= ln 2 / 2,
+// and the polynomial of degree 5 that interpolates exp(-r) at the Chebyshev nodes of
+// that interval to 1e-7 (derived). Beyond 86 it is 0. The error is below 3e-7, absolute.
+func expNeg(s float32) float32 {
+	if !(s <= expEnd) {
 		return 0
 	}
-	n := float32(x*log2e) + rounding
-	k := math.Float32bits(n) - math.Float32bits(rounding)
+	n := rounding - float32(s*log2e)
+	k := math.Float32bits(n) << 23 // the bits of the constant fall out
 	n -= rounding
-	r := x - float32(n*ln2High)
-	r -= float32(n * ln2Low)
-	p := float32(expC6*r) + expC5
-	p = float32(p*r) + expC4
+	r := s + float32(n*ln2)
+	p := float32(expC5*r) + expC4
 	p = float32(p*r) + expC3
 	p = float32(p*r) + expC2
+	p = float32(p*r) - 1
 	p = float32(p*r) + 1
-	p = float32(p*r) + 1
-	return p * math.Float32frombits((k+127)<<23)
-}
-
-// Cosines adds one sample's light through one tuning of a filter whose transmission is
-// a sum of cosines: acc[t] += sum over m of coef[m] * cos(2 pi m (d - v[t]) * inv), m
-// from 0. The error is below 2e-6 of the sum of coef (tested).
-func Cosines(acc, v, coef []float32, d, inv float32) {
-	v = v[:len(acc)]
-	done := cosinesVector(acc, v, coef, d, inv)
-	cosines(acc[done:], v[done:], coef, d, inv)
+	return math.Float32frombits(math.Float32bits(p) + k)
 }
 
 // Taylor series of (2 cos(2 pi y) - 2)/y^2 in y^2, whose error at the end, y = 1/2, is
@@ -118,30 +87,27 @@ const (
 	cosT8 = 0.564011936911582
 )
 
-// cosines is the portable path. The sum is that of Clenshaw in Reinsch's form, which
-// keeps its digits where cos is near 1 (Oliver 1977, J. Inst. Maths Applics 20, 379,
-// from memory).
-func cosines(acc, v, coef []float32, d, inv float32) {
-	for t, x := range v {
-		y := float32((d - x) * inv)
-		n := y + rounding
-		n -= rounding
-		y -= n
-		s := float32(y * y)
-		q := float32(s*cosT8) + cosT7
-		q = float32(q*s) + cosT6
-		q = float32(q*s) + cosT5
-		q = float32(q*s) + cosT4
-		q = float32(q*s) + cosT3
-		q = float32(q*s) + cosT2
-		q = float32(q*s) + cosT1
-		q = float32(q * s) // 2 cos - 2
-		var e, b float32
-		for m := len(coef) - 1; m > 0; m-- {
-			e = float32(e+coef[m]) + float32(q*b)
-			b += e
-		}
-		q = float32(q * 0.5)
-		acc[t] += float32(e+coef[0]) + float32(q*b)
+// cosines is the sum over m of coef[m*Lanes] cos(2 pi m y), by Clenshaw's recurrence in
+// Reinsch's form, which keeps its digits where cos is near 1 (Oliver 1977, J. Inst.
+// Maths Applics 20, 379, from memory).
+func cosines(y float32, coef []float32) float32 {
+	n := y + rounding
+	n -= rounding
+	y -= n
+	s := float32(y * y)
+	q := float32(s*cosT8) + cosT7
+	q = float32(q*s) + cosT6
+	q = float32(q*s) + cosT5
+	q = float32(q*s) + cosT4
+	q = float32(q*s) + cosT3
+	q = float32(q*s) + cosT2
+	q = float32(q*s) + cosT1
+	q = float32(q * s) // 2 cos - 2
+	var e, b float32
+	for m := (len(coef) - 1) / Lanes; m > 0; m-- {
+		e = float32(e+coef[m*Lanes]) + float32(q*b)
+		b += e
 	}
+	q = float32(q * 0.5)
+	return float32(e+coef[0]) + float32(q*b)
 }

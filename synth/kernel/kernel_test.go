@@ -1,19 +1,22 @@
 package kernel
 
 import (
+	"fmt"
 	"math"
+	"math/cmplx"
 	"testing"
 
 	"offplane/synth/random"
 )
 
 func TestExpNeg(t *testing.T) {
-	for x := float32(0); x > -86; x -= 0.00137 {
-		if rel := math.Abs(float64(expNeg(x))/math.Exp(float64(x)) - 1); rel > 3e-7 {
-			t.Fatalf("exp(%g): relative error %.2g", x, rel)
+	for x := float32(0); x < 86; x += 0.00137 {
+		want := math.Exp(-float64(x))
+		if e := math.Abs(float64(expNeg(x)) - want); e > 3e-7 || e > 5e-6*want {
+			t.Fatalf("exp(-%g): error %.2g, relative %.2g", x, e, e/want)
 		}
 	}
-	if expNeg(-88) != 0 || expNeg(0) != 1 || expNeg(float32(math.NaN())) != 0 {
+	if expNeg(87) != 0 || expNeg(0) != 1 || expNeg(float32(math.NaN())) != 0 {
 		t.Error("ends")
 	}
 }
@@ -47,19 +50,108 @@ func TestCombineIsTheSumOfRows(t *testing.T) {
 	}
 }
 
-func TestProfileIsTheGaussian(t *testing.T) {
-	v := noise(50, 1)
-	for i := range v {
-		v[i] *= 15
+// points returns points of Lanes numbers.
+func points(n int, scale float32, address ...uint64) []float32 {
+	x := noise(n*Lanes, address...)
+	for i := range x {
+		x[i] *= scale
 	}
-	acc := make([]float32, len(v))
-	Profile(acc, v, 2.5, 33.5, 1/40.0)
-	Profile(acc, v, 0.5, 0, 1/30.0)
-	for i, x := range v {
-		a, b := (33.5-float64(x))/40, float64(x)/30
-		want := 2.5*math.Exp(-a*a) + 0.5*math.Exp(-b*b)
-		if math.Abs(float64(acc[i])/want-1) > 1e-6 {
-			t.Fatalf("v = %g: %.9g, want %.9g", x, acc[i], want)
+	return x
+}
+
+func TestCarryIsAPower(t *testing.T) {
+	const n, first = 200, 7
+	q := cmplx.Exp(complex(-0.003, 0.41))
+	var start [16]float32
+	for l := range 8 {
+		z := cmplx.Pow(q, complex(float64(first+l), 0))
+		start[l], start[8+l] = float32(real(z)), float32(imag(z))
+	}
+	step := cmplx.Pow(q, 8)
+	dst, u := make([]float32, 2*n), noise(2*n, 2)
+	copy(dst, u)
+	Carry(dst, u, &start, [2]float32{float32(real(step)), float32(imag(step))})
+	for k := range n {
+		z := complex(float64(u[k]), float64(u[n+k]))
+		want := z + z*cmplx.Pow(q, complex(float64(first+k), 0))
+		if e := cmplx.Abs(complex(float64(dst[k]), float64(dst[n+k])) - want); e > 2e-6*(1+cmplx.Abs(z)) {
+			t.Fatalf("bin %d: off by %.2g", k, e)
+		}
+	}
+}
+
+func TestTranspose(t *testing.T) {
+	const n = 24
+	src, dst := noise(n*Lanes, 1), make([]float32, n*Lanes)
+	Transpose(dst, src)
+	for l := range Lanes {
+		for i := range n {
+			if dst[i*Lanes+l] != src[l*n+i] {
+				t.Fatalf("row %d, element %d", l, i)
+			}
+		}
+	}
+}
+
+// Sixteen real motions from their spectra, against the sum over frequencies; the last
+// bins lie beyond the Nyquist frequency of the transform and fold.
+func TestAssembleAndTransform(t *testing.T) {
+	for _, n := range []int{3, 90, 128, 170, 300, 512, 700, 1025} {
+		f := NewFourier(n)
+		size := f.Size
+		if size < n || f.Place[0] != 0 {
+			t.Fatalf("%d points: size %d", n, size)
+		}
+		const first, bins = 2, 45
+		w := points(2*48, 1, 3)
+		var turn []float32
+		var at []int32
+		for k := range bins {
+			s, c := math.Sincos(0.07 * float64(first+k))
+			turn = append(turn, float32(c/2), float32(s/2))
+			at = append(at, f.Place[(first+k)%size], f.Place[((-first-k)%size+size)%size])
+		}
+		x := make([]float32, size*Lanes)
+		Assemble(x, w, 48, turn, at)
+		f.Transform(x)
+		for l := range Lanes {
+			for t0 := range size {
+				want := 0.0
+				for k := range bins {
+					s, c := math.Sincos(0.07*float64(first+k) + 2*math.Pi*float64((first+k)*t0)/float64(size))
+					want += float64(w[k*Lanes+l])*c - float64(w[(48+k)*Lanes+l])*s
+				}
+				if e := math.Abs(float64(x[t0*Lanes+l]) - want); e > 1e-5 {
+					t.Fatalf("size %d, lane %d, time %d: %g, want %g", size, l, t0, x[t0*Lanes+l], want)
+				}
+			}
+		}
+	}
+}
+
+func vary(base, step float32) *[Lanes]float32 {
+	var x [Lanes]float32
+	for l := range x {
+		x[l] = base + step*float32(l)
+	}
+	return &x
+}
+
+func TestProfileIsTheGaussian(t *testing.T) {
+	v := points(50, 15, 1)
+	acc := make([]float32, len(v)/2)
+	amp, d, inv := vary(2.5, 0.1), vary(33.5, -1), vary(1/40.0, 0.001)
+	Profile(acc, v, amp, d, inv)
+	Profile(acc, v, vary(0.5, 0), vary(0, 0), vary(1/30.0, 0))
+	for i, got := range acc {
+		want := 0.0
+		for _, l := range []int{i % Rays, Rays + i%Rays} {
+			x := float64(v[i/Rays*Lanes+l])
+			a, b := (float64(d[l])-x)*float64(inv[l]), x/30
+			want += float64(amp[l])*math.Exp(-a*a) + 0.5*math.Exp(-b*b)
+		}
+		if math.Abs(float64(got)-want) > 1e-6*want+6e-7*float64(amp[Rays+i%Rays]) {
+			t.Fatalf("point %d, ray %d: %.9g, want %.9g", i/Rays, i%Rays, got, want)
 		}
 	}
 }
@@ -67,28 +159,34 @@ func TestProfileIsTheGaussian(t *testing.T) {
 // Against math.Cos, near the middle and over several periods, with the coefficients of
 // a five-stage filter.
 func TestCosinesIsTheSum(t *testing.T) {
-	coef := make([]float32, 32)
-	for m := range coef {
-		coef[m] = (2 - float32(m)/16) / 32
-	}
-	coef[0] = 1.0 / 32
-	for _, scale := range []float64{0.01, 0.2, 3} {
-		v := noise(203, 2)
-		for i := range v {
-			v[i] *= float32(scale)
+	coef := make([]float32, 32*Lanes)
+	for m := range 32 {
+		for l := range Lanes {
+			coef[m*Lanes+l] = (2 - float32(m)/16) / (32 + float32(l))
 		}
-		for terms := 1; terms <= len(coef); terms++ {
-			acc := make([]float32, len(v))
-			Cosines(acc, v, coef[:terms], 0.1, 0.7)
-			for i, x := range v {
-				want := 0.0
-				for m, c := range coef[:terms] {
-					want += float64(c) * math.Cos(2*math.Pi*float64(m)*float64(float32(0.1-x)*float32(0.7)))
+	}
+	for l := range Lanes {
+		coef[l] = 1.0 / 32
+	}
+	d := vary(0.1, 0.01)
+	for _, scale := range []float32{0.01, 0.2, 3} {
+		v := points(13, scale, 2)
+		for terms := 1; terms <= 32; terms++ {
+			acc := make([]float32, len(v)/2)
+			Cosines(acc, v, coef[:terms*Lanes], d, 0.7)
+			for i, got := range acc {
+				want, far := 0.0, 0.0
+				for _, l := range []int{i % Rays, Rays + i%Rays} {
+					x := v[i/Rays*Lanes+l]
+					far = max(far, math.Abs(float64(x)))
+					for m := range terms {
+						want += float64(coef[m*Lanes+l]) * math.Cos(2*math.Pi*float64(m)*float64(d[l]-x)*float64(float32(0.7)))
+					}
 				}
 				// The coefficients add up to one; where cos is not near 1 the rounding of the
 				// argument counts, m times.
-				if math.Abs(float64(acc[i])-want) > 2e-6*(1+20*math.Abs(float64(x))) {
-					t.Fatalf("%d terms, v = %g: %.9g, want %.9g", terms, x, acc[i], want)
+				if math.Abs(float64(got)-want) > 4e-6*(1+20*far) {
+					t.Fatalf("%d terms, point %d, ray %d: %.9g, want %.9g", terms, i/Rays, i%Rays, got, want)
 				}
 			}
 		}
@@ -99,36 +197,52 @@ func TestCosinesIsTheSum(t *testing.T) {
 func TestPathsAgreeToTheBit(t *testing.T) {
 	had := useVector
 	defer func() { useVector = had }()
-	for n := range 150 {
-		v := noise(n, 3, uint64(n))
-		for i := range v {
-			v[i] *= 40 // reaches the dark end of the profile
-		}
+	for n := range 80 {
 		rows, coef := make([][]float32, n%9), noise(n%9, 4)
 		for i := range rows {
 			rows[i] = noise(n+3, 5, uint64(i))
 		}
-		var sums, profiles, waves [2][]float32
+		bins := 8 * (n%5 + 1)
+		f := NewFourier(8 * n)
+		var at []int32
+		for k := range min(bins, f.Size) - 1 {
+			at = append(at, f.Place[k], f.Place[f.Size-1-k])
+		}
+		var results [2][]float32
 		for path, vector := range []bool{false, had} {
 			useVector = vector
-			sums[path] = noise(n, 8)
-			Combine(sums[path], rows, coef)
-			profiles[path] = noise(n, 9)
-			Profile(profiles[path], v, 0.7, 33.5, 1/20.0)
-			waves[path] = noise(n, 10)
-			Cosines(waves[path], v, noise(1+n%7, 11), 33.5, 1/90.0)
+			keep := func(x []float32) { results[path] = append(results[path], x...) }
+			sums := noise(n, 8)
+			Combine(sums, rows, coef)
+			keep(sums)
+			profiles := noise(n*Rays, 9)
+			Profile(profiles, points(n, 40, 10), vary(0.7, 0.01), vary(33.5, 1), vary(1/20.0, 0.001))
+			keep(profiles)
+			waves := noise(n*Rays, 10)
+			Cosines(waves, points(n, 40, 10), points(1+n%7, 1, 11), vary(33.5, 0.3), 1/90.0)
+			keep(waves)
+			carried, start := noise(2*bins, 12), vary(0.9, -0.02)
+			Carry(carried, noise(2*bins, 13), start, [2]float32{0.8, -0.3})
+			keep(carried)
+			turned := make([]float32, 2*bins*Lanes)
+			Transpose(turned, noise(2*bins*Lanes, 14))
+			keep(turned)
+			x := points(f.Size, 1, 15)
+			Assemble(x, turned, bins, noise(len(at), 16), at)
+			keep(x)
+			f.Transform(x)
+			keep(x)
 		}
-		for i := range v {
-			if math.Float32bits(sums[0][i]) != math.Float32bits(sums[1][i]) || math.Float32bits(profiles[0][i]) != math.Float32bits(profiles[1][i]) ||
-				math.Float32bits(waves[0][i]) != math.Float32bits(waves[1][i]) {
-				t.Fatalf("length %d, element %d: %v and %v, %v and %v, %v and %v", n, i, sums[0][i], sums[1][i], profiles[0][i], profiles[1][i], waves[0][i], waves[1][i])
+		for i, a := range results[0] {
+			if b := results[1][i]; math.Float32bits(a) != math.Float32bits(b) {
+				t.Fatalf("length %d, element %d: %v and %v", n, i, a, b)
 			}
 		}
 	}
 }
 
 func BenchmarkCombine(b *testing.B) {
-	const rows, frames = 64, 360
+	const rows, frames = 8, 368
 	r, c := make([][]float32, rows), noise(rows, 5)
 	for i := range r {
 		r[i] = noise(frames, 6, uint64(i))
@@ -140,20 +254,59 @@ func BenchmarkCombine(b *testing.B) {
 	b.ReportMetric(float64(b.N)*rows*frames/b.Elapsed().Seconds()/1e9, "Gmultiply-adds/s")
 }
 
-func BenchmarkProfile(b *testing.B) {
-	v := noise(360, 1)
-	acc := make([]float32, len(v))
+func BenchmarkCarry(b *testing.B) {
+	dst, u, start := make([]float32, 368), noise(368, 5), vary(1e-3, 1e-3)
 	for b.Loop() {
-		Profile(acc, v, 1, 33.5, 1/40.0)
+		q := *start
+		Carry(dst, u, &q, [2]float32{0.7, 0.7})
+	}
+	b.ReportMetric(float64(b.Elapsed().Nanoseconds())/float64(b.N), "ns/sample")
+}
+
+func BenchmarkTranspose(b *testing.B) {
+	dst, src := make([]float32, 368*Lanes), noise(368*Lanes, 5)
+	for b.Loop() {
+		Transpose(dst, src)
+	}
+	b.ReportMetric(float64(b.Elapsed().Nanoseconds())/float64(b.N*Lanes), "ns/sample")
+}
+
+func BenchmarkTransform(b *testing.B) {
+	for _, n := range []int{256, 384, 512, 1024} {
+		b.Run(fmt.Sprint(n), func(b *testing.B) {
+			f := NewFourier(n)
+			w := points(368, 1, 1)
+			turn := noise(2*(n/3), 1)
+			var at []int32
+			for k := range n / 3 {
+				at = append(at, f.Place[k+1], f.Place[n-1-k])
+			}
+			x := make([]float32, n*Lanes)
+			for b.Loop() {
+				clear(x)
+				Assemble(x, w, 184, turn[:min(len(turn), 2*180)], at[:min(len(at), 2*180)])
+				f.Transform(x)
+			}
+			b.ReportMetric(float64(b.Elapsed().Nanoseconds())/float64(b.N*Lanes), "ns/sample")
+		})
+	}
+}
+
+func BenchmarkProfile(b *testing.B) {
+	v := points(360, 15, 1)
+	acc := make([]float32, len(v)/2)
+	amp, d, inv := vary(1, 0), vary(33.5, 0), vary(1/40.0, 0)
+	for b.Loop() {
+		Profile(acc, v, amp, d, inv)
 	}
 	b.ReportMetric(float64(b.N)*float64(len(v))/b.Elapsed().Seconds()/1e9, "Gterms/s")
 }
 
 func BenchmarkCosines(b *testing.B) {
-	v, coef := noise(360, 1), noise(32, 2)
-	acc := make([]float32, len(v))
+	v, coef := points(360, 1, 1), points(32, 1, 2)
+	acc, d := make([]float32, len(v)/2), vary(0.5, 0)
 	for b.Loop() {
-		Cosines(acc, v, coef, 0.5, 1/40.0)
+		Cosines(acc, v, coef, d, 1/40.0)
 	}
 	b.ReportMetric(float64(b.N)*float64(len(v))/b.Elapsed().Seconds()/1e9, "Gterms/s")
 }

@@ -8,7 +8,7 @@ import "golang.org/x/sys/cpu"
 var useVector = cpu.X86.HasAVX2
 
 // combineVector does the leading elements of Combine that fill whole vectors, and
-// returns how many it did.
+// returns how many it did. The others do all of their work, or nothing.
 func combineVector(dst []float32, rows [][]float32, coef []float32) int {
 	n := len(dst) &^ 7
 	if !useVector || n == 0 || len(rows) == 0 {
@@ -18,31 +18,79 @@ func combineVector(dst []float32, rows [][]float32, coef []float32) int {
 	return n
 }
 
-// profileVector does the same for Profile.
-func profileVector(acc, v []float32, amp, d, invW float32) int {
-	n := len(acc) &^ 7
-	if !useVector || n == 0 {
-		return 0
+func carryVector(dst, u []float32, start *[16]float32, step [2]float32) bool {
+	if useVector {
+		carryAVX2(&dst[0], &u[0], len(dst)/2, start, step[0], step[1])
 	}
-	profileAVX2(&acc[0], &v[0], n, amp, d, invW)
-	return n
+	return useVector
 }
 
-// cosinesVector does the same for Cosines.
-func cosinesVector(acc, v, coef []float32, d, inv float32) int {
-	n := len(acc) &^ 7
-	if !useVector || n == 0 {
-		return 0
+func transposeVector(dst, src []float32, n int) bool {
+	if useVector {
+		transposeAVX2(&dst[0], &src[0], n)
 	}
-	cosinesAVX2(&acc[0], &v[0], n, &coef[0], len(coef)-1, d, inv)
-	return n
+	return useVector
+}
+
+func assembleVector(x, w []float32, bins int, turn []float32, at []int32) bool {
+	if useVector {
+		assembleAVX2(&x[0], &w[0], &w[bins*Lanes], &turn[0], &at[0], len(at)/2)
+	}
+	return useVector
+}
+
+func passVector(x []float32, s *stage, blocks int) bool {
+	if !useVector || blocks == 0 {
+		return useVector
+	}
+	switch s.radix {
+	case 2:
+		join2AVX2(&x[0], &s.turn[0], s.inner, blocks)
+	case 3:
+		join3AVX2(&x[0], blocks)
+	case 4:
+		join4AVX2(&x[0], &s.turn[0], s.inner, blocks)
+	}
+	return true
+}
+
+func profileVector(acc, v []float32, amp, d, inv *[Lanes]float32) bool {
+	if useVector {
+		profileAVX2(&acc[0], &v[0], len(acc)/Rays, amp, d, inv)
+	}
+	return useVector
+}
+
+func cosinesVector(acc, v, coef []float32, d *[Lanes]float32, inv float32) bool {
+	if useVector {
+		cosinesAVX2(&acc[0], &v[0], len(acc)/Rays, &coef[0], len(coef)/Lanes-1, d, inv)
+	}
+	return useVector
 }
 
 //go:noescape
 func combineAVX2(dst *float32, n int, rows *[]float32, coef *float32, nrows int)
 
 //go:noescape
-func profileAVX2(acc, v *float32, n int, amp, d, invW float32)
+func carryAVX2(dst, u *float32, n int, start *[16]float32, re, im float32)
 
 //go:noescape
-func cosinesAVX2(acc, v *float32, n int, coef *float32, m int, d, inv float32)
+func transposeAVX2(dst, src *float32, n int)
+
+//go:noescape
+func assembleAVX2(x, re, im, turn *float32, at *int32, bins int)
+
+//go:noescape
+func join2AVX2(x, turn *float32, inner, blocks int)
+
+//go:noescape
+func join3AVX2(x *float32, blocks int)
+
+//go:noescape
+func join4AVX2(x, turn *float32, inner, blocks int)
+
+//go:noescape
+func profileAVX2(acc, v *float32, points int, amp, d, inv *[Lanes]float32)
+
+//go:noescape
+func cosinesAVX2(acc, v *float32, points int, coef *float32, m int, d *[Lanes]float32, inv float32)

@@ -2,12 +2,12 @@
 
 #include "textflag.h"
 
-// Eight copies of each constant of expNeg (kernel.go), and two of integers.
-DATA low<>+0(SB)/8, $0xc2ae0000c2ae0000
-DATA low<>+8(SB)/8, $0xc2ae0000c2ae0000
-DATA low<>+16(SB)/8, $0xc2ae0000c2ae0000
-DATA low<>+24(SB)/8, $0xc2ae0000c2ae0000
-GLOBL low<>(SB), RODATA|NOPTR, $32
+// Eight copies of each constant of expNeg and cosines (kernel.go) and of join3.
+DATA end<>+0(SB)/8, $0x42ac000042ac0000
+DATA end<>+8(SB)/8, $0x42ac000042ac0000
+DATA end<>+16(SB)/8, $0x42ac000042ac0000
+DATA end<>+24(SB)/8, $0x42ac000042ac0000
+GLOBL end<>(SB), RODATA|NOPTR, $32
 DATA log2e<>+0(SB)/8, $0x3fb8aa3b3fb8aa3b
 DATA log2e<>+8(SB)/8, $0x3fb8aa3b3fb8aa3b
 DATA log2e<>+16(SB)/8, $0x3fb8aa3b3fb8aa3b
@@ -18,56 +18,41 @@ DATA round<>+8(SB)/8, $0x4b4000004b400000
 DATA round<>+16(SB)/8, $0x4b4000004b400000
 DATA round<>+24(SB)/8, $0x4b4000004b400000
 GLOBL round<>(SB), RODATA|NOPTR, $32
-DATA ln2h<>+0(SB)/8, $0x3f3180003f318000
-DATA ln2h<>+8(SB)/8, $0x3f3180003f318000
-DATA ln2h<>+16(SB)/8, $0x3f3180003f318000
-DATA ln2h<>+24(SB)/8, $0x3f3180003f318000
-GLOBL ln2h<>(SB), RODATA|NOPTR, $32
-DATA ln2l<>+0(SB)/8, $0xb95e8083b95e8083
-DATA ln2l<>+8(SB)/8, $0xb95e8083b95e8083
-DATA ln2l<>+16(SB)/8, $0xb95e8083b95e8083
-DATA ln2l<>+24(SB)/8, $0xb95e8083b95e8083
-GLOBL ln2l<>(SB), RODATA|NOPTR, $32
-DATA c2<>+0(SB)/8, $0x3f0000003f000000
-DATA c2<>+8(SB)/8, $0x3f0000003f000000
-DATA c2<>+16(SB)/8, $0x3f0000003f000000
-DATA c2<>+24(SB)/8, $0x3f0000003f000000
+DATA ln2<>+0(SB)/8, $0x3f3172183f317218
+DATA ln2<>+8(SB)/8, $0x3f3172183f317218
+DATA ln2<>+16(SB)/8, $0x3f3172183f317218
+DATA ln2<>+24(SB)/8, $0x3f3172183f317218
+GLOBL ln2<>(SB), RODATA|NOPTR, $32
+DATA c2<>+0(SB)/8, $0x3efffe843efffe84
+DATA c2<>+8(SB)/8, $0x3efffe843efffe84
+DATA c2<>+16(SB)/8, $0x3efffe843efffe84
+DATA c2<>+24(SB)/8, $0x3efffe843efffe84
 GLOBL c2<>(SB), RODATA|NOPTR, $32
-DATA c3<>+0(SB)/8, $0x3e2aaa023e2aaa02
-DATA c3<>+8(SB)/8, $0x3e2aaa023e2aaa02
-DATA c3<>+16(SB)/8, $0x3e2aaa023e2aaa02
-DATA c3<>+24(SB)/8, $0x3e2aaa023e2aaa02
+DATA c3<>+0(SB)/8, $0xbe2aaa3ebe2aaa3e
+DATA c3<>+8(SB)/8, $0xbe2aaa3ebe2aaa3e
+DATA c3<>+16(SB)/8, $0xbe2aaa3ebe2aaa3e
+DATA c3<>+24(SB)/8, $0xbe2aaa3ebe2aaa3e
 GLOBL c3<>(SB), RODATA|NOPTR, $32
-DATA c4<>+0(SB)/8, $0x3d2aaa563d2aaa56
-DATA c4<>+8(SB)/8, $0x3d2aaa563d2aaa56
-DATA c4<>+16(SB)/8, $0x3d2aaa563d2aaa56
-DATA c4<>+24(SB)/8, $0x3d2aaa563d2aaa56
+DATA c4<>+0(SB)/8, $0x3d2bb1bf3d2bb1bf
+DATA c4<>+8(SB)/8, $0x3d2bb1bf3d2bb1bf
+DATA c4<>+16(SB)/8, $0x3d2bb1bf3d2bb1bf
+DATA c4<>+24(SB)/8, $0x3d2bb1bf3d2bb1bf
 GLOBL c4<>(SB), RODATA|NOPTR, $32
-DATA c5<>+0(SB)/8, $0x3c0937dc3c0937dc
-DATA c5<>+8(SB)/8, $0x3c0937dc3c0937dc
-DATA c5<>+16(SB)/8, $0x3c0937dc3c0937dc
-DATA c5<>+24(SB)/8, $0x3c0937dc3c0937dc
+DATA c5<>+0(SB)/8, $0xbc091ec8bc091ec8
+DATA c5<>+8(SB)/8, $0xbc091ec8bc091ec8
+DATA c5<>+16(SB)/8, $0xbc091ec8bc091ec8
+DATA c5<>+24(SB)/8, $0xbc091ec8bc091ec8
 GLOBL c5<>(SB), RODATA|NOPTR, $32
-DATA c6<>+0(SB)/8, $0x3ab6baa23ab6baa2
-DATA c6<>+8(SB)/8, $0x3ab6baa23ab6baa2
-DATA c6<>+16(SB)/8, $0x3ab6baa23ab6baa2
-DATA c6<>+24(SB)/8, $0x3ab6baa23ab6baa2
-GLOBL c6<>(SB), RODATA|NOPTR, $32
 DATA one<>+0(SB)/8, $0x3f8000003f800000
 DATA one<>+8(SB)/8, $0x3f8000003f800000
 DATA one<>+16(SB)/8, $0x3f8000003f800000
 DATA one<>+24(SB)/8, $0x3f8000003f800000
 GLOBL one<>(SB), RODATA|NOPTR, $32
-DATA sign<>+0(SB)/8, $0x8000000080000000
-DATA sign<>+8(SB)/8, $0x8000000080000000
-DATA sign<>+16(SB)/8, $0x8000000080000000
-DATA sign<>+24(SB)/8, $0x8000000080000000
-GLOBL sign<>(SB), RODATA|NOPTR, $32
-DATA bias<>+0(SB)/8, $0x0000007f0000007f
-DATA bias<>+8(SB)/8, $0x0000007f0000007f
-DATA bias<>+16(SB)/8, $0x0000007f0000007f
-DATA bias<>+24(SB)/8, $0x0000007f0000007f
-GLOBL bias<>(SB), RODATA|NOPTR, $32
+DATA sin60<>+0(SB)/8, $0x3f5db3d73f5db3d7
+DATA sin60<>+8(SB)/8, $0x3f5db3d73f5db3d7
+DATA sin60<>+16(SB)/8, $0x3f5db3d73f5db3d7
+DATA sin60<>+24(SB)/8, $0x3f5db3d73f5db3d7
+GLOBL sin60<>(SB), RODATA|NOPTR, $32
 
 DATA cos1<>+0(SB)/8, $0xc21de9e6c21de9e6
 DATA cos1<>+8(SB)/8, $0xc21de9e6c21de9e6
@@ -239,72 +224,378 @@ combined:
 	VZEROUPPER
 	RET
 
-// func profileAVX2(acc, v *float32, n int, amp, d, invW float32)
-// n is a multiple of 8.
-TEXT ·profileAVX2(SB), NOSPLIT, $0-36
-	MOVQ         acc+0(FP), DI
-	MOVQ         v+8(FP), SI
-	MOVQ         n+16(FP), CX
-	VBROADCASTSS amp+24(FP), Y15
-	VBROADCASTSS d+28(FP), Y14
-	VBROADCASTSS invW+32(FP), Y13
-	VMOVUPS      log2e<>(SB), Y12
-	VMOVUPS      round<>(SB), Y11
-	VMOVUPS      ln2h<>(SB), Y10
-	VMOVUPS      ln2l<>(SB), Y9
-	VMOVUPS      c6<>(SB), Y8
-	VMOVUPS      one<>(SB), Y7
 
-eight:
-	VMOVUPS (SI), Y0
-	VSUBPS  Y0, Y14, Y0        // d - v
-	VMULPS  Y13, Y0, Y0
-	VMULPS  Y0, Y0, Y0
-	VXORPS  sign<>(SB), Y0, Y0 // x
-	VMULPS  Y12, Y0, Y1
-	VADDPS  Y11, Y1, Y1
-	VPSUBD  Y11, Y1, Y2        // n as an integer
-	VSUBPS  Y11, Y1, Y1        // n
-	VMULPS  Y10, Y1, Y3
-	VSUBPS  Y3, Y0, Y4
-	VMULPS  Y9, Y1, Y3
-	VSUBPS  Y3, Y4, Y4         // r
-	VMULPS  Y8, Y4, Y5
-	VADDPS  c5<>(SB), Y5, Y5
-	VMULPS  Y4, Y5, Y5
-	VADDPS  c4<>(SB), Y5, Y5
-	VMULPS  Y4, Y5, Y5
-	VADDPS  c3<>(SB), Y5, Y5
-	VMULPS  Y4, Y5, Y5
-	VADDPS  c2<>(SB), Y5, Y5
-	VMULPS  Y4, Y5, Y5
-	VADDPS  Y7, Y5, Y5
-	VMULPS  Y4, Y5, Y5
-	VADDPS  Y7, Y5, Y5
-	VPADDD  bias<>(SB), Y2, Y2
-	VPSLLD  $23, Y2, Y2
-	VMULPS  Y2, Y5, Y5
-	VCMPPS  $13, low<>(SB), Y0, Y6 // x >= low
-	VANDPS  Y6, Y5, Y5
-	VMULPS  Y15, Y5, Y5
-	VADDPS  (DI), Y5, Y5
-	VMOVUPS Y5, (DI)
-	ADDQ    $32, SI
-	ADDQ    $32, DI
-	SUBQ    $8, CX
-	JNZ     eight
+// func carryAVX2(dst, u *float32, n int, start *[16]float32, re, im float32)
+TEXT ·carryAVX2(SB), NOSPLIT, $0-40
+	MOVQ         dst+0(FP), DI
+	MOVQ         u+8(FP), SI
+	MOVQ         n+16(FP), CX
+	MOVQ         start+24(FP), DX
+	VBROADCASTSS re+32(FP), Y14
+	VBROADCASTSS im+36(FP), Y15
+	VMOVUPS      (DX), Y12   // q
+	VMOVUPS      32(DX), Y13
+	LEAQ         (DI)(CX*4), R8
+	LEAQ         (SI)(CX*4), R9
+	XORQ         R10, R10
+
+carry:
+	VMOVUPS (SI)(R10*4), Y0
+	VMOVUPS (R9)(R10*4), Y1
+	VMULPS  Y12, Y0, Y2
+	VMULPS  Y13, Y1, Y3
+	VSUBPS  Y3, Y2, Y2
+	VADDPS  (DI)(R10*4), Y2, Y2
+	VMOVUPS Y2, (DI)(R10*4)
+	VMULPS  Y13, Y0, Y4
+	VMULPS  Y12, Y1, Y5
+	VADDPS  Y5, Y4, Y4
+	VADDPS  (R8)(R10*4), Y4, Y4
+	VMOVUPS Y4, (R8)(R10*4)
+	VMULPS  Y14, Y12, Y6
+	VMULPS  Y15, Y13, Y7
+	VMULPS  Y15, Y12, Y8
+	VMULPS  Y14, Y13, Y9
+	VSUBPS  Y7, Y6, Y12
+	VADDPS  Y9, Y8, Y13
+	ADDQ    $8, R10
+	CMPQ    R10, CX
+	JLT     carry
+	VMOVUPS Y12, (DX)
+	VMOVUPS Y13, 32(DX)
 	VZEROUPPER
 	RET
 
-// func cosinesAVX2(acc, v *float32, n int, coef *float32, m int, d, inv float32)
-// n is a multiple of 8. 32 or 8 elements at a time.
-TEXT ·cosinesAVX2(SB), NOSPLIT, $0-48
+// func transposeAVX2(dst, src *float32, n int)
+// Blocks of eight rows and eight elements.
+TEXT ·transposeAVX2(SB), NOSPLIT, $0-24
+	MOVQ dst+0(FP), DI
+	MOVQ src+8(FP), SI
+	MOVQ n+16(FP), CX
+	LEAQ (CX*4), R8     // bytes in a row
+	LEAQ (R8)(R8*2), R9
+	MOVQ $2, R12
+
+half:
+	MOVQ SI, R10
+	MOVQ DI, R11
+	MOVQ CX, BX
+
+square:
+	LEAQ        (R10)(R8*4), R13
+	VMOVUPS     (R10), Y0
+	VMOVUPS     (R10)(R8*1), Y1
+	VMOVUPS     (R10)(R8*2), Y2
+	VMOVUPS     (R10)(R9*1), Y3
+	VMOVUPS     (R13), Y4
+	VMOVUPS     (R13)(R8*1), Y5
+	VMOVUPS     (R13)(R8*2), Y6
+	VMOVUPS     (R13)(R9*1), Y7
+	VUNPCKLPS   Y1, Y0, Y8
+	VUNPCKHPS   Y1, Y0, Y9
+	VUNPCKLPS   Y3, Y2, Y10
+	VUNPCKHPS   Y3, Y2, Y11
+	VUNPCKLPS   Y5, Y4, Y12
+	VUNPCKHPS   Y5, Y4, Y13
+	VUNPCKLPS   Y7, Y6, Y14
+	VUNPCKHPS   Y7, Y6, Y15
+	VSHUFPS     $0x44, Y10, Y8, Y0
+	VSHUFPS     $0xee, Y10, Y8, Y1
+	VSHUFPS     $0x44, Y11, Y9, Y2
+	VSHUFPS     $0xee, Y11, Y9, Y3
+	VSHUFPS     $0x44, Y14, Y12, Y4
+	VSHUFPS     $0xee, Y14, Y12, Y5
+	VSHUFPS     $0x44, Y15, Y13, Y6
+	VSHUFPS     $0xee, Y15, Y13, Y7
+	VPERM2F128  $0x20, Y4, Y0, Y8
+	VPERM2F128  $0x20, Y5, Y1, Y9
+	VPERM2F128  $0x20, Y6, Y2, Y10
+	VPERM2F128  $0x20, Y7, Y3, Y11
+	VPERM2F128  $0x31, Y4, Y0, Y12
+	VPERM2F128  $0x31, Y5, Y1, Y13
+	VPERM2F128  $0x31, Y6, Y2, Y14
+	VPERM2F128  $0x31, Y7, Y3, Y15
+	VMOVUPS     Y8, (R11)
+	VMOVUPS     Y9, 64(R11)
+	VMOVUPS     Y10, 128(R11)
+	VMOVUPS     Y11, 192(R11)
+	VMOVUPS     Y12, 256(R11)
+	VMOVUPS     Y13, 320(R11)
+	VMOVUPS     Y14, 384(R11)
+	VMOVUPS     Y15, 448(R11)
+	ADDQ        $32, R10
+	ADDQ        $512, R11
+	SUBQ        $8, BX
+	JNZ         square
+	LEAQ        (SI)(R8*8), SI
+	ADDQ        $32, DI
+	DECQ        R12
+	JNZ         half
+	VZEROUPPER
+	RET
+
+// func assembleAVX2(x, re, im, turn *float32, at *int32, bins int)
+TEXT ·assembleAVX2(SB), NOSPLIT, $0-48
+	MOVQ x+0(FP), DI
+	MOVQ re+8(FP), SI
+	MOVQ im+16(FP), R8
+	MOVQ turn+24(FP), DX
+	MOVQ at+32(FP), R9
+	MOVQ bins+40(FP), CX
+
+bin:
+	VBROADCASTSS (DX), Y14
+	VBROADCASTSS 4(DX), Y15
+	MOVLQSX      (R9), R10
+	MOVLQSX      4(R9), R11
+	SHLQ         $6, R10
+	SHLQ         $6, R11
+	VMOVUPS      (SI), Y0
+	VMOVUPS      (R8), Y1
+	VMULPS       Y14, Y0, Y2
+	VMULPS       Y15, Y1, Y3
+	VSUBPS       Y3, Y2, Y2   // real part of the first eight
+	VMULPS       Y15, Y0, Y4
+	VMULPS       Y14, Y1, Y5
+	VADDPS       Y5, Y4, Y3   // imaginary part
+	VMOVUPS      32(SI), Y0
+	VMOVUPS      32(R8), Y1
+	VMULPS       Y14, Y0, Y4
+	VMULPS       Y15, Y1, Y5
+	VSUBPS       Y5, Y4, Y4   // of the last eight
+	VMULPS       Y15, Y0, Y6
+	VMULPS       Y14, Y1, Y7
+	VADDPS       Y7, Y6, Y5
+	VSUBPS       Y5, Y2, Y6
+	VADDPS       (DI)(R10*1), Y6, Y6
+	VMOVUPS      Y6, (DI)(R10*1)
+	VADDPS       Y4, Y3, Y7
+	VADDPS       32(DI)(R10*1), Y7, Y7
+	VMOVUPS      Y7, 32(DI)(R10*1)
+	VADDPS       Y5, Y2, Y6
+	VADDPS       (DI)(R11*1), Y6, Y6
+	VMOVUPS      Y6, (DI)(R11*1)
+	VSUBPS       Y3, Y4, Y7
+	VADDPS       32(DI)(R11*1), Y7, Y7
+	VMOVUPS      Y7, 32(DI)(R11*1)
+	ADDQ         $64, SI
+	ADDQ         $64, R8
+	ADDQ         $8, DX
+	ADDQ         $8, R9
+	DECQ         CX
+	JNZ          bin
+	VZEROUPPER
+	RET
+
+// RE, IM = the point at X times the turn at off(DX).
+#define TIMES(X0, X1, off, RE, IM) \
+	VBROADCASTSS off(DX), Y12; \
+	VBROADCASTSS off+4(DX), Y13; \
+	VMOVUPS      X0, Y14; \
+	VMOVUPS      X1, Y15; \
+	VMULPS       Y12, Y14, RE; \
+	VMULPS       Y13, Y15, IM; \
+	VSUBPS       IM, RE, RE; \
+	VMULPS       Y13, Y14, IM; \
+	VMULPS       Y12, Y15, Y15; \
+	VADDPS       Y15, IM, IM
+
+// func join2AVX2(x, turn *float32, inner, blocks int)
+TEXT ·join2AVX2(SB), NOSPLIT, $0-32
+	MOVQ x+0(FP), DI
+	MOVQ inner+16(FP), R8
+	MOVQ blocks+24(FP), CX
+	MOVQ R8, BX
+	SHLQ $6, R8
+
+block2:
+	MOVQ turn+8(FP), DX
+	MOVQ BX, R11
+
+point2:
+	TIMES((DI)(R8*1), 32(DI)(R8*1), 0, Y2, Y3)
+	VMOVUPS (DI), Y0
+	VMOVUPS 32(DI), Y1
+	VADDPS  Y2, Y0, Y4
+	VADDPS  Y3, Y1, Y5
+	VSUBPS  Y2, Y0, Y6
+	VSUBPS  Y3, Y1, Y7
+	VMOVUPS Y4, (DI)
+	VMOVUPS Y5, 32(DI)
+	VMOVUPS Y6, (DI)(R8*1)
+	VMOVUPS Y7, 32(DI)(R8*1)
+	ADDQ    $64, DI
+	ADDQ    $8, DX
+	DECQ    R11
+	JNZ     point2
+	ADDQ    R8, DI
+	DECQ    CX
+	JNZ     block2
+	VZEROUPPER
+	RET
+
+// func join3AVX2(x *float32, blocks int)
+TEXT ·join3AVX2(SB), NOSPLIT, $0-16
+	MOVQ    x+0(FP), DI
+	MOVQ    blocks+8(FP), CX
+	VMOVUPS sin60<>(SB), Y15
+	VMOVUPS half<>(SB), Y14
+
+block3:
+	VMOVUPS (DI), Y0
+	VMOVUPS 32(DI), Y1
+	VMOVUPS 64(DI), Y2
+	VMOVUPS 96(DI), Y3
+	VMOVUPS 128(DI), Y4
+	VMOVUPS 160(DI), Y5
+	VADDPS  Y4, Y2, Y6    // sum
+	VADDPS  Y5, Y3, Y7
+	VSUBPS  Y4, Y2, Y8
+	VSUBPS  Y5, Y3, Y9
+	VMULPS  Y15, Y8, Y8   // d
+	VMULPS  Y15, Y9, Y9
+	VMULPS  Y14, Y6, Y10
+	VMULPS  Y14, Y7, Y11
+	VSUBPS  Y10, Y0, Y10  // m
+	VSUBPS  Y11, Y1, Y11
+	VADDPS  Y6, Y0, Y0
+	VADDPS  Y7, Y1, Y1
+	VSUBPS  Y9, Y10, Y2
+	VADDPS  Y8, Y11, Y3
+	VADDPS  Y9, Y10, Y4
+	VSUBPS  Y8, Y11, Y5
+	VMOVUPS Y0, (DI)
+	VMOVUPS Y1, 32(DI)
+	VMOVUPS Y2, 64(DI)
+	VMOVUPS Y3, 96(DI)
+	VMOVUPS Y4, 128(DI)
+	VMOVUPS Y5, 160(DI)
+	ADDQ    $192, DI
+	DECQ    CX
+	JNZ     block3
+	VZEROUPPER
+	RET
+
+// func join4AVX2(x, turn *float32, inner, blocks int)
+TEXT ·join4AVX2(SB), NOSPLIT, $0-32
+	MOVQ x+0(FP), DI
+	MOVQ inner+16(FP), R8
+	MOVQ blocks+24(FP), CX
+	MOVQ R8, BX
+	SHLQ $6, R8
+	LEAQ (R8)(R8*2), R9
+
+block4:
+	MOVQ turn+8(FP), DX
+	MOVQ BX, R11
+
+point4:
+	TIMES((DI)(R8*2), 32(DI)(R8*2), 8, Y4, Y5)
+	VMOVUPS (DI), Y0
+	VMOVUPS 32(DI), Y1
+	VADDPS  Y4, Y0, Y2   // sum
+	VADDPS  Y5, Y1, Y3
+	VSUBPS  Y4, Y0, Y0   // dif
+	VSUBPS  Y5, Y1, Y1
+	TIMES((DI)(R8*1), 32(DI)(R8*1), 0, Y4, Y5)
+	TIMES((DI)(R9*1), 32(DI)(R9*1), 16, Y6, Y7)
+	VADDPS  Y6, Y4, Y8   // odd
+	VADDPS  Y7, Y5, Y9
+	VSUBPS  Y6, Y4, Y10  // of
+	VSUBPS  Y7, Y5, Y11
+	VADDPS  Y8, Y2, Y4
+	VADDPS  Y9, Y3, Y5
+	VSUBPS  Y8, Y2, Y6
+	VSUBPS  Y9, Y3, Y7
+	VMOVUPS Y4, (DI)
+	VMOVUPS Y5, 32(DI)
+	VMOVUPS Y6, (DI)(R8*2)
+	VMOVUPS Y7, 32(DI)(R8*2)
+	VSUBPS  Y11, Y0, Y4
+	VADDPS  Y10, Y1, Y5
+	VADDPS  Y11, Y0, Y6
+	VSUBPS  Y10, Y1, Y7
+	VMOVUPS Y4, (DI)(R8*1)
+	VMOVUPS Y5, 32(DI)(R8*1)
+	VMOVUPS Y6, (DI)(R9*1)
+	VMOVUPS Y7, 32(DI)(R9*1)
+	ADDQ    $64, DI
+	ADDQ    $24, DX
+	DECQ    R11
+	JNZ     point4
+	ADDQ    R9, DI
+	DECQ    CX
+	JNZ     block4
+	VZEROUPPER
+	RET
+
+// Y5 = the light of the eight samples at off.
+#define GAUSS(off) \
+	VMOVUPS off(R9), Y0; \
+	VSUBPS  off(SI), Y0, Y0; \
+	VMULPS  off(R10), Y0, Y0; \
+	VMULPS  Y0, Y0, Y0; \
+	VMULPS  Y12, Y0, Y1; \
+	VSUBPS  Y1, Y11, Y1; \
+	VPSLLD  $23, Y1, Y2; \
+	VSUBPS  Y11, Y1, Y1; \
+	VMULPS  Y10, Y1, Y3; \
+	VADDPS  Y3, Y0, Y4; \
+	VMULPS  Y9, Y4, Y5; \
+	VADDPS  Y8, Y5, Y5; \
+	VMULPS  Y4, Y5, Y5; \
+	VADDPS  Y7, Y5, Y5; \
+	VMULPS  Y4, Y5, Y5; \
+	VADDPS  Y13, Y5, Y5; \
+	VMULPS  Y4, Y5, Y5; \
+	VSUBPS  Y14, Y5, Y5; \
+	VMULPS  Y4, Y5, Y5; \
+	VADDPS  Y14, Y5, Y5; \
+	VPADDD  Y2, Y5, Y5; \
+	VCMPPS  $2, Y15, Y0, Y6; \
+	VANDPS  Y6, Y5, Y5; \
+	VMULPS  off(R8), Y5, Y5
+
+// func profileAVX2(acc, v *float32, points int, amp, d, inv *[Lanes]float32)
+TEXT ·profileAVX2(SB), NOSPLIT, $0-48
+	MOVQ    acc+0(FP), DI
+	MOVQ    v+8(FP), SI
+	MOVQ    points+16(FP), CX
+	MOVQ    amp+24(FP), R8
+	MOVQ    d+32(FP), R9
+	MOVQ    inv+40(FP), R10
+	VMOVUPS log2e<>(SB), Y12
+	VMOVUPS round<>(SB), Y11
+	VMOVUPS ln2<>(SB), Y10
+	VMOVUPS c5<>(SB), Y9
+	VMOVUPS c4<>(SB), Y8
+	VMOVUPS c3<>(SB), Y7
+	VMOVUPS c2<>(SB), Y13
+	VMOVUPS one<>(SB), Y14
+	VMOVUPS end<>(SB), Y15
+
+profile:
+	GAUSS(0)
+	VADDPS  (DI), Y5, Y5
+	VMOVUPS Y5, (DI)
+	GAUSS(32)
+	VADDPS  (DI), Y5, Y5
+	VMOVUPS Y5, (DI)
+	ADDQ    $64, SI
+	ADDQ    $32, DI
+	DECQ    CX
+	JNZ     profile
+	VZEROUPPER
+	RET
+
+// func cosinesAVX2(acc, v *float32, points int, coef *float32, m int, d *[Lanes]float32, inv float32)
+TEXT ·cosinesAVX2(SB), NOSPLIT, $0-52
 
 // Q = 2 cos(2 pi (d - v) inv) - 2 of the eight v at off(SI).
 #define DELTA(off, Q) \
-	VBROADCASTSS d+40(FP), Q; \
+	VMOVUPS      off(R9), Q; \
 	VSUBPS       off(SI), Q, Q; \
-	VBROADCASTSS inv+44(FP), Y15; \
+	VBROADCASTSS inv+48(FP), Y15; \
 	VMULPS       Y15, Q, Q; \
 	VADDPS       round<>(SB), Q, Y15; \
 	VMOVUPS      round<>(SB), Y14; \
@@ -329,15 +620,15 @@ TEXT ·cosinesAVX2(SB), NOSPLIT, $0-48
 	VMULPS       Y15, Q, Q
 
 // One step of the sum.
-#define STEP(Q, E, B) \
-	VADDPS Y14, E, E; \
+#define STEP(C, Q, E, B) \
+	VADDPS C, E, E; \
 	VMULPS Q, B, Y15; \
 	VADDPS Y15, E, E; \
 	VADDPS E, B, B
 
 // The last step, and the sum to the eight acc at off(DI).
-#define LAST(off, Q, E, B) \
-	VADDPS  Y14, E, E; \
+#define LAST(off, C, Q, E, B) \
+	VADDPS  C, E, E; \
 	VMULPS  half<>(SB), Q, Q; \
 	VMULPS  Q, B, B; \
 	VADDPS  B, E, E; \
@@ -346,17 +637,21 @@ TEXT ·cosinesAVX2(SB), NOSPLIT, $0-48
 
 	MOVQ acc+0(FP), DI
 	MOVQ v+8(FP), SI
-	MOVQ n+16(FP), CX
+	MOVQ points+16(FP), CX
 	MOVQ coef+24(FP), DX
 	MOVQ m+32(FP), BX
+	MOVQ d+40(FP), R9
+	SHLQ $6, BX
+	ADDQ DX, BX // the last term
 
-cos32:
-	CMPQ CX, $32
-	JLT  cos8
+cos32: // two points at a time, while there are two
+	CMPQ CX, $2
+	JLT  cos16
 	DELTA(0, Y0)
 	DELTA(32, Y1)
-	DELTA(64, Y2)
-	DELTA(96, Y3)
+	ADDQ $64, SI
+	DELTA(0, Y2)
+	DELTA(32, Y3)
 	VXORPS Y4, Y4, Y4
 	VXORPS Y5, Y5, Y5
 	VXORPS Y6, Y6, Y6
@@ -366,52 +661,59 @@ cos32:
 	VXORPS Y10, Y10, Y10
 	VXORPS Y11, Y11, Y11
 	MOVQ BX, R8
-	TESTQ R8, R8
-	JZ   last32
+	CMPQ R8, DX
+	JEQ  last32
 
 step32:
-	VBROADCASTSS (DX)(R8*4), Y14
-	STEP(Y0, Y4, Y8)
-	STEP(Y1, Y5, Y9)
-	STEP(Y2, Y6, Y10)
-	STEP(Y3, Y7, Y11)
-	DECQ R8
-	JNZ  step32
+	VMOVUPS (R8), Y13
+	VMOVUPS 32(R8), Y14
+	STEP(Y13, Y0, Y4, Y8)
+	STEP(Y14, Y1, Y5, Y9)
+	STEP(Y13, Y2, Y6, Y10)
+	STEP(Y14, Y3, Y7, Y11)
+	SUBQ $64, R8
+	CMPQ R8, DX
+	JNE  step32
 
 last32:
-	VBROADCASTSS (DX), Y14
-	LAST(0, Y0, Y4, Y8)
-	LAST(32, Y1, Y5, Y9)
-	LAST(64, Y2, Y6, Y10)
-	LAST(96, Y3, Y7, Y11)
-	ADDQ $128, SI
-	ADDQ $128, DI
-	SUBQ $32, CX
+	VMOVUPS (DX), Y13
+	VMOVUPS 32(DX), Y14
+	LAST(0, Y13, Y0, Y4, Y8)
+	LAST(0, Y14, Y1, Y5, Y9)
+	LAST(32, Y13, Y2, Y6, Y10)
+	LAST(32, Y14, Y3, Y7, Y11)
+	ADDQ $64, SI
+	ADDQ $64, DI
+	SUBQ $2, CX
 	JMP  cos32
 
-cos8:
-	CMPQ CX, $8
+cos16:
+	CMPQ CX, $1
 	JLT  cosined
 	DELTA(0, Y0)
+	DELTA(32, Y1)
 	VXORPS Y4, Y4, Y4
+	VXORPS Y5, Y5, Y5
 	VXORPS Y8, Y8, Y8
+	VXORPS Y9, Y9, Y9
 	MOVQ BX, R8
-	TESTQ R8, R8
-	JZ   last8
+	CMPQ R8, DX
+	JEQ  last16
 
-step8:
-	VBROADCASTSS (DX)(R8*4), Y14
-	STEP(Y0, Y4, Y8)
-	DECQ R8
-	JNZ  step8
+step16:
+	VMOVUPS (R8), Y13
+	VMOVUPS 32(R8), Y14
+	STEP(Y13, Y0, Y4, Y8)
+	STEP(Y14, Y1, Y5, Y9)
+	SUBQ $64, R8
+	CMPQ R8, DX
+	JNE  step16
 
-last8:
-	VBROADCASTSS (DX), Y14
-	LAST(0, Y0, Y4, Y8)
-	ADDQ $32, SI
-	ADDQ $32, DI
-	SUBQ $8, CX
-	JMP  cos8
+last16:
+	VMOVUPS (DX), Y13
+	VMOVUPS 32(DX), Y14
+	LAST(0, Y13, Y0, Y4, Y8)
+	LAST(0, Y14, Y1, Y5, Y9)
 
 cosined:
 	VZEROUPPER

@@ -6,6 +6,14 @@ var useVector = false
 
 func combineVector([]float32, [][]float32, []float32) int { return 0 }
 
-func profileVector(_, _ []float32, _, _, _ float32) int { return 0 }
+func carryVector(_, _ []float32, _ *[16]float32, _ [2]float32) bool { return false }
 
-func cosinesVector(_, _, _ []float32, _, _ float32) int { return 0 }
+func transposeVector(_, _ []float32, _ int) bool { return false }
+
+func assembleVector(_, _ []float32, _ int, _ []float32, _ []int32) bool { return false }
+
+func passVector([]float32, *stage, int) bool { return false }
+
+func profileVector(_, _ []float32, _, _, _ *[Lanes]float32) bool { return false }
+
+func cosinesVector(_, _, _ []float32, _ *[Lanes]float32, _ float32) bool { return false }

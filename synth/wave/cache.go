@@ -2,27 +2,27 @@ package wave
 
 import "sync"
 
-// A rowCache keeps rows for reuse in two generations: when the young one is full, the
+// A cache keeps spectra for reuse in two generations: when the young one is full, the
 // old one is dropped whole. What it holds changes only the time taken.
-type rowCache struct {
+type cache struct {
 	mu         sync.RWMutex
 	limit      int // bytes per generation
 	size       int // bytes of the young generation
 	young, old map[uint64][]float32
 }
 
-func (c *rowCache) init(bytes int) {
+func (c *cache) init(bytes int) {
 	c.limit = bytes / 2
 	c.young, c.old = map[uint64][]float32{}, nil
 }
 
-func (c *rowCache) get(key uint64) []float32 {
+func (c *cache) get(key uint64) []float32 {
 	c.mu.RLock()
-	rows, ok := c.young[key]
+	u, ok := c.young[key]
 	old := c.old[key]
 	c.mu.RUnlock()
 	if ok {
-		return rows
+		return u
 	}
 	if old != nil {
 		c.put(key, old)
@@ -30,14 +30,14 @@ func (c *rowCache) get(key uint64) []float32 {
 	return old
 }
 
-func (c *rowCache) put(key uint64, rows []float32) {
+func (c *cache) put(key uint64, u []float32) {
 	c.mu.Lock()
 	defer c.mu.Unlock()
 	if _, ok := c.young[key]; ok {
 		return
 	}
-	if c.size += 4 * len(rows); c.size > c.limit {
-		c.old, c.young, c.size = c.young, map[uint64][]float32{}, 4*len(rows)
+	if c.size += 4 * len(u); c.size > c.limit {
+		c.old, c.young, c.size = c.young, map[uint64][]float32{}, 4*len(u)
 	}
-	c.young[key] = rows
+	c.young[key] = u
 }

@@ -5,6 +5,8 @@ import (
 	"testing"
 
 	"pgregory.net/rapid"
+
+	"offplane/synth/kernel"
 )
 
 var spectrum = Spectrum{Slope: 1.5, Bump: 3, At: 3.5e-3, Width: 0.35, Low: 0.2e-3, High: 12e-3}
@@ -18,62 +20,80 @@ func driver(t testing.TB, s Settings) *Driver {
 	return d
 }
 
-// Rows and coefficients against the sum over frequencies, damped and not, whole and
-// broken delays, leads of sequential tuning, and frequencies above the Nyquist
-// frequency of the frames.
-func TestRowsReproduceTheExactSum(t *testing.T) {
+// A site's address and the footpoint that only it moves.
+func siteAt(d *Driver, ring, place int) (id uint64, colatitude, azimuth float64) {
+	l := &d.sites
+	return uint64(l.offset[ring] + place), (float64(ring) + 0.5) * l.width, 2 * math.Pi * float64(place) / float64(l.count[ring])
+}
+
+// A bundle against the sum over frequencies, damped and not, leads of sequential
+// tuning, and frequencies above the Nyquist frequency of the frames.
+func TestBundleReproducesTheExactSum(t *testing.T) {
 	for name, s := range map[string]Settings{
 		"damped":   {Seed: 1, Cell: 0.01, Spectrum: spectrum, Damping: 2.69, Cadence: 30, Frames: 120, MaxDelay: 4000, MaxLead: 20},
 		"undamped": {Seed: 2, Cell: 0.01, Spectrum: spectrum, Cadence: 30, Frames: 120, MaxDelay: 1500},
 		"coarse":   {Seed: 3, Cell: 0.01, Spectrum: spectrum, Damping: 2.69, Cadence: 60, Frames: 120, MaxDelay: 1500},
 	} {
 		d := driver(t, s)
-		t.Logf("%s: ranks %d, %d bins, rows of %d", name, d.Ranks(), len(d.amp), d.length)
-		var c []float64
-		sum, n, worst := 0.0, 0, 0.0
-		for i := range 60 {
-			tau := s.MaxDelay * math.Mod(float64(i)*0.6180339887, 1)
-			lead := s.MaxLead * math.Mod(float64(i)*0.7548776662, 1)
-			k := d.Stretch(tau)
-			rows := d.Rows(uint64(i), i%2, i%2, k)
-			c, at := d.Coefficients(c, k, tau, lead)
-			for j := range s.Frames {
-				got := 0.0
-				for r := range c {
-					got += c[r] * float64(rows[r*d.length+at+j])
-				}
-				e := got - d.Exact(uint64(i), i%2, i%2, float64(j)*s.Cadence+lead, tau)
-				sum += e * e
-				n++
-				worst = max(worst, math.Abs(e))
+		leads := []float64{0, s.MaxLead / 3, s.MaxLead}
+		b := d.NewBundle(leads)
+		for pass := range 2 { // the second finds the spectra of the first in the cache
+			b.Clear()
+			amplitude := func(lane, train int) [2]float64 {
+				return [2]float64{1 + 0.1*float64(lane), 0.5 * float64(train)}
 			}
-		}
-		// Tolerance of the decomposition plus that of the bilinear table.
-		if rms := math.Sqrt(sum / float64(n)); rms > Tolerance {
-			t.Errorf("%s: rms error %.2g of the rms, worst %.2g", name, rms, worst)
-		} else {
-			t.Logf("%s: rms error %.2g of the rms, worst %.2g", name, rms, worst)
+			tau := func(lane, train int) float64 {
+				return s.MaxDelay * math.Mod(float64(lane+7*train)*0.6180339887, 1)
+			}
+			for lane := range kernel.Lanes {
+				if lane == 5 {
+					continue // stays still
+				}
+				for train := range 2 {
+					_, colatitude, azimuth := siteAt(d, 100+lane, 50*train)
+					b.Add(lane, colatitude, azimuth, train, tau(lane, train), amplitude(lane, train))
+				}
+			}
+			for i, lead := range leads {
+				v := b.Velocity(i)
+				for lane := range kernel.Lanes {
+					for _, j := range []int{0, 1, 57, s.Frames - 1} {
+						want := 0.0
+						if lane != 5 {
+							for train := range 2 {
+								id, _, _ := siteAt(d, 100+lane, 50*train)
+								for pol, a := range amplitude(lane, train) {
+									want += a * d.Exact(id, pol, train, float64(j)*s.Cadence+lead, tau(lane, train))
+								}
+							}
+						}
+						if got := float64(v[j*kernel.Lanes+lane]); math.Abs(got-want) > 2e-5 {
+							t.Fatalf("%s, pass %d, lead %g, lane %d, frame %d: %g, want %g", name, pass, lead, lane, j, got, want)
+						}
+					}
+				}
+			}
 		}
 	}
 }
 
 func TestVarianceIsOne(t *testing.T) {
 	d := driver(t, Settings{Seed: 5, Cell: 0.01, Spectrum: spectrum, Cadence: 30, Frames: 200, MaxDelay: 60})
-	c, at := d.Coefficients(nil, 0, 40, 0)
-	v, n := 0.0, 0
-	for i := range uint64(500) {
-		rows := d.Rows(i, 0, 0, 0)
-		for j := range 200 {
-			x := 0.0
-			for r := range c {
-				x += c[r] * float64(rows[r*d.length+at+j])
-			}
-			v += x * x
+	b := d.NewBundle([]float64{0})
+	sum, n := 0.0, 0
+	for i := range 32 {
+		b.Clear()
+		for lane := range kernel.Lanes {
+			_, colatitude, azimuth := siteAt(d, 100+i, lane)
+			b.Add(lane, colatitude, azimuth, Outward, 40, [2]float64{1, 0})
+		}
+		for _, x := range b.Velocity(0) {
+			sum += float64(x) * float64(x)
 			n++
 		}
 	}
-	v /= float64(n)
-	// 500 series with some ten independent values each, spectrum steep: 4 sd of 3 %.
+	v := sum / float64(n)
+	// 512 series with some ten independent values each, spectrum steep: 4 sd of 3 %.
 	if math.Abs(v-1) > 0.12 {
 		t.Errorf("variance %.3f", v)
 	}
@@ -128,31 +148,40 @@ func TestFootpointWeights(t *testing.T) {
 }
 
 // The motion is the same whatever the cache still holds.
-func TestRowsDoNotDependOnTheCache(t *testing.T) {
+func TestSpectraDoNotDependOnTheCache(t *testing.T) {
 	s := Settings{Seed: 5, Cell: 0.01, Spectrum: spectrum, Damping: 2, Cadence: 30, Frames: 50, MaxDelay: 600}
 	a, b := driver(t, s), driver(t, s)
-	b.cache.init(4 * 3 * len(a.Rows(0, 0, 0, 0)))
+	b.cache.init(4 * 3 * len(a.spectrum(0, 0, 0)))
 	for i := range uint64(40) {
-		x, y := a.Rows(i*7%13, 1, 0, 0), b.Rows(i*7%13, 1, 0, 0)
+		x, y := a.spectrum(i*7%13, 1, 0), b.spectrum(i*7%13, 1, 0)
 		for j := range x {
 			if x[j] != y[j] {
-				t.Fatal("rows differ")
+				t.Fatal("spectra differ")
 			}
 		}
 	}
 }
 
-func BenchmarkRows(b *testing.B) {
-	d := driver(b, Settings{Seed: 1, Cell: 0.01, Spectrum: spectrum, Damping: 2.69, Cadence: 30, Frames: 360, MaxDelay: 4000})
+var long = Settings{Seed: 1, Cell: 0.01, Spectrum: spectrum, Damping: 2.69, Cadence: 30, Frames: 360, MaxDelay: 4000}
+
+func BenchmarkSpectrum(b *testing.B) {
+	d := driver(b, long)
 	i := uint64(0)
 	for b.Loop() {
-		d.Rows(i, 0, 0, 0)
+		d.spectrum(i, 0, 0)
 		i++
 	}
 }
 
-func BenchmarkNewDriver(b *testing.B) {
+func BenchmarkBundle(b *testing.B) {
+	d := driver(b, long)
+	u := d.NewBundle([]float64{0})
 	for b.Loop() {
-		driver(b, Settings{Seed: 1, Cell: 0.01, Spectrum: spectrum, Damping: 2.69, Cadence: 30, Frames: 360, MaxDelay: 4000})
+		u.Clear()
+		for lane := range kernel.Lanes {
+			u.Add(lane, 1.2, 0.3+0.002*float64(lane), Outward, 1000+float64(lane), [2]float64{3, 4})
+		}
+		u.Velocity(0)
 	}
+	b.ReportMetric(float64(b.Elapsed().Nanoseconds())/float64(b.N*kernel.Lanes), "ns/sample")
 }

@@ -1,0 +1,126 @@
+package wave
+
+import (
+	"math"
+	"math/cmplx"
+
+	"offplane/synth/kernel"
+)
+
+// A Bundle makes the frames of kernel.Lanes samples side by side. It belongs to one
+// worker. Clear it, Add the trains of every lane, then take the Velocity at each lead.
+type Bundle struct {
+	d     *Driver
+	at    []int32     // where each bin and its negative belong in the transform
+	turns [][]float32 // by lead: half the phase of each bin
+
+	spectra []float32 // one a lane
+	used    [kernel.Lanes]bool
+	points  []float32 // the same, point by point; nil until asked for
+	ready   bool
+	x       []float32
+
+	site [][]float32
+	coef []float32
+	sum  []float32
+
+	// memo remembers the spectra that were used last, to spare the shared cache.
+	memo [4096]struct {
+		key uint64 // plus one
+		u   []float32
+	}
+}
+
+// NewBundle returns a bundle for the moments lead [s] after the start of each frame.
+func (d *Driver) NewBundle(leads []float64) *Bundle {
+	b := &Bundle{d: d, spectra: make([]float32, kernel.Lanes*2*d.padded), sum: make([]float32, 2*d.padded)}
+	b.points = make([]float32, len(b.spectra))
+	size := d.fourier.Size
+	b.x = make([]float32, size*kernel.Lanes)
+	for i := range d.amp {
+		k := (d.first + i) % size // frequencies beyond the Nyquist frequency fold
+		b.at = append(b.at, d.fourier.Place[k], d.fourier.Place[(size-k)%size])
+	}
+	for _, lead := range leads {
+		turn := make([]float32, 0, len(b.at))
+		for i := range d.amp {
+			s, c := math.Sincos(2 * math.Pi * float64(d.first+i) * d.step * lead)
+			turn = append(turn, float32(c/2), float32(s/2))
+		}
+		b.turns = append(b.turns, turn)
+	}
+	return b
+}
+
+// Clear makes all lanes still.
+func (b *Bundle) Clear() {
+	clear(b.spectra)
+	b.ready = false
+}
+
+// dark is the amplitude [km/s] below which a site's motion is left out.
+const dark = 1e-6
+
+// Add adds to a lane the train that has travelled tau [s] from a footpoint, or towards
+// it, with the amplitude of each polarisation [km/s].
+func (b *Bundle) Add(lane int, colatitude, azimuth float64, dir int, tau float64, amplitude [2]float64) {
+	d := b.d
+	b.site, b.coef = b.site[:0], b.coef[:0]
+	for _, site := range d.Footpoint(colatitude, azimuth) {
+		for pol, a := range amplitude {
+			if k := a * site.Weight; math.Abs(k) >= dark {
+				b.site = append(b.site, b.spectrum(site.ID, pol, dir))
+				b.coef = append(b.coef, float32(k))
+			}
+		}
+	}
+	if len(b.site) == 0 {
+		return
+	}
+	kernel.Combine(b.sum, b.site, b.coef)
+	start, step := d.carrier(tau)
+	n := 2 * d.padded
+	kernel.Carry(b.spectra[lane*n:(lane+1)*n], b.sum, &start, step)
+}
+
+func (b *Bundle) spectrum(site uint64, pol, dir int) []float32 {
+	key := site<<2 | uint64(pol)<<1 | uint64(dir)
+	m := &b.memo[key*0x9e3779b97f4a7c15>>52]
+	if m.key != key+1 {
+		m.key, m.u = key+1, b.d.spectrum(site, pol, dir)
+	}
+	return m.u
+}
+
+// carrier returns the filter of travel time tau at the first eight bins, and the ratio
+// from each bin to the eighth after it.
+func (d *Driver) carrier(tau float64) (start [16]float32, step [2]float32) {
+	q := d.filter(d.step, tau)
+	z := d.filter(float64(d.first)*d.step, tau)
+	for l := range 8 {
+		start[l], start[8+l] = float32(real(z)), float32(imag(z))
+		z *= q
+	}
+	q *= q
+	q *= q
+	q *= q
+	return start, [2]float32{float32(real(q)), float32(imag(q))}
+}
+
+// filter is delay and damping at one frequency.
+func (d *Driver) filter(f, tau float64) complex128 {
+	return cmplx.Rect(d.damping(f, tau), -2*math.Pi*f*tau)
+}
+
+// Velocity returns the Doppler velocities [km/s] at every frame plus a lead, point by
+// point. They are good until the next call.
+func (b *Bundle) Velocity(lead int) []float32 {
+	if !b.ready {
+		kernel.Transpose(b.points, b.spectra)
+		b.ready = true
+	}
+	clear(b.x)
+	kernel.Assemble(b.x, b.points, b.d.padded, b.turns[lead], b.at)
+	b.d.fourier.Transform(b.x)
+	return b.x[:b.d.s.Frames*kernel.Lanes]
+}
