@@ -274,13 +274,13 @@ func (c *Scene) amplitude(n float64) float64 {
 	if c.s.Waves.Growth == "none" {
 		return a
 	}
-	return a * math.Pow(n/float64(c.s.Waves.AtDensity), -0.25)
+	return a / math.Sqrt(math.Sqrt(n/float64(c.s.Waves.AtDensity)))
 }
 
 // width returns the 1/e half-width of a line [km/s] without the filter's: thermal
 // motion and unresolved motions, which scale like the waves.
 func (c *Scene) width(p *model.Point) float64 {
-	xi := float64(c.s.Corona.Nonthermal) * kms * math.Pow(p.Kink/float64(c.s.Waves.AtDensity), -0.25)
+	xi := float64(c.s.Corona.Nonthermal) * kms / math.Sqrt(math.Sqrt(p.Kink/float64(c.s.Waves.AtDensity)))
 	return line.Width(c.light.Mass, p.T, xi) / kms
 }
 

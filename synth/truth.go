@@ -144,7 +144,11 @@ func (c *Scene) coherent(a, b *sample, end int) float64 {
 // footDistance returns the angle [rad] between two samples' footpoints.
 func footDistance(a, b *sample, end int) float64 {
 	u, v := a.point.Line.Foot[end].Vector(), b.point.Line.Foot[end].Vector()
-	return 2 * math.Asin(min(r3.Norm(r3.Sub(u, v))/2, 1))
+	chord := r3.Norm(r3.Sub(u, v))
+	if chord < 0.05 {
+		return chord * (1 + chord*chord/24) // to 5e-8
+	}
+	return 2 * math.Asin(min(chord/2, 1))
 }
 
 // truthOf returns the truth of one pixel, in the order of truthMaps, and its class.

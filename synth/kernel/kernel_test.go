@@ -112,7 +112,7 @@ func TestAssembleAndTransform(t *testing.T) {
 			at = append(at, f.Place[(first+k)%size], f.Place[((-first-k)%size+size)%size])
 		}
 		x := make([]float32, size*Lanes)
-		Assemble(x, w, 48, turn, at)
+		Assemble(x, w, 48, turn, at, true)
 		f.Transform(x)
 		for l := range Lanes {
 			for t0 := range size {
@@ -228,7 +228,7 @@ func TestPathsAgreeToTheBit(t *testing.T) {
 			Transpose(turned, noise(2*bins*Lanes, 14))
 			keep(turned)
 			x := points(f.Size, 1, 15)
-			Assemble(x, turned, bins, noise(len(at), 16), at)
+			Assemble(x, turned, bins, noise(len(at), 16), at, n%2 == 0)
 			keep(x)
 			f.Transform(x)
 			keep(x)
@@ -283,8 +283,7 @@ func BenchmarkTransform(b *testing.B) {
 			}
 			x := make([]float32, n*Lanes)
 			for b.Loop() {
-				clear(x)
-				Assemble(x, w, 184, turn[:min(len(turn), 2*180)], at[:min(len(at), 2*180)])
+				Assemble(x, w, 184, turn[:min(len(turn), 2*180)], at[:min(len(at), 2*180)], false)
 				f.Transform(x)
 			}
 			b.ReportMetric(float64(b.Elapsed().Nanoseconds())/float64(b.N*Lanes), "ns/sample")

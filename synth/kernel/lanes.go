@@ -55,38 +55,35 @@ func Transpose(dst, src []float32) {
 	}
 }
 
-// Assemble adds spectra of real motions to the input of a transform that makes two real
-// series at a time: the first lane of a ray becomes the real part, the second the
-// imaginary part. w
-// holds one point per bin of real parts, and from point bins on one per bin of imaginary
-// parts; every bin is first multiplied by the complex turn[2k], turn[2k+1]. The sum goes
-// to point at[2k] of x, that of the negative frequency to point at[2k+1].
-func Assemble(x, w []float32, bins int, turn []float32, at []int32) {
+// Assemble makes the input of a transform from the spectra of real motions, two series
+// at a time: the first lane of a ray becomes the real part, the second the imaginary
+// part. w holds one point per bin of real parts, and from point bins on one per bin of
+// imaginary parts; every bin is first multiplied by the complex turn[2k], turn[2k+1]. It
+// goes to point at[2k] of x, that of the negative frequency to point at[2k+1]: added to
+// what is there, or instead of it.
+func Assemble(x, w []float32, bins int, turn []float32, at []int32, add bool) {
 	k := len(at) / 2
 	turn = turn[:2*k]
 	w = w[:(bins+k)*Lanes]
-	points := int32(len(x) / Lanes)
-	for _, p := range at {
-		if p < 0 || p >= points {
-			panic("kernel: a bin beyond the transform")
-		}
-	}
-	if k == 0 || assembleVector(x, w, bins, turn, at) {
+	if k == 0 || assembleVector(x, w, bins, turn, at, add) {
 		return
 	}
 	for k := range k {
 		er, ei := turn[2*k], turn[2*k+1]
 		re, im := (*[Lanes]float32)(w[k*Lanes:]), (*[Lanes]float32)(w[(bins+k)*Lanes:])
 		pos, neg := (*[Lanes]float32)(x[at[2*k]*Lanes:]), (*[Lanes]float32)(x[at[2*k+1]*Lanes:])
-		for l := range 8 {
+		if !add {
+			*pos, *neg = [Lanes]float32{}, [Lanes]float32{}
+		}
+		for l := range Rays {
 			ar := float32(re[l]*er) - float32(im[l]*ei)
 			ai := float32(re[l]*ei) + float32(im[l]*er)
-			br := float32(re[8+l]*er) - float32(im[8+l]*ei)
-			bi := float32(re[8+l]*ei) + float32(im[8+l]*er)
+			br := float32(re[Rays+l]*er) - float32(im[Rays+l]*ei)
+			bi := float32(re[Rays+l]*ei) + float32(im[Rays+l]*er)
 			pos[l] += ar - bi
-			pos[8+l] += ai + br
+			pos[Rays+l] += ai + br
 			neg[l] += ar + bi
-			neg[8+l] += br - ai
+			neg[Rays+l] += br - ai
 		}
 	}
 }

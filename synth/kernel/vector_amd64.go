@@ -32,11 +32,16 @@ func transposeVector(dst, src []float32, n int) bool {
 	return useVector
 }
 
-func assembleVector(x, w []float32, bins int, turn []float32, at []int32) bool {
-	if useVector {
-		assembleAVX2(&x[0], &w[0], &w[bins*Lanes], &turn[0], &at[0], len(at)/2)
+func assembleVector(x, w []float32, bins int, turn []float32, at []int32, add bool) bool {
+	if !useVector {
+		return false
 	}
-	return useVector
+	mask := uint32(0)
+	if add {
+		mask = ^mask
+	}
+	assembleAVX2(&x[0], &w[0], &w[bins*Lanes], &turn[0], &at[0], len(at)/2, mask)
+	return true
 }
 
 func passVector(x []float32, s *stage, blocks int) bool {
@@ -78,7 +83,7 @@ func carryAVX2(dst, u *float32, n int, start *[16]float32, re, im float32)
 func transposeAVX2(dst, src *float32, n int)
 
 //go:noescape
-func assembleAVX2(x, re, im, turn *float32, at *int32, bins int)
+func assembleAVX2(x, re, im, turn *float32, at *int32, bins int, mask uint32)
 
 //go:noescape
 func join2AVX2(x, turn *float32, inner, blocks int)

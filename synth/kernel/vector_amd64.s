@@ -334,14 +334,16 @@ square:
 	VZEROUPPER
 	RET
 
-// func assembleAVX2(x, re, im, turn *float32, at *int32, bins int)
-TEXT ·assembleAVX2(SB), NOSPLIT, $0-48
+// func assembleAVX2(x, re, im, turn *float32, at *int32, bins int, mask uint32)
+// What is at the places counts through the mask.
+TEXT ·assembleAVX2(SB), NOSPLIT, $0-52
 	MOVQ x+0(FP), DI
 	MOVQ re+8(FP), SI
 	MOVQ im+16(FP), R8
 	MOVQ turn+24(FP), DX
 	MOVQ at+32(FP), R9
 	MOVQ bins+40(FP), CX
+	VBROADCASTSS mask+48(FP), Y13
 
 bin:
 	VBROADCASTSS (DX), Y14
@@ -367,16 +369,20 @@ bin:
 	VMULPS       Y14, Y1, Y7
 	VADDPS       Y7, Y6, Y5
 	VSUBPS       Y5, Y2, Y6
-	VADDPS       (DI)(R10*1), Y6, Y6
+	VANDPS       (DI)(R10*1), Y13, Y8
+	VADDPS       Y8, Y6, Y6
 	VMOVUPS      Y6, (DI)(R10*1)
 	VADDPS       Y4, Y3, Y7
-	VADDPS       32(DI)(R10*1), Y7, Y7
+	VANDPS       32(DI)(R10*1), Y13, Y9
+	VADDPS       Y9, Y7, Y7
 	VMOVUPS      Y7, 32(DI)(R10*1)
 	VADDPS       Y5, Y2, Y6
-	VADDPS       (DI)(R11*1), Y6, Y6
+	VANDPS       (DI)(R11*1), Y13, Y10
+	VADDPS       Y10, Y6, Y6
 	VMOVUPS      Y6, (DI)(R11*1)
 	VSUBPS       Y3, Y4, Y7
-	VADDPS       32(DI)(R11*1), Y7, Y7
+	VANDPS       32(DI)(R11*1), Y13, Y11
+	VADDPS       Y11, Y7, Y7
 	VMOVUPS      Y7, 32(DI)(R11*1)
 	ADDQ         $64, SI
 	ADDQ         $64, R8

@@ -10,7 +10,7 @@ func carryVector(_, _ []float32, _ *[16]float32, _ [2]float32) bool { return fal
 
 func transposeVector(_, _ []float32, _ int) bool { return false }
 
-func assembleVector(_, _ []float32, _ int, _ []float32, _ []int32) bool { return false }
+func assembleVector(_, _ []float32, _ int, _ []float32, _ []int32, _ bool) bool { return false }
 
 func passVector([]float32, *stage, int) bool { return false }
 

@@ -12,6 +12,8 @@ import (
 type Bundle struct {
 	d     *Driver
 	at    []int32     // where each bin and its negative belong in the transform
+	alone int         // so many bins have their places for themselves
+	blank []int32     // places without a bin
 	turns [][]float32 // by lead: half the phase of each bin
 
 	spectra []float32 // one a lane
@@ -25,11 +27,13 @@ type Bundle struct {
 	sum  []float32
 
 	// memo remembers the spectra that were used last, to spare the shared cache.
-	memo [4096]struct {
+	memo [1 << memoBits]struct {
 		key uint64 // plus one
 		u   []float32
 	}
 }
+
+const memoBits = 14
 
 // NewBundle returns a bundle for the moments lead [s] after the start of each frame.
 func (d *Driver) NewBundle(leads []float64) *Bundle {
@@ -37,9 +41,19 @@ func (d *Driver) NewBundle(leads []float64) *Bundle {
 	b.points = make([]float32, len(b.spectra))
 	size := d.fourier.Size
 	b.x = make([]float32, size*kernel.Lanes)
+	taken := make([]bool, size)
 	for i := range d.amp {
 		k := (d.first + i) % size // frequencies beyond the Nyquist frequency fold
 		b.at = append(b.at, d.fourier.Place[k], d.fourier.Place[(size-k)%size])
+		if d.first+i < (size+1)/2 {
+			b.alone = i + 1
+			taken[b.at[2*i]], taken[b.at[2*i+1]] = true, true
+		}
+	}
+	for p, is := range taken {
+		if !is {
+			b.blank = append(b.blank, int32(p))
+		}
 	}
 	for _, lead := range leads {
 		turn := make([]float32, 0, len(b.at))
@@ -85,7 +99,7 @@ func (b *Bundle) Add(lane int, colatitude, azimuth float64, dir int, tau float64
 
 func (b *Bundle) spectrum(site uint64, pol, dir int) []float32 {
 	key := site<<2 | uint64(pol)<<1 | uint64(dir)
-	m := &b.memo[key*0x9e3779b97f4a7c15>>52]
+	m := &b.memo[key*0x9e3779b97f4a7c15>>(64-memoBits)]
 	if m.key != key+1 {
 		m.key, m.u = key+1, b.d.spectrum(site, pol, dir)
 	}
@@ -96,7 +110,12 @@ func (b *Bundle) spectrum(site uint64, pol, dir int) []float32 {
 // from each bin to the eighth after it.
 func (d *Driver) carrier(tau float64) (start [16]float32, step [2]float32) {
 	q := d.filter(d.step, tau)
-	z := d.filter(float64(d.first)*d.step, tau)
+	z := complex(1, 0)
+	for n, square := d.first, q; n > 0; n, square = n>>1, square*square {
+		if n&1 == 1 {
+			z *= square
+		}
+	}
 	for l := range 8 {
 		start[l], start[8+l] = float32(real(z)), float32(imag(z))
 		z *= q
@@ -119,8 +138,12 @@ func (b *Bundle) Velocity(lead int) []float32 {
 		kernel.Transpose(b.points, b.spectra)
 		b.ready = true
 	}
-	clear(b.x)
-	kernel.Assemble(b.x, b.points, b.d.padded, b.turns[lead], b.at)
+	for _, p := range b.blank {
+		clear(b.x[p*kernel.Lanes : (p+1)*kernel.Lanes])
+	}
+	turn, bins := b.turns[lead], b.d.padded
+	kernel.Assemble(b.x, b.points, bins, turn[:2*b.alone], b.at[:2*b.alone], false)
+	kernel.Assemble(b.x, b.points[b.alone*kernel.Lanes:], bins, turn[2*b.alone:], b.at[2*b.alone:], true)
 	b.d.fourier.Transform(b.x)
 	return b.x[:b.d.s.Frames*kernel.Lanes]
 }
