@@ -71,7 +71,7 @@ func (b *belt) shift(phi float64) float64 {
 // latitude returns the latitude of p over the belt's middle, the sheet [rad].
 func (b *belt) latitude(p r3.Vec) float64 {
 	p = b.into(p)
-	rho := math.Hypot(p.X, p.Y)
+	rho := fromAxis(p)
 	lat := math.Atan2(p.Z, rho)
 	if b.warp == 0 {
 		return lat
@@ -99,7 +99,7 @@ func (f beltField) B(p r3.Vec) r3.Vec {
 		return f.out(f.Meridional.B(q))
 	}
 	r := norm(q)
-	rho := math.Hypot(q.X, q.Y)
+	rho := fromAxis(q)
 	st, ct := rho/r, q.Z/r
 	s := f.shift(math.Atan2(q.Y, q.X))
 	theta := math.Atan2(rho, q.Z)

@@ -60,7 +60,7 @@ func (f DipoleSheet) Meridional(r, theta float64) (br, bt float64) {
 
 // B implements Field.
 func (f DipoleSheet) B(p r3.Vec) r3.Vec {
-	rho := math.Hypot(p.X, p.Y)
+	rho := fromAxis(p)
 	bRho, bz := f.Cylindrical(rho, p.Z)
 	if rho == 0 {
 		return r3.Vec{Z: bz}
@@ -161,7 +161,7 @@ func (fs meridionalSum) Meridional(r, theta float64) (br, bt float64) {
 
 // cartesian turns meridional components at p into a vector.
 func cartesian(p r3.Vec, r, br, bt float64) r3.Vec {
-	rho := math.Hypot(p.X, p.Y)
+	rho := fromAxis(p)
 	if rho == 0 { // on the axis the meridional part vanishes by symmetry
 		return r3.Vec{Z: math.Copysign(1, p.Z) * br}
 	}
@@ -179,7 +179,7 @@ func spherical(theta, phi float64) r3.Vec {
 
 // azimuthal returns the unit vector of growing azimuth at p; y on the axis.
 func azimuthal(p r3.Vec) r3.Vec {
-	rho := math.Hypot(p.X, p.Y)
+	rho := fromAxis(p)
 	if rho == 0 {
 		return r3.Vec{Y: 1}
 	}
@@ -188,3 +188,6 @@ func azimuthal(p r3.Vec) r3.Vec {
 
 // norm is r3.Norm for lengths and fields far from overflow, several times faster.
 func norm(v r3.Vec) float64 { return math.Sqrt(r3.Dot(v, v)) }
+
+// fromAxis returns the distance from the z axis.
+func fromAxis(v r3.Vec) float64 { return math.Sqrt(v.X*v.X + v.Y*v.Y) }

@@ -219,7 +219,7 @@ func (g *Grid) B(p r3.Vec) r3.Vec {
 	v, r, _ := g.at(p)
 	k := 1 / (r * r)
 	br, bt, bp := k*v[2], k*v[3], k*v[4]
-	rho := math.Hypot(p.X, p.Y)
+	rho := fromAxis(p)
 	st, ct := rho/r, p.Z/r
 	sp, cp := 0.0, 1.0
 	if rho > 0 {

@@ -109,7 +109,7 @@ type vertex struct {
 func (c *Corona) follow(path []vertex, r, theta, dir, far float64) (_ []vertex, landed bool) {
 	slope := func(r, th float64) (dr, dth, b float64) {
 		br, bt := c.flat.Meridional(r, th)
-		b = math.Hypot(br, bt)
+		b = math.Sqrt(br*br + bt*bt)
 		return dir * br / b, dir * bt / b / r, b
 	}
 	dr, dth, b := slope(r, theta)

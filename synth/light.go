@@ -154,7 +154,7 @@ func (l *lamp) kindle(line int, b *batch) {
 			// Peak transmission times the share of the line that passes: filter.Gaussian at
 			// the line's own centre.
 			g.amp[i] = float32(energy * filter.Gaussian(0, 0, s.width, wf))
-			g.inv[i] = float32(1 / math.Hypot(s.width, wf))
+			g.inv[i] = float32(1 / math.Sqrt(s.width*s.width+wf*wf))
 			continue
 		}
 		l.series = l.lyot[line].Series(l.series, s.width)

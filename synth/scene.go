@@ -308,7 +308,7 @@ func (c *Scene) sampleAt(x, dx, y, z float64) sample {
 		p.R = math.Hypot(y, z)
 	}
 	b := c.view.ToSky(p.B)
-	bSky := math.Hypot(b.Y, b.Z)
+	bSky := math.Sqrt(b.Y*b.Y + b.Z*b.Z)
 	s.bSky = bSky
 	s.sky = bSky / r3.Norm(b)
 	s.angle = math.Atan2(-b.Y, b.Z)

@@ -112,15 +112,26 @@ func (c *Scene) waveWeights(ray []sample) []float64 {
 		w[0] = 1
 		return w
 	}
+	feet := make([][2]r3.Vec, len(ray))
+	for i := range ray {
+		l := &ray[i].point.Line
+		for end := range l.Ends {
+			feet[i][end] = l.Foot[end].Vector()
+		}
+	}
 	var ts []train
 	for i := range ray {
 		s := &ray[i]
-		a, b := &ray[max(i-1, 0)], &ray[min(i+1, len(ray)-1)]
+		a, b := max(i-1, 0), min(i+1, len(ray)-1)
+		ends := min(ray[a].point.Line.Ends, ray[b].point.Line.Ends)
 		ts = c.trains(&s.point, ts)
 		power := 0.0
 		for k := range ts {
-			t := &ts[k]
-			power += c.inBand(s, t) * c.coherent(a, b, t.end)
+			end := ts[k].end
+			if end >= ends { // the class changes here
+				end = 0
+			}
+			power += c.inBand(s, &ts[k]) * c.coherent(ray[b].x-ray[a].x, feet[a][end], feet[b][end])
 		}
 		w[i] = s.j[0] * s.j[0] * s.dx * power
 	}
@@ -128,23 +139,19 @@ func (c *Scene) waveWeights(ray []sample) []float64 {
 }
 
 // coherent returns the length [solar radii] along the ray over which footpoints stay
-// within one cell, from the neighbours a and b of a sample.
-func (c *Scene) coherent(a, b *sample, end int) float64 {
-	dx := math.Abs(b.x - a.x)
-	if end >= min(a.point.Line.Ends, b.point.Line.Ends) { // the class changes here
-		end = 0
-	}
-	moved := footDistance(a, b, end)
+// within one cell, if they move from a to b over dx.
+func (c *Scene) coherent(dx float64, a, b r3.Vec) float64 {
+	moved := angleBetween(a, b)
 	if !(moved > 0) {
 		return float64(c.s.Sight.Reach)
 	}
 	return min(c.cell*dx/moved, float64(c.s.Sight.Reach))
 }
 
-// footDistance returns the angle [rad] between two samples' footpoints.
-func footDistance(a, b *sample, end int) float64 {
-	u, v := a.point.Line.Foot[end].Vector(), b.point.Line.Foot[end].Vector()
-	chord := r3.Norm(r3.Sub(u, v))
+// angleBetween returns the angle [rad] between two unit vectors.
+func angleBetween(a, b r3.Vec) float64 {
+	d := r3.Sub(a, b)
+	chord := math.Sqrt(r3.Dot(d, d))
 	if chord < 0.05 {
 		return chord * (1 + chord*chord/24) // to 5e-8
 	}

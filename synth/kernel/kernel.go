@@ -43,33 +43,32 @@ func combine(dst []float32, rows [][]float32, coef []float32, from int) {
 	}
 }
 
-// Constants of expNeg; the vector code has them too.
+// Constants of exp2Neg; the vector code has them too.
 const (
-	expEnd   = 86.0 // beyond this Gaussians are dark
-	log2e    = 1.44269504
+	exp2End  = 120.0      // beyond this Gaussians are dark
 	rounding = 12582912.0 // 1.5 * 2^23: adding it rounds to an integer
-	ln2      = 0.69314718
-	expC2    = 0.49998868
-	expC3    = -0.16666505
-	expC4    = 0.041917559
-	expC5    = -0.0083691552
+	exp2C1   = -0.693147181
+	exp2C2   = 0.24022349
+	exp2C3   = -0.0555038063
+	exp2C4   = 0.00966636852
+	exp2C5   = -0.00133814255
 )
 
-// expNeg is exp(-s) for s >= 0 in single precision: -s = n ln 2 - r, |r| <= ln 2 / 2,
-// and the polynomial of degree 5 that interpolates exp(-r) at the Chebyshev nodes of
-// that interval to 1e-7 (derived). Beyond 86 it is 0. The error is below 3e-7, absolute.
-func expNeg(s float32) float32 {
-	if !(s <= expEnd) {
-		return 0
+// exp2Neg is 2^-s for s >= 0 in single precision: s = r - n, |r| <= 1/2, and the
+// polynomial of degree 5 that interpolates 2^-r at the Chebyshev nodes of that interval
+// to 1e-7 (derived). Beyond 120 it stays at 2^-120.
+func exp2Neg(s float32) float32 {
+	if !(s < exp2End) {
+		s = exp2End
 	}
-	n := rounding - float32(s*log2e)
+	n := rounding - s
 	k := math.Float32bits(n) << 23 // the bits of the constant fall out
 	n -= rounding
-	r := s + float32(n*ln2)
-	p := float32(expC5*r) + expC4
-	p = float32(p*r) + expC3
-	p = float32(p*r) + expC2
-	p = float32(p*r) - 1
+	r := s + n
+	p := float32(exp2C5*r) + exp2C4
+	p = float32(p*r) + exp2C3
+	p = float32(p*r) + exp2C2
+	p = float32(p*r) + exp2C1
 	p = float32(p*r) + 1
 	return math.Float32frombits(math.Float32bits(p) + k)
 }

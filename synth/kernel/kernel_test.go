@@ -9,15 +9,20 @@ import (
 	"offplane/synth/random"
 )
 
-func TestExpNeg(t *testing.T) {
-	for x := float32(0); x < 86; x += 0.00137 {
-		want := math.Exp(-float64(x))
-		if e := math.Abs(float64(expNeg(x)) - want); e > 3e-7 || e > 5e-6*want {
-			t.Fatalf("exp(-%g): error %.2g, relative %.2g", x, e, e/want)
+func TestExp2Neg(t *testing.T) {
+	for x := float32(0); x < 120; x += 0.00137 {
+		want := math.Exp2(-float64(x))
+		if rel := math.Abs(float64(exp2Neg(x))/want - 1); rel > 3e-7 {
+			t.Fatalf("2^-%g: relative error %.2g", x, rel)
 		}
 	}
-	if expNeg(87) != 0 || expNeg(0) != 1 || expNeg(float32(math.NaN())) != 0 {
-		t.Error("ends")
+	for _, x := range []float32{120, 1e9, float32(math.Inf(1)), float32(math.NaN())} {
+		if got := exp2Neg(x); got != 0x1p-120 {
+			t.Errorf("2^-%g: %g", x, got)
+		}
+	}
+	if exp2Neg(0) != 1 {
+		t.Error("2^0")
 	}
 }
 
@@ -70,7 +75,7 @@ func TestCarryIsAPower(t *testing.T) {
 	step := cmplx.Pow(q, 8)
 	dst, u := make([]float32, 2*n), noise(2*n, 2)
 	copy(dst, u)
-	Carry(dst, u, &start, [2]float32{float32(real(step)), float32(imag(step))})
+	Carry(dst, u, &start, [2]float32{float32(real(step)), float32(imag(step))}, true)
 	for k := range n {
 		z := complex(float64(u[k]), float64(u[n+k]))
 		want := z + z*cmplx.Pow(q, complex(float64(first+k), 0))
@@ -222,7 +227,7 @@ func TestPathsAgreeToTheBit(t *testing.T) {
 			Cosines(waves, points(n, 40, 10), points(1+n%7, 1, 11), vary(33.5, 0.3), 1/90.0)
 			keep(waves)
 			carried, start := noise(2*bins, 12), vary(0.9, -0.02)
-			Carry(carried, noise(2*bins, 13), start, [2]float32{0.8, -0.3})
+			Carry(carried, noise(2*bins, 13), start, [2]float32{0.8, -0.3}, n%2 == 0)
 			keep(carried)
 			turned := make([]float32, 2*bins*Lanes)
 			Transpose(turned, noise(2*bins*Lanes, 14))
@@ -258,7 +263,7 @@ func BenchmarkCarry(b *testing.B) {
 	dst, u, start := make([]float32, 368), noise(368, 5), vary(1e-3, 1e-3)
 	for b.Loop() {
 		q := *start
-		Carry(dst, u, &q, [2]float32{0.7, 0.7})
+		Carry(dst, u, &q, [2]float32{0.7, 0.7}, true)
 	}
 	b.ReportMetric(float64(b.Elapsed().Nanoseconds())/float64(b.N), "ns/sample")
 }

@@ -10,19 +10,22 @@ const (
 	Lanes = 2 * Rays
 )
 
-// Carry adds a train's spectrum, carried on along its line: dst[k] += u[k] q^k, of
-// complex numbers whose real parts are the first half of a slice and whose imaginary
-// parts are the second. Each half has a multiple of 8 elements. start holds q^k of the
-// first 8 bins, real parts first, and is used up; step is q^8. Rounding builds up to
-// 1e-6 over 200 bins (tested).
-func Carry(dst, u []float32, start *[16]float32, step [2]float32) {
+// Carry adds a train's spectrum, carried on along its line, to dst, or puts it there:
+// u[k] q^k, of complex numbers whose real parts are the first half of a slice and whose
+// imaginary parts are the second. Each half has a multiple of 8 elements. start holds q^k
+// of the first 8 bins, real parts first, and is used up; step is q^8. Rounding builds up
+// to 1e-6 over 200 bins (tested).
+func Carry(dst, u []float32, start *[16]float32, step [2]float32, add bool) {
 	n := len(dst) / 2
 	if n%8 != 0 {
 		panic("kernel: bins not in eights")
 	}
 	u = u[:2*n]
-	if n == 0 || carryVector(dst, u, start, step) {
+	if n == 0 || carryVector(dst, u, start, step, add) {
 		return
+	}
+	if !add {
+		clear(dst)
 	}
 	sr, si := step[0], step[1]
 	for b := 0; b < n; b += 8 {
@@ -88,6 +91,9 @@ func Assemble(x, w []float32, bins int, turn []float32, at []int32, add bool) {
 	}
 }
 
+// rootLog2e makes powers of two of Gaussians.
+const rootLog2e = 1.2011224
+
 // Profile adds the light of Lanes samples through one filter tuning to that of their
 // rays: acc += amp * exp(-((d - v) * inv)^2), lane by lane and point by point, with d the
 // tuning's offset, v the sample's Doppler velocity and 1/inv its 1/e half-width with the
@@ -97,14 +103,18 @@ func Profile(acc, v []float32, amp, d, inv *[Lanes]float32) {
 		panic("kernel: not whole points")
 	}
 	v = v[:2*len(acc)]
-	if len(acc) == 0 || profileVector(acc, v, amp, d, inv) {
+	var scale [Lanes]float32
+	for l, x := range inv {
+		scale[l] = x * rootLog2e
+	}
+	if len(acc) == 0 || profileVector(acc, v, amp, d, &scale) {
 		return
 	}
 	for t := 0; t < len(acc); t += Rays {
 		a, x := (*[Rays]float32)(acc[t:]), (*[Lanes]float32)(v[2*t:])
 		for l := range Lanes {
-			y := float32((d[l] - x[l]) * inv[l])
-			a[l%Rays] += float32(amp[l] * expNeg(float32(y*y)))
+			y := float32((d[l] - x[l]) * scale[l])
+			a[l%Rays] += float32(amp[l] * exp2Neg(float32(y*y)))
 		}
 	}
 }

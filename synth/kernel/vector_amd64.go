@@ -18,9 +18,9 @@ func combineVector(dst []float32, rows [][]float32, coef []float32) int {
 	return n
 }
 
-func carryVector(dst, u []float32, start *[16]float32, step [2]float32) bool {
+func carryVector(dst, u []float32, start *[16]float32, step [2]float32, add bool) bool {
 	if useVector {
-		carryAVX2(&dst[0], &u[0], len(dst)/2, start, step[0], step[1])
+		carryAVX2(&dst[0], &u[0], len(dst)/2, start, step[0], step[1], mask(add))
 	}
 	return useVector
 }
@@ -33,15 +33,18 @@ func transposeVector(dst, src []float32, n int) bool {
 }
 
 func assembleVector(x, w []float32, bins int, turn []float32, at []int32, add bool) bool {
-	if !useVector {
-		return false
+	if useVector {
+		assembleAVX2(&x[0], &w[0], &w[bins*Lanes], &turn[0], &at[0], len(at)/2, mask(add))
 	}
-	mask := uint32(0)
+	return useVector
+}
+
+// mask lets through what is already there, or nothing.
+func mask(add bool) uint32 {
 	if add {
-		mask = ^mask
+		return ^uint32(0)
 	}
-	assembleAVX2(&x[0], &w[0], &w[bins*Lanes], &turn[0], &at[0], len(at)/2, mask)
-	return true
+	return 0
 }
 
 func passVector(x []float32, s *stage, blocks int) bool {
@@ -77,7 +80,7 @@ func cosinesVector(acc, v, coef []float32, d *[Lanes]float32, inv float32) bool 
 func combineAVX2(dst *float32, n int, rows *[]float32, coef *float32, nrows int)
 
 //go:noescape
-func carryAVX2(dst, u *float32, n int, start *[16]float32, re, im float32)
+func carryAVX2(dst, u *float32, n int, start *[16]float32, re, im float32, mask uint32)
 
 //go:noescape
 func transposeAVX2(dst, src *float32, n int)

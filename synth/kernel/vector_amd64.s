@@ -2,46 +2,41 @@
 
 #include "textflag.h"
 
-// Eight copies of each constant of expNeg and cosines (kernel.go) and of join3.
-DATA end<>+0(SB)/8, $0x42ac000042ac0000
-DATA end<>+8(SB)/8, $0x42ac000042ac0000
-DATA end<>+16(SB)/8, $0x42ac000042ac0000
-DATA end<>+24(SB)/8, $0x42ac000042ac0000
+// Eight copies of each constant of exp2Neg and cosines (kernel.go) and of join3.
+DATA end<>+0(SB)/8, $0x42f0000042f00000
+DATA end<>+8(SB)/8, $0x42f0000042f00000
+DATA end<>+16(SB)/8, $0x42f0000042f00000
+DATA end<>+24(SB)/8, $0x42f0000042f00000
 GLOBL end<>(SB), RODATA|NOPTR, $32
-DATA log2e<>+0(SB)/8, $0x3fb8aa3b3fb8aa3b
-DATA log2e<>+8(SB)/8, $0x3fb8aa3b3fb8aa3b
-DATA log2e<>+16(SB)/8, $0x3fb8aa3b3fb8aa3b
-DATA log2e<>+24(SB)/8, $0x3fb8aa3b3fb8aa3b
-GLOBL log2e<>(SB), RODATA|NOPTR, $32
 DATA round<>+0(SB)/8, $0x4b4000004b400000
 DATA round<>+8(SB)/8, $0x4b4000004b400000
 DATA round<>+16(SB)/8, $0x4b4000004b400000
 DATA round<>+24(SB)/8, $0x4b4000004b400000
 GLOBL round<>(SB), RODATA|NOPTR, $32
-DATA ln2<>+0(SB)/8, $0x3f3172183f317218
-DATA ln2<>+8(SB)/8, $0x3f3172183f317218
-DATA ln2<>+16(SB)/8, $0x3f3172183f317218
-DATA ln2<>+24(SB)/8, $0x3f3172183f317218
-GLOBL ln2<>(SB), RODATA|NOPTR, $32
-DATA c2<>+0(SB)/8, $0x3efffe843efffe84
-DATA c2<>+8(SB)/8, $0x3efffe843efffe84
-DATA c2<>+16(SB)/8, $0x3efffe843efffe84
-DATA c2<>+24(SB)/8, $0x3efffe843efffe84
+DATA c1<>+0(SB)/8, $0xbf317218bf317218
+DATA c1<>+8(SB)/8, $0xbf317218bf317218
+DATA c1<>+16(SB)/8, $0xbf317218bf317218
+DATA c1<>+24(SB)/8, $0xbf317218bf317218
+GLOBL c1<>(SB), RODATA|NOPTR, $32
+DATA c2<>+0(SB)/8, $0x3e75fd263e75fd26
+DATA c2<>+8(SB)/8, $0x3e75fd263e75fd26
+DATA c2<>+16(SB)/8, $0x3e75fd263e75fd26
+DATA c2<>+24(SB)/8, $0x3e75fd263e75fd26
 GLOBL c2<>(SB), RODATA|NOPTR, $32
-DATA c3<>+0(SB)/8, $0xbe2aaa3ebe2aaa3e
-DATA c3<>+8(SB)/8, $0xbe2aaa3ebe2aaa3e
-DATA c3<>+16(SB)/8, $0xbe2aaa3ebe2aaa3e
-DATA c3<>+24(SB)/8, $0xbe2aaa3ebe2aaa3e
+DATA c3<>+0(SB)/8, $0xbd6357f6bd6357f6
+DATA c3<>+8(SB)/8, $0xbd6357f6bd6357f6
+DATA c3<>+16(SB)/8, $0xbd6357f6bd6357f6
+DATA c3<>+24(SB)/8, $0xbd6357f6bd6357f6
 GLOBL c3<>(SB), RODATA|NOPTR, $32
-DATA c4<>+0(SB)/8, $0x3d2bb1bf3d2bb1bf
-DATA c4<>+8(SB)/8, $0x3d2bb1bf3d2bb1bf
-DATA c4<>+16(SB)/8, $0x3d2bb1bf3d2bb1bf
-DATA c4<>+24(SB)/8, $0x3d2bb1bf3d2bb1bf
+DATA c4<>+0(SB)/8, $0x3c1e5fb03c1e5fb0
+DATA c4<>+8(SB)/8, $0x3c1e5fb03c1e5fb0
+DATA c4<>+16(SB)/8, $0x3c1e5fb03c1e5fb0
+DATA c4<>+24(SB)/8, $0x3c1e5fb03c1e5fb0
 GLOBL c4<>(SB), RODATA|NOPTR, $32
-DATA c5<>+0(SB)/8, $0xbc091ec8bc091ec8
-DATA c5<>+8(SB)/8, $0xbc091ec8bc091ec8
-DATA c5<>+16(SB)/8, $0xbc091ec8bc091ec8
-DATA c5<>+24(SB)/8, $0xbc091ec8bc091ec8
+DATA c5<>+0(SB)/8, $0xbaaf649dbaaf649d
+DATA c5<>+8(SB)/8, $0xbaaf649dbaaf649d
+DATA c5<>+16(SB)/8, $0xbaaf649dbaaf649d
+DATA c5<>+24(SB)/8, $0xbaaf649dbaaf649d
 GLOBL c5<>(SB), RODATA|NOPTR, $32
 DATA one<>+0(SB)/8, $0x3f8000003f800000
 DATA one<>+8(SB)/8, $0x3f8000003f800000
@@ -225,14 +220,16 @@ combined:
 	RET
 
 
-// func carryAVX2(dst, u *float32, n int, start *[16]float32, re, im float32)
-TEXT ·carryAVX2(SB), NOSPLIT, $0-40
+// func carryAVX2(dst, u *float32, n int, start *[16]float32, re, im float32, mask uint32)
+// What is in dst counts through the mask.
+TEXT ·carryAVX2(SB), NOSPLIT, $0-44
 	MOVQ         dst+0(FP), DI
 	MOVQ         u+8(FP), SI
 	MOVQ         n+16(FP), CX
 	MOVQ         start+24(FP), DX
 	VBROADCASTSS re+32(FP), Y14
 	VBROADCASTSS im+36(FP), Y15
+	VBROADCASTSS mask+40(FP), Y11
 	VMOVUPS      (DX), Y12   // q
 	VMOVUPS      32(DX), Y13
 	LEAQ         (DI)(CX*4), R8
@@ -245,12 +242,14 @@ carry:
 	VMULPS  Y12, Y0, Y2
 	VMULPS  Y13, Y1, Y3
 	VSUBPS  Y3, Y2, Y2
-	VADDPS  (DI)(R10*4), Y2, Y2
+	VANDPS  (DI)(R10*4), Y11, Y10
+	VADDPS  Y10, Y2, Y2
 	VMOVUPS Y2, (DI)(R10*4)
 	VMULPS  Y13, Y0, Y4
 	VMULPS  Y12, Y1, Y5
 	VADDPS  Y5, Y4, Y4
-	VADDPS  (R8)(R10*4), Y4, Y4
+	VANDPS  (R8)(R10*4), Y11, Y9
+	VADDPS  Y9, Y4, Y4
 	VMOVUPS Y4, (R8)(R10*4)
 	VMULPS  Y14, Y12, Y6
 	VMULPS  Y15, Y13, Y7
@@ -541,12 +540,11 @@ point4:
 	VSUBPS  off(SI), Y0, Y0; \
 	VMULPS  off(R10), Y0, Y0; \
 	VMULPS  Y0, Y0, Y0; \
-	VMULPS  Y12, Y0, Y1; \
-	VSUBPS  Y1, Y11, Y1; \
+	VMINPS  Y15, Y0, Y0; \
+	VSUBPS  Y0, Y11, Y1; \
 	VPSLLD  $23, Y1, Y2; \
 	VSUBPS  Y11, Y1, Y1; \
-	VMULPS  Y10, Y1, Y3; \
-	VADDPS  Y3, Y0, Y4; \
+	VADDPS  Y1, Y0, Y4; \
 	VMULPS  Y9, Y4, Y5; \
 	VADDPS  Y8, Y5, Y5; \
 	VMULPS  Y4, Y5, Y5; \
@@ -554,12 +552,10 @@ point4:
 	VMULPS  Y4, Y5, Y5; \
 	VADDPS  Y13, Y5, Y5; \
 	VMULPS  Y4, Y5, Y5; \
-	VSUBPS  Y14, Y5, Y5; \
+	VADDPS  Y12, Y5, Y5; \
 	VMULPS  Y4, Y5, Y5; \
 	VADDPS  Y14, Y5, Y5; \
 	VPADDD  Y2, Y5, Y5; \
-	VCMPPS  $2, Y15, Y0, Y6; \
-	VANDPS  Y6, Y5, Y5; \
 	VMULPS  off(R8), Y5, Y5
 
 // func profileAVX2(acc, v *float32, points int, amp, d, inv *[Lanes]float32)
@@ -570,9 +566,8 @@ TEXT ·profileAVX2(SB), NOSPLIT, $0-48
 	MOVQ    amp+24(FP), R8
 	MOVQ    d+32(FP), R9
 	MOVQ    inv+40(FP), R10
-	VMOVUPS log2e<>(SB), Y12
+	VMOVUPS c1<>(SB), Y12
 	VMOVUPS round<>(SB), Y11
-	VMOVUPS ln2<>(SB), Y10
 	VMOVUPS c5<>(SB), Y9
 	VMOVUPS c4<>(SB), Y8
 	VMOVUPS c3<>(SB), Y7

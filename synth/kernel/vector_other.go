@@ -6,7 +6,7 @@ var useVector = false
 
 func combineVector([]float32, [][]float32, []float32) int { return 0 }
 
-func carryVector(_, _ []float32, _ *[16]float32, _ [2]float32) bool { return false }
+func carryVector(_, _ []float32, _ *[16]float32, _ [2]float32, _ bool) bool { return false }
 
 func transposeVector(_, _ []float32, _ int) bool { return false }
 

@@ -17,14 +17,17 @@ type Bundle struct {
 	turns [][]float32 // by lead: half the phase of each bin
 
 	spectra []float32 // one a lane
-	used    [kernel.Lanes]bool
-	points  []float32 // the same, point by point; nil until asked for
+	moving  [kernel.Lanes]bool
+	points  []float32 // the same, point by point, if ready
 	ready   bool
 	x       []float32
 
-	site [][]float32
-	coef []float32
-	sum  []float32
+	// Spectra of the sites around the last footpoint, both polarisations of each; the next
+	// one is often between the same.
+	around [4]uint64
+	dir    int
+	site   [8][]float32
+	sum    []float32
 
 	// memo remembers the spectra that were used last, to spare the shared cache.
 	memo [1 << memoBits]struct {
@@ -68,33 +71,29 @@ func (d *Driver) NewBundle(leads []float64) *Bundle {
 
 // Clear makes all lanes still.
 func (b *Bundle) Clear() {
-	clear(b.spectra)
+	b.moving = [kernel.Lanes]bool{}
 	b.ready = false
 }
-
-// dark is the amplitude [km/s] below which a site's motion is left out.
-const dark = 1e-6
 
 // Add adds to a lane the train that has travelled tau [s] from a footpoint, or towards
 // it, with the amplitude of each polarisation [km/s].
 func (b *Bundle) Add(lane int, colatitude, azimuth float64, dir int, tau float64, amplitude [2]float64) {
 	d := b.d
-	b.site, b.coef = b.site[:0], b.coef[:0]
-	for _, site := range d.Footpoint(colatitude, azimuth) {
-		for pol, a := range amplitude {
-			if k := a * site.Weight; math.Abs(k) >= dark {
-				b.site = append(b.site, b.spectrum(site.ID, pol, dir))
-				b.coef = append(b.coef, float32(k))
-			}
+	sites := d.Footpoint(colatitude, azimuth)
+	var coef [8]float32
+	for i, s := range sites {
+		if s.ID != b.around[i] || dir != b.dir || b.site[2*i] == nil {
+			b.around[i] = s.ID
+			b.site[2*i], b.site[2*i+1] = b.spectrum(s.ID, 0, dir), b.spectrum(s.ID, 1, dir)
 		}
+		coef[2*i], coef[2*i+1] = float32(amplitude[0]*s.Weight), float32(amplitude[1]*s.Weight)
 	}
-	if len(b.site) == 0 {
-		return
-	}
-	kernel.Combine(b.sum, b.site, b.coef)
+	b.dir = dir
+	kernel.Combine(b.sum, b.site[:], coef[:])
 	start, step := d.carrier(tau)
 	n := 2 * d.padded
-	kernel.Carry(b.spectra[lane*n:(lane+1)*n], b.sum, &start, step)
+	kernel.Carry(b.spectra[lane*n:(lane+1)*n], b.sum, &start, step, b.moving[lane])
+	b.moving[lane] = true
 }
 
 func (b *Bundle) spectrum(site uint64, pol, dir int) []float32 {
@@ -135,6 +134,12 @@ func (d *Driver) filter(f, tau float64) complex128 {
 // point. They are good until the next call.
 func (b *Bundle) Velocity(lead int) []float32 {
 	if !b.ready {
+		n := 2 * b.d.padded
+		for lane, moving := range b.moving {
+			if !moving {
+				clear(b.spectra[lane*n : (lane+1)*n])
+			}
+		}
 		kernel.Transpose(b.points, b.spectra)
 		b.ready = true
 	}
