@@ -120,8 +120,8 @@ func (l *lamp) move(b *batch) {
 			continue
 		}
 		l.trains = l.c.trains(&s.point, l.trains)
-		for _, t := range l.trains {
-			l.waves.Add(i, t.colatitude, t.azimuth, t.dir, t.tau, [2]float64{s.los[0] * t.factor, s.los[1] * t.factor})
+		for n, t := range l.trains {
+			l.waves.Add(i, n, t.colatitude, t.azimuth, t.dir, t.tau, [2]float64{s.los[0] * t.factor, s.los[1] * t.factor})
 		}
 	}
 }

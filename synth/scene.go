@@ -5,7 +5,6 @@ import (
 	"errors"
 	"fmt"
 	"math"
-	"slices"
 
 	"gonum.org/v1/gonum/spatial/r3"
 
@@ -247,22 +246,28 @@ func (c *Scene) trains(p *model.Point, dst []train) []train {
 	if l.Ends == 0 {
 		return dst
 	}
-	near := func(end int) train {
-		f := l.Foot[end]
-		return train{f.Colatitude, f.Azimuth, l.Tau[end], wave.Outward, 1, end}
+	add := func(end, dir int, tau, factor float64) {
+		if tau <= c.longest {
+			f := l.Foot[end]
+			dst = append(dst, train{f.Colatitude, f.Azimuth, tau, dir, factor, end})
+		}
 	}
-	dst = append(dst, near(0))
+	if l.Closed && !c.s.Waves.FarEnd { // one train a line: that of the nearer end
+		end := 0
+		if l.Tau[1] < l.Tau[0] {
+			end = 1
+		}
+		add(end, wave.Outward, l.Tau[end], 1)
+		return dst
+	}
+	add(0, wave.Outward, l.Tau[0], 1)
 	switch {
-	case l.Closed && c.s.Waves.FarEnd:
-		dst = append(dst, near(1))
-	case l.Closed && l.Tau[1] < l.Tau[0]: // one train a line: that of the nearer end
-		dst[0] = near(1)
-	case !l.Closed && c.s.Waves.Inward > 0 && l.TauTop >= 0:
-		t := near(0)
-		t.tau, t.dir, t.factor = l.TauTop, wave.Inward, math.Sqrt(c.s.Waves.Inward)
-		dst = append(dst, t)
+	case l.Closed:
+		add(1, wave.Outward, l.Tau[1], 1)
+	case c.s.Waves.Inward > 0 && l.TauTop >= 0:
+		add(0, wave.Inward, l.TauTop, math.Sqrt(c.s.Waves.Inward))
 	}
-	return slices.DeleteFunc(dst, func(t train) bool { return !(t.tau <= c.longest) })
+	return dst
 }
 
 // amplitude returns the rms speed [km/s] of one polarisation of an undamped outward

@@ -61,17 +61,13 @@ func (c *Scene) expose(ctx context.Context, workers, tile int, progress func(don
 	}
 	lit, wide := d.lit, &d.wide.Grid
 
-	// Neighbours in position angle share field lines, so they come one after the other:
-	// sectors, and within them pixels outward.
+	// Neighbours share field lines, so they come one after the other.
 	order := make([]int, len(lit))
-	key := make([][2]float64, len(lit))
-	for i, p := range lit {
-		r, pa := wide.Polar(int(p)%wide.Nx, int(p)/wide.Nx)
+	for i := range order {
 		order[i] = i
-		key[i] = [2]float64{math.Floor(pa), r}
 	}
-	slices.SortStableFunc(order, func(a, b int) int {
-		return cmp.Or(cmp.Compare(key[a][0], key[b][0]), cmp.Compare(key[a][1], key[b][1]))
+	slices.SortFunc(order, func(a, b int) int {
+		return cmp.Compare(zigzag(int(lit[a])%wide.Nx, int(lit[a])/wide.Nx), zigzag(int(lit[b])%wide.Nx, int(lit[b])/wide.Nx))
 	})
 
 	workers = parallel.Workers(workers)
@@ -151,6 +147,20 @@ func (e *Exposed) develop(ctx context.Context, workers int) (*obs.Observation, e
 		return nil, errors.New("camera: no pixel of the field has a whole frame; all are occulted, saturated or lost")
 	}
 	return o, nil
+}
+
+// zigzag numbers the pixels so that each aligned block of 2, 4, 8, ... has consecutive
+// numbers: the bits of x and y in turn (Morton 1966, from memory).
+func zigzag(x, y int) uint64 {
+	spread := func(v int) uint64 {
+		u := uint64(v)
+		u = (u | u<<16) & 0x0000ffff0000ffff
+		u = (u | u<<8) & 0x00ff00ff00ff00ff
+		u = (u | u<<4) & 0x0f0f0f0f0f0f0f0f
+		u = (u | u<<2) & 0x3333333333333333
+		return (u | u<<1) & 0x5555555555555555
+	}
+	return spread(x) | spread(y)<<1
 }
 
 // camera returns the camera of the scene.

@@ -65,11 +65,10 @@ func exp2Neg(s float32) float32 {
 	k := math.Float32bits(n) << 23 // the bits of the constant fall out
 	n -= rounding
 	r := s + n
+	r2 := float32(r * r)
 	p := float32(exp2C5*r) + exp2C4
-	p = float32(p*r) + exp2C3
-	p = float32(p*r) + exp2C2
-	p = float32(p*r) + exp2C1
-	p = float32(p*r) + 1
+	p = float32(p*r2) + (float32(exp2C3*r) + exp2C2)
+	p = float32(p*r2) + (float32(exp2C1*r) + 1)
 	return math.Float32frombits(math.Float32bits(p) + k)
 }
 

@@ -73,14 +73,28 @@ func TestCarryIsAPower(t *testing.T) {
 		start[l], start[8+l] = float32(real(z)), float32(imag(z))
 	}
 	step := cmplx.Pow(q, 8)
-	dst, u := make([]float32, 2*n), noise(2*n, 2)
-	copy(dst, u)
-	Carry(dst, u, &start, [2]float32{float32(real(step)), float32(imag(step))}, true)
-	for k := range n {
-		z := complex(float64(u[k]), float64(u[n+k]))
-		want := z + z*cmplx.Pow(q, complex(float64(first+k), 0))
-		if e := cmplx.Abs(complex(float64(dst[k]), float64(dst[n+k])) - want); e > 2e-6*(1+cmplx.Abs(z)) {
-			t.Fatalf("bin %d: off by %.2g", k, e)
+	dst, coef := noise(2*n, 2), (*[8]float32)(noise(8, 3))
+	before := append([]float32(nil), dst...)
+	var u [8][]float32
+	for i := range u {
+		u[i] = noise(2*n, 4, uint64(i))
+	}
+	for _, add := range []bool{true, false} {
+		Carry(dst, &u, coef, &start, [2]float32{float32(real(step)), float32(imag(step))}, add)
+		for k := range n {
+			sum, size := complex(0, 0), 0.0
+			for i, c := range coef {
+				z := complex(float64(c*u[i][k]), float64(c*u[i][n+k]))
+				sum += z
+				size += cmplx.Abs(z)
+			}
+			want := sum * cmplx.Pow(q, complex(float64(first+k), 0))
+			if add {
+				want += complex(float64(before[k]), float64(before[n+k]))
+			}
+			if e := cmplx.Abs(complex(float64(dst[k]), float64(dst[n+k])) - want); e > 2e-6*(1+size) {
+				t.Fatalf("bin %d: off by %.2g", k, e)
+			}
 		}
 	}
 }
@@ -226,8 +240,12 @@ func TestPathsAgreeToTheBit(t *testing.T) {
 			waves := noise(n*Rays, 10)
 			Cosines(waves, points(n, 40, 10), points(1+n%7, 1, 11), vary(33.5, 0.3), 1/90.0)
 			keep(waves)
-			carried, start := noise(2*bins, 12), vary(0.9, -0.02)
-			Carry(carried, noise(2*bins, 13), start, [2]float32{0.8, -0.3}, n%2 == 0)
+			carried := noise(2*bins, 12)
+			var u [8][]float32
+			for i := range u {
+				u[i] = noise(2*bins, 13, uint64(i))
+			}
+			Carry(carried, &u, (*[8]float32)(noise(8, 14)), vary(0.9, -0.02), [2]float32{0.8, -0.3}, n%2 == 0)
 			keep(carried)
 			turned := make([]float32, 2*bins*Lanes)
 			Transpose(turned, noise(2*bins*Lanes, 14))
@@ -260,10 +278,13 @@ func BenchmarkCombine(b *testing.B) {
 }
 
 func BenchmarkCarry(b *testing.B) {
-	dst, u, start := make([]float32, 368), noise(368, 5), vary(1e-3, 1e-3)
+	var u [8][]float32
+	for i := range u {
+		u[i] = noise(368, 5, uint64(i))
+	}
+	dst, coef, start := make([]float32, 368), (*[8]float32)(noise(8, 6)), vary(1e-3, 1e-3)
 	for b.Loop() {
-		q := *start
-		Carry(dst, u, &q, [2]float32{0.7, 0.7}, true)
+		Carry(dst, &u, coef, start, [2]float32{0.7, 0.7}, true)
 	}
 	b.ReportMetric(float64(b.Elapsed().Nanoseconds())/float64(b.N), "ns/sample")
 }

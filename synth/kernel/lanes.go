@@ -10,32 +10,42 @@ const (
 	Lanes = 2 * Rays
 )
 
-// Carry adds a train's spectrum, carried on along its line, to dst, or puts it there:
-// u[k] q^k, of complex numbers whose real parts are the first half of a slice and whose
-// imaginary parts are the second. Each half has a multiple of 8 elements. start holds q^k
-// of the first 8 bins, real parts first, and is used up; step is q^8. Rounding builds up
-// to 1e-6 over 200 bins (tested).
-func Carry(dst, u []float32, start *[16]float32, step [2]float32, add bool) {
+// Carry adds the spectrum of a train, carried on along its line, to dst, or puts it
+// there: q^k times the sum over i of coef[i] u[i][k], of complex numbers whose real parts
+// are the first half of a slice and whose imaginary parts are the second. Each half has a
+// multiple of 8 elements. start holds q^k of the first 8 bins, real parts first; step is
+// q^8. Rounding builds up to 1e-6 over 200 bins (tested).
+func Carry(dst []float32, u *[8][]float32, coef *[8]float32, start *[16]float32, step [2]float32, add bool) {
 	n := len(dst) / 2
 	if n%8 != 0 {
 		panic("kernel: bins not in eights")
 	}
-	u = u[:2*n]
-	if n == 0 || carryVector(dst, u, start, step, add) {
+	for _, row := range u {
+		_ = row[:2*n] // the vector code does not check
+	}
+	if n == 0 || carryVector(dst, u, coef, start, step, add) {
 		return
 	}
 	if !add {
 		clear(dst)
 	}
+	q := *start
+	sum := func(k int) float32 {
+		s := float32(coef[0] * u[0][k])
+		for i := 1; i < 8; i++ {
+			s += float32(coef[i] * u[i][k])
+		}
+		return s
+	}
 	sr, si := step[0], step[1]
 	for b := 0; b < n; b += 8 {
 		re, im := dst[b:b+8], dst[n+b:n+b+8]
-		ur, ui := u[b:b+8], u[n+b:n+b+8]
 		for l := range 8 {
-			qr, qi := start[l], start[8+l]
-			re[l] += float32(ur[l]*qr) - float32(ui[l]*qi)
-			im[l] += float32(ur[l]*qi) + float32(ui[l]*qr)
-			start[l], start[8+l] = float32(qr*sr)-float32(qi*si), float32(qr*si)+float32(qi*sr)
+			qr, qi := q[l], q[8+l]
+			ur, ui := sum(b+l), sum(n+b+l)
+			re[l] += float32(ur*qr) - float32(ui*qi)
+			im[l] += float32(ur*qi) + float32(ui*qr)
+			q[l], q[8+l] = float32(qr*sr)-float32(qi*si), float32(qr*si)+float32(qi*sr)
 		}
 	}
 }

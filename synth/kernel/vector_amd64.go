@@ -18,9 +18,9 @@ func combineVector(dst []float32, rows [][]float32, coef []float32) int {
 	return n
 }
 
-func carryVector(dst, u []float32, start *[16]float32, step [2]float32, add bool) bool {
+func carryVector(dst []float32, u *[8][]float32, coef *[8]float32, start *[16]float32, step [2]float32, add bool) bool {
 	if useVector {
-		carryAVX2(&dst[0], &u[0], len(dst)/2, start, step[0], step[1], mask(add))
+		carryAVX2(&dst[0], u, coef, len(dst)/2, start, step[0], step[1], mask(add))
 	}
 	return useVector
 }
@@ -80,7 +80,7 @@ func cosinesVector(acc, v, coef []float32, d *[Lanes]float32, inv float32) bool 
 func combineAVX2(dst *float32, n int, rows *[]float32, coef *float32, nrows int)
 
 //go:noescape
-func carryAVX2(dst, u *float32, n int, start *[16]float32, re, im float32, mask uint32)
+func carryAVX2(dst *float32, u *[8][]float32, coef *[8]float32, n int, start *[16]float32, re, im float32, mask uint32)
 
 //go:noescape
 func transposeAVX2(dst, src *float32, n int)

@@ -220,48 +220,95 @@ combined:
 	RET
 
 
-// func carryAVX2(dst, u *float32, n int, start *[16]float32, re, im float32, mask uint32)
-// What is in dst counts through the mask.
-TEXT ·carryAVX2(SB), NOSPLIT, $0-44
-	MOVQ         dst+0(FP), DI
-	MOVQ         u+8(FP), SI
-	MOVQ         n+16(FP), CX
-	MOVQ         start+24(FP), DX
-	VBROADCASTSS re+32(FP), Y14
-	VBROADCASTSS im+36(FP), Y15
-	VBROADCASTSS mask+40(FP), Y11
-	VMOVUPS      (DX), Y12   // q
-	VMOVUPS      32(DX), Y13
-	LEAQ         (DI)(CX*4), R8
-	LEAQ         (SI)(CX*4), R9
-	XORQ         R10, R10
+// func carryAVX2(dst *float32, u *[8][]float32, coef *[8]float32, n int, start *[16]float32, re, im float32, mask uint32)
+// What is in dst counts if the mask is not 0.
+TEXT ·carryAVX2(SB), NOSPLIT, $0-52
+	MOVQ coef+16(FP), DI
+	VBROADCASTSS 0(DI), Y8
+	VBROADCASTSS 4(DI), Y9
+	VBROADCASTSS 8(DI), Y10
+	VBROADCASTSS 12(DI), Y11
+	VBROADCASTSS 16(DI), Y12
+	VBROADCASTSS 20(DI), Y13
+	VBROADCASTSS 24(DI), Y14
+	VBROADCASTSS 28(DI), Y15
+	MOVQ start+32(FP), DI
+	VMOVUPS      (DI), Y4   // q
+	VMOVUPS      32(DI), Y5
+	VBROADCASTSS re+40(FP), Y6
+	VBROADCASTSS im+44(FP), Y7
+	MOVQ u+8(FP), DI
+	MOVQ 0(DI), AX
+	MOVQ 24(DI), BX
+	MOVQ 48(DI), DX
+	MOVQ 72(DI), SI
+	MOVQ 96(DI), R8
+	MOVQ 120(DI), R9
+	MOVQ 144(DI), R10
+	MOVQ 168(DI), R11
+	MOVQ dst+0(FP), DI
+	XORQ CX, CX         // offset of the real parts [bytes]
+	MOVQ n+24(FP), R12
+	SHLQ $2, R12        // of the imaginary parts
 
 carry:
-	VMOVUPS (SI)(R10*4), Y0
-	VMOVUPS (R9)(R10*4), Y1
-	VMULPS  Y12, Y0, Y2
-	VMULPS  Y13, Y1, Y3
-	VSUBPS  Y3, Y2, Y2
-	VANDPS  (DI)(R10*4), Y11, Y10
-	VADDPS  Y10, Y2, Y2
-	VMOVUPS Y2, (DI)(R10*4)
-	VMULPS  Y13, Y0, Y4
-	VMULPS  Y12, Y1, Y5
-	VADDPS  Y5, Y4, Y4
-	VANDPS  (R8)(R10*4), Y11, Y9
-	VADDPS  Y9, Y4, Y4
-	VMOVUPS Y4, (R8)(R10*4)
-	VMULPS  Y14, Y12, Y6
-	VMULPS  Y15, Y13, Y7
-	VMULPS  Y15, Y12, Y8
-	VMULPS  Y14, Y13, Y9
-	VSUBPS  Y7, Y6, Y12
-	VADDPS  Y9, Y8, Y13
-	ADDQ    $8, R10
-	CMPQ    R10, CX
-	JLT     carry
-	VMOVUPS Y12, (DX)
-	VMOVUPS Y13, 32(DX)
+	VMULPS (AX)(CX*1), Y8, Y0
+	VMULPS (BX)(CX*1), Y9, Y2
+	VADDPS Y2, Y0, Y0
+	VMULPS (DX)(CX*1), Y10, Y3
+	VADDPS Y3, Y0, Y0
+	VMULPS (SI)(CX*1), Y11, Y2
+	VADDPS Y2, Y0, Y0
+	VMULPS (R8)(CX*1), Y12, Y3
+	VADDPS Y3, Y0, Y0
+	VMULPS (R9)(CX*1), Y13, Y2
+	VADDPS Y2, Y0, Y0
+	VMULPS (R10)(CX*1), Y14, Y3
+	VADDPS Y3, Y0, Y0
+	VMULPS (R11)(CX*1), Y15, Y2
+	VADDPS Y2, Y0, Y0
+	VMULPS (AX)(R12*1), Y8, Y1
+	VMULPS (BX)(R12*1), Y9, Y2
+	VADDPS Y2, Y1, Y1
+	VMULPS (DX)(R12*1), Y10, Y3
+	VADDPS Y3, Y1, Y1
+	VMULPS (SI)(R12*1), Y11, Y2
+	VADDPS Y2, Y1, Y1
+	VMULPS (R8)(R12*1), Y12, Y3
+	VADDPS Y3, Y1, Y1
+	VMULPS (R9)(R12*1), Y13, Y2
+	VADDPS Y2, Y1, Y1
+	VMULPS (R10)(R12*1), Y14, Y3
+	VADDPS Y3, Y1, Y1
+	VMULPS (R11)(R12*1), Y15, Y2
+	VADDPS Y2, Y1, Y1
+	VMULPS Y4, Y0, Y2
+	VMULPS Y5, Y1, Y3
+	VSUBPS Y3, Y2, Y2
+	VMULPS Y5, Y0, Y3
+	VMULPS Y4, Y1, Y0
+	VADDPS Y0, Y3, Y3
+	VMULPS Y6, Y4, Y0
+	VMULPS Y7, Y5, Y1
+	VSUBPS Y1, Y0, Y0
+	VMULPS Y7, Y4, Y4
+	VMULPS Y6, Y5, Y5
+	VADDPS Y5, Y4, Y5
+	VMOVAPS Y0, Y4
+	CMPL mask+48(FP), $0
+	JEQ  store
+	VADDPS (DI)(CX*1), Y2, Y2
+	VADDPS (DI)(R12*1), Y3, Y3
+
+store:
+	VMOVUPS Y2, (DI)(CX*1)
+	VMOVUPS Y3, (DI)(R12*1)
+	ADDQ $32, CX
+	ADDQ $32, R12
+	MOVQ n+24(FP), R13
+	SHLQ $2, R13
+	CMPQ CX, R13
+	JLT  carry
 	VZEROUPPER
 	RET
 
@@ -545,16 +592,17 @@ point4:
 	VPSLLD  $23, Y1, Y2; \
 	VSUBPS  Y11, Y1, Y1; \
 	VADDPS  Y1, Y0, Y4; \
+	VMULPS  Y4, Y4, Y6; \
 	VMULPS  Y9, Y4, Y5; \
 	VADDPS  Y8, Y5, Y5; \
-	VMULPS  Y4, Y5, Y5; \
-	VADDPS  Y7, Y5, Y5; \
-	VMULPS  Y4, Y5, Y5; \
-	VADDPS  Y13, Y5, Y5; \
-	VMULPS  Y4, Y5, Y5; \
-	VADDPS  Y12, Y5, Y5; \
-	VMULPS  Y4, Y5, Y5; \
-	VADDPS  Y14, Y5, Y5; \
+	VMULPS  Y7, Y4, Y1; \
+	VADDPS  Y13, Y1, Y1; \
+	VMULPS  Y12, Y4, Y0; \
+	VADDPS  Y14, Y0, Y0; \
+	VMULPS  Y6, Y5, Y5; \
+	VADDPS  Y1, Y5, Y5; \
+	VMULPS  Y6, Y5, Y5; \
+	VADDPS  Y0, Y5, Y5; \
 	VPADDD  Y2, Y5, Y5; \
 	VMULPS  off(R8), Y5, Y5
 

@@ -6,7 +6,9 @@ var useVector = false
 
 func combineVector([]float32, [][]float32, []float32) int { return 0 }
 
-func carryVector(_, _ []float32, _ *[16]float32, _ [2]float32, _ bool) bool { return false }
+func carryVector([]float32, *[8][]float32, *[8]float32, *[16]float32, [2]float32, bool) bool {
+	return false
+}
 
 func transposeVector(_, _ []float32, _ int) bool { return false }
 

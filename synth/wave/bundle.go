@@ -22,12 +22,8 @@ type Bundle struct {
 	ready   bool
 	x       []float32
 
-	// Spectra of the sites around the last footpoint, both polarisations of each; the next
-	// one is often between the same.
-	around [4]uint64
-	dir    int
-	site   [8][]float32
-	sum    []float32
+	// The next sample's footpoints are often between the same sites as the last one's.
+	last [2]surroundings
 
 	// memo remembers the spectra that were used last, to spare the shared cache.
 	memo [1 << memoBits]struct {
@@ -38,9 +34,17 @@ type Bundle struct {
 
 const memoBits = 14
 
+// surroundings are the sites around a footpoint and their spectra, both polarisations of
+// each.
+type surroundings struct {
+	sites   [4]uint64
+	dir     int
+	spectra [8][]float32
+}
+
 // NewBundle returns a bundle for the moments lead [s] after the start of each frame.
 func (d *Driver) NewBundle(leads []float64) *Bundle {
-	b := &Bundle{d: d, spectra: make([]float32, kernel.Lanes*2*d.padded), sum: make([]float32, 2*d.padded)}
+	b := &Bundle{d: d, spectra: make([]float32, kernel.Lanes*2*d.padded)}
 	b.points = make([]float32, len(b.spectra))
 	size := d.fourier.Size
 	b.x = make([]float32, size*kernel.Lanes)
@@ -75,32 +79,31 @@ func (b *Bundle) Clear() {
 	b.ready = false
 }
 
-// Add adds to a lane the train that has travelled tau [s] from a footpoint, or towards
-// it, with the amplitude of each polarisation [km/s].
-func (b *Bundle) Add(lane int, colatitude, azimuth float64, dir int, tau float64, amplitude [2]float64) {
+// Add adds to a lane one of the (two, numbered) trains that has travelled tau [s] from a
+// footpoint, or towards it, with the amplitude of each polarisation [km/s].
+func (b *Bundle) Add(lane, number int, colatitude, azimuth float64, dir int, tau float64, amplitude [2]float64) {
 	d := b.d
-	sites := d.Footpoint(colatitude, azimuth)
+	n := 2 * d.padded
+	around := &b.last[number]
 	var coef [8]float32
-	for i, s := range sites {
-		if s.ID != b.around[i] || dir != b.dir || b.site[2*i] == nil {
-			b.around[i] = s.ID
-			b.site[2*i], b.site[2*i+1] = b.spectrum(s.ID, 0, dir), b.spectrum(s.ID, 1, dir)
+	for i, s := range d.Footpoint(colatitude, azimuth) {
+		if s.ID != around.sites[i] || dir != around.dir || around.spectra[2*i] == nil {
+			both := b.siteSpectra(s.ID, dir)
+			around.sites[i], around.spectra[2*i], around.spectra[2*i+1] = s.ID, both[:n], both[n:]
 		}
 		coef[2*i], coef[2*i+1] = float32(amplitude[0]*s.Weight), float32(amplitude[1]*s.Weight)
 	}
-	b.dir = dir
-	kernel.Combine(b.sum, b.site[:], coef[:])
+	around.dir = dir
 	start, step := d.carrier(tau)
-	n := 2 * d.padded
-	kernel.Carry(b.spectra[lane*n:(lane+1)*n], b.sum, &start, step, b.moving[lane])
+	kernel.Carry(b.spectra[lane*n:(lane+1)*n], &around.spectra, &coef, &start, step, b.moving[lane])
 	b.moving[lane] = true
 }
 
-func (b *Bundle) spectrum(site uint64, pol, dir int) []float32 {
-	key := site<<2 | uint64(pol)<<1 | uint64(dir)
+func (b *Bundle) siteSpectra(site uint64, dir int) []float32 {
+	key := site<<1 | uint64(dir)
 	m := &b.memo[key*0x9e3779b97f4a7c15>>(64-memoBits)]
 	if m.key != key+1 {
-		m.key, m.u = key+1, b.d.spectrum(site, pol, dir)
+		m.key, m.u = key+1, b.d.spectra(site, dir)
 	}
 	return m.u
 }

@@ -123,16 +123,20 @@ func (d *Driver) amplitudes(site uint64, pol, dir int) []complex128 {
 	return z
 }
 
-// spectrum returns the spectrum of a site's motion: real parts of all bins, then
-// imaginary parts. It is shared and must not be changed. Safe for concurrent use.
-func (d *Driver) spectrum(site uint64, pol, dir int) []float32 {
-	key := site<<2 | uint64(pol)<<1 | uint64(dir)
+// spectra returns the spectra of a site's motion in both polarisations, one after the
+// other: real parts of all bins, then imaginary parts. They are shared and must not be
+// changed. Safe for concurrent use.
+func (d *Driver) spectra(site uint64, dir int) []float32 {
+	key := site<<1 | uint64(dir)
 	if u := d.cache.get(key); u != nil {
 		return u
 	}
-	u := make([]float32, 2*d.padded)
-	for i, z := range d.amplitudes(site, pol, dir) {
-		u[i], u[d.padded+i] = float32(d.amp[i]*real(z)), float32(d.amp[i]*imag(z))
+	u := make([]float32, 4*d.padded)
+	for pol := range 2 {
+		re, im := u[2*pol*d.padded:], u[(2*pol+1)*d.padded:]
+		for i, z := range d.amplitudes(site, pol, dir) {
+			re[i], im[i] = float32(d.amp[i]*real(z)), float32(d.amp[i]*imag(z))
+		}
 	}
 	d.cache.put(key, u)
 	return u

@@ -51,7 +51,7 @@ func TestBundleReproducesTheExactSum(t *testing.T) {
 				}
 				for train := range 2 {
 					_, colatitude, azimuth := siteAt(d, 100+lane, 50*train)
-					b.Add(lane, colatitude, azimuth, train, tau(lane, train), amplitude(lane, train))
+					b.Add(lane, train, colatitude, azimuth, train, tau(lane, train), amplitude(lane, train))
 				}
 			}
 			for i, lead := range leads {
@@ -85,7 +85,7 @@ func TestVarianceIsOne(t *testing.T) {
 		b.Clear()
 		for lane := range kernel.Lanes {
 			_, colatitude, azimuth := siteAt(d, 100+i, lane)
-			b.Add(lane, colatitude, azimuth, Outward, 40, [2]float64{1, 0})
+			b.Add(lane, 0, colatitude, azimuth, Outward, 40, [2]float64{1, 0})
 		}
 		for _, x := range b.Velocity(0) {
 			sum += float64(x) * float64(x)
@@ -151,9 +151,9 @@ func TestFootpointWeights(t *testing.T) {
 func TestSpectraDoNotDependOnTheCache(t *testing.T) {
 	s := Settings{Seed: 5, Cell: 0.01, Spectrum: spectrum, Damping: 2, Cadence: 30, Frames: 50, MaxDelay: 600}
 	a, b := driver(t, s), driver(t, s)
-	b.cache.init(4 * 3 * len(a.spectrum(0, 0, 0)))
+	b.cache.init(4 * 3 * len(a.spectra(0, 0)))
 	for i := range uint64(40) {
-		x, y := a.spectrum(i*7%13, 1, 0), b.spectrum(i*7%13, 1, 0)
+		x, y := a.spectra(i*7%13, 1), b.spectra(i*7%13, 1)
 		for j := range x {
 			if x[j] != y[j] {
 				t.Fatal("spectra differ")
@@ -164,11 +164,11 @@ func TestSpectraDoNotDependOnTheCache(t *testing.T) {
 
 var long = Settings{Seed: 1, Cell: 0.01, Spectrum: spectrum, Damping: 2.69, Cadence: 30, Frames: 360, MaxDelay: 4000}
 
-func BenchmarkSpectrum(b *testing.B) {
+func BenchmarkSpectra(b *testing.B) {
 	d := driver(b, long)
 	i := uint64(0)
 	for b.Loop() {
-		d.spectrum(i, 0, 0)
+		d.spectra(i, 0)
 		i++
 	}
 }
@@ -179,7 +179,7 @@ func BenchmarkBundle(b *testing.B) {
 	for b.Loop() {
 		u.Clear()
 		for lane := range kernel.Lanes {
-			u.Add(lane, 1.2, 0.3+0.002*float64(lane), Outward, 1000+float64(lane), [2]float64{3, 4})
+			u.Add(lane, 0, 1.2, 0.3+0.002*float64(lane), Outward, 1000+float64(lane), [2]float64{3, 4})
 		}
 		u.Velocity(0)
 	}
