@@ -131,12 +131,12 @@ func (d *Diagnosis) island(r *run, w *worker, p int) {
 		d.Angle = island.angle
 	}
 	d.Major, d.Minor, d.WindowFilled = island.major, island.minor, island.full()
-	row, nf, n := r.band.row, len(r.band.freq), s.n
+	row, nf := r.band.row, len(r.band.freq)
 	a := r.spec[p*row : (p+1)*row]
 	for k, state := range s.state {
-		x, y := d.X+k%n-s.half, d.Y+k/n-s.half
+		x, y := d.X+int(s.dx[k]), d.Y+int(s.dy[k])
 		q := r.find(x, y)
-		if state == 0 || q < 0 || r.norm[q] == 0 {
+		if state == 0 || s.outside[k] != 0 || q < 0 || r.norm[q] == 0 {
 			continue
 		}
 		b := r.spec[q*row : (q+1)*row]
@@ -169,9 +169,11 @@ func (d *Diagnosis) track(r *run, w *worker, p int) {
 		return out
 	}
 	d.Waves = maps(rows)
-	rising, falling := w.lags.separate(rows, n)
+	rising := w.lags.rising(rows, n)
+	falling := w.lags.falling(rows, rising, n)
 	d.Outward, d.Inward = maps(rising), maps(falling)
 	d.power(r.band, rows, n, step)
+	w.noise = r.noise(p)
 	for i, e := range w.estimators {
 		m := e.measure(w, rows, n, centre, rise >= leastRise)
 		x := Estimate{Name: r.opt.Estimators[i], Speed: m.v, Err: m.err, Inward: m.share}

@@ -3,10 +3,13 @@ package invert
 import (
 	"math"
 
+	blasapi "gonum.org/v1/gonum/blas"
 	"gonum.org/v1/gonum/blas/gonum"
 )
 
 var blas gonum.Implementation
+
+const none = blasapi.NoTrans
 
 const (
 	leastIsland = 6    // pixels, the pixel itself included
@@ -24,11 +27,15 @@ type islander struct {
 }
 
 // A window is the disc inscribed in a box: the corners of a square would pull every
-// axis toward its diagonals.
+// axis toward its diagonals. A frame one pixel wide around it spares the neighbours'
+// bounds.
 type window struct {
-	n, half int
-	inside  []bool
-	state   []uint8
+	n, half, side int
+	outside       []uint8 // 1: not in the disc
+	state         []uint8 // 1: looked at, or outside
+	around        [8]int  // neighbours in state
+	raster        []int32 // of a pixel of the window from the middle's, in the image
+	dx, dy        []int16 // of a pixel of the window from the middle
 }
 
 func newIslander(f *field) *islander {
@@ -41,16 +48,29 @@ func newIslander(f *field) *islander {
 func (s *islander) use(n int) {
 	w := s.windows[n]
 	if w == nil {
-		w = &window{n: n, half: n / 2, inside: make([]bool, n*n), state: make([]uint8, n*n)}
-		for j := range n {
-			for i := range n {
-				x, y := float64(i-w.half), float64(j-w.half)
-				w.inside[j*n+i] = x*x+y*y <= (float64(w.half)+0.5)*(float64(w.half)+0.5)
-			}
-		}
+		w = newWindow(n, s.grid.Nx)
 		s.windows[n] = w
 	}
 	s.window = w
+}
+
+func newWindow(n, nx int) *window {
+	w := &window{n: n, half: n / 2, side: n + 2}
+	for j := range w.side {
+		for i := range w.side {
+			x, y := i-1-w.half, j-1-w.half
+			out := uint8(0)
+			if r := float64(w.half) + 0.5; float64(x*x+y*y) > r*r {
+				out = 1
+			}
+			w.outside = append(w.outside, out)
+			w.raster = append(w.raster, int32(y*nx+x))
+			w.dx, w.dy = append(w.dx, int16(x)), append(w.dy, int16(y))
+		}
+	}
+	w.state = make([]uint8, len(w.outside))
+	w.around = [8]int{-w.side - 1, -w.side, -w.side + 1, -1, 1, w.side - 1, w.side, w.side + 1}
+	return w
 }
 
 // largest is the greatest diameter of a window that grows, over the box asked for.
@@ -89,7 +109,7 @@ type island struct {
 // error is that of a straight line fitted to independent pixels.
 func (s *islander) island(p int) island {
 	f := s.field
-	n, row, nf := s.n, f.band.row, len(f.band.freq)
+	row, nf := f.band.row, len(f.band.freq)
 	x0, y0 := f.at(p)
 	a := f.spec[p*row : (p+1)*row]
 	copy(s.rotated, a[nf:2*nf])
@@ -97,43 +117,44 @@ func (s *islander) island(p int) island {
 		s.rotated[nf+j] = -r
 	}
 	threshold := float32(f.opt.Coherence * f.opt.Coherence)
+	within := x0 >= s.half && y0 >= s.half && x0+s.half < f.grid.Nx && y0+s.half < f.grid.Ny
 
-	clear(s.state)
-	s.stack = append(s.stack[:0], int32(s.half*n+s.half))
-	s.state[s.half*n+s.half] = 1
-	var sxx, sxy, syy, near float64
+	state := s.state
+	copy(state, s.outside)
+	middle := (s.half+1)*s.side + s.half + 1
+	s.stack = append(s.stack[:0], int32(middle))
+	state[middle] = 1
+	var sxx, sxy, syy int
+	near := 0.0
 	count, adjacent := 0, 0
 	for len(s.stack) > 0 {
 		k := int(s.stack[len(s.stack)-1])
 		s.stack = s.stack[:len(s.stack)-1]
-		i, j := k%n, k/n
-		dx, dy := float64(i-s.half), float64(j-s.half)
+		dx, dy := int(s.dx[k]), int(s.dy[k])
 		count++
 		sxx += dx * dx
 		sxy += dx * dy
 		syy += dy * dy
-		for jj := max(j-1, 0); jj <= min(j+1, n-1); jj++ {
-			for ii := max(i-1, 0); ii <= min(i+1, n-1); ii++ {
-				kk := jj*n + ii
-				if s.state[kk] != 0 || !s.inside[kk] {
-					continue
-				}
-				s.state[kk] = 1
-				q := f.find(x0+ii-s.half, y0+jj-s.half)
-				if q < 0 || f.norm[q] == 0 {
-					continue
-				}
-				b := f.spec[q*row : (q+1)*row]
-				re := blas.Sdot(row, a, 1, b, 1)
-				im := blas.Sdot(row, s.rotated, 1, b, 1)
-				c2 := float32(re*re) + float32(im*im)
-				if count == 1 { // the first to leave the stack is the pixel itself
-					near += math.Sqrt(float64(c2))
-					adjacent++
-				}
-				if c2 > threshold {
-					s.stack = append(s.stack, int32(kk))
-				}
+		for _, step := range s.around {
+			kk := k + step
+			if state[kk] != 0 {
+				continue
+			}
+			state[kk] = 1
+			q := s.pixel(x0, y0, kk, within)
+			if q < 0 || f.norm[q] == 0 {
+				continue
+			}
+			b := f.spec[q*row : (q+1)*row]
+			re := blas.Sdot(row, a, 1, b, 1)
+			im := blas.Sdot(row, s.rotated, 1, b, 1)
+			c2 := float32(re*re) + float32(im*im)
+			if count == 1 { // the first to leave the stack is the pixel itself
+				near += math.Sqrt(float64(c2))
+				adjacent++
+			}
+			if c2 > threshold {
+				s.stack = append(s.stack, int32(kk))
 			}
 		}
 	}
@@ -141,21 +162,31 @@ func (s *islander) island(p int) island {
 	if count < leastIsland {
 		return r
 	}
-	r.angle = math.Atan2(2*sxy, sxx-syy) / 2
-	d := math.Hypot((sxx-syy)/2, sxy)
-	t := (sxx + syy) / 2
+	r.angle = math.Atan2(2*float64(sxy), float64(sxx-syy)) / 2
+	d := math.Hypot(float64(sxx-syy)/2, float64(sxy))
+	t := float64(sxx+syy) / 2
 	r.major, r.minor = math.Sqrt((t+d)/float64(count)), math.Sqrt(max(t-d, 0)/float64(count))
 	r.err = r.minor / (r.major * math.Sqrt(float64(count-1)))
 	if float64(count) > fullIsland*float64(s.half*s.half) {
-		for j := range n {
-			for i := range n {
-				if q := f.find(x0+i-s.half, y0+j-s.half); s.inside[j*n+i] && q >= 0 && f.norm[q] > 0 {
-					r.available++
-				}
+		for k, out := range s.outside {
+			if out != 0 {
+				continue
+			}
+			if q := s.pixel(x0, y0, k, within); q >= 0 && f.norm[q] > 0 {
+				r.available++
 			}
 		}
 	}
 	return r
+}
+
+// pixel returns the field pixel at place k of the window around (x0, y0), or -1; within
+// says that all of the window lies in the image.
+func (s *islander) pixel(x0, y0, k int, within bool) int {
+	if within {
+		return int(s.index[y0*s.grid.Nx+x0+int(s.raster[k])])
+	}
+	return s.find(x0+int(s.dx[k]), y0+int(s.dy[k]))
 }
 
 // full says whether the island fills its window.

@@ -56,23 +56,34 @@ func newEstimator(name string, opt *Options) estimator {
 
 type splitEstimator struct{}
 
-// aboveLeak is how far the power of inward waves has to exceed the leak of the outward
-// ones for its speed to be told: the leak is that of the band's centre alone.
+// aboveLeak is how far the power of inward waves, that of noise taken off, has to exceed
+// the leak of the outward ones for its speed to be told.
 const aboveLeak = 2
 
 func (splitEstimator) measure(w *worker, rows []float32, n, centre int, outward bool) estimate {
-	rising, falling := w.lags.separate(rows, n)
-	out := w.lags.speed(rising, n, centre)
-	in := w.lags.speed(falling, n, centre)
-	in.v = -in.v
-	if !outward && in.power > out.power {
-		out, in = in, out
+	l := w.lags
+	main := l.rising(rows, n)
+	p := power(main)
+	q := l.against(rows, main, n, p)
+	var other []float32
+	sign := 1.0
+	if !outward && q > p {
+		other, main = main, l.falling(rows, main, n)
+		p, q, sign = q, p, -1
 	}
-	e := estimate{speed: out, share: math.NaN()}
+	e := estimate{speed: l.speed(main, n, centre), share: math.NaN()}
+	e.v *= sign
 	// What outward waves leak into the other direction has a speed too, but it is not
-	// that of inward waves.
-	if in.ok && in.v > 0 && !(out.ok && in.power < aboveLeak*out.power*w.lags.leak(n, 2*math.Pi*w.lags.centre*w.lags.step/out.v)) {
-		e.in = in.v
+	// that of inward waves; white noise goes either way alike.
+	white := w.noise / 2 * (p + q)
+	if e.ok && q-white < aboveLeak*max(p-white, 0)*l.floor(n, e.v, main[centre*l.row:]) {
+		return e
+	}
+	if other == nil {
+		other = l.falling(rows, main, n)
+	}
+	if in := l.speed(other, n, centre); in.ok && in.v*sign < 0 {
+		e.in = math.Abs(in.v)
 	}
 	return e
 }

@@ -407,6 +407,7 @@ type worker struct {
 	lags       *lagger
 	pairs      *pairer // nil if nobody asks for it
 	estimators []estimator
+	noise      float64 // share in the band-passed power of the pixel being measured
 	I, s2      [2][]float64
 	fitters    [2]*fitter // nil without background
 	fitted     [2]fitted
@@ -608,19 +609,28 @@ func (r *run) normalise(w *worker, p int) {
 		return
 	}
 	w.transform.backward(row, series)
-	frames := float64(r.band.frames)
-	power := 2 * float64(n) * float64(n) / (frames * frames * r.band.kept)
-	if v := r.variance[p]; !math.IsNaN(v) {
-		power -= v * r.band.passes
-	}
-	if power > 0 {
-		r.set(mapDopplerRMS, p, math.Sqrt(power))
+	if waves := r.power(p) * (1 - r.noise(p)); waves > 0 {
+		r.set(mapDopplerRMS, p, math.Sqrt(waves))
 	} else {
 		r.flag[p] |= FlagBelowNoise
 	}
 	for j := range row {
 		row[j] /= n
 	}
+}
+
+// power returns the band-passed power of a pixel [(km/s)^2].
+func (r *run) power(p int) float64 {
+	n, frames := float64(r.norm[p]), float64(r.band.frames)
+	return 2 * n * n / (frames * frames * r.band.kept)
+}
+
+// noise returns the share of noise in it, 0 if not known.
+func (r *run) noise(p int) float64 {
+	if math.IsNaN(r.variance[p]) {
+		return 0
+	}
+	return min(r.variance[p]*r.band.passes/r.power(p), 1)
 }
 
 // direct: coherence island and axis.
@@ -702,6 +712,7 @@ func (r *run) measure(w *worker, p int) {
 		r.flag[p] |= FlagUndirected
 	}
 	rows := t.sample()
+	w.noise = r.noise(p)
 	for i, e := range w.estimators {
 		m := e.measure(w, rows, n, centre, rise >= leastRise)
 		r.note(p, i, m, n, w.lags.step)

@@ -6,7 +6,7 @@ const (
 	leastLagCoherence = 0.3 // below it a lag cannot be measured: noise alone reaches about that
 	leastLags         = 5   // points of a fit
 	slowest           = 50. // slowest wave whose lags are searched for [km/s]
-	lagSteps          = 32. // steps of the search grid in one period of the band's centre
+	lagSteps          = 16. // steps of the search grid in one period of the band's centre
 )
 
 // A lagger measures phase speeds on tracks; one worker's scratch.
@@ -20,59 +20,70 @@ type lagger struct {
 	grid    float64 // step of the lag search [s]
 	reach   int     // lags searched, in steps either way
 	phasor  []float32
-	kernel  map[int][]float32
-	wave    [2][]float32
-	cross   []float32
-	parts   []float32
-	pure    []complex128
+	omega   []float32 // of the band [rad/s]
+	splits  map[int]*split
+	folded  []float32
 	product []float32
-	fit     []lag
-	terms   [2][]float64
-	omega   []float32
-	share   []float32    // of each frequency in the curvature of the peaks
-	pull    [2][]float32 // what each frequency adds to the fit's weighted sums of tau and s tau
+	wave    [2][]float32
+	zero    []float32
+	pure    []complex128
+
+	middle []float32 // spectrum of the track's centre
+	turned []float32 // middle turned by every lag of the search: three rows each
+	stamp  []int     // when that was done
+	turn   int
+	fit    []lag
+	terms  [2][]float64
 }
 
 // A lag is that of one point of a track against its centre.
-type lag struct{ s, tau, weight float64 } // [km, s]
+type lag struct {
+	s, tau, weight float64   // [km, s]
+	x              []float32 // spectrum of the point
+	m              int       // step of the search nearest to tau
+	curve          float64   // minus the second derivative of the cross-correlation at its peak [1/s^2]
+}
+
+// A split holds what the separation of tracks of one length needs.
+type split struct {
+	h         []float32 // H(d) for d = -(n-1)..n-1
+	even, odd []float32 // H from even parts to odd ones and from odd parts to even ones, by columns
+	leaks     []float64 // of a pure wave; NaN: not asked for yet
+}
 
 // points is the longest track, step the distance of its points [km], grid the step
-// of the lag search [s]: the parabola's error is (2 pi f grid)^2/12 of the distance
-// to the nearest step, 0.3 % of at most half a step at lagSteps.
+// of the lag search [s].
 func newLagger(b *band, opt *Options, points int, step, grid float64) *lagger {
-	l := &lagger{band: b, step: step, grid: grid, pad: opt.Padding, centre: opt.Centre, kzero: opt.KZero.weight(), power: 1, kernel: map[int][]float32{}}
+	l := &lagger{band: b, step: step, grid: grid, pad: opt.Padding, centre: opt.Centre, kzero: opt.KZero.weight(), power: 1, splits: map[int]*split{}}
 	longest := min(step*float64(points-1)/slowest, float64(b.frames)*b.cadence/4)
 	l.reach = max(int(longest/l.grid), 4)
-	l.phasor = make([]float32, (2*l.reach+1)*b.row)
+	lags := 2*l.reach + 1
+	l.phasor = make([]float32, lags*b.row)
 	n := len(b.freq)
-	for m := -l.reach; m <= l.reach; m++ {
-		r := l.phasor[(m+l.reach)*b.row:]
+	for m := range lags {
+		r := l.phasor[m*b.row:]
 		for j, f := range b.freq {
-			s, c := math.Sincos(2 * math.Pi * f * float64(m) * l.grid)
-			r[j], r[n+j] = float32(c), float32(-s)
+			s, c := math.Sincos(2 * math.Pi * f * float64(m-l.reach) * l.grid)
+			r[j], r[n+j] = float32(c), float32(s)
 		}
 	}
-	l.parts = make([]float32, points*b.row)
-	l.product = make([]float32, points*b.row)
+	l.turned, l.stamp = make([]float32, 3*lags*b.row), make([]int, lags)
+	l.folded = make([]float32, (points+1)*b.row)
+	l.product = make([]float32, (points+1)*b.row)
 	l.wave[0] = make([]float32, points*b.row)
 	l.wave[1] = make([]float32, points*b.row)
-	l.cross = make([]float32, b.row)
-	l.share, l.omega = make([]float32, n), make([]float32, n)
-	for j, f := range b.freq {
-		l.omega[j] = float32(2 * math.Pi * f)
+	l.zero = make([]float32, b.row)
+	for _, f := range b.freq {
+		l.omega = append(l.omega, float32(2*math.Pi*f))
 	}
 	for i := range l.terms {
 		l.terms[i] = make([]float64, n)
 	}
-	for i := range l.pull {
-		l.pull[i] = make([]float32, n)
-	}
 	return l
 }
 
-// separate splits the spectra of n points into waves that run toward rising and
-// toward falling index: the hard quadrant filter of the (k, omega) plane, written
-// as a projection in s.
+// rising returns the part of the spectra of n points that runs toward rising index: the
+// hard quadrant filter of the (k, omega) plane, written as a projection in s.
 //
 // At one frequency, a Fourier transform over M = padding n points, the choice of
 // k of one sign and the way back multiply the column of points by the Toeplitz
@@ -81,71 +92,108 @@ func newLagger(b *band, opt *Options, points int, step, grid float64) *lagger {
 // half the identity plus (w_0 - 1/2)/M everywhere; its imaginary part is the
 // antisymmetric kernel H. So one real multiplication by H serves both directions.
 // With exp(-i omega t) for a spectrum, a wave toward rising s has k < 0.
-func (l *lagger) separate(rows []float32, n int) (rising, falling []float32) {
+func (l *lagger) rising(rows []float32, n int) []float32 {
 	row, nf := l.row, len(l.freq)
-	rising, falling = l.wave[0][:n*row], l.wave[1][:n*row]
 	at := func(x []float32, i int) []float32 { return x[i*row : (i+1)*row : (i+1)*row] }
-	h := l.toeplitz(n)
+	h := l.split(n)
 
 	// H turns what is even about the middle of the track into what is odd and back,
 	// which halves the work: with e, o the sum and difference of mirrored points,
 	// z_i = D_i + A_i and, mirrored, D_i - A_i, A from e and D from o.
-	m := n / 2
-	parts := l.parts[:2*m*row]
+	m, mid := n/2, n%2
+	even, odd := l.folded[:(m+mid)*row], l.folded[(m+mid)*row:n*row]
 	for j := range m {
 		x, y := at(rows, j), at(rows, n-1-j)
-		e, o := at(parts, j), at(parts, m+j)
+		e, o := at(even, j)[:len(x)], at(odd, j)[:len(x)]
+		y = y[:len(x)]
 		for k, a := range x {
-			e[k], o[k] = a+y[k], a-y[k]
+			b := y[k]
+			e[k], o[k] = a+b, a-b
 		}
 	}
-	z := l.product[:n*row]
-	clear(z)
-	for i := range m {
-		a, d := at(z, n-1-i), at(z, i)
-		for j := range m {
-			p, q := h[n-1+i-j], h[i+j] // H(i-j), H(i-(n-1-j))
-			blas.Saxpy(row, (p+q)/2, at(parts, j), 1, a, 1)
-			blas.Saxpy(row, (p-q)/2, at(parts, m+j), 1, d, 1)
-		}
-		if n%2 == 1 {
-			blas.Saxpy(row, h[n-1+i-m], at(rows, m), 1, a, 1)
-			blas.Saxpy(row, h[n-1+m-i], at(parts, m+i), 1, at(z, m), 1)
-		}
-		for k, a0 := range a {
-			d0 := d[k]
-			d[k], a[k] = d0+a0, d0-a0
-		}
+	if mid == 1 {
+		copy(at(even, m), at(rows, m))
 	}
+	A, D := l.product[:m*row], l.product[m*row:n*row]
+	multiply(m, m+mid, row, h.even, even, A)
+	multiply(m+mid, m, row, h.odd, odd, D)
 
-	zero := l.cross // the k = 0 part beyond one half, the same at every point
-	clear(zero)
-	if c := float32((l.kzero - 0.5) / float64(l.pad*n)); c != 0 {
-		for j := range n {
-			blas.Saxpy(row, c, at(rows, j), 1, zero, 1)
-		}
-	}
-	for i := range n {
-		x, y := at(rows, i), at(z, i)
-		up, down := at(rising, i), at(falling, i)
+	out := l.wave[0][:n*row]
+	for i := range m {
 		// i H x = (-hi, hr); rising waves take its negative.
-		xr, xi, hr, hi := x[:nf], x[nf:2*nf], y[:nf], y[nf:2*nf]
-		upr, upi, dor, doi := up[:nf], up[nf:2*nf], down[:nf], down[nf:2*nf]
-		zr, zi := zero[:nf], zero[nf:2*nf]
-		for j := range xr {
-			r, q := float32(0.5*xr[j])+zr[j], float32(0.5*xi[j])+zi[j]
-			upr[j], upi[j] = r+hi[j], q-hr[j]
-			dor[j], doi[j] = r-hi[j], q+hr[j]
+		x, y, a, d := at(rows, i), at(rows, n-1-i), at(A, i), at(D, i)
+		u, v := at(out, i), at(out, n-1-i)
+		xr, xi, yr, yi := x[:nf], x[nf:2*nf], y[:nf], y[nf:2*nf]
+		ar, ai, dr, di := a[:nf], a[nf:2*nf], d[:nf], d[nf:2*nf]
+		ur, ui, vr, vi := u[:nf], u[nf:2*nf], v[:nf], v[nf:2*nf]
+		for j, p := range xr {
+			ar, ai, dr, di := ar[j], ai[j], dr[j], di[j]
+			ur[j], ui[j] = float32(0.5*p)+(di+ai), float32(0.5*xi[j])-(dr+ar)
+			vr[j], vi[j] = float32(0.5*yr[j])+(di-ai), float32(0.5*yi[j])-(dr-ar)
 		}
 	}
-	return rising, falling
+	if mid == 1 {
+		x, d, u := at(rows, m), at(D, m), at(out, m)
+		for j := range nf {
+			u[j], u[nf+j] = float32(0.5*x[j])+d[nf+j], float32(0.5*x[nf+j])-d[j]
+		}
+	}
+	if l.sum(rows, n) {
+		for i := range n {
+			blas.Saxpy(row, 1, l.zero, 1, at(out, i), 1)
+		}
+	}
+	return out
+}
+
+// against returns the power of the falling part, given the rising one of power p.
+func (l *lagger) against(rows, rising []float32, n int, p float64) float64 {
+	if l.kzero == 0.5 {
+		return power(rows) - 2*float64(blas.Sdot(len(rows), rows, 1, rising, 1)) + p
+	}
+	return power(l.falling(rows, rising, n))
+}
+
+// falling returns the part that runs toward falling index, given that toward rising.
+func (l *lagger) falling(rows, rising []float32, n int) []float32 {
+	out := l.wave[1][:n*l.row]
+	copy(out, rows)
+	blas.Saxpy(len(out), -1, rising, 1, out, 1)
+	if l.sum(rows, n) {
+		for i := range n {
+			blas.Saxpy(l.row, 2, l.zero, 1, out[i*l.row:], 1)
+		}
+	}
+	return out
+}
+
+// sum puts the part of zero wavenumber beyond one half, the same at every point, into
+// l.zero; false: there is none.
+func (l *lagger) sum(rows []float32, n int) bool {
+	c := float32((l.kzero - 0.5) / float64(l.pad*n))
+	if c == 0 {
+		return false
+	}
+	clear(l.zero)
+	for j := range n {
+		blas.Saxpy(l.row, c, rows[j*l.row:], 1, l.zero, 1)
+	}
+	return true
+}
+
+// multiply sets c = a b, with the k columns of a, of length m, one after the other.
+func multiply(m, k, row int, a, b, c []float32) {
+	clear(c)
+	for j := range k {
+		blas.Sger(m, row, 1, a[j*m:], 1, b[j*row:], 1, c, row)
+	}
 }
 
 // leak returns the power that the separation of n points lets a pure wave toward rising
 // index lose to the other direction, over what it keeps; theta is its phase from one point
 // to the next.
 func (l *lagger) leak(n int, theta float64) float64 {
-	h := l.toeplitz(n)
+	h := l.split(n).h
 	zero := complex(0, 0)
 	if cap(l.pure) < n {
 		l.pure = make([]complex128, n)
@@ -172,90 +220,121 @@ func (l *lagger) leak(n int, theta float64) float64 {
 	return down / up
 }
 
-// toeplitz returns H(d) for d = -(n-1)..n-1.
-func (l *lagger) toeplitz(n int) []float32 {
-	if h := l.kernel[n]; h != nil {
-		return h
+// floor returns the power that a wave of speed v [km/s] toward rising index and with the
+// spectrum x leaks into the other direction on n points, over what it keeps.
+func (l *lagger) floor(n int, v float64, x []float32) float64 {
+	const finer = 32 // a leak has lobes as wide as 2 pi/n
+	t := l.split(n)
+	if t.leaks == nil {
+		t.leaks = make([]float64, finer*n+2)
+		for i := range t.leaks {
+			t.leaks[i] = math.NaN()
+		}
 	}
-	m := l.pad * n
+	nf := len(l.freq)
+	scale := l.step / (math.Abs(v) * math.Pi) * finer * float64(n)
+	var all, lost float64
+	for j, o := range l.omega {
+		u := min(float64(o)*scale, finer*float64(n))
+		i := int(u)
+		for k := i; k <= i+1; k++ {
+			if math.IsNaN(t.leaks[k]) {
+				t.leaks[k] = l.leak(n, float64(k)*math.Pi/(finer*float64(n)))
+			}
+		}
+		p := float64(x[j])*float64(x[j]) + float64(x[nf+j])*float64(x[nf+j])
+		all += p
+		lost += p * (t.leaks[i] + (u-float64(i))*(t.leaks[i+1]-t.leaks[i]))
+	}
+	return lost / all
+}
+
+// split returns what tracks of n points need.
+func (l *lagger) split(n int) *split {
+	if t := l.splits[n]; t != nil {
+		return t
+	}
+	M := l.pad * n
 	h := make([]float32, 2*n-1)
 	for d := -(n - 1); d < n; d++ {
 		sum := 0.0
-		for k := 1; 2*k < m; k++ {
-			sum += math.Sin(2 * math.Pi * float64(k*d%m) / float64(m))
+		for k := 1; 2*k < M; k++ {
+			sum += math.Sin(2 * math.Pi * float64(k*d%M) / float64(M))
 		}
-		h[n-1+d] = float32(sum / float64(m))
+		h[n-1+d] = float32(sum / float64(M))
 		if math.Abs(sum) < 1e-9 {
 			h[n-1+d] = 0
 		}
 	}
-	l.kernel[n] = h
-	return h
+	t := &split{h: h}
+	m, mid := n/2, n%2
+	for j := range m {
+		for i := range m {
+			t.even = append(t.even, (h[n-1+i-j]+h[i+j])/2) // H(i-j), H(i-(n-1-j))
+			t.odd = append(t.odd, (h[n-1+i-j]-h[i+j])/2)
+		}
+		if mid == 1 {
+			t.odd = append(t.odd, h[n-1+m-j])
+		}
+	}
+	if mid == 1 {
+		for i := range m {
+			t.even = append(t.even, h[n-1+i-m])
+		}
+	}
+	l.splits[n] = t
+	return t
 }
 
 // A speed is a measured phase speed [km/s], positive toward rising index.
 type speed struct {
 	v, err float64
-	power  float64 // of the waves on the track, summed over points
-	points int     // with a lag
-	ok     bool    // significant: err < |v|
+	points int  // with a lag
+	ok     bool // significant: err < |v|
 }
 
 // speed cross-correlates every point of a track with point centre, takes the lag
-// from a parabola through the peak, and fits a straight line, lag = s/v + c, with
+// of the peak, and fits a straight line, lag = s/v + c, with
 // the coherence as weight. (Its square takes 1 % more off the scatter that noise
 // makes, but where unseparated waves run both ways it favours the middle of the
 // track, which looks fastest: on 63 Mm at a power ratio of 2 speeds are 1.65 of the
 // truth unweighted, 1.76 and 1.89 with the coherence and its square; derived, own
 // simulation.)
 //
-// The search goes outward from the centre, each point starting at the lag of the
-// one before it, so a peak one period off is not taken.
+// The search goes outward from the centre, each point starting where the two before it
+// point, so a peak one period off is not taken.
 //
 // The error is that of resampled, from what each frequency adds to the slope. The
 // scatter of the lags about the line says nothing about it: all lags share the waves
 // of the centre and of the track.
 func (l *lagger) speed(rows []float32, n, centre int) speed {
-	row, nf := l.row, len(l.freq)
-	c := rows[centre*row : (centre+1)*row]
-	pc := float64(blas.Sdot(row, c, 1, c, 1))
+	row := l.row
+	l.face(rows[centre*row : (centre+1)*row])
+	pc := power(l.middle)
 	var r speed
 	if !(pc > 0) {
 		return r
 	}
-	r.power = pc
 	l.fit = append(l.fit[:0], lag{weight: 1})
-	clear(l.pull[0])
-	clear(l.pull[1])
-	clear(l.share)
 	for _, way := range [2]int{1, -1} {
-		start := 0
+		var last, start float64
 		for i := centre + way; i >= 0 && i < n; i += way {
 			x := rows[i*row : (i+1)*row]
-			ps := float64(blas.Sdot(row, x, 1, x, 1))
+			ps := power(x)
 			if !(ps > 0) {
 				continue
 			}
-			r.power += ps
-			// Cross-spectrum x c*.
-			xr, xi, cr, ci, zr, zi := x[:nf], x[nf:2*nf], c[:nf], c[nf:2*nf], l.cross[:nf], l.cross[nf:2*nf]
-			for j, a := range xr {
-				b, p, q := xi[j], cr[j], ci[j]
-				zr[j] = float32(a*p) + float32(b*q)
-				zi[j] = float32(b*p) - float32(a*q)
-			}
-			m, tau, peak, curve, ok := l.peak(start)
+			q, height, ok := l.peak(x, start)
 			if !ok {
 				continue
 			}
-			g := peak / math.Sqrt(ps*pc)
+			g := height / math.Sqrt(ps*pc)
 			if g < leastLagCoherence {
 				continue
 			}
-			start = m
-			q := lag{s: float64(i-centre) * l.step, tau: tau, weight: math.Pow(min(g, 1), l.power)}
+			start, last = 2*q.tau-last, q.tau
+			q.s, q.weight = float64(i-centre)*l.step, math.Pow(min(g, 1), l.power)
 			l.fit = append(l.fit, q)
-			l.influence(m, q, curve)
 		}
 	}
 	r.points = len(l.fit)
@@ -263,16 +342,13 @@ func (l *lagger) speed(rows []float32, n, centre int) speed {
 		return r
 	}
 	slope, _, ws, sxx := straight(l.fit)
-	for j, g := range l.pull[0] {
-		l.terms[0][j] = (float64(l.pull[1][j]) - ws*float64(g)) / sxx
-		l.terms[1][j] = float64(l.share[j]) / float64(r.points-1)
-	}
-	variance := resampled(l.terms[0], l.terms[1])
 	r.v = 1 / slope
-	r.err = r.v * r.v * math.Sqrt(variance)
+	r.err = r.v * r.v * math.Sqrt(l.variance(ws, sxx))
 	r.ok = r.err < math.Abs(r.v)
 	return r
 }
+
+func power(x []float32) float64 { return float64(blas.Sdot(len(x), x, 1, x, 1)) }
 
 // straight fits lag = slope s + intercept by weighted least squares; ws is the weighted
 // mean of s, sxx the weighted sum of squares about it.
@@ -293,57 +369,96 @@ func straight(fit []lag) (slope, intercept, ws, sxx float64) {
 	return slope, wt - slope*ws, ws, sxx
 }
 
-// influence adds what each frequency did to a lag, found at step m of the search, to
-// l.pull. With Z the cross-spectrum turned by the lag, the peak is where the sum of
-// omega Im Z is zero, and a frequency moved it by its omega Im Z over the sum of
-// omega^2 Re Z, the curvature [1/s^2] of the peak.
-func (l *lagger) influence(m int, q lag, curve float64) {
+// variance returns that of the slope of the line through l.fit. With Z the
+// cross-spectrum turned by a lag, the peak is where the sum of omega Im Z is zero, and a
+// frequency moved it by its omega Im Z over the sum of omega^2 Re Z, the curvature of
+// the peak.
+func (l *lagger) variance(ws, sxx float64) float64 {
 	nf := len(l.freq)
-	r := l.phasor[(m+l.reach)*l.row:]
-	zr, zi, c, s := l.cross[:nf], l.cross[nf:2*nf], r[:nf], r[nf:2*nf] // s is -sin
-	omega, pull, slope, share := l.omega[:nf], l.pull[0][:nf], l.pull[1][:nf], l.share[:nf]
-	off := float32(q.tau - float64(m)*l.grid)
-	k, x, inverse := float32(-q.weight/curve), float32(q.s), float32(1/curve)
-	for j, f := range omega {
-		re := float32(zr[j]*c[j]) + float32(zi[j]*s[j])
-		im := float32(zi[j]*c[j]) - float32(zr[j]*s[j])
-		bend := float32(f * re)
-		y := float32(k * f * (im + float32(off*bend)))
-		pull[j] += y
-		slope[j] += float32(x * y)
-		share[j] += float32(f * bend * inverse)
-	}
-}
-
-// peak climbs from step start to the nearest maximum of the cross-correlation
-// whose cross-spectrum is in l.cross, and puts a parabola through it. curve is minus the
-// second derivative [1/s^2].
-func (l *lagger) peak(start int) (m int, tau, height, curve float64, ok bool) {
-	at := func(m int) float32 {
-		r := (m + l.reach) * l.row
-		return blas.Sdot(l.row, l.cross, 1, l.phasor[r:r+l.row], 1)
-	}
-	m = max(min(start, l.reach-1), 1-l.reach)
-	lo, mid, hi := at(m-1), at(m), at(m+1)
-	for lo > mid || hi > mid {
-		if hi >= lo {
-			m++
-			if m >= l.reach {
-				return 0, 0, 0, 0, false
-			}
-			lo, mid, hi = mid, hi, at(m+1)
-		} else {
-			m--
-			if m <= -l.reach {
-				return 0, 0, 0, 0, false
-			}
-			lo, mid, hi = at(m-1), lo, mid
+	pull, share := l.terms[0][:nf], l.terms[1][:nf]
+	clear(pull)
+	clear(share)
+	for _, q := range l.fit {
+		if q.x == nil { // the centre itself
+			continue
+		}
+		t := l.at(q.m)
+		first, second := t[l.row:], t[2*l.row:]
+		wr, wi, qr, qi, xr, xi := first[:nf], first[nf:2*nf], second[:nf], second[nf:2*nf], q.x[:nf], q.x[nf:2*nf]
+		a, b := q.weight*(q.s-ws)/(sxx*q.curve), 1/(q.curve*float64(len(l.fit)-1))
+		off := q.tau - float64(q.m)*l.grid
+		for j, x := range xr {
+			y := xi[j]
+			bend := float64(float32(x*qr[j]) + float32(y*qi[j]))
+			pull[j] += a * (float64(float32(x*wr[j])+float32(y*wi[j])) - off*bend)
+			share[j] += b * bend
 		}
 	}
-	a, b := float64(hi)-float64(lo), float64(lo)+float64(hi)-2*float64(mid)
-	if !(b < 0) {
-		return 0, 0, 0, 0, false
+	return resampled(pull, share)
+}
+
+// face makes c the spectrum that lags refer to.
+func (l *lagger) face(c []float32) {
+	l.middle = c
+	l.turn++
+}
+
+// at returns the spectrum c that lags refer to, delayed by m steps, in three rows whose
+// products with a spectrum are the cross-correlation, its first derivative by the lag
+// and minus its second.
+func (l *lagger) at(m int) []float32 {
+	row, nf := l.row, len(l.freq)
+	i := m + l.reach
+	t := l.turned[3*i*row : 3*(i+1)*row]
+	if l.stamp[i] == l.turn {
+		return t
 	}
-	d := -a / (2 * b)
-	return m, (float64(m) + d) * l.grid, float64(mid) - a*a/(8*b), -b / (l.grid * l.grid), true
+	l.stamp[i] = l.turn
+	r := l.phasor[i*row:]
+	c, s, xr, xi := r[:nf], r[nf:2*nf], l.middle[:nf], l.middle[nf:2*nf]
+	zr, zi := t[:nf], t[nf:2*nf]
+	wr, wi := t[row:row+nf], t[row+nf:row+2*nf]
+	qr, qi := t[2*row:2*row+nf], t[2*row+nf:2*row+2*nf]
+	for j, o := range l.omega {
+		c, s, a, b := c[j], s[j], xr[j], xi[j]
+		re, im := float32(a*c)+float32(b*s), float32(b*c)-float32(a*s)
+		zr[j], zi[j] = re, im
+		ur, ui := o*re, o*im
+		wr[j], wi[j] = ui, -ur
+		qr[j], qi[j] = o*ur, o*ui
+	}
+	return t
+}
+
+// nearest is the distance of a lag from the step of the search that it is taken from
+// [steps]: a little above one half, so that no peak lies between two.
+const nearest = 0.6
+
+// peak climbs from lag start to the nearest maximum of the cross-correlation of x: by
+// Newton's method from the step of the search beside it, in the tangent of the phase,
+// which makes it exact for one frequency. height is that of the maximum.
+func (l *lagger) peak(x []float32, start float64) (q lag, height float64, ok bool) {
+	var y [3]float32
+	m := max(min(int(math.Round(start/l.grid)), l.reach-1), 1-l.reach)
+	for range l.reach {
+		blas.Sgemv(none, 3, l.row, 1, l.at(m), l.row, x, 1, 0, y[:], 1)
+		h, slope, curve := float64(y[0]), float64(y[1]), float64(y[2])
+		off := math.Copysign(l.grid, slope)
+		if h > 0 && curve > 0 {
+			w := math.Sqrt(curve / h)
+			u := w * slope / curve
+			off = slope / curve * (1 - u*u/3)
+			if math.Abs(u) > 0.25 {
+				off = math.Atan(u) / w
+			}
+			if math.Abs(off) <= nearest*l.grid {
+				return lag{tau: float64(m)*l.grid + off, x: x, m: m, curve: curve}, h + slope*off/2, true
+			}
+		}
+		m += max(-2, min(2, int(math.Round(off/l.grid))))
+		if m >= l.reach || m <= -l.reach {
+			break
+		}
+	}
+	return lag{}, 0, false
 }

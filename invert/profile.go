@@ -190,7 +190,7 @@ func (g *gaussian) doppler(i1, i2, i3 float32) (v float64, ok bool) {
 		return 0, false
 	}
 	r := 1 / float64(i2)
-	l1, l3 := math.Log(float64(i1)*r), math.Log(float64(i3)*r)
+	l1, l3 := ln(float64(i1)*r), ln(float64(i3)*r)
 	b := g.b[0]*l1 + g.b[2]*l3
 	c := g.c[0]*l1 + g.c[2]*l3
 	if !(c < 0) {

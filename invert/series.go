@@ -9,8 +9,8 @@ import (
 )
 
 // least is the smallest weight of the amplitude filter that is kept: what is left out
-// holds 2e-5 of a flat spectrum's power, and three frequencies in ten.
-const least = 0.01
+// holds 2e-4 of a flat spectrum's power, and four frequencies in ten.
+const least = 0.03
 
 // A band is the Gaussian band-pass on the frequencies of a series.
 type band struct {

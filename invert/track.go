@@ -10,43 +10,53 @@ type tracker struct {
 	rows   []float32 // the wave spectra on the track, band.row numbers a point
 }
 
-type point struct{ x, y float64 } // zero-based pixel coordinates
+// A point of a track lies among up to four pixels that have a series.
+type point struct {
+	x, y float64 // zero-based pixel coordinates
+	near [4]corner
+	n    int
+	sum  float64 // of the weights
+}
 
 // share is the part of the bilinear weight that has to fall on pixels with a value.
 const share = 0.5
 
 // A corner is one of the pixels around a point, with its bilinear weight.
 type corner struct {
-	p int
+	p int32
 	w float64
 }
 
-// corners returns the up to four pixels around (x, y) that have a series, and the
-// sum of their weights.
-func (f *field) corners(x, y float64, cs *[4]corner) (n int, sum float64) {
-	fx, fy := math.Floor(x), math.Floor(y)
-	u, v := x-fx, y-fy
-	i, j := int(fx), int(fy)
+// place finds the pixels around (x, y).
+func (f *field) place(q *point, x, y float64) {
+	q.x, q.y, q.n, q.sum = x, y, 0, 0
+	i, j := floor(x), floor(y)
+	u, v := x-float64(i), y-float64(j)
 	for k, w := range [4]float64{(1 - u) * (1 - v), u * (1 - v), (1 - u) * v, u * v} {
 		if w == 0 {
 			continue
 		}
 		if p := f.find(i+k&1, j+k>>1); p >= 0 && f.norm[p] > 0 {
-			cs[n] = corner{p, w}
-			n++
-			sum += w
+			q.near[q.n] = corner{int32(p), w}
+			q.n++
+			q.sum += w
 		}
 	}
-	return n, sum
 }
 
-// direction returns the unit vector of the axis at (x, y) that points along
+func floor(x float64) int {
+	i := int(x)
+	if x < float64(i) {
+		i--
+	}
+	return i
+}
+
+// direction returns the unit vector of the axis at a point that points along
 // (dx, dy). Angles of axes are interpolated as unit vectors of the double angle.
-func (f *field) direction(x, y, dx, dy float64) (ux, uy float64, ok bool) {
-	var cs [4]corner
-	n, _ := f.corners(x, y, &cs)
+func (f *field) direction(at *point, dx, dy float64) (ux, uy float64, ok bool) {
 	var c, s, sum float64
-	for _, q := range cs[:n] {
+	for _, q := range at.near[:at.n] {
 		if a := f.axis[q.p]; a != ([2]float32{}) {
 			c += q.w * float64(a[0])
 			s += q.w * float64(a[1])
@@ -78,38 +88,44 @@ func (t *tracker) trace(p, n int) (centre int, rise float64) {
 	// The outward direction in the image, from the sky by the roll.
 	s, c := math.Sincos(t.grid.Roll * math.Pi / 180)
 	ex, ey := c*ry+s*rz, -s*ry+c*rz
+	var own, half point
+	t.place(&own, float64(ix), float64(iy))
 	for a := range t.arm {
 		sign := 1 - 2*float64(a)
-		arm := t.arm[a][:0]
-		x, y := float64(ix), float64(iy)
+		if cap(t.arm[a]) < n {
+			t.arm[a] = make([]point, 0, n) // points in it are referred to
+		}
+		arm, at := t.arm[a][:0], &own
 		dx, dy := sign*ex, sign*ey
 		if a == 1 && len(t.arm[0]) > 0 { // opposite to the first arm, also where the axis is tangential
-			dx, dy = x-t.arm[0][0].x, y-t.arm[0][0].y
+			dx, dy = own.x-t.arm[0][0].x, own.y-t.arm[0][0].y
 		}
 		for len(arm) < n {
-			ux, uy, ok := t.direction(x, y, dx, dy)
+			ux, uy, ok := t.direction(at, dx, dy)
 			if !ok {
 				break
 			}
-			mx, my, ok := t.direction(x+ux/2, y+uy/2, ux, uy)
+			t.place(&half, at.x+ux/2, at.y+uy/2)
+			mx, my, ok := t.direction(&half, ux, uy)
 			if !ok {
 				break
 			}
-			nx, ny := x+mx, y+my
-			var cs [4]corner
-			if _, sum := t.corners(nx, ny, &cs); sum < share {
+			arm = arm[:len(arm)+1]
+			next := &arm[len(arm)-1]
+			t.place(next, at.x+mx, at.y+my)
+			if next.sum < share {
+				arm = arm[:len(arm)-1]
 				break
 			}
-			x, y, dx, dy = nx, ny, mx, my
-			arm = append(arm, point{x, y})
+			at, dx, dy = next, mx, my
 		}
 		t.arm[a] = arm
 	}
 	out, in := t.arm[0], t.arm[1]
 	far := func(arm []point) float64 {
-		q := point{float64(ix), float64(iy)}
+		q := &own
 		if len(arm) > 0 {
-			q = arm[len(arm)-1]
+			q = &arm[len(arm)-1]
 		}
 		return math.Hypot(q.x+1-t.grid.CentreX, q.y+1-t.grid.CentreY)
 	}
@@ -123,7 +139,7 @@ func (t *tracker) trace(p, n int) (centre int, rise float64) {
 	for i := len(in) - 1; i >= 0; i-- {
 		t.points = append(t.points, in[i])
 	}
-	t.points = append(t.points, point{float64(ix), float64(iy)})
+	t.points = append(t.points, own)
 	t.points = append(t.points, out...)
 	return len(in), rise
 }
@@ -137,12 +153,11 @@ func (t *tracker) sample() []float32 {
 	}
 	rows := t.rows[:len(t.points)*row]
 	clear(rows)
-	for i, q := range t.points {
+	for i := range t.points {
+		q := &t.points[i]
 		out := rows[i*row : (i+1)*row]
-		var cs [4]corner
-		n, sum := t.corners(q.x, q.y, &cs)
-		for _, c := range cs[:n] {
-			blas.Saxpy(row, float32(c.w/sum)*t.norm[c.p], t.spec[c.p*row:(c.p+1)*row], 1, out, 1)
+		for _, c := range q.near[:q.n] {
+			blas.Saxpy(row, float32(c.w/q.sum)*t.norm[c.p], t.spec[int(c.p)*row:(int(c.p)+1)*row], 1, out, 1)
 		}
 	}
 	return rows
