@@ -90,8 +90,8 @@ func Diagnose(ctx context.Context, o *obs.Observation, e line.Emitter, opt Optio
 	}
 	p := int(r.index[pixel])
 	d := &Diagnosis{X: pixel % nx, Y: pixel / nx, Angle: math.NaN(), Maps: r.result.Maps}
-	// Directions are needed as far as the track may run.
-	reach := opt.Track/2 + 2
+	// Directions are needed as far as the track may run, and for their errors.
+	reach := max(opt.Track/2+2, angleReach)
 	near := func(w *worker, q int) {
 		if x, y := r.at(q); max(x-d.X, d.X-x) <= reach && max(y-d.Y, d.Y-y) <= reach {
 			r.direct(w, q)

@@ -159,10 +159,8 @@ const errorBins = 2
 //
 // So it holds whatever makes the estimate scatter, noise as well as waves that are not
 // those of the model, and no bias. The interval of one error holds the mean of many
-// realisations in 64 to 70 % of the cases where errors are 2 to 5 % of the speed (see
-// TestCoverage), in 63 to 84 % without any noise, and in 49 to 57 % where the noise of
-// one frame is as large as the waves and three pixels in four have no speed: there the
-// tracks themselves scatter (derived; own simulations).
+// realisations in 61 to 74 % of the cases, from no noise at all to that of a frame as
+// large as three quarters of the waves (TestCoverage, TestCoverageElsewhere; derived).
 func resampled(pull, share []float64) float64 {
 	sum, last := 0.0, 0.0
 	for i := 0; i < len(pull); i += errorBins {

@@ -143,7 +143,7 @@ func mapsOf(g *obs.Grid, unit string, estimators []string) (obs.Maps, []estimato
 		mapDensity:    {Name: "NE", Unit: "cm-3", About: "electron density from the line ratio"},
 		mapDensityErr: {Name: "NE_ERR", Unit: "cm-3", About: "photon-noise error of NE"},
 		mapAngle:      {Name: "ANGLE", Unit: "deg", About: "wave direction, counter-clockwise from north, 0 to 180"},
-		mapAngleErr:   {Name: "ANGLE_ERR", Unit: "deg", About: "formal error of ANGLE"},
+		mapAngleErr:   {Name: "ANGLE_ERR", Unit: "deg", About: "error of ANGLE"},
 		mapCoherence:  {Name: "COHERENCE", About: "mean in-band coherence with the adjacent pixels"},
 		mapSpeed:      {Name: "SPEED", Unit: "km/s", About: "phase speed on the sky, outward"},
 		mapSpeedErr:   {Name: "SPEED_ERR", Unit: "km/s", About: "error of SPEED, without the method's bias"},
@@ -183,6 +183,7 @@ type field struct {
 	band   *band
 	spec   []float32    // band-passed spectra, band.row numbers a pixel, of unit norm
 	norm   []float32    // their norms; 0: no series
+	rest   []float32    // power of the spectra without each of angleParts
 	axis   [][2]float32 // cos and sin of twice the axis' angle in the image; zeros: none
 	flag   []int32
 }
@@ -276,6 +277,7 @@ func newRun(o *obs.Observation, e line.Emitter, opt Options) (*run, error) {
 	f := &field{
 		opt: &opt, grid: &o.Grid, pixels: o.Pixels, index: make([]int32, o.Grid.Nx*o.Grid.Ny), band: b,
 		spec: make([]float32, np*b.row), norm: make([]float32, np), axis: make([][2]float32, np), flag: make([]int32, np),
+		rest: make([]float32, np*angleParts),
 	}
 	for i := range f.index {
 		f.index[i] = -1
@@ -291,7 +293,7 @@ func newRun(o *obs.Observation, e line.Emitter, opt Options) (*run, error) {
 	}
 	maps, estimators := mapsOf(&o.Grid, o.Unit, opt.Estimators)
 	r := &Result{Maps: maps, Series: obs.NewCube(np, 1, when.frames), Cadence: when.cadence}
-	run := &run{estimatorMaps: estimators, field: f, cube: cube, timing: when, means: means, result: r, variance: make([]float64, np), dft: newDFT(b)}
+	run := &run{estimatorMaps: estimators, field: f, cube: cube, timing: when, means: means, result: r, variance: make([]float64, np), spread: make([][2]float32, np), dft: newDFT(b)}
 
 	for i, m := range [2][]float32{o.Density, o.Ratio} {
 		if m != nil && len(m) != np {
@@ -394,8 +396,9 @@ type run struct {
 	means         [2]*means
 	inverter      *line.Inverter // nil without a second line
 	result        *Result
-	dft           *dft      // nil for long series
-	variance      []float64 // white-noise variance of the Doppler series [(km/s)^2]; NaN: not known
+	dft           *dft         // nil for long series
+	spread        [][2]float32 // variance of the axis, resampled and formal [rad^2]; zeros: not known
+	variance      []float64    // white-noise variance of the Doppler series [(km/s)^2]; NaN: not known
 	estimatorMaps []estimatorMaps
 }
 
@@ -617,6 +620,7 @@ func (r *run) normalise(w *worker, p int) {
 	for j := range row {
 		row[j] /= n
 	}
+	leave(r.rest[p*angleParts:(p+1)*angleParts], row, len(r.band.freq))
 }
 
 // power returns the band-passed power of a pixel [(km/s)^2].
@@ -660,6 +664,9 @@ func (r *run) direct(w *worker, p int) {
 		return
 	}
 	r.turn(p, s.angle)
+	if ix, iy := r.at(p); ix%angleLattice == 0 && iy%angleLattice == 0 {
+		r.spread[p] = [2]float32{float32(w.islands.halves(p)), float32(s.err * s.err)}
+	}
 	// PA = atan2(-y, z) of a vector at angle a + roll from west toward north.
 	pa := math.Mod(s.angle*180/math.Pi+r.grid.Roll-90, 180)
 	if pa < 0 {
@@ -669,8 +676,28 @@ func (r *run) direct(w *worker, p int) {
 		pa = 0
 	}
 	r.set(mapAngle, p, pa)
-	r.set(mapAngleErr, p, s.err*180/math.Pi)
+	r.set(mapAngleErr, p, s.err*180/math.Pi) // formal until all directions are known
 }
+
+// calibrate makes the formal error of a pixel's angle a true one.
+func (r *run) calibrate(p int) {
+	x, y := r.at(p)
+	var found, formal float64
+	for j := up(y - angleReach); j <= y+angleReach; j += angleLattice {
+		for i := up(x - angleReach); i <= x+angleReach; i += angleLattice {
+			if q := r.find(i, j); q >= 0 {
+				found += float64(r.spread[q][0])
+				formal += float64(r.spread[q][1])
+			}
+		}
+	}
+	if i := r.pixels[p]; formal > 0 {
+		r.result.Maps[mapAngleErr].Data[i] *= float32(math.Sqrt(found / formal))
+	}
+}
+
+// up returns the next line of the lattice from x.
+func up(x int) int { return (max(x, 0) + angleLattice - 1) / angleLattice * angleLattice }
 
 // turn sets the axis of a pixel at an angle of the image [rad].
 func (r *run) turn(p int, angle float64) {
@@ -698,6 +725,7 @@ func (r *run) measure(w *worker, p int) {
 	if r.axis[p] == ([2]float32{}) {
 		return
 	}
+	r.calibrate(p)
 	t := &w.track
 	centre, rise := t.trace(p, r.opt.Track/2)
 	n := len(t.points)

@@ -213,7 +213,7 @@ func TestPlaneWaves(t *testing.T) {
 		signed = append(signed, s)
 		b := median(values(r.Maps.Get("B")))
 		want, _ := fieldStrength(v*q.v, 0, q.density, 0, opt.Mu)
-		t.Logf("angle %g, roll %g: v %.4f, angle %.2f, %.2f deg, formal %.2f deg, %.2f %%; valid %.2f", q.angle, roll, v, s, a,
+		t.Logf("angle %g, roll %g: v %.4f, angle %.2f, %.2f deg, told %.2f deg, %.2f %%; valid %.2f", q.angle, roll, v, s, a,
 			median(values(r.Maps.Get("ANGLE_ERR"))), 100*median(values(r.Maps.Get("SPEED_ERR")))/q.v, 1-flagged(r.Maps.Get("FLAG"), Blocking))
 		if math.Abs(v-1) > 0.01 {
 			t.Errorf("angle %g, roll %g: speed %.4f of the truth", q.angle, roll, v)
