@@ -130,7 +130,7 @@ func TestPairRemovesTheMethodBias(t *testing.T) {
 // Estimators side by side give what each gives alone, under its own names.
 func TestEstimatorsSideBySide(t *testing.T) {
 	q := defaultPatch()
-	q.nx, q.ny, q.frames, q.noise, q.inward = 26, 26, 180, 0.2, 0.3
+	q.nx, q.ny, q.frames, q.noise, q.inward, q.electrons = 26, 26, 180, 0.2, 0.3, 2000
 	o := q.observe()
 	invert := func(separation bool, names ...string) *Result {
 		opt := Default()
