@@ -2,6 +2,7 @@ package synth
 
 import (
 	"context"
+	"sync"
 
 	"offplane/model"
 	"offplane/scenarios"
@@ -24,10 +25,39 @@ type Assume struct {
 	// Projected: the disc excites every parcel of plasma as if it lay at the projected
 	// distance of its line of sight.
 	Projected bool
+	// Bright, if not nil, makes a plane of the sky that alone emits as bright as its whole
+	// line of sight, so that it has the same photon noise; it keeps the columns for other
+	// scenes of the same corona and grid.
+	Bright *Columns
 }
 
-// Delay returns the longest travel time of the scene's trains [s].
-func (c *Scene) Delay() float64 { return c.longest }
+// Columns holds how much brighter the lines of sight are than their sample in the plane
+// of the sky, in the first line.
+type Columns struct{ m sync.Map }
+
+// column returns the length [cm] of the sample in the plane that would shine like the
+// whole line of sight through (y, z).
+func (c *Scene) column(centre *sample, y, z float64) (float64, error) {
+	at := [2]float64{y, z}
+	if x, ok := c.as.Bright.m.Load(at); ok {
+		return x.(float64), nil
+	}
+	s := *c.s
+	s.Sight.Plane = false
+	deep := *c
+	deep.s, deep.as = &s, Assume{}
+	ray, err := deep.ray(y, z, nil)
+	if err != nil {
+		return 0, err
+	}
+	sum := 0.0
+	for i := range ray {
+		sum += ray[i].j[0] * ray[i].dx
+	}
+	x := sum / centre.j[0]
+	c.as.Bright.m.Store(at, x)
+	return x, nil
+}
 
 // Exposed is the light of a scene before it passes the camera's stages.
 type Exposed struct {
@@ -98,3 +128,6 @@ func Piece(o *obs.Observation, k, n int) *obs.Observation {
 	}
 	return withoutDark(&p)
 }
+
+// Latest returns the latest time within a frame at which a scenario's camera exposes [s].
+func Latest(s *scenarios.Scenario) float64 { return camera.Latest(s.Camera) }

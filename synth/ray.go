@@ -32,6 +32,12 @@ func (c *Scene) ray(y, z float64, dst []sample) ([]sample, error) {
 		if err := centre.lit(); err != nil {
 			return dst, err
 		}
+		if c.as.Bright != nil {
+			var err error
+			if centre.dx, err = c.column(&centre, y, z); err != nil {
+				return dst, err
+			}
+		}
 		return append(dst, centre), nil
 	}
 	total := centre.emission()

@@ -64,10 +64,6 @@ func NewScene(ctx context.Context, s *scenarios.Scenario, light Light, workers i
 
 // NewSceneAs is NewScene under assumptions.
 func NewSceneAs(ctx context.Context, s *scenarios.Scenario, light Light, workers int, as Assume) (*Scene, error) {
-	outer := math.Hypot(float64(s.Image.Outer), float64(s.Sight.Reach)) + 0.1
-	if s.Sight.Plane {
-		outer = float64(s.Image.Outer) + 0.1
-	}
 	view := model.NewView(s.Observer.Latitude.Rad(), s.Observer.Longitude.Rad())
 	grid := NewGrid(s, light.Rest[0])
 	if len(Field(&grid, s)) == 0 {
@@ -76,10 +72,7 @@ func NewSceneAs(ctx context.Context, s *scenarios.Scenario, light Light, workers
 	corona := as.Corona
 	if corona == nil {
 		var err error
-		corona, err = model.New(ctx, s.Corona, model.Settings{
-			Outer: outer, InwardFrom: float64(s.Waves.InwardFrom), Seed: s.Seed, Workers: workers, Seen: seen(s, view, grid.Step()),
-		})
-		if err != nil {
+		if corona, err = NewCorona(ctx, s, light, workers); err != nil {
 			return nil, err
 		}
 	}
@@ -116,6 +109,19 @@ func NewSceneAs(ctx context.Context, s *scenarios.Scenario, light Light, workers
 	}
 	c.band = newBandTable(c.Driver, s.Inversion.Filter, c.longest)
 	return c, nil
+}
+
+// NewCorona builds the corona of a scenario and traces its field lines.
+func NewCorona(ctx context.Context, s *scenarios.Scenario, light Light, workers int) (*model.Corona, error) {
+	outer := math.Hypot(float64(s.Image.Outer), float64(s.Sight.Reach)) + 0.1
+	if s.Sight.Plane {
+		outer = float64(s.Image.Outer) + 0.1
+	}
+	view := model.NewView(s.Observer.Latitude.Rad(), s.Observer.Longitude.Rad())
+	grid := NewGrid(s, light.Rest[0])
+	return model.New(ctx, s.Corona, model.Settings{
+		Outer: outer, InwardFrom: float64(s.Waves.InwardFrom), Seed: s.Seed, Workers: workers, Seen: seen(s, view, grid.Step()),
+	})
 }
 
 // seen returns whether the lines of sight of the field, or of what the point spread
