@@ -16,7 +16,8 @@
 // Average), which adds up.
 //
 // What a state is worth is the mean over the pixels that have a field in the scenario as
-// it is and in the ideal world, so that the halves and the height bins add up too.
+// it is and in the ideal world, so that the halves and the height bins add up too; a
+// state that lacks some of them is worth the mean of the others.
 //
 // Chance is kept apart from bias: one long run holds several pieces, each as long as the
 // scenario's observation. Each piece is one realisation; without the assumption "finite
@@ -78,9 +79,10 @@ type Budget struct {
 // Pixels counts pixels of the field.
 type Pixels struct {
 	Total   int         `json:"total"`
-	Used    int         `json:"used"`           // that have a field in every piece and in the ideal world
-	Scatter int         `json:"scatter"`        // of these, have one in every state: scatter and spread are theirs
-	Least   stat.Number `json:"least_fraction"` // of those used, in the state and piece in which the fewest have one
+	Used    int         `json:"used"`           // that have a field in the ideal world and in a piece of the scenario as it is
+	Samples int         `json:"samples"`        // of these, in all pieces
+	Scatter int         `json:"scatter"`        // pixels that have one in every state and piece: scatter and spread are theirs
+	Least   stat.Number `json:"least_fraction"` // of the samples of a piece, in the state in which the fewest have a field
 }
 
 // A Term is one line of the budget.

@@ -42,8 +42,23 @@ type tally struct {
 	lines map[Set][]float32 // of the light game
 	chain map[Set]*values   // of the wave game
 
-	regions [][]int // positions in pixels: all that are used, then by height
+	regions []region // all that is used, then by height
 	edges   []float64
+}
+
+// A region lists the positions in pixels that are used, by piece.
+type region [][]int
+
+// pixels returns the number of positions in at least one piece, and of all.
+func (g region) pixels() (pixels, samples int) {
+	have := map[int]bool{}
+	for _, of := range g {
+		samples += len(of)
+		for _, i := range of {
+			have[i] = true
+		}
+	}
+	return len(have), samples
 }
 
 func newTally(w *world) *tally {
@@ -118,39 +133,36 @@ func (t *tally) rest(s Set, r, i int) float64 {
 	return float64(piece(t.chain[s].density, r)[i]) - float64(t.lines[t.still(s)][i])
 }
 
-// use finds the pixels and divides them by height.
+// use finds what is used: pixels that have a field in a piece of the scenario as it is
+// and in the ideal world. It divides them by height.
 func (t *tally) use() error {
-	var used []int
-	all := t.wave.average.all()
-pixels:
-	for i := range t.pixels {
-		for r := range t.o.Pieces {
-			for _, s := range []Set{0, all} {
-				if x := t.speed(s, r, i) + t.rest(s, r, i); math.IsNaN(x) {
-					continue pixels
-				}
-			}
-		}
-		for _, s := range t.light.sets {
-			if x := t.lines[s][i]; x != x {
-				continue pixels
-			}
-		}
-		used = append(used, i)
-	}
-	if len(used) == 0 {
-		return errors.New("no pixel has a field both in the scenario as it is and in the ideal world")
-	}
-	t.regions = [][]int{used}
 	t.edges = compare.Edges(slices.Min(t.heights), slices.Max(t.heights), 20)
-	for h := range len(t.edges) - 1 {
-		var in []int
-		for _, i := range used {
-			if r := t.heights[i]; r >= t.edges[h] && (r < t.edges[h+1] || h == len(t.edges)-2 && r == t.edges[h+1]) {
-				in = append(in, i)
+	last := len(t.edges) - 2
+	t.regions = make([]region, last+2)
+	for k := range t.regions {
+		t.regions[k] = make(region, t.o.Pieces)
+	}
+	all := t.wave.average.all()
+	for i, height := range t.heights {
+		h := 0
+		for h < last && height >= t.edges[h+1] {
+			h++
+		}
+		for r := range t.o.Pieces {
+			x := t.speed(0, r, i) + t.rest(0, r, i) + t.speed(all, r, i) + t.rest(all, r, i)
+			for _, s := range t.light.sets {
+				x += float64(t.lines[s][i])
+			}
+			if x == x {
+				t.regions[0][r] = append(t.regions[0][r], i)
+				t.regions[h+1][r] = append(t.regions[h+1][r], i)
 			}
 		}
-		t.regions = append(t.regions, in)
+	}
+	for r := range t.o.Pieces {
+		if len(t.regions[0][r]) == 0 {
+			return errors.New("no pixel has a field both in the scenario as it is and in the ideal world: a longer observation or a wider field would do")
+		}
 	}
 	return nil
 }
@@ -186,13 +198,13 @@ type charge struct {
 }
 
 // chargeWaves charges one half of the wave game in a region.
-func (t *tally) chargeWaves(f half, region []int) *charge {
+func (t *tally) chargeWaves(f half, g region) *charge {
 	pieces := t.o.Pieces
 	n := math.Sqrt(float64(pieces))
 	value := map[Set][]float64{}
 	for _, s := range t.wave.sets {
 		for r := range pieces {
-			m, _ := mean(region, func(i int) float64 { return f(s, r, i) })
+			m, _ := mean(g[r], func(i int) float64 { return f(s, r, i) })
 			value[s] = append(value[s], m)
 		}
 	}
@@ -229,10 +241,13 @@ func (t *tally) chargeWaves(f half, region []int) *charge {
 }
 
 // chargeLines charges the light game.
-func (t *tally) chargeLines(region []int) *charge {
+func (t *tally) chargeLines(g region) *charge {
 	value := map[Set]float64{}
 	for _, s := range t.light.sets {
-		value[s], _ = mean(region, func(i int) float64 { return float64(t.lines[s][i]) })
+		for _, of := range g {
+			m, _ := mean(of, func(i int) float64 { return float64(t.lines[s][i]) })
+			value[s] += m / float64(len(g))
+		}
 	}
 	c := t.newCharge()
 	share, _ := t.light.average.Shares(func(s Set) float64 { return value[s] })
@@ -276,21 +291,25 @@ func (t *tally) budget() (*Budget, error) {
 	if err := t.use(); err != nil {
 		return nil, err
 	}
-	b := &Budget{Pixels: Pixels{Total: len(t.pixels), Used: len(t.regions[0]), Least: 1}}
+	b := &Budget{Pixels: Pixels{Total: len(t.pixels), Least: 1}}
+	b.Pixels.Used, b.Pixels.Samples = t.regions[0].pixels()
+	both := func(s Set, r, i int) float64 { return t.speed(s, r, i) + t.rest(s, r, i) }
 	for _, s := range t.wave.sets {
-		for r := range t.o.Pieces {
-			_, share := mean(t.regions[0], func(i int) float64 { return t.speed(s, r, i) + t.rest(s, r, i) })
+		for r, of := range t.regions[0] {
+			_, share := mean(of, func(i int) float64 { return both(s, r, i) })
 			b.Pixels.Least = min(b.Pixels.Least, stat.Number(share))
 		}
 	}
-	for h, region := range t.regions {
-		speed := t.chargeWaves(t.speed, region)
-		density := t.chargeLines(region).plus(t.chargeWaves(t.rest, region))
-		field := t.chargeWaves(func(s Set, r, i int) float64 { return t.speed(s, r, i) + t.rest(s, r, i) }, region).plus(t.chargeLines(region))
+	for h, g := range t.regions {
+		lines := t.chargeLines(g)
+		speed := t.chargeWaves(t.speed, g)
+		density := lines.plus(t.chargeWaves(t.rest, g))
+		field := lines.plus(t.chargeWaves(both, g))
 		if h == 0 {
 			t.terms(b, field, speed, density)
 		} else {
-			t.height(b, h-1, len(region), field, speed, density)
+			n, _ := g.pixels()
+			t.height(b, h-1, n, field, speed, density)
 		}
 		for _, c := range []*charge{field, speed, density} {
 			if x := math.Abs(c.open()); x > float64(b.Closure) { // false for a bin without values
@@ -301,8 +320,8 @@ func (t *tally) budget() (*Budget, error) {
 	t.scatter(b)
 	var ln []float64
 	all := t.wave.average.all()
-	for _, i := range t.regions[0] {
-		for r := range t.o.Pieces {
+	for r, of := range t.regions[0] {
+		for _, i := range of {
 			ln = append(ln, t.mu+t.speed(all, r, i)+float64(piece(t.chain[all].density, r)[i]))
 		}
 	}
@@ -433,7 +452,7 @@ func (t *tally) scatter(b *Budget) {
 	n := len(t.all)
 	sums := make([][3]moments, n+2)
 	x := newScattering(n+2, t.o.Pieces)
-	for _, i := range t.regions[0] {
+	for _, i := range t.regions[0][0] { // those without a value in another piece fall out
 		if !t.pixel(x, i) {
 			continue
 		}
