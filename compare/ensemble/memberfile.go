@@ -16,7 +16,7 @@ const (
 	scenarioTable   = "SCENARIO"
 )
 
-// write writes the member's file: binary tables only, see the README of the tables.
+// write writes the file of the member: binary tables under an empty primary HDU.
 func (m *Member) write(path string) error {
 	w, err := fits.Create(path, fits.Header{
 		{Key: "CREATOR", Value: "offplane " + m.Version},
