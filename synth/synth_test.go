@@ -440,17 +440,3 @@ func TestOrientation(t *testing.T) {
 		t.Errorf("line-of-sight shares %v", q.los)
 	}
 }
-
-func BenchmarkObserve(b *testing.B) {
-	s, l := load(b, "quick", "image.from=268 deg", "image.to=272 deg")
-	c := scene(b, s, l)
-	var samples int
-	for b.Loop() {
-		o, _, err := c.Observe(context.Background(), 1, nil)
-		if err != nil {
-			b.Fatal(err)
-		}
-		samples = len(o.Pixels)
-	}
-	b.ReportMetric(float64(samples)*float64(b.N)/b.Elapsed().Seconds(), "pixels/s")
-}

@@ -581,59 +581,65 @@ point4:
 	VZEROUPPER
 	RET
 
-// Y5 = the light of the eight samples at off.
-#define GAUSS(off) \
-	VMOVUPS off(R9), Y0; \
-	VSUBPS  off(SI), Y0, Y0; \
-	VMULPS  off(R10), Y0, Y0; \
-	VMULPS  Y0, Y0, Y0; \
-	VMINPS  Y15, Y0, Y0; \
-	VSUBPS  Y0, Y11, Y1; \
-	VPSLLD  $23, Y1, Y2; \
-	VSUBPS  Y11, Y1, Y1; \
-	VADDPS  Y1, Y0, Y4; \
-	VMULPS  Y4, Y4, Y6; \
-	VMULPS  Y9, Y4, Y5; \
-	VADDPS  Y8, Y5, Y5; \
-	VMULPS  Y7, Y4, Y1; \
-	VADDPS  Y13, Y1, Y1; \
-	VMULPS  Y12, Y4, Y0; \
-	VADDPS  Y14, Y0, Y0; \
-	VMULPS  Y6, Y5, Y5; \
-	VADDPS  Y1, Y5, Y5; \
-	VMULPS  Y6, Y5, Y5; \
-	VADDPS  Y0, Y5, Y5; \
-	VPADDD  Y2, Y5, Y5; \
-	VMULPS  off(R8), Y5, Y5
-
 // func profileAVX2(acc, v *float32, points int, amp, d, inv *[Lanes]float32)
+// First the first samples of all rays, then the second ones.
 TEXT ·profileAVX2(SB), NOSPLIT, $0-48
-	MOVQ    acc+0(FP), DI
-	MOVQ    v+8(FP), SI
-	MOVQ    points+16(FP), CX
 	MOVQ    amp+24(FP), R8
 	MOVQ    d+32(FP), R9
 	MOVQ    inv+40(FP), R10
-	VMOVUPS c1<>(SB), Y12
-	VMOVUPS round<>(SB), Y11
-	VMOVUPS c5<>(SB), Y9
-	VMOVUPS c4<>(SB), Y8
-	VMOVUPS c3<>(SB), Y7
-	VMOVUPS c2<>(SB), Y13
-	VMOVUPS one<>(SB), Y14
-	VMOVUPS end<>(SB), Y15
+	MOVQ    v+8(FP), BX
+	MOVQ    $2, DX
+	VMOVUPS end<>(SB), Y5
+	VMOVUPS round<>(SB), Y6
+	VMOVUPS c1<>(SB), Y7
+	VMOVUPS c2<>(SB), Y8
+	VMOVUPS c3<>(SB), Y9
+	VMOVUPS c4<>(SB), Y10
+	VMOVUPS c5<>(SB), Y11
+	VMOVUPS one<>(SB), Y12
+
+samples:
+	MOVQ    acc+0(FP), DI
+	MOVQ    points+16(FP), CX
+	MOVQ    BX, SI
+	VMOVUPS (R8), Y13
+	VMOVUPS (R9), Y14
+	VMOVUPS (R10), Y15
 
 profile:
-	GAUSS(0)
-	VADDPS  (DI), Y5, Y5
-	VMOVUPS Y5, (DI)
-	GAUSS(32)
-	VADDPS  (DI), Y5, Y5
-	VMOVUPS Y5, (DI)
+	VSUBPS  (SI), Y14, Y0
+	VMULPS  Y15, Y0, Y0
+	VMULPS  Y0, Y0, Y0
+	VMINPS  Y5, Y0, Y0     // s
+	VSUBPS  Y0, Y6, Y1
+	VPSLLD  $23, Y1, Y2    // n as an exponent
+	VSUBPS  Y6, Y1, Y1
+	VADDPS  Y1, Y0, Y0     // r
+	VMULPS  Y0, Y0, Y1
+	VMULPS  Y11, Y0, Y3
+	VADDPS  Y10, Y3, Y3
+	VMULPS  Y9, Y0, Y4
+	VADDPS  Y8, Y4, Y4
+	VMULPS  Y1, Y3, Y3
+	VADDPS  Y4, Y3, Y3
+	VMULPS  Y7, Y0, Y4
+	VADDPS  Y12, Y4, Y4
+	VMULPS  Y1, Y3, Y3
+	VADDPS  Y4, Y3, Y3
+	VPADDD  Y2, Y3, Y3
+	VMULPS  Y13, Y3, Y3
+	VADDPS  (DI), Y3, Y3
+	VMOVUPS Y3, (DI)
 	ADDQ    $64, SI
 	ADDQ    $32, DI
 	DECQ    CX
 	JNZ     profile
+	ADDQ    $32, R8
+	ADDQ    $32, R9
+	ADDQ    $32, R10
+	ADDQ    $32, BX
+	DECQ    DX
+	JNZ     samples
 	VZEROUPPER
 	RET
 
