@@ -545,9 +545,19 @@ func (r *run) density(p int, first, second reading) {
 	}
 	r.set(mapDensity, p, n)
 	if r.own.ratio == nil && r.means[0].noise.known && r.means[1].noise.known {
-		v := first.energyVar/float64(r.means[0].noise.frames) + second.energyVar/float64(r.means[1].noise.frames)
+		v := first.energyVar/float64(r.present(p)) + second.energyVar/float64(r.means[1].noise.frames)
 		r.set(mapDensityErr, p, n*math.Abs(slope)*math.Sqrt(v))
 	}
+}
+
+// present returns the number of frames of the first line in which a pixel has a value.
+func (r *run) present(p int) (n int) {
+	for _, x := range r.cube.Series(p, 0) {
+		if x == x {
+			n++
+		}
+	}
+	return max(n, 1)
 }
 
 // series puts the repaired Doppler series of a pixel into the transformer and

@@ -452,6 +452,45 @@ func TestPartsOfAnObservation(t *testing.T) {
 	}
 }
 
+// Frames that are lost do not make the density better: its error is that of the frames
+// that are there.
+func TestLostFramesInTheDensity(t *testing.T) {
+	q := defaultPatch()
+	q.nx, q.ny, q.tunings, q.electrons = 12, 12, true, 2000
+	density := func(first, second, lost int) float64 { // frames of the lines, every so many of them lost
+		q.frames = first
+		o := q.observe()
+		e := o.LineExposures(2)[0]
+		o.Exposures = o.Exposures[:first]
+		for i := range second {
+			e.Frame, e.Time, e.Exposure = i, float64(300*i), 1
+			if lost > 0 && i%lost == 0 {
+				e.Exposure = 0
+			}
+			o.Exposures = append(o.Exposures, e)
+		}
+		for p := range o.Pixels {
+			for k := range 3 {
+				s := o.Frames[0].Series(p, k)
+				for i := range s {
+					if lost > 0 && i%lost == 0 {
+						s[i] = float32(math.NaN())
+					}
+				}
+			}
+		}
+		r, err := Invert(context.Background(), o, powerLaw{1.4, 1.8}, Default(), 0, nil)
+		if err != nil {
+			t.Fatal(err)
+		}
+		return median(values(r.Maps.Get("NE_ERR")))
+	}
+	all, lost, fewer := density(150, 10, 0), density(150, 10, 5), density(120, 8, 0)
+	if math.Abs(lost/fewer-1) > 1e-5 || lost < 1.05*all {
+		t.Errorf("error of the density %g of all frames, %g with a fifth lost, %g of as many", all, lost, fewer)
+	}
+}
+
 func TestErrors(t *testing.T) {
 	q := defaultPatch()
 	q.nx, q.ny, q.frames = 6, 6, 90

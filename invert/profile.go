@@ -241,14 +241,22 @@ func (g *gaussian) energyScale(w float64) float64 {
 type photonNoise struct {
 	known       bool
 	alpha, beta float64
-	frames      int
+	frames      int // that were not lost
 }
 
 func newPhotonNoise(es []obs.Exposure) photonNoise {
-	n := photonNoise{known: len(es) > 0, frames: len(es)}
+	n := photonNoise{known: len(es) > 0}
+	for _, e := range es {
+		if e.Exposure > 0 {
+			n.frames++
+		}
+	}
+	if n.frames == 0 { // nothing known
+		n.frames = len(es)
+	}
 	for _, e := range es {
 		if !(e.Electrons > 0) {
-			return photonNoise{frames: len(es)}
+			return photonNoise{frames: n.frames}
 		}
 		n.alpha += 1 / e.Electrons
 		n.beta += 2*e.Background/e.Electrons + e.ReadNoise*e.ReadNoise/(e.Electrons*e.Electrons)

@@ -335,9 +335,11 @@ type Gap struct {
 
 // Inversion is the observer's recipe. It may not know the corona.
 type Inversion struct {
+	Background  bool              `yaml:"background" about:"profiles by least squares with a constant background; needs four tunings or more"`
 	Filter      Band              `yaml:"filter"`
 	Taper       float64           `yaml:"taper" in:"0..0.5" about:"share of the series under the cosine bell at each end"`
 	Box         int               `yaml:"box" in:"5..101" about:"side of the coherence box [pixels], odd"`
+	Adaptive    bool              `yaml:"adaptive" about:"a box that its island fills grows, up to three times"`
 	Coherence   float64           `yaml:"coherence" in:">0..<1" about:"threshold of the island"`
 	Track       int               `yaml:"track" in:"5..201" about:"points along the track, one pixel apart, odd"`
 	Estimators  []string          `yaml:"estimators" one:"lag,unsplit,pair" about:"of the phase speed, side by side; the first fills SPEED and B, others SPEED_PAIR and so on"`

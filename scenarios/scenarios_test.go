@@ -270,7 +270,7 @@ func TestRules(t *testing.T) {
 		{"waves.spectrum.high=0.2 mHz", "--set waves.spectrum.high: 0.2 mHz must be more than low, 0.2 mHz"},
 		{"camera.cadence=100 s", "--set camera.cadence: 100 s has its Nyquist frequency 1/(2 cadence) at 5 mHz, but the inversion's filter reaches to centre + width = 5 mHz; write less than 100 s"},
 		{"inversion.filter.centre=16 mHz", "quiet-belt:" + line(t, "  cadence:") + ":3: camera.cadence: 30 s has its Nyquist frequency 1/(2 cadence) at 16.67 mHz, but the inversion's filter reaches to centre + width = 17.5 mHz; write less than 28.57 s"},
-		{"camera.duration=299 s", "--set camera.duration: 299 s is less than 10 cadences, 300 s"},
+		{"camera.duration=299 s", "--set camera.duration: 299 s holds 1 frequencies of the inversion's band, which needs 4; write 660 s or more"},
 		{"camera.tunings=[]", "--set camera.tunings: 0 are too few; the three-point formula needs at least 3, such as [-0.12 nm, 0 nm, 0.12 nm]"},
 		{"camera.tunings=[0.12 nm, 0 nm, -0.12 nm]", "--set camera.tunings: must be in ascending order, each once"},
 		{"camera.tunings=[-0.12 nm, 0 nm, 0 nm]", "--set camera.tunings: must be in ascending order, each once"},
@@ -424,7 +424,7 @@ func TestInversionAlone(t *testing.T) {
 	if want := `i.yaml:1:1: box: 20 is even; the box needs a middle pixel, so write 19 or 21
 i.yaml:2:1: track: 32 is even; the track needs a middle point, so write 31 or 33
 i.yaml:3:12: coherence: 1 is out of range; it must be more than 0 and less than 1
-i.yaml:4:1: unknown key "inversion"; known here: filter, taper, box, coherence, track, estimators, separation, k_zero, padding, temperature, mu, helium, line
+i.yaml:4:1: unknown key "inversion"; known here: background, filter, taper, box, adaptive, coherence, track, estimators, separation, k_zero, padding, temperature, mu, helium, line
 --set k_zero: "halves" is not allowed; write one of kept, halved, dropped; did you mean "halved"?`; err == nil || err.Error() != want {
 		t.Error(cmp.Diff(want, err.Error()))
 	}

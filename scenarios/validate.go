@@ -148,9 +148,10 @@ func (v *validator) camera(s *Scenario) {
 	v.rule(nyquist > top, []string{"camera.cadence", "inversion.filter.centre", "inversion.filter.width"},
 		"%v has its Nyquist frequency 1/(2 cadence) at %.4g mHz, but the inversion's filter reaches to centre + width = %.4g mHz; write less than %.4g s",
 		c.Cadence, float64(nyquist), float64(top), 1e3/(2*float64(top)))
-	v.rule(c.Duration >= 10*c.Cadence, []string{"camera.duration", "camera.cadence"},
-		"%v is less than 10 cadences, %v", c.Duration, 10*c.Cadence)
+	v.band(c, &s.Inversion.Filter)
 	n := len(c.Tunings)
+	v.rule(!s.Inversion.Background || n >= 4, []string{"inversion.background", "camera.tunings"},
+		"a fit with background needs more than %d tunings, such as [-0.12 nm, -0.06 nm, 0 nm, 0.06 nm, 0.12 nm]", n)
 	v.rule(n >= 3, []string{"camera.tunings"}, "%d are too few; the three-point formula needs at least 3, such as [-0.12 nm, 0 nm, 0.12 nm]", n)
 	v.timing(c)
 	if n < 3 {
@@ -172,6 +173,37 @@ func (v *validator) camera(s *Scenario) {
 	}
 	v.rule(symmetric, []string{"camera.tunings"},
 		"the three-point formula needs an odd number of tunings, symmetric about the middle one, such as [-0.12 nm, 0 nm, 0.12 nm]")
+}
+
+// leastFrequencies is the number of frequencies in the band that the inversion needs, and
+// leastWeight the weight of the amplitude filter from which one counts.
+const (
+	leastFrequencies = 4
+	leastWeight      = 0.03
+)
+
+// band checks that the series is long enough for the inversion's filter.
+func (v *validator) band(c *Camera, f *Band) {
+	reach := float64(f.Width) * math.Sqrt(-math.Log(leastWeight))
+	if f.Means == "sigma" {
+		reach *= math.Sqrt2
+	}
+	frequencies := func(frames int) (n int) {
+		for j := 1; 2*j < frames; j++ {
+			if math.Abs(1e3*float64(j)/(float64(frames)*float64(c.Cadence))-float64(f.Centre)) <= reach {
+				n++
+			}
+		}
+		return n
+	}
+	frames := int(float64(c.Duration)/float64(c.Cadence) + 1e-9)
+	have, enough := frequencies(frames), frames
+	const most = 1 << 14
+	for frequencies(enough) < leastFrequencies && enough < most {
+		enough++
+	}
+	v.rule(have >= leastFrequencies || enough == most, []string{"camera.duration", "camera.cadence", "inversion.filter.width"},
+		"%v holds %d frequencies of the inversion's band, which needs %d; write %v or more", c.Duration, have, leastFrequencies, units.Duration(float64(enough)*float64(c.Cadence)))
 }
 
 // timing checks that everything finds its time.

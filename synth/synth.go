@@ -129,8 +129,12 @@ func (e *Exposed) develop(ctx context.Context, workers int) (*obs.Observation, e
 			electrons, readNoise = math.Inf(1), 0
 		}
 		for f := range e.raw[l].Frames {
+			exposure := float64(c.s.Camera.Exposure)
+			if plan.Lost[l][f] {
+				exposure = 0
+			}
 			o.Exposures = append(o.Exposures, obs.Exposure{
-				Line: l + 1, Frame: f, Time: plan.Time(l, f, float64(c.s.Camera.Cadence)), Exposure: float64(c.s.Camera.Exposure),
+				Line: l + 1, Frame: f, Time: plan.Time(l, f, float64(c.s.Camera.Cadence)), Exposure: exposure,
 				Electrons: electrons, Background: background, ReadNoise: readNoise,
 			})
 		}

@@ -129,7 +129,7 @@ func estimator(c *scenarios.Scenario) string {
 func Options(v scenarios.Inversion) invert.Options {
 	o := invert.Options{
 		Centre: v.Filter.Centre.Hz(), Width: v.Filter.Width.Hz(), WidthIsSigma: v.Filter.Means == "sigma",
-		Taper: v.Taper, Box: v.Box, Coherence: v.Coherence, Track: v.Track, Estimators: v.Estimators,
+		Background: v.Background, Taper: v.Taper, Box: v.Box, Adaptive: v.Adaptive, Coherence: v.Coherence, Track: v.Track, Estimators: v.Estimators,
 		Separation: v.Separation, Padding: v.Padding,
 		Temperature: v.Temperature.Kelvin(), Mu: v.Mu,
 	}

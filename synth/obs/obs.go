@@ -127,7 +127,7 @@ type Exposure struct {
 	Line       int
 	Frame      int     // from 0, per line
 	Time       float64 // of the frame since the start [s]
-	Exposure   float64 // exposure of one tuning, co-adds included [s]
+	Exposure   float64 // exposure of one tuning, co-adds included [s]; 0: the frame is lost, or nothing known if all are
 	Electrons  float64 // detected electrons per unit radiance in one pixel and tuning; 0: noise not known; +Inf: no noise
 	Background float64 // continuum that was measured as long and subtracted, mean over the field: its photon noise counts twice [unit of the frames]
 	ReadNoise  float64 // rms of tuning and background together [electrons], co-adds included

@@ -256,7 +256,7 @@ func (o *Observation) exposureTable() fits.Table {
 		{Name: "line", About: "1: 1074.7 nm, 2: 1079.8 nm", Data: line},
 		{Name: "frame", About: "from 0, along axis 4", Data: frame},
 		{Name: "time_s", Unit: "s", About: "of the frame, since DATEREF", Data: time},
-		{Name: "exposure_s", Unit: "s", About: "of one tuning, co-adds included", Data: exposure},
+		{Name: "exposure_s", Unit: "s", About: "of one tuning, co-adds included; 0: lost", Data: exposure},
 		{Name: "electrons", About: "per unit of the frames; 0: noise not known", Data: electrons},
 		{Name: "background", Unit: o.Unit, About: "continuum that was subtracted", Data: background},
 		{Name: "read_noise", About: "electrons rms, co-adds included", Data: noise},
