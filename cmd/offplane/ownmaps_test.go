@@ -69,7 +69,7 @@ func TestTurnedAndRebinnedMap(t *testing.T) {
 		t.Fatal(err)
 	}
 	t.Chdir(t.TempDir())
-	if code, _, stderr := call("synth", tiny, "--frames=false", "--set", "camera.duration=5 min", "-o", "data", "--quiet"); code != 0 {
+	if code, _, stderr := call("synth", tiny, "--frames=false", "--set", "camera.duration=11 min", "-o", "data", "--quiet"); code != 0 {
 		t.Fatal(stderr)
 	}
 	for i, c := range []struct {

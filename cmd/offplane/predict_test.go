@@ -12,7 +12,7 @@ import (
 // TestPredictedCounts: pixels, frames and image are those of the run, and the electrons
 // predicted for the middle of the field are those of the nearest pixel.
 func TestPredictedCounts(t *testing.T) {
-	l, err := scenarios.Load("sphere", "image.from=269.5deg", "image.to=270.5deg", "camera.duration=10min", "camera.second_line=1", "camera.noise=true", "camera.aperture=1000 cm", "waves.amplitude=0 km/s")
+	l, err := scenarios.Load("sphere", "image.from=269.5deg", "image.to=270.5deg", "camera.duration=11min", "camera.second_line=1", "camera.noise=true", "camera.aperture=1000 cm", "waves.amplitude=0 km/s")
 	if err != nil {
 		t.Fatal(err)
 	}

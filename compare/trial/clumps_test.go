@@ -53,7 +53,7 @@ func strands(spread float64, size, waves string) string {
 
 // still is a short observation, for densities only, that resolves single strands along
 // the line of sight.
-var still = []string{"image.from=268.5 deg", "image.to=271.5 deg", "camera.duration=10 min", "waves.amplitude=0.1 km/s", "sight.step=0.15"}
+var still = []string{"image.from=268.5 deg", "image.to=271.5 deg", "camera.duration=11 min", "waves.amplitude=0.1 km/s", "sight.step=0.15"}
 
 // Log-normal strands of spread s, power-law emissivities: the density of the ratio over
 // the mean density is exp[s^2 (p1 + p2 - 1)/2], times the factor of the smooth sphere
