@@ -146,3 +146,35 @@ func TestReadmePythonOutside(t *testing.T) {
 		}
 	}
 }
+
+// The files of an ensemble before outside judges: fitsverify finds nothing in a member,
+// astropy reads its tables and the index with units, and they agree.
+func TestEnsembleOutside(t *testing.T) {
+	dir := filepath.Join(t.TempDir(), "out")
+	var stdout, stderr bytes.Buffer
+	if code := Main([]string{"ensemble", "run", "small", "--quiet", "-o", dir}, &stdout, &stderr); code != 0 {
+		t.Fatalf("exit %d: %s", code, stderr.String())
+	}
+	members, err := filepath.Glob(filepath.Join(dir, "members", "*", "member.fits"))
+	if err != nil || len(members) < 2 {
+		t.Fatalf("members: %v, %v", members, err)
+	}
+	fitstest.Verify(t, members...)
+	fitstest.Python(t, fitstest.Strict+`
+import glob
+import astropy.units as u
+from astropy.table import QTable
+d = sys.argv[1]
+index = QTable.read(d + "/members.ecsv")
+assert index["corona.belt.tilt"].unit == u.deg
+for row, path in zip(index, sorted(glob.glob(d + "/members/*/member.fits"))):
+    with fits.open(path, checksum=True) as f:
+        assert f[0].header["MEMBER"] == row["member"]
+        assert f["HEIGHTS"].data["valid"].sum() == row["valid"] and f["HEIGHTS"].data["pixels"].sum() == row["pixels"]
+        value = dict(zip(f["PARAMETERS"].data["path"], f["PARAMETERS"].data["value"]))["corona.belt.tilt"]
+        assert u.Quantity(value) == row["corona.belt.tilt"], value
+    t = QTable.read(path, hdu="PIXELS")
+    assert t["B"].unit == u.G and t["NE_SKY"].unit == u.cm**-3 and t["SPEED"].unit == u.km / u.s and t["R"].unit == u.R_sun
+    assert np.isfinite(t["B"].value).sum() == row["valid"]
+`, dir)
+}

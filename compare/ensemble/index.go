@@ -99,8 +99,14 @@ func parameterColumn(path string, texts []string) ecsv.Column {
 		c.Unit, numbers[i] = unit, q.number
 	}
 	c.Data = numbers
+	if unit, other := tableUnits[c.Unit]; other {
+		c.Unit, c.About = unit, "in "+c.Unit
+	}
 	return c
 }
+
+// tableUnits spells the units of a scenario that tables write otherwise or not at all.
+var tableUnits = map[string]string{"Rsun": "solRad", "ppm": ""}
 
 // sweep removes the temporary names that a process left that had no time to.
 func (s *Set) sweep() error {
