@@ -59,7 +59,8 @@ func BenchmarkShine(b *testing.B) {
 // forward measures Observe on a part of quiet-belt: geometry, truth, driver, light and
 // camera.
 func forward(b *testing.B, name string, workers int, set ...string) {
-	s, l := load(b, "quiet-belt", set...)
+	// Without point spread no light from beside the field is needed.
+	s, l := load(b, "quiet-belt", append(set, "camera.point_spread=0 arcsec")...)
 	c := scene(b, s, l)
 	work := 0.0
 	for _, p := range Field(&c.Grid, s) {
@@ -93,8 +94,9 @@ func BenchmarkForward(b *testing.B) {
 	}
 }
 
-// BenchmarkCost shows that the cost is linear: every metric in sample-frames per second
-// stays the same over a factor of 16 in pixels, frames and samples.
+// BenchmarkCost shows that the cost is linear over a factor of 16 in pixels, frames and
+// samples; what a sample costs without frames (geometry, truth, waves) shows where there
+// are few frames.
 func BenchmarkCost(b *testing.B) {
 	for _, n := range []int{1, 4, 16} {
 		forward(b, fmt.Sprintf("pixels=%d", n), 0, "image.from=266 deg", fmt.Sprintf("image.to=%g deg", 266+0.5*float64(n)))

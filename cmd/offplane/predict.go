@@ -51,14 +51,16 @@ type lineDose struct {
 // Calibration of the estimates: CPU seconds and bytes of runs of the embedded scenarios
 // and variants of them, measured on cores of an amd64 server with the vector kernels.
 const (
-	sampleSeconds = 3.1e-6 // one train of waves at one sample of a line of sight
-	frameSeconds  = 9.5e-9 // and one frame of it
-	invertSeconds = 3.5e-7 // the inversion, one pixel and frame
+	sampleSeconds = 1.7e-6 // one sample of a line of sight
+	trainSeconds  = 6.5e-7 // one train of waves there
+	frameSeconds  = 2.2e-9 // one frame of it, for each moment at which tunings are exposed
+	invertSeconds = 6e-7   // the inversion and the method's own bias, one pixel and frame
 	reportSeconds = 0.6    // the figures
 	baseBytes     = 60e6   // the program, lines and tables
-	cacheBytes    = 1.1e9  // rows of the driver, at most
-	pixelBytes    = 15e3   // rows of the driver for one pixel and train
-	rowBytes      = 70     // and one frame of it
+	cacheBytes    = 160e6  // spectra of the driver, at most
+	pixelBytes    = 15e3   // spectra of the driver for one pixel
+	copies        = 2.5    // of the frames: before and behind the camera, and series
+	slack         = 1.25   // of the heap
 )
 
 // predict builds the scene of a scenario, without observing it, and estimates what its
@@ -108,15 +110,16 @@ func predict(ctx context.Context, l *scenarios.Loaded, workers int) (*prediction
 		trains = 2
 	}
 	frames, pixels := float64(p.Frames), float64(p.Pixels)
-	work := pixels*p.Samples*trains*(sampleSeconds+frames*frameSeconds) + pixels*frames*invertSeconds
+	moments := 1.0
+	if s.Camera.Sequential {
+		moments = float64(len(s.Camera.Tunings))
+	}
+	work := pixels*p.Samples*(sampleSeconds+trains*trainSeconds+moments*frames*frameSeconds) + pixels*frames*invertSeconds
 	p.Seconds = build + work/float64(p.Workers) + reportSeconds
 
 	values := float64(len(s.Camera.Tunings)) * (frames + float64(p.Second))
 	cube := 4 * pixels * values
-	p.Memory = baseBytes + 2*cube // before and behind the camera
-	if !s.Sight.Plane {
-		p.Memory += min(cacheBytes, pixels*trains*(pixelBytes+frames*rowBytes))
-	}
+	p.Memory = slack * (baseBytes + copies*cube + min(cacheBytes, pixels*pixelBytes))
 	size := float64(scene.Grid.Nx * scene.Grid.Ny)
 	const maps = 15 + 16 + 4 // truth, inferred, bias
 	p.Disk = 4*size*(maps+2*float64(len(s.Camera.Tunings))) + 4*pixels*frames + 1e6
