@@ -110,6 +110,7 @@ func Compare(g *obs.Grid, truth, inferred obs.Maps, o Options) (*Verdict, error)
 
 	c := comparison{g: g, truth: truth, inferred: inferred, o: &o}
 	c.partition()
+	c.lay()
 	v := &Verdict{Field: c.field, Valid: c.valid, Maps: c.maps(), Flags: c.flags()}
 	v.Summary = c.summary()
 	v.Heights = c.table(v.Summary.Heights)
@@ -151,12 +152,13 @@ type comparison struct {
 	o               *Options
 
 	field, valid []bool
-	total        int       // pixels of the field
-	used         []int     // raster indices of the pixels that enter statistics, ascending
-	hasB         bool      // used are the valid pixels; else all of the field
-	edges        []float64 // of the height bins
-	bins         []subset  // by height
-	classes      [5]subset // by code of STRUCTURE
+	total        int          // pixels of the field
+	used         []int        // raster indices of the pixels that enter statistics, ascending
+	hasB         bool         // used are the valid pixels; else all of the field
+	edges        []float64    // of the height bins
+	bins         []subset     // by height
+	classes      [5]subset    // by code of STRUCTURE
+	layout       *stat.Layout // of the used pixels
 }
 
 // A subset is one height bin or one structure.
@@ -240,6 +242,15 @@ func (c *comparison) partition() {
 			}
 		}
 	}
+}
+
+// lay tells the intervals where the used pixels lie.
+func (c *comparison) lay() {
+	r, pa := make([]float64, len(c.used)), make([]float64, len(c.used))
+	for k, i := range c.used {
+		r[k], pa[k] = c.g.Polar(i%c.g.Nx, i/c.g.Nx)
+	}
+	c.layout = stat.NewLayout(r, pa, c.g.Step())
 }
 
 // Edges returns height bins [solar radii] with perRadius steps a solar radius
@@ -393,13 +404,17 @@ func (c *comparison) each(do func(region int, of []int)) {
 	}
 }
 
-// summarise returns the Summary of x over every region; none if x is nil.
+// summarise returns the Summary of x over every region, with the interval of its median;
+// none if x is nil.
 func (c *comparison) summarise(x []float64, put func(region int, s *stat.Summary)) {
 	if x == nil {
 		return
 	}
+	scale := c.layout.Scale(x)
 	c.each(func(region int, of []int) {
 		s := stat.Summarise(pick(x, of))
+		i := c.layout.MedianInterval(x, of, scale)
+		s.Interval = &i
 		put(region, &s)
 	})
 }

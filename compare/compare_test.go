@@ -242,7 +242,7 @@ func TestSummaryKeys(t *testing.T) {
 		t.Fatal(err)
 	}
 	const (
-		s      = "{median p2_5 p16 p84 p97_5 count }"
+		s      = "{median p2_5 p16 p84 p97_5 count median_low median_high blocks }"
 		ratios = "ratios {field {sky " + s + "emission " + s + "wave " + s + "total " + s + "}speed {sky " + s + "wave " + s + "}density {sky " + s + "emission " + s + "}}"
 		parts  = "identity {ln_field " + s + "ln_speed " + s + "half_ln_density " + s + "half_ln_mu minus_half_ln_kink " + s + "residual_max ln_speed_method " + s + "ln_speed_sight " + s + "ln_speed_rest " + s + "}"
 		region = "{valid_fraction " + ratios + "pixels valid " + parts + "}"

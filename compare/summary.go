@@ -12,7 +12,9 @@ import (
 
 // Summary is summary.json, the verdict for machines: units in key names, null
 // where there is no number or no map. A nil *stat.Summary is a map that was not
-// given; a count of zero is a map without a value.
+// given; a count of zero is a map without a value. The medians have 68 % intervals by a
+// block bootstrap, see stat.Layout.MedianInterval: by how much the chance of the waves
+// may move them, not by how much pixels differ.
 type Summary struct {
 	Schema         int           `json:"schema"` // 1
 	Scenario       string        `json:"scenario"`

@@ -47,6 +47,11 @@ func (c *comparison) table(heights []Height) ecsv.Table {
 		floats(name+"_p16", unit, about+", 16th percentile", get(func(s *stat.Summary) float64 { return s.P16 }))
 		floats(name+"_p84", unit, about+", 84th percentile", get(func(s *stat.Summary) float64 { return s.P84 }))
 		floats(name+"_p97_5", unit, about+", 97.5th percentile", get(func(s *stat.Summary) float64 { return s.P97_5 }))
+		interval := func(part func(*stat.Interval) float64) func(int) float64 {
+			return get(func(s *stat.Summary) float64 { return part(s.Interval) })
+		}
+		floats(name+"_median_low", unit, about+", lower end of the median's 68 % interval", interval(func(i *stat.Interval) float64 { return i.Low }))
+		floats(name+"_median_high", unit, about+", upper end of the median's 68 % interval", interval(func(i *stat.Interval) float64 { return i.High }))
 		ints(name+"_count", about+", pixels", func(h int) int {
 			if s := of(h); s != nil {
 				return s.Count

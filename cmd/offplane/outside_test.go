@@ -33,7 +33,7 @@ import hashlib, json
 import astropy.units as u
 from astropy.table import QTable
 d = sys.argv[1] + "/"
-counts = {"truth": 15, "inferred": 18, "bias": 4}
+counts = {"truth": 15, "inferred": 18, "bias": 5}
 for name, n in counts.items():
     maps = sunpy.map.Map(d + name + ".fits")
     assert len(maps) == n, (name, len(maps))

@@ -444,8 +444,9 @@ func (r *Report) quality(v *view, foot string) (Figure, bool) {
 }
 
 type ratioRow struct {
-	Quantity, Truth, Meaning          string
-	Median, P16, P84, P2_5, P97_5, Of string
+	Quantity, Truth, Meaning  string
+	Median, Interval          string
+	P16, P84, P2_5, P97_5, Of string
 }
 
 func cell(v float64, decimals int) string {
@@ -468,12 +469,24 @@ func scientific(v float64, decimals int) string {
 	return mantissa + "×10" + superscript(e)
 }
 
+// interval prints the 68 % interval of a median.
+func interval(s *stat.Summary, decimals int) string {
+	if s == nil || s.Interval == nil || math.IsNaN(s.Interval.Low) {
+		return "–"
+	}
+	return cell(s.Interval.Low, decimals) + "–" + cell(s.Interval.High, decimals)
+}
+
 // exponential turns a summary of logarithms into one of ratios: quantiles go along.
 func exponential(s *stat.Summary) *stat.Summary {
 	if s == nil {
 		return nil
 	}
-	return &stat.Summary{Median: math.Exp(s.Median), P2_5: math.Exp(s.P2_5), P16: math.Exp(s.P16), P84: math.Exp(s.P84), P97_5: math.Exp(s.P97_5), Count: s.Count}
+	e := stat.Summary{Median: math.Exp(s.Median), P2_5: math.Exp(s.P2_5), P16: math.Exp(s.P16), P84: math.Exp(s.P84), P97_5: math.Exp(s.P97_5), Count: s.Count}
+	if i := s.Interval; i != nil {
+		e.Interval = &stat.Interval{Low: math.Exp(i.Low), High: math.Exp(i.High), Blocks: i.Blocks}
+	}
+	return &e
 }
 
 func ratioRows(s *compare.Summary) (rows []ratioRow) {
@@ -498,7 +511,7 @@ func ratioRows(s *compare.Summary) (rows []ratioRow) {
 			continue
 		}
 		d := q.decimals
-		rows = append(rows, ratioRow{q.quantity, q.truth, q.meaning, cell(q.of.Median, d), cell(q.of.P16, d), cell(q.of.P84, d), cell(q.of.P2_5, d), cell(q.of.P97_5, d), fmt.Sprint(q.of.Count)})
+		rows = append(rows, ratioRow{q.quantity, q.truth, q.meaning, cell(q.of.Median, d), interval(q.of, d), cell(q.of.P16, d), cell(q.of.P84, d), cell(q.of.P2_5, d), cell(q.of.P97_5, d), fmt.Sprint(q.of.Count)})
 	}
 	return rows
 }
@@ -508,7 +521,7 @@ type heightRow struct {
 	Valid                        stat.Number
 	B, BSky, Speed, SpeedSky     string
 	NE, NESky                    string
-	Field, FieldSpan             string
+	Field, FieldSpan, FieldBy    string
 	SpeedRatio, SpeedSpan        string
 	Density, DensitySpan, Angles string
 }
@@ -536,6 +549,7 @@ func heightRows(v *compare.Verdict) (rows []heightRow) {
 			NE: scientific(at("ne", i), 2), NESky: scientific(at("ne_sky", i), 2), Angles: "–",
 		}
 		row.Field, row.FieldSpan = medianSpan(h.Ratios.Field.Sky)
+		row.FieldBy = interval(h.Ratios.Field.Sky, 3)
 		row.SpeedRatio, row.SpeedSpan = medianSpan(h.Ratios.Speed.Sky)
 		row.Density, row.DensitySpan = medianSpan(h.Ratios.Density.Sky)
 		if h.AngleError != nil {
@@ -549,7 +563,7 @@ func heightRows(v *compare.Verdict) (rows []heightRow) {
 type structureRow struct {
 	Name, Pixels                     string
 	Valid                            stat.Number
-	Field, FieldSpan                 string
+	Field, FieldSpan, FieldBy        string
 	Speed, SpeedSpan, Density, DSpan string
 }
 
@@ -563,6 +577,7 @@ func structureRows(s *compare.Summary) (rows []structureRow) {
 		}
 		row := structureRow{Name: q.name, Pixels: fmt.Sprint(q.of.Total), Valid: q.of.ValidFraction}
 		row.Field, row.FieldSpan = medianSpan(q.of.Ratios.Field.Sky)
+		row.FieldBy = interval(q.of.Ratios.Field.Sky, 3)
 		row.Speed, row.SpeedSpan = medianSpan(q.of.Ratios.Speed.Sky)
 		row.Density, row.DSpan = medianSpan(q.of.Ratios.Density.Sky)
 		rows = append(rows, row)

@@ -48,6 +48,8 @@ type Summary struct {
 	P84    float64
 	P97_5  float64
 	Count  int
+
+	Interval *Interval // of the median; nil: not asked for. Summarise leaves it nil.
 }
 
 // Summarise returns the Summary of x, which it leaves as it is.
@@ -71,11 +73,19 @@ type summaryJSON struct {
 	P84    Number `json:"p84"`
 	P97_5  Number `json:"p97_5"`
 	Count  int    `json:"count"`
+	Low    *Number `json:"median_low,omitempty"`
+	High   *Number `json:"median_high,omitempty"`
+	Blocks *int    `json:"blocks,omitempty"`
 }
 
-// MarshalJSON writes the keys median, p2_5, p16, p84, p97_5 and count; NaN is null.
+// MarshalJSON writes the keys median, p2_5, p16, p84, p97_5 and count, and if there is an
+// Interval median_low, median_high and blocks; NaN is null.
 func (s Summary) MarshalJSON() ([]byte, error) {
-	return json.Marshal(summaryJSON{Number(s.Median), Number(s.P2_5), Number(s.P16), Number(s.P84), Number(s.P97_5), s.Count})
+	j := summaryJSON{Median: Number(s.Median), P2_5: Number(s.P2_5), P16: Number(s.P16), P84: Number(s.P84), P97_5: Number(s.P97_5), Count: s.Count}
+	if i := s.Interval; i != nil {
+		j.Low, j.High, j.Blocks = (*Number)(&i.Low), (*Number)(&i.High), &i.Blocks
+	}
+	return json.Marshal(j)
 }
 
 // UnmarshalJSON reads what MarshalJSON writes.
@@ -85,7 +95,13 @@ func (s *Summary) UnmarshalJSON(b []byte) error {
 	if err := json.Unmarshal(b, &j); err != nil {
 		return err
 	}
-	*s = Summary{float64(j.Median), float64(j.P2_5), float64(j.P16), float64(j.P84), float64(j.P97_5), j.Count}
+	*s = Summary{float64(j.Median), float64(j.P2_5), float64(j.P16), float64(j.P84), float64(j.P97_5), j.Count, nil}
+	if j.Blocks != nil {
+		s.Interval = &Interval{math.NaN(), math.NaN(), *j.Blocks}
+		if j.Low != nil && j.High != nil { // null is NaN
+			s.Interval.Low, s.Interval.High = float64(*j.Low), float64(*j.High)
+		}
+	}
 	return nil
 }
 

@@ -89,6 +89,17 @@ func TestSummaryJSON(t *testing.T) {
 	if err := json.Unmarshal(b, &s); err != nil || !math.IsNaN(s.Median) || !math.IsNaN(s.P97_5) || s.Count != 0 {
 		t.Errorf("null read back as %+v, %v", s, err)
 	}
+	with := `{"median":1,"p2_5":1,"p16":1,"p84":1,"p97_5":1,"count":2,"median_low":0.5,"median_high":2,"blocks":4}`
+	if err := json.Unmarshal([]byte(with), &s); err != nil || s.Interval == nil || s.Interval.Low != 0.5 || s.Interval.High != 2 || s.Interval.Blocks != 4 {
+		t.Errorf("interval read back as %+v, %v", s.Interval, err)
+	}
+	if b, err := json.Marshal(s); err != nil || string(b) != with {
+		t.Errorf("interval written as %s, %v", b, err)
+	}
+	s.Interval = &Interval{nan, nan, 2}
+	if b, err := json.Marshal(s); err != nil || json.Unmarshal(b, &s) != nil || !math.IsNaN(s.Interval.Low) || s.Interval.Blocks != 2 {
+		t.Errorf("no interval: %s, %v", b, err)
+	}
 	full := Summarise(sample)
 	b, _ = json.Marshal(full)
 	if err := json.Unmarshal(b, &s); err != nil || s != full {
