@@ -67,12 +67,12 @@ func Summarise(x []float64) Summary {
 
 // summaryJSON fixes key names and their order in summary.json.
 type summaryJSON struct {
-	Median Number `json:"median"`
-	P2_5   Number `json:"p2_5"`
-	P16    Number `json:"p16"`
-	P84    Number `json:"p84"`
-	P97_5  Number `json:"p97_5"`
-	Count  int    `json:"count"`
+	Median Number  `json:"median"`
+	P2_5   Number  `json:"p2_5"`
+	P16    Number  `json:"p16"`
+	P84    Number  `json:"p84"`
+	P97_5  Number  `json:"p97_5"`
+	Count  int     `json:"count"`
 	Low    *Number `json:"median_low,omitempty"`
 	High   *Number `json:"median_high,omitempty"`
 	Blocks *int    `json:"blocks,omitempty"`
