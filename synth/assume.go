@@ -118,7 +118,7 @@ func Piece(o *obs.Observation, k, n int) *obs.Observation {
 			}
 		}
 		p.Frames[l] = part
-		p.Mean[l] = means(part)
+		p.Mean[l] = obs.Means(part)
 		log := o.LineExposures(l + 1)[k*part.Frames:][:part.Frames]
 		for f := range log {
 			log[f].Frame = f

@@ -145,7 +145,7 @@ func (e *Exposed) develop(ctx context.Context, workers int) (*obs.Observation, e
 			return nil, err
 		}
 		e.raw[l] = nil
-		o.Mean[l] = means(o.Frames[l])
+		o.Mean[l] = obs.Means(o.Frames[l])
 	}
 	if o = withoutDark(o); len(o.Pixels) == 0 {
 		return nil, errors.New("camera: no pixel of the field has a whole frame; all are occulted, saturated or lost")
@@ -170,52 +170,6 @@ func zigzag(x, y int) uint64 {
 // camera returns the camera of the scene.
 func (c *Scene) camera() *camera.Camera {
 	return camera.New(c.s.Camera, c.s.Seed, c.Grid.Pixel*obs.Arcsec, c.light.Disc, c.light.Rest)
-}
-
-// means returns the mean per tuning and field pixel over the frames that are whole, NaN
-// if there is none.
-func means(c *obs.Cube) [][]float32 {
-	out := make([][]float32, c.Tunings)
-	for k := range out {
-		out[k] = make([]float32, c.Pixels)
-	}
-	for p := range c.Pixels {
-		whole := true
-		for k := range c.Tunings {
-			sum := 0.0
-			for _, x := range c.Series(p, k) {
-				sum += float64(x)
-			}
-			out[k][p] = float32(sum / float64(c.Frames))
-			whole = whole && sum == sum
-		}
-		if !whole {
-			meanOfWhole(out, c, p)
-		}
-	}
-	return out
-}
-
-// meanOfWhole fills in the means of a pixel some of whose frames are not whole.
-func meanOfWhole(out [][]float32, c *obs.Cube, p int) {
-	sums, n := make([]float64, c.Tunings), 0.0
-	for t := range c.Frames {
-		whole := true
-		for k := range sums {
-			x := c.Series(p, k)[t]
-			whole = whole && x == x
-		}
-		if !whole {
-			continue
-		}
-		n++
-		for k := range sums {
-			sums[k] += float64(c.Series(p, k)[t])
-		}
-	}
-	for k, sum := range sums {
-		out[k][p] = float32(sum / n)
-	}
 }
 
 // withoutDark takes out of the field the pixels of which no frame of the first line is

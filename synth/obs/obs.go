@@ -144,6 +144,52 @@ func NewCube(pixels, tunings, frames int) *Cube {
 	return &Cube{pixels, tunings, frames, make([]float32, pixels*tunings*frames)}
 }
 
+// Means returns the mean per tuning and field pixel over the frames that are whole, which
+// have a finite value at every tuning; NaN if there is none.
+func Means(c *Cube) [][]float32 {
+	out := make([][]float32, c.Tunings)
+	for k := range out {
+		out[k] = make([]float32, c.Pixels)
+	}
+	for p := range c.Pixels {
+		whole := true
+		for k := range c.Tunings {
+			sum := 0.0
+			for _, x := range c.Series(p, k) {
+				sum += float64(x)
+			}
+			out[k][p] = float32(sum / float64(c.Frames))
+			whole = whole && sum-sum == 0 // finite
+		}
+		if !whole {
+			meanOfWhole(out, c, p)
+		}
+	}
+	return out
+}
+
+// meanOfWhole fills in the means of a pixel some of whose frames are not whole.
+func meanOfWhole(out [][]float32, c *Cube, p int) {
+	sums, n := make([]float64, c.Tunings), 0.0
+	for t := range c.Frames {
+		whole := true
+		for k := range sums {
+			x := c.Series(p, k)[t]
+			whole = whole && finite(x)
+		}
+		if !whole {
+			continue
+		}
+		n++
+		for k := range sums {
+			sums[k] += float64(c.Series(p, k)[t])
+		}
+	}
+	for k, sum := range sums {
+		out[k][p] = float32(sum / n)
+	}
+}
+
 // Series returns the time series of field pixel p at tuning k; it aliases the cube.
 func (c *Cube) Series(p, k int) []float32 {
 	i := (p*c.Tunings + k) * c.Frames

@@ -267,8 +267,9 @@ func (o *Observation) exposureTable() fits.Table {
 // their names and world coordinates and the tables TUNINGS (line, index,
 // wavelength_nm, delay_s, offset_nm) and EXPOSURES (line, frame, time_s,
 // exposure_s): other columns default to 0, other cards to nothing known, a
-// missing observer to 1 au, a missing start to the zero time. The field is what is finite in every plane of
-// LINE1_MEAN. Frames stay nil where the file has none.
+// missing observer to 1 au, a missing start to the zero time. The field is what is finite
+// in every plane of LINE1_MEAN. Frames stay nil where the file has none; means that it does
+// not have are made of its frames.
 func ReadObservation(path string) (*Observation, error) {
 	f, err := fits.Open(path)
 	if err != nil {
@@ -281,15 +282,23 @@ func ReadObservation(path string) (*Observation, error) {
 	}
 	o.Scenario, _ = f.HDUs[0].Header.Text("SCENSHA")
 	for line := 1; line <= 2; line++ {
-		if line == 1 || len(o.LineTunings(line)) > 0 {
-			if err := o.readMean(f, line); err != nil {
-				return nil, err
-			}
+		if line == 2 && len(o.LineTunings(line)) == 0 {
+			continue
+		}
+		read := o.readMean
+		if !has(f, meanName(line)) && has(f, framesName(line)) {
+			read = o.readField
+		}
+		if err := read(f, line); err != nil {
+			return nil, err
 		}
 	}
 	for line := 1; line <= 2; line++ {
 		if err := o.readFrames(f, line); err != nil {
 			return nil, err
+		}
+		if c := o.Frames[line-1]; c != nil && o.Mean[line-1] == nil {
+			o.Mean[line-1] = Means(c)
 		}
 	}
 	if err := o.check(false); err != nil {
@@ -340,8 +349,79 @@ func (o *Observation) readTables(f *fits.File) error {
 	return nil
 }
 
+func meanName(line int) string   { return fmt.Sprintf("LINE%d_MEAN", line) }
+func framesName(line int) string { return fmt.Sprintf("LINE%d", line) }
+
+func has(f *fits.File, name string) bool {
+	for _, h := range f.HDUs {
+		if h.Name == name && h.IsImage() {
+			return true
+		}
+	}
+	return false
+}
+
+// readField finds the field in the frames of a file without means: the pixels with a
+// frame that is finite at every tuning.
+func (o *Observation) readField(f *fits.File, line int) error {
+	name := framesName(line)
+	c, err := f.Cube(name)
+	if err != nil {
+		return err
+	}
+	where := fmt.Sprintf("%s[%s]", f.Name, name)
+	tunings := o.LineTunings(line)
+	if len(tunings) == 0 || c.Planes()%len(tunings) != 0 {
+		return fmt.Errorf("%s: %d planes are no frames of %d tunings, which table TUNINGS has of line %d", where, c.Planes(), len(tunings), line)
+	}
+	g, err := readGrid(c.Header, c.Axes)
+	if err != nil {
+		return fmt.Errorf("%s: %w", where, err)
+	}
+	if line != 1 {
+		if !g.sameFrame(&o.Grid) {
+			return fmt.Errorf("%s: not on the grid of line 1", where)
+		}
+		return nil
+	}
+	planes := make([][]float32, len(tunings))
+	for k := range planes {
+		planes[k] = make([]float32, g.Nx*g.Ny)
+	}
+	seen := make([]bool, g.Nx*g.Ny)
+	for i := 0; i < c.Planes(); i += len(planes) {
+		for k, plane := range planes {
+			if err := c.ReadPlane(i+k, plane); err != nil {
+				return err
+			}
+		}
+		for _, p := range field(planes) {
+			seen[p] = true
+		}
+	}
+	o.takeGrid(g, c.Header, tunings)
+	for p, ok := range seen {
+		if ok {
+			o.Pixels = append(o.Pixels, int32(p))
+		}
+	}
+	if len(o.Pixels) == 0 {
+		return fmt.Errorf("%s: no pixel has a frame that is finite at every wavelength: the field is empty", where)
+	}
+	return nil
+}
+
+// takeGrid takes the grid of the first line.
+func (o *Observation) takeGrid(g Grid, h fits.Header, tunings []Tuning) {
+	o.Grid = g
+	o.Unit, _ = h.Text("BUNIT")
+	if _, ok := h.Get("TELAPSE"); !ok {
+		o.fillGrid(tunings)
+	}
+}
+
 func (o *Observation) readMean(f *fits.File, line int) error {
-	name := fmt.Sprintf("LINE%d_MEAN", line)
+	name := meanName(line)
 	c, err := f.Cube(name)
 	if err != nil {
 		return err
@@ -364,11 +444,7 @@ func (o *Observation) readMean(f *fits.File, line int) error {
 		}
 	}
 	if line == 1 {
-		o.Grid = g
-		o.Unit, _ = c.Header.Text("BUNIT")
-		if _, ok := c.Header.Get("TELAPSE"); !ok {
-			o.fillGrid(tunings)
-		}
+		o.takeGrid(g, c.Header, tunings)
 		o.Pixels = field(planes)
 		if len(o.Pixels) == 0 {
 			return fmt.Errorf("%s: no pixel is finite at every wavelength: the field is empty", where)
@@ -421,12 +497,8 @@ func field(planes [][]float32) []int32 {
 }
 
 func (o *Observation) readFrames(f *fits.File, line int) error {
-	name := "LINE" + strconv.Itoa(line)
-	found := false
-	for _, h := range f.HDUs {
-		found = found || h.Name == name && h.IsImage()
-	}
-	if !found {
+	name := framesName(line)
+	if !has(f, name) {
 		return nil
 	}
 	in, err := f.Cube(name)

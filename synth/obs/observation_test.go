@@ -71,6 +71,55 @@ func TestObservationRoundTrip(t *testing.T) {
 	}
 }
 
+// Frames without means bring field and means themselves.
+func TestObservationOfFramesAlone(t *testing.T) {
+	o := testObservation(37, 16)
+	for k := range 3 { // a lost frame, and a pixel that lost others
+		for p := range o.Pixels {
+			o.Frames[0].Series(p, k)[5] = float32(math.NaN())
+		}
+	}
+	o.Frames[0].Series(4, 1)[7] = float32(math.NaN())
+	path := filepath.Join(t.TempDir(), "o.fits")
+	w, err := fits.Create(path, nil)
+	if err != nil {
+		t.Fatal(err)
+	}
+	for _, table := range []fits.Table{o.tuningTable(), o.exposureTable()} {
+		if err := w.AddTable(table); err != nil {
+			t.Fatal(err)
+		}
+	}
+	for line := 1; line <= 2; line++ {
+		if err := o.writeFrames(w, line); err != nil {
+			t.Fatal(err)
+		}
+	}
+	if err := w.Close(); err != nil {
+		t.Fatal(err)
+	}
+	back, err := ReadObservation(path)
+	if err != nil {
+		t.Fatal(err)
+	}
+	o.Mean[0] = Means(o.Frames[0])
+	o.Scenario = ""
+	if d := cmp.Diff(o, back, cmpopts.EquateNaNs()); d != "" {
+		t.Error(d)
+	}
+	for k := range 3 {
+		sum := 0.0
+		for i, v := range o.Frames[0].Series(4, k) {
+			if i != 5 && i != 7 {
+				sum += float64(v)
+			}
+		}
+		if got := back.Mean[0][k][4]; math.Abs(float64(got)-sum/35) > 1e-8 {
+			t.Errorf("tuning %d: mean %g, want %g", k, got, sum/35)
+		}
+	}
+}
+
 // strip writes the file again with no more than pixels, names, world
 // coordinates and the two tables.
 func strip(t *testing.T, from, to string) {

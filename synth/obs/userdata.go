@@ -92,7 +92,7 @@ func ReadUserData(u UserData) (*Observation, error) {
 		return nil, err
 	}
 	if tunings > 1 {
-		o.Mean[0] = meansOf(o.Frames[0])
+		o.Mean[0] = Means(o.Frames[0])
 	}
 	return o, u.readRest(o)
 }
@@ -121,7 +121,7 @@ func (u *UserData) readRest(o *Observation) error {
 		if err := c.scatter(o.Pixels, cube, 1, nil); err != nil {
 			return err
 		}
-		o.Mean[1] = meansOf(cube)
+		o.Mean[1] = Means(cube)
 		for i := range frames {
 			// Evenly over the first line's: only their number matters to the noise.
 			o.Exposures = append(o.Exposures, Exposure{Line: 2, Frame: i, Time: o.Grid.Duration * float64(i) / float64(frames), Exposure: c.grid.Exposure, Electrons: u.Electrons})
@@ -435,7 +435,7 @@ func (c *userCube) scatter(pixels []int32, cube *Cube, scale float64, seen []int
 		for p, at := range pixels {
 			v := float32(scale * float64(plane[at]))
 			cube.Data[(p*cube.Tunings+k)*cube.Frames+i] = v
-			if seen != nil && finite(v) {
+			if seen != nil && finite(v) && v != 0 {
 				seen[i]++
 			}
 		}
@@ -477,6 +477,9 @@ func (o *Observation) readUserFrames(c *userCube, tunings, frames int, scale flo
 	if err := c.scatter(o.Pixels, o.Frames[0], scale, seen); err != nil {
 		return err
 	}
+	if tunings > 1 {
+		o.Frames[0].blank()
+	}
 	var empty []string
 	for i, n := range seen {
 		if n == 0 {
@@ -489,24 +492,17 @@ func (o *Observation) readUserFrames(c *userCube, tunings, frames int, scale flo
 	return nil
 }
 
-// meansOf returns the means over the frames that have a value: tuning, pixel.
-func meansOf(c *Cube) [][]float32 {
-	out := make([][]float32, c.Tunings)
-	for k := range out {
-		out[k] = make([]float32, c.Pixels)
-		for p := range out[k] {
-			sum, n := 0.0, 0
-			for _, v := range c.Series(p, k) {
-				if finite(v) {
-					sum += float64(v)
-					n++
-				}
+// blank makes NaN of what is zero at every tuning.
+func (c *Cube) blank() {
+	for p := range c.Pixels {
+		for i := range c.Frames {
+			dark := true
+			for k := range c.Tunings {
+				dark = dark && c.Series(p, k)[i] == 0
 			}
-			out[k][p] = float32(math.NaN())
-			if n > 0 {
-				out[k][p] = float32(sum / float64(n))
+			for k := 0; dark && k < c.Tunings; k++ {
+				c.Series(p, k)[i] = float32(math.NaN())
 			}
 		}
 	}
-	return out
 }
