@@ -341,6 +341,48 @@ func TestLagError(t *testing.T) {
 	}
 }
 
+// Where white noise is all that makes lags scatter, the slope of N lags a distance ds apart
+// has the error sigma/(ds sqrt(N (N^2-1)/12)), sigma that of one lag from the point's own
+// noise: half the variance of a pair of like noise, because the centre's moves all lags
+// alike. So it goes with the noise, with T^-1/2 and with N^-3/2 (derived); and the error
+// that speed tells is that scatter.
+func TestNoiseScaling(t *testing.T) {
+	const v, realisations = 500.0, 300
+	rng := rand.New(rand.NewPCG(21, 22))
+	for _, c := range []struct {
+		frames, points int
+		noise          float64
+	}{{240, 11, 0.3}, {240, 11, 0.15}, {960, 11, 0.3}, {240, 21, 0.3}} {
+		opt := Default()
+		b := mustBand(t, opt, c.frames, 30)
+		tr, m := newTransformer(b, newDFT(b)), newTrainMaker(c.frames, 0)
+		l := newLagger(b, &opt, c.points, simStep, 9)
+		s := simulation{v: v, points: c.points, noise: c.noise, frames: c.frames}
+		var sum, sum2 float64
+		var told []float64
+		for range realisations {
+			r := l.speed(s.spectra(rng, m, tr, func(x float64) float64 { return x / v }), c.points, c.points/2)
+			sum += 1 / r.v / realisations
+			sum2 += 1 / (r.v * r.v) / realisations
+			told = append(told, r.err/(r.v*r.v))
+		}
+		got := math.Sqrt(sum2 - sum*sum)
+		var f2, p float64
+		for j, f := range b.freq {
+			f2 += b.weight[j] * b.weight[j] * f * f
+			p += b.weight[j] * b.weight[j]
+		}
+		// Waves from 0.3 to 9 mHz, noise up to 1/(2 dt).
+		noise := c.noise * c.noise * (9 - 0.3) / (1e3 / 60)
+		n := float64(c.points)
+		want := math.Sqrt(lagVariance(1/(1+noise), b.samples, 2*math.Pi*math.Sqrt(f2/p))/2) / (simStep * math.Sqrt(n*(n*n-1)/12))
+		t.Logf("%d frames, %d points, noise %g: slope scatters by %.3g s/km, formula %.3g, told %.3g", c.frames, c.points, c.noise, got, want, median(told))
+		if math.Abs(got/want-1) > 0.15 || math.Abs(median(told)/got-1) > 0.2 {
+			t.Errorf("%d frames, %d points, noise %g: slope scatters by %.3g s/km, formula %.3g, told %.3g", c.frames, c.points, c.noise, got, want, median(told))
+		}
+	}
+}
+
 // The taper takes the edge of the observation out of the lags: scatter and bias of
 // the speed of a noiseless wave on 31 points in 3 h (derived; own simulation).
 func TestTaper(t *testing.T) {
