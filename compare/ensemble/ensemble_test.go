@@ -3,6 +3,7 @@ package ensemble
 import (
 	"bytes"
 	"math"
+	"os"
 	"path/filepath"
 	"strings"
 	"testing"
@@ -257,5 +258,25 @@ func TestMemberIsPure(t *testing.T) {
 	}
 	if _, err := scenarios.Parse("member", []byte(last)); err != nil {
 		t.Error(err)
+	}
+}
+
+// A file whose scenario was changed does not pass.
+func TestChangedMember(t *testing.T) {
+	_, dir := whole(t)
+	path := filepath.Join(memberFolder(dir, 0), memberName)
+	data, err := os.ReadFile(path)
+	if err != nil {
+		t.Fatal(err)
+	}
+	changed := bytes.Replace(data, []byte("strength: 2 G"), []byte("strength: 3 G"), 1)
+	if bytes.Equal(changed, data) {
+		t.Fatal("nothing to change")
+	}
+	if err := os.WriteFile(path, changed, 0o666); err != nil {
+		t.Fatal(err)
+	}
+	if _, err := ReadMember(path); err == nil || !strings.Contains(err.Error(), "SHA-256") {
+		t.Errorf("%v", err)
 	}
 }

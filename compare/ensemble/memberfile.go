@@ -1,6 +1,8 @@
 package ensemble
 
 import (
+	"crypto/sha256"
+	"encoding/hex"
 	"fmt"
 
 	"offplane/compare"
@@ -169,13 +171,17 @@ func (m *Member) readScenario(f *fits.File) error {
 	if err != nil {
 		return err
 	}
+	want, _ := t.Header.Text("SCENSHA")
+	if sum := sha256.Sum256(text); hex.EncodeToString(sum[:]) != want {
+		return fmt.Errorf("%s[%s]: the SHA-256 of the scenario is %x, the header says %q", f.Name, scenarioTable, sum, want)
+	}
 	name, _ := t.Header.Text("SCENNAME")
 	if m.Scenario, err = scenarios.Parse(name, text); err != nil {
 		return fmt.Errorf("%s[%s]: %w", f.Name, scenarioTable, err)
 	}
-	if want, _ := t.Header.Text("SCENSHA"); want != m.Scenario.SHA256 {
-		return fmt.Errorf("%s[%s]: the SHA-256 of the scenario is %s, the header says %q", f.Name, scenarioTable, m.Scenario.SHA256, want)
-	}
+	// A later version of the program may fill in more defaults; the member was computed
+	// from what stands in the file.
+	m.Scenario.Canonical, m.Scenario.SHA256 = text, want
 	for i := 1; ; i++ {
 		name, ok := t.Header.Text(fmt.Sprintf("FILE%d", i))
 		if !ok {
