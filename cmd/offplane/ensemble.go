@@ -77,10 +77,10 @@ func (p *program) ensembleShow() *cobra.Command {
 // members holds the flags that say which members are computed and which may be missing.
 type members struct {
 	work
+	part        bool // one task only
 	task, tasks int
 	retry       bool
 	accept      bool
-	cmd         *cobra.Command
 }
 
 func (m *members) acceptFlag(cmd *cobra.Command) {
@@ -108,13 +108,13 @@ the same bytes wherever it is computed, so an ensemble may be shared out: --task
   offplane ensemble gather mine`,
 		Args: argument("the name of an ensemble or a file"),
 	}
-	m.cmd = cmd
 	m.flags(cmd)
 	m.acceptFlag(cmd)
 	cmd.Flags().IntVar(&m.task, "task", 0, "compute the share of task `N` only, from 0")
 	cmd.Flags().IntVar(&m.tasks, "tasks", 0, "`number` of tasks; 0: one a member")
 	cmd.Flags().BoolVar(&m.retry, "retry-failed", false, "compute again what failed")
 	cmd.RunE = do(func(ctx context.Context, args []string) error {
+		m.part = cmd.Flags().Changed("task")
 		l, err := ensemble.Load(args[0])
 		if err != nil {
 			return misuse(err)
@@ -139,7 +139,7 @@ func (p *program) runEnsemble(ctx context.Context, l *ensemble.Loaded, m *member
 		return err
 	}
 	bar.wipe()
-	if !m.part() {
+	if !m.part {
 		return p.gather(m)
 	}
 	set, err := ensemble.Open(m.out)
@@ -149,9 +149,6 @@ func (p *program) runEnsemble(ctx context.Context, l *ensemble.Loaded, m *member
 	return failures(set, numbers)
 }
 
-// part reports whether one task is asked for.
-func (m *members) part() bool { return m.cmd.Flags().Changed("task") }
-
 // share returns the members to compute.
 func (m *members) share(l *ensemble.Loaded) ([]int, error) {
 	switch {
@@ -159,11 +156,11 @@ func (m *members) share(l *ensemble.Loaded) ([]int, error) {
 		return nil, misusef("offplane ensemble run needs a folder for the results: -o DIR")
 	case m.workers < 0:
 		return nil, misusef("--workers %d: write 0 for all cores, or their number", m.workers)
-	case !m.part() && m.cmd.Flags().Changed("tasks"):
+	case !m.part && m.tasks != 0:
 		return nil, misusef("--tasks goes with --task N")
 	case m.tasks < 0:
 		return nil, misusef("--tasks %d: write how many there are, or 0 for one a member", m.tasks)
-	case !m.part():
+	case !m.part:
 		return l.Share(0, 1), nil
 	}
 	tasks := m.tasks
@@ -179,7 +176,7 @@ func (m *members) share(l *ensemble.Loaded) ([]int, error) {
 // prepare holds the folder against the ensemble. A task never clears it: others may be
 // at work there.
 func (m *members) prepare(l *ensemble.Loaded) error {
-	if m.force && m.part() {
+	if m.force && m.part {
 		return misusef("--force does not go with --task: other tasks may be at work in %s", m.out)
 	}
 	if m.force {
@@ -193,7 +190,7 @@ func (m *members) prepare(l *ensemble.Loaded) error {
 		return misusef("%w: choose another folder, or write over it with --force", err)
 	case err != nil:
 		return misuse(err)
-	case m.part() || m.retry:
+	case m.part || m.retry:
 		return nil
 	case exists(filepath.Join(m.out, recordName)):
 		return misusef("%s is complete: choose another folder, or write over it with --force", m.out)
@@ -243,29 +240,34 @@ func (p *program) ensembleStatus() *cobra.Command {
 		if err != nil {
 			return misuse(err)
 		}
-		gathered := exists(filepath.Join(args[0], recordName))
-		if json {
-			return writeJSON(p.stdout, struct {
-				Schema   int    `json:"schema"`
-				SHA256   string `json:"ensemble_sha256"`
-				Members  int    `json:"members"`
-				Done     int    `json:"done"`
-				Failed   []int  `json:"failed"`
-				Missing  []int  `json:"missing"`
-				Gathered bool   `json:"gathered"`
-			}{1, set.Ensemble.SHA256, set.Ensemble.Members, len(set.Done), notNull(set.Failed), notNull(set.Missing), gathered})
-		}
-		fmt.Fprintf(p.stdout, "members  %d\ndone     %d\nfailed   %d\nmissing  %d\n", set.Ensemble.Members, len(set.Done), len(set.Failed), len(set.Missing))
-		for _, i := range set.Failed {
-			fmt.Fprintf(p.stdout, "%d: %s\n", i, strings.TrimSpace(set.Reason(i)))
-		}
-		if gathered {
-			fmt.Fprintln(p.stdout, "gathered")
-		}
-		return nil
+		return p.printStatus(set, json)
 	})
 	cmd.Flags().BoolVar(&json, "json", false, "one JSON document")
 	return cmd
+}
+
+// printStatus tells how far an ensemble is.
+func (p *program) printStatus(set *ensemble.Set, json bool) error {
+	gathered := exists(filepath.Join(set.Dir, recordName))
+	if json {
+		return writeJSON(p.stdout, struct {
+			Schema   int    `json:"schema"`
+			SHA256   string `json:"ensemble_sha256"`
+			Members  int    `json:"members"`
+			Done     int    `json:"done"`
+			Failed   []int  `json:"failed"`
+			Missing  []int  `json:"missing"`
+			Gathered bool   `json:"gathered"`
+		}{1, set.Ensemble.SHA256, set.Ensemble.Members, len(set.Done), notNull(set.Failed), notNull(set.Missing), gathered})
+	}
+	fmt.Fprintf(p.stdout, "members  %d\ndone     %d\nfailed   %d\nmissing  %d\n", set.Ensemble.Members, len(set.Done), len(set.Failed), len(set.Missing))
+	for _, i := range set.Failed {
+		fmt.Fprintf(p.stdout, "%d: %s\n", i, strings.TrimSpace(set.Reason(i)))
+	}
+	if gathered {
+		fmt.Fprintln(p.stdout, "gathered")
+	}
+	return nil
 }
 
 // notNull is n, and [] rather than null in JSON.
@@ -283,6 +285,7 @@ members are missing: offplane ensemble run goes on with them.`,
 	}
 	m.acceptFlag(cmd)
 	cmd.Flags().BoolVar(&m.quiet, "quiet", false, "no results on standard output")
+	cmd.Flags().BoolVar(&m.json, "json", false, "results on standard output as one JSON document")
 	cmd.RunE = do(func(_ context.Context, args []string) error {
 		m.out = args[0]
 		return p.gather(&m)
@@ -321,7 +324,10 @@ func (p *program) gather(m *members) error {
 	if err := f.finish(newRecord("ensemble", p.args, m.out, parallel.Workers(m.workers))); err != nil {
 		return err
 	}
-	if !m.quiet {
+	switch {
+	case m.json:
+		return p.printStatus(set, true)
+	case !m.quiet:
 		fmt.Fprintf(p.stdout, "members  %d, failed %d\nindex    %s\n", len(set.Done), len(set.Failed), f.path(membersFile))
 	}
 	return nil

@@ -27,7 +27,7 @@ var engines embed.FS
 type submission struct {
 	engine  string
 	out     string
-	goes    bool
+	submit  bool
 	most    int // tasks in one array; 0: ask the engine
 	atOnce  int
 	cores   int
@@ -55,7 +55,7 @@ Engines: slurm; other, a pattern in which you fill in the engine's own directive
 	f := cmd.Flags()
 	f.StringVarP(&s.out, "output", "o", "", "`folder` for the results; every node must see it")
 	f.StringVar(&s.engine, "engine", "slurm", "slurm or other")
-	f.BoolVar(&s.goes, "go", false, "submit")
+	f.BoolVar(&s.submit, "go", false, "submit")
 	f.IntVar(&s.most, "array-limit", 0, "most tasks of one array; 0: what the engine says, or 1000")
 	f.IntVar(&s.atOnce, "at-once", 0, "most tasks at a time; 0: as the engine likes")
 	f.IntVar(&s.cores, "cores", 1, "of a task, which computes as many members at a time")
@@ -75,7 +75,7 @@ func (p *program) submit(ctx context.Context, name string, s *submission) error 
 	if err != nil {
 		return misuse(err)
 	}
-	m := members{work: work{out: s.out}, retry: true, cmd: &cobra.Command{}}
+	m := members{work: work{out: s.out}, retry: true}
 	if err := m.prepare(l); err != nil {
 		return err
 	}
@@ -101,7 +101,7 @@ func (p *program) submit(ctx context.Context, name string, s *submission) error 
 		}
 		fmt.Fprintf(p.stdout, "# %s\n%s\n", path, text)
 	}
-	if !s.goes {
+	if !s.submit {
 		p.say("nothing is submitted without --go")
 		return nil
 	}
@@ -114,7 +114,7 @@ func (s *submission) check() error {
 		return misusef("offplane ensemble submit needs a folder for the results: -o DIR")
 	case s.engine != "slurm" && s.engine != "other":
 		return misusef("--engine %s: the engines are slurm and other", s.engine)
-	case s.goes && s.engine != "slurm":
+	case s.submit && s.engine != "slurm":
 		return misusef("--go: only slurm is known well enough to submit to; fill in the pattern and submit it yourself")
 	case s.most < 0 || s.atOnce < 0:
 		return misusef("--array-limit and --at-once must be 0 or more")
