@@ -161,17 +161,21 @@ func (s *islander) without(p, g int) island {
 				continue
 			}
 			b := f.spec[q*row : (q+1)*row]
-			re := blas.Sdot(row, a, 1, b, 1)
-			im := blas.Sdot(row, s.rotated, 1, b, 1)
-			c2 := float32(re*re) + float32(im*im)
+			limit := threshold
 			if g != nothing {
-				c2 /= f.rest[q*angleParts+g]
+				limit *= f.rest[q*angleParts+g]
+			}
+			re := blas.Sdot(row, a, 1, b, 1)
+			c2 := float32(re * re)
+			if count == 1 || !(c2 > limit) { // else the rest does not matter
+				im := blas.Sdot(row, s.rotated, 1, b, 1)
+				c2 += float32(im * im)
 			}
 			if count == 1 { // the first to leave the stack is the pixel itself
 				near += math.Sqrt(float64(c2))
 				adjacent++
 			}
-			if c2 > threshold {
+			if c2 > limit {
 				s.stack = append(s.stack, int32(kk))
 			}
 		}

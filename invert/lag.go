@@ -33,6 +33,7 @@ type lagger struct {
 	stamp  []int     // when that was done
 	turn   int
 	fit    []lag
+	pull   [2][]float32
 	terms  [2][]float64
 }
 
@@ -77,7 +78,7 @@ func newLagger(b *band, opt *Options, points int, step, grid float64) *lagger {
 		l.omega = append(l.omega, float32(2*math.Pi*f))
 	}
 	for i := range l.terms {
-		l.terms[i] = make([]float64, n)
+		l.terms[i], l.pull[i] = make([]float64, n), make([]float32, n)
 	}
 	return l
 }
@@ -223,7 +224,7 @@ func (l *lagger) leak(n int, theta float64) float64 {
 // floor returns the power that a wave of speed v [km/s] toward rising index and with the
 // spectrum x leaks into the other direction on n points, over what it keeps.
 func (l *lagger) floor(n int, v float64, x []float32) float64 {
-	const finer = 32 // a leak has lobes as wide as 2 pi/n
+	const finer = 8 // a leak has lobes as wide as 2 pi/n
 	t := l.split(n)
 	if t.leaks == nil {
 		t.leaks = make([]float64, finer*n+2)
@@ -375,7 +376,7 @@ func straight(fit []lag) (slope, intercept, ws, sxx float64) {
 // the peak.
 func (l *lagger) variance(ws, sxx float64) float64 {
 	nf := len(l.freq)
-	pull, share := l.terms[0][:nf], l.terms[1][:nf]
+	pull, share := l.pull[0][:nf], l.pull[1][:nf]
 	clear(pull)
 	clear(share)
 	for _, q := range l.fit {
@@ -385,16 +386,19 @@ func (l *lagger) variance(ws, sxx float64) float64 {
 		t := l.at(q.m)
 		first, second := t[l.row:], t[2*l.row:]
 		wr, wi, qr, qi, xr, xi := first[:nf], first[nf:2*nf], second[:nf], second[nf:2*nf], q.x[:nf], q.x[nf:2*nf]
-		a, b := q.weight*(q.s-ws)/(sxx*q.curve), 1/(q.curve*float64(len(l.fit)-1))
-		off := q.tau - float64(q.m)*l.grid
+		a, b := float32(q.weight*(q.s-ws)/(sxx*q.curve)), float32(1/(q.curve*float64(len(l.fit)-1)))
+		off := float32(q.tau - float64(q.m)*l.grid)
 		for j, x := range xr {
 			y := xi[j]
-			bend := float64(float32(x*qr[j]) + float32(y*qi[j]))
-			pull[j] += a * (float64(float32(x*wr[j])+float32(y*wi[j])) - off*bend)
-			share[j] += b * bend
+			bend := float32(x*qr[j]) + float32(y*qi[j])
+			pull[j] += float32(a * (float32(x*wr[j]) + float32(y*wi[j]) - float32(off*bend)))
+			share[j] += float32(b * bend)
 		}
 	}
-	return resampled(pull, share)
+	for j := range nf {
+		l.terms[0][j], l.terms[1][j] = float64(pull[j]), float64(share[j])
+	}
+	return resampled(l.terms[0], l.terms[1])
 }
 
 // face makes c the spectrum that lags refer to.

@@ -145,7 +145,8 @@ func fill(v []float64, bad []bool) int {
 type dft struct {
 	half    int       // numbers of a folded series, padded to whole 16-byte blocks
 	forward []float32 // two rows a bin: weight * cos, -weight * sin
-	inverse []float32 // one row a folded frame, laid out like a spectrum: 2/n cos, -2/n sin
+	inverse []float32 // two rows a folded frame: 2/n cos, -2/n sin
+	width   int       // of those, padded
 }
 
 // largestDFT is the size of one table [numbers] up to which the tables stay in the
@@ -161,14 +162,15 @@ func newDFT(b *band) *dft {
 		return nil
 	}
 	d.forward = make([]float32, 2*nf*d.half)
-	d.inverse = make([]float32, folded*b.row)
+	d.width = (nf + 3) &^ 3
+	d.inverse = make([]float32, 2*folded*d.width)
 	for j, w := range b.weight {
 		for i := range folded {
 			s, c := math.Sincos(2 * math.Pi * float64(i*(b.first+j)%n) / float64(n))
 			d.forward[2*j*d.half+i] = float32(w * c)
 			d.forward[(2*j+1)*d.half+i] = float32(-w * s)
-			d.inverse[i*b.row+j] = float32(2 * c / float64(n))
-			d.inverse[i*b.row+nf+j] = float32(-2 * s / float64(n))
+			d.inverse[2*i*d.width+j] = float32(2 * c / float64(n))
+			d.inverse[(2*i+1)*d.width+j] = float32(-2 * s / float64(n))
 		}
 	}
 	return d
@@ -182,6 +184,7 @@ type transformer struct {
 	v         []float64
 	bad       []bool
 	even, odd []float32
+	parts     [2][]float32 // real and imaginary parts of a spectrum
 	coeff     []complex128
 	high      []float64
 }
@@ -197,6 +200,7 @@ func newTransformer(b *band, d *dft) *transformer {
 	}
 	if d != nil {
 		t.even, t.odd = make([]float32, d.half), make([]float32, d.half)
+		t.parts = [2][]float32{make([]float32, d.width), make([]float32, d.width)}
 	}
 	return t
 }
@@ -215,10 +219,8 @@ func (t *transformer) forward(row []float32, noise bool) float64 {
 	n := len(t.freq)
 	if d := t.dft; d != nil {
 		t.fold()
-		for j := range n {
-			row[j] = blas.Sdot(d.half, t.even, 1, d.forward[2*j*d.half:], 1)
-			row[n+j] = blas.Sdot(d.half, t.odd, 1, d.forward[(2*j+1)*d.half:], 1)
-		}
+		blas.Sgemv(none, n, d.half, 1, d.forward, 2*d.half, t.even, 1, 0, row, 1)
+		blas.Sgemv(none, n, d.half, 1, d.forward[d.half:], 2*d.half, t.odd, 1, 0, row[n:], 1)
 		if !noise {
 			return math.NaN()
 		}
@@ -272,14 +274,17 @@ func (t *transformer) noise() float64 {
 func (t *transformer) backward(row, series []float32) {
 	n, nf := t.frames, len(t.freq)
 	if d := t.dft; d != nil {
-		for i := range n/2 + 1 {
-			at := d.inverse[i*t.row : (i+1)*t.row]
-			even := blas.Sdot(nf, row, 1, at, 1)
-			odd := blas.Sdot(nf, row[nf:], 1, at[nf:], 1)
-			series[i] = even + odd
-			if i > 0 {
-				series[n-i] = even - odd // for even n the middle frame again: its sines are zero
-			}
+		w, half := d.width, n/2+1
+		re, im := t.parts[0], t.parts[1]
+		copy(re, row[:nf])
+		copy(im, row[nf:2*nf])
+		even, odd := t.even[:half], t.odd[:half]
+		blas.Sgemv(none, half, w, 1, d.inverse, 2*w, re, 1, 0, even, 1)
+		blas.Sgemv(none, half, w, 1, d.inverse[w:], 2*w, im, 1, 0, odd, 1)
+		series[0] = even[0] + odd[0]
+		for i := 1; i < half; i++ {
+			series[i] = even[i] + odd[i]
+			series[n-i] = even[i] - odd[i] // for even n the middle frame again: its sines are zero
 		}
 		return
 	}

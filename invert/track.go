@@ -82,57 +82,68 @@ func (f *field) direction(at *point, dx, dy float64) (ux, uy float64, ok bool) {
 	return ux, uy, true
 }
 
-// trace integrates the directions both ways from field pixel p by the midpoint
-// rule in steps of one pixel, up to n points an arm, and puts the points into
-// t.points in order of distance along the track. An arm ends where the field or
-// the directions end for good. Outward is away from the Sun as the whole track has it;
-// rise is the gain in distance from the Sun over the track's length, 0..1.
-// centre is the index of the pixel.
+// walk integrates the directions from a point on, to the side of (dx, dy), in steps of
+// one pixel: the two-step rule of Adams and Bashforth after a midpoint step. It appends up
+// to n points to arm, which has the room, and ends where the field or the directions do.
+func (t *tracker) walk(arm []point, at *point, dx, dy float64, n int) []point {
+	var half point
+	var lastX, lastY float64 // direction at the point before; zeros: none
+	good := 0                // points up to the last that had a direction
+	for len(arm) < n && len(arm)-good < longestBridge {
+		ux, uy, ok := t.direction(at, dx, dy)
+		switch {
+		case !ok: // straight on
+			lastX, lastY = 0, 0
+		case lastX == 0 && lastY == 0:
+			dx, dy, lastX, lastY = ux, uy, ux, uy
+			t.place(&half, at.x+ux/2, at.y+uy/2)
+			if mx, my, ok := t.direction(&half, ux, uy); ok {
+				dx, dy = mx, my
+			}
+		default:
+			dx, dy = 1.5*ux-0.5*lastX, 1.5*uy-0.5*lastY
+			m := math.Sqrt(dx*dx + dy*dy)
+			dx, dy, lastX, lastY = dx/m, dy/m, ux, uy
+		}
+		if ok {
+			good = len(arm)
+		}
+		arm = arm[:len(arm)+1]
+		next := &arm[len(arm)-1]
+		t.place(next, at.x+dx, at.y+dy)
+		if next.sum < share {
+			return arm[:min(len(arm)-1, good+1)]
+		}
+		at = next
+	}
+	if len(arm) < n {
+		arm = arm[:min(len(arm), good+1)]
+	}
+	return arm
+}
+
+// trace walks both ways from field pixel p, which has a direction, up to n points an
+// arm, and puts the points into t.points in order of distance along the track. Outward
+// is away from the Sun as the whole track has it; rise is the gain in distance from the
+// Sun over the track's length, 0..1. centre is the index of the pixel.
 func (t *tracker) trace(p, n int) (centre int, rise float64) {
 	ix, iy := t.at(p)
 	ry, rz := t.grid.Sky(ix, iy)
 	// The outward direction in the image, from the sky by the roll.
 	s, c := math.Sincos(t.grid.Roll * math.Pi / 180)
 	ex, ey := c*ry+s*rz, -s*ry+c*rz
-	var own, half point
+	var own point
 	t.place(&own, float64(ix), float64(iy))
 	for a := range t.arm {
 		sign := 1 - 2*float64(a)
 		if cap(t.arm[a]) < n {
-			t.arm[a] = make([]point, 0, n) // points in it are referred to
+			t.arm[a] = make([]point, 0, n)
 		}
-		arm, at := t.arm[a][:0], &own
 		dx, dy := sign*ex, sign*ey
 		if a == 1 && len(t.arm[0]) > 0 { // opposite to the first arm, also where the axis is tangential
 			dx, dy = own.x-t.arm[0][0].x, own.y-t.arm[0][0].y
 		}
-		good := 0
-		for len(arm) < n && len(arm)-good < longestBridge {
-			mx, my, ok := t.direction(at, dx, dy)
-			if ok {
-				good = len(arm)
-				t.place(&half, at.x+mx/2, at.y+my/2)
-				if ux, uy, ok := t.direction(&half, mx, my); ok {
-					mx, my = ux, uy
-				}
-			} else if len(arm) > 0 {
-				mx, my = dx, dy
-			} else {
-				break
-			}
-			arm = arm[:len(arm)+1]
-			next := &arm[len(arm)-1]
-			t.place(next, at.x+mx, at.y+my)
-			if next.sum < share {
-				arm = arm[:len(arm)-1]
-				break
-			}
-			at, dx, dy = next, mx, my
-		}
-		if len(arm) < n {
-			arm = arm[:min(len(arm), good+1)]
-		}
-		t.arm[a] = arm
+		t.arm[a] = t.walk(t.arm[a][:0], &own, dx, dy, n)
 	}
 	out, in := t.arm[0], t.arm[1]
 	far := func(arm []point) float64 {
