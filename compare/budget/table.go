@@ -70,7 +70,7 @@ func (b *Budget) Table() ecsv.Table {
 	t.Columns = []ecsv.Column{
 		{Name: "region", About: "all, or the bin of projected heliocentric distance in solar radii", Data: region},
 		{Name: "term", About: "line of the budget", Data: term},
-		{Name: "on", About: "1: in the scenario", Data: on},
+		{Name: "present", About: "1: in the scenario", Data: on},
 	}
 	for _, c := range effectColumns {
 		t.Columns = append(t.Columns, ecsv.Column{Name: c.name, About: c.about, Data: columns[c.name]})
