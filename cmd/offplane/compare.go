@@ -33,7 +33,7 @@ pixels. On those of the truth (of its first map) finer ones are averaged, weight
 area they share with a pixel; coarser ones are interpolated bilinearly; NaN has no
 weight, and a pixel of less than half of whose area or weight has a value is NaN.
 Directions count from solar north, whatever way the image is turned, and are averaged as
-undirected lines. A direction is in deg or rad.
+undirected lines.
 
 If the truth carries its scenario and the inferred maps their recipe, the bias of the
 tracker itself is measured as in run: the same waves in one plane, without noise, on the

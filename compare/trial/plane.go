@@ -51,6 +51,6 @@ func onePlane(s scenarios.Scenario) scenarios.Scenario {
 		SecondLine: 1, Switching: "together", Blocks: 1,
 		Aperture: s.Camera.Aperture, Throughput: s.Camera.Throughput, Exposure: s.Camera.Exposure, Coadds: 1,
 	}
-	s.Inversion.Estimators = s.Inversion.Estimators[:1]
+	s.Inversion.Estimators = s.Inversion.Estimators[:min(1, len(s.Inversion.Estimators))]
 	return s
 }
