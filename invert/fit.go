@@ -25,7 +25,7 @@ const leastTunings = 4
 
 func newFitter(g *gaussian, tunings []obs.Tuning) (*fitter, error) {
 	if len(g.x) < leastTunings {
-		return nil, fmt.Errorf("line %d has %d tunings: a fit with background needs %d or more", tunings[0].Line, len(g.x), leastTunings)
+		return nil, fmt.Errorf("inversion: background: line %d has %d tunings: a fit with background needs %d or more", tunings[0].Line, len(g.x), leastTunings)
 	}
 	f := &fitter{x: g.x, reach: g.reach, filter: g.filter, rest: g.rest}
 	if t := tunings[0]; t.Stages > 0 && t.FilterFWHM > 0 {

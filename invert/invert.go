@@ -217,7 +217,8 @@ const chunk = 64
 // from the Sun.
 //
 // With separation SPEED of Lag is the speed of the outward waves and SPEED_IN that of
-// the inward ones, where they have twice the power that outward waves leak into them; without it SPEED is the speed of whatever waves dominate the lags
+// the inward ones, where they have twice the power that outward waves leak into them,
+// noise taken off both; without it SPEED is the speed of whatever waves dominate the lags
 // and SPEED_IN is empty. A track that gains less than a fifth of its length in
 // distance from the Sun has no outward side: SPEED is then that of the stronger
 // waves. Pair has one speed for both.

@@ -32,6 +32,7 @@ type lagger struct {
 	turned []float32 // middle turned by every lag of the search: three rows each
 	stamp  []int     // when that was done
 	turn   int
+	curve  [3]float32 // cross-correlation and its derivatives
 	fit    []lag
 	pull   [2][]float32
 	terms  [2][]float64
@@ -442,10 +443,10 @@ const nearest = 0.6
 // Newton's method from the step of the search beside it, in the tangent of the phase,
 // which makes it exact for one frequency. height is that of the maximum.
 func (l *lagger) peak(x []float32, start float64) (q lag, height float64, ok bool) {
-	var y [3]float32
+	y := l.curve[:]
 	m := max(min(int(math.Round(start/l.grid)), l.reach-1), 1-l.reach)
 	for range l.reach {
-		blas.Sgemv(none, 3, l.row, 1, l.at(m), l.row, x, 1, 0, y[:], 1)
+		blas.Sgemv(none, 3, l.row, 1, l.at(m), l.row, x, 1, 0, y, 1)
 		h, slope, curve := float64(y[0]), float64(y[1]), float64(y[2])
 		off := math.Copysign(l.grid, slope)
 		if h > 0 && curve > 0 {

@@ -91,26 +91,24 @@ func repair(v []float64, bad []bool) int {
 	if n == len(v) {
 		return n
 	}
-	mean, m2 := 0.0, 0.0
+	var sum, sum2 float64 // about the first, which is near the mean
+	low, high := v[0], v[0]
 	for _, x := range v {
-		mean += x
+		d := x - v[0]
+		sum += d
+		sum2 += d * d
+		low, high = min(low, x), max(high, x)
 	}
-	mean /= float64(len(v))
-	for _, x := range v {
-		m2 += (x - mean) * (x - mean)
+	sum /= float64(len(v))
+	mean := v[0] + sum
+	limit := outlier * math.Sqrt(max(sum2/float64(len(v))-sum*sum, 0))
+	if high-mean <= limit && mean-low <= limit {
+		return n
 	}
-	limit := outlier * math.Sqrt(m2/float64(len(v)))
-	found := false
 	for i, x := range v {
-		if math.Abs(x-mean) > limit && !bad[i] {
-			bad[i] = true
-			found = true
-		}
+		bad[i] = bad[i] || math.Abs(x-mean) > limit
 	}
-	if found {
-		n = fill(v, bad)
-	}
-	return n
+	return fill(v, bad)
 }
 
 func fill(v []float64, bad []bool) int {
