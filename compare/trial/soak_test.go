@@ -13,7 +13,11 @@ import (
 
 // Over 64 realisations of the waves in a wedge of the sphere the 68 % interval of the
 // median of B over B_SKY holds the mean of the ensemble in 54 to 82 of 100 cases, for the
-// whole wedge and in each height bin (64 draws of 68 % scatter by 6 %). Measured: TODO.
+// whole wedge and in each height bin (64 draws of 68 % scatter by 6 %). Measured: 0.66 for the wedge, 0.70 0.70 0.77 0.75 0.75 0.72 by height;
+// half-widths of 0.0027 to 0.0038 for a scatter of the medians of 0.0022 to 0.0036.
+// Where the bias itself changes within three blocks the interval is wide on purpose: in
+// the scenario quick, over 27 realisations, it held the mean in 0.89, and in 0.70 to 1.00
+// by height. Two minutes on two cores.
 //
 //	go test -tags soak -run TestIntervalsHoldTheEnsemble -timeout 2h -v ./compare/trial
 func TestIntervalsHoldTheEnsemble(t *testing.T) {
