@@ -176,8 +176,12 @@ func (l *Loaded) Values(number int) []Value {
 	return values
 }
 
-// Member returns the scenario of a member and the values of its parameters.
+// Member returns the scenario of a member and the values of its parameters. The ensemble
+// must come from Load: a Set knows no base.
 func (l *Loaded) Member(number int) (*scenarios.Loaded, []Value, error) {
+	if l.base == nil {
+		panic("ensemble: Member of an ensemble without its base")
+	}
 	values := l.Values(number)
 	s, err := l.base.With(assignments(values, l.memberSeed(number))...)
 	return s, values, err
