@@ -5,6 +5,7 @@
 //
 // The steps, in the order of the files:
 //
+//	log.go        a quick logarithm
 //	profile.go    a Gaussian through the tunings: peak, Doppler shift, width, energy
 //	fit.go        a line on a background by least squares, for four tunings or more
 //	timing.go     frames that are late or missing
@@ -42,6 +43,7 @@
 //	clumpy-belt     0.849  0.152   1.196  0.203   1.017  0.031
 //	two-loops       0.746  0.255   1.051  0.091   1.026  0.072
 //	source-surface  0.856  0.144   1.024  0.058   1.007  0.041
+//	quiet-belt      0.722  0.278   1.004  0.031   1.007  0.032   (300 to 316 deg)
 //
 // Pair loses a little to unsplit where nothing runs inward, because it has twice the
 // unknowns.
