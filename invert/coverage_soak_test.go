@@ -6,7 +6,7 @@ import "testing"
 
 // The intervals hold the mean as often where there is no noise, where the noise of a frame
 // is as large as three quarters of the waves, and where the waves are nearly as wide as
-// the window.
+// the window. Measured: speeds 0.608 to 0.735, angles 0.621 to 0.737.
 //
 //	go test -tags soak -run TestCoverageElsewhere -v ./invert
 func TestCoverageElsewhere(t *testing.T) {

@@ -239,10 +239,14 @@ func leave(rest, row []float32, nf int) {
 }
 
 // halves returns the variance of the axis of pixel p as the halves of the spectrum tell
-// it [rad^2].
-func (s *islander) halves(p int) float64 {
-	d := math.Remainder(s.without(p, 0).angle-s.without(p, 1).angle, math.Pi)
-	return angleScale * angleScale * d * d / 4
+// it [rad^2]; false if one of them has no island.
+func (s *islander) halves(p int) (variance float64, ok bool) {
+	a, b := s.without(p, 0), s.without(p, 1)
+	if min(a.count, b.count) < leastIsland {
+		return 0, false
+	}
+	d := math.Remainder(a.angle-b.angle, math.Pi)
+	return angleScale * angleScale * d * d / 4, true
 }
 
 // pixel returns the field pixel at place k of the window around (x0, y0), or -1; within

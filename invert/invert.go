@@ -676,7 +676,9 @@ func (r *run) direct(w *worker, p int) {
 	}
 	r.turn(p, s.angle)
 	if ix, iy := r.at(p); ix%angleLattice == 0 && iy%angleLattice == 0 {
-		r.spread[p] = [2]float32{float32(w.islands.halves(p)), float32(s.err * s.err)}
+		if variance, ok := w.islands.halves(p); ok {
+			r.spread[p] = [2]float32{float32(variance), float32(s.err * s.err)}
+		}
 	}
 	// PA = atan2(-y, z) of a vector at angle a + roll from west toward north.
 	pa := math.Mod(s.angle*180/math.Pi+r.grid.Roll-90, 180)
