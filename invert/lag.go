@@ -16,7 +16,6 @@ type lagger struct {
 	kzero   float64 // weight of zero wavenumber in the separation
 	power   float64 // of the coherence in the weights of the fit
 	pad     int
-	centre  float64 // of the band [Hz]
 	grid    float64 // step of the lag search [s]
 	reach   int     // lags searched, in steps either way
 	phasor  []float32
@@ -56,7 +55,7 @@ type split struct {
 // points is the longest track, step the distance of its points [km], grid the step
 // of the lag search [s].
 func newLagger(b *band, opt *Options, points int, step, grid float64) *lagger {
-	l := &lagger{band: b, step: step, grid: grid, pad: opt.Padding, centre: opt.Centre, kzero: opt.KZero.weight(), power: 1, splits: map[int]*split{}}
+	l := &lagger{band: b, step: step, grid: grid, pad: opt.Padding, kzero: opt.KZero.weight(), power: 1, splits: map[int]*split{}}
 	longest := min(step*float64(points-1)/slowest, float64(b.frames)*b.cadence/4)
 	l.reach = max(int(longest/l.grid), 4)
 	lags := 2*l.reach + 1
