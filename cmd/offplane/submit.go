@@ -135,6 +135,9 @@ func (s *submission) scripts(ctx context.Context, name string, l *ensemble.Loade
 	if err != nil {
 		return "", "", err
 	}
+	if strings.Contains(program, "go-build") {
+		return "", "", misusef("%s goes away when go run ends: build the program first (go build ./cmd/offplane)", program)
+	}
 	dir, err := filepath.Abs(s.out)
 	if err != nil {
 		return "", "", err

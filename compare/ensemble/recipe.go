@@ -1,7 +1,7 @@
 package ensemble
 
 import (
-	"strings"
+	"path/filepath"
 
 	"offplane/compare"
 	"offplane/scenarios"
@@ -28,7 +28,7 @@ func recipeOf(s *scenarios.Scenario, files []compare.File, k int) Recipe {
 	r.Inversion.Estimators = s.Inversion.Estimators[k : k+1 : k+1]
 	if path := s.Inversion.Line.Data; path != "" {
 		for _, f := range files {
-			if strings.HasSuffix(path, f.Name) {
+			if filepath.Base(path) == f.Name {
 				r.Atoms = f.SHA256
 			}
 		}
