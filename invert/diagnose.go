@@ -84,27 +84,42 @@ func Diagnose(ctx context.Context, o *obs.Observation, e line.Emitter, opt Optio
 	if err != nil {
 		return nil, err
 	}
-	nx := o.Grid.Nx
-	if pixel < 0 || pixel >= nx*o.Grid.Ny || r.index[pixel] < 0 {
-		return nil, fmt.Errorf("pixel (%d, %d) is outside the observed field", pixel%nx+1, pixel/nx+1)
-	}
-	p := int(r.index[pixel])
-	d := &Diagnosis{X: pixel % nx, Y: pixel / nx, Angle: math.NaN(), Maps: r.result.Maps}
-	// Directions are needed as far as the track may run, and for their errors.
-	reach := max(opt.Track/2+2, angleReach)
-	near := func(w *worker, q int) {
-		if x, y := r.at(q); max(x-d.X, d.X-x) <= reach && max(y-d.Y, d.Y-y) <= reach {
-			r.direct(w, q)
-		}
+	near, err := r.around(pixel)
+	if err != nil {
+		return nil, err
 	}
 	if err := r.steps(ctx, workers, nil, r.spectrum, r.normalise, near); err != nil {
 		return nil, err
 	}
+	return r.diagnose(r.newWorker(), pixel), nil
+}
+
+// trackReach is how far directions are needed for the track of a pixel, and for the error
+// of its own [pixels].
+func (o *Options) trackReach() int { return max(o.Track/2+2, angleReach) }
+
+// around returns the step that finds directions as far as the track of a pixel may run.
+func (r *run) around(pixel int) (func(w *worker, q int), error) {
+	nx := r.grid.Nx
+	if pixel < 0 || pixel >= nx*r.grid.Ny || r.index[pixel] < 0 {
+		return nil, fmt.Errorf("pixel (%d, %d) is outside the observed field", pixel%nx+1, pixel/nx+1)
+	}
+	px, py, reach := pixel%nx, pixel/nx, r.opt.trackReach()
+	return func(w *worker, q int) {
+		if x, y := r.at(q); max(x-px, px-x) <= reach && max(y-py, py-y) <= reach {
+			r.direct(w, q)
+		}
+	}, nil
+}
+
+// diagnose tells of a pixel of the field whose surroundings have directions.
+func (r *run) diagnose(w *worker, pixel int) *Diagnosis {
+	p, nx := int(r.index[pixel]), r.grid.Nx
+	d := &Diagnosis{X: pixel % nx, Y: pixel / nx, Angle: math.NaN(), Maps: r.result.Maps}
 	for i := range r.band.frames {
 		d.Times = append(d.Times, float64(i)*r.band.cadence)
 	}
 	d.Series = slices.Clone(r.result.Series.Series(p, 0))
-	w := r.newWorker()
 	if r.norm[p] > 0 {
 		d.island(r, w, p)
 	}
@@ -121,7 +136,7 @@ func Diagnose(ctx context.Context, o *obs.Observation, e line.Emitter, opt Optio
 	if d.Flag&FlagTrackShort == 0 && r.axis[p] != ([2]float32{}) {
 		d.track(r, w, p)
 	}
-	return d, nil
+	return d
 }
 
 func (d *Diagnosis) island(r *run, w *worker, p int) {

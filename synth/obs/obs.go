@@ -68,6 +68,22 @@ func (g *Grid) PixelAt(y, z float64) (px, py float64) {
 	return c*u + s*v + g.CentreX - 1, -s*u + c*v + g.CentreY - 1
 }
 
+// Helioprojective returns longitude and latitude [arcsec] of pixel (ix, iy): the inverse
+// of the gnomonic projection about the disc centre (Thompson 2006).
+func (g *Grid) Helioprojective(ix, iy int) (tx, ty float64) {
+	y, z := g.Sky(ix, iy)
+	y, z = y/g.Distance, z/g.Distance
+	return math.Atan(y) / Arcsec, math.Atan2(z, math.Hypot(1, y)) / Arcsec
+}
+
+// Nearest is the inverse of Helioprojective: the pixel, zero-based, whose centre is nearest
+// to longitude and latitude [arcsec]. It may lie outside the image.
+func (g *Grid) Nearest(tx, ty float64) (ix, iy int) {
+	s, c := math.Sincos(tx * Arcsec)
+	px, py := g.PixelAt(g.Distance*s/c, g.Distance*math.Tan(ty*Arcsec)/c)
+	return int(math.Round(px)), int(math.Round(py))
+}
+
 // Polar returns the projected distance from the disc centre [solar radii] and
 // the position angle [deg, 0..360) of pixel (ix, iy).
 func (g *Grid) Polar(ix, iy int) (r, pa float64) {

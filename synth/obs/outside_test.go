@@ -57,7 +57,7 @@ print(json.dumps({"tx": c.Tx.to_value("arcsec").tolist(), "ty": c.Ty.to_value("a
 			t.Fatalf("%v: %s", err, out)
 		}
 		for i, p := range [][2]int{{0, 0}, {11, 6}} {
-			tx, ty := g.helioprojective(p[0], p[1])
+			tx, ty := g.Helioprojective(p[0], p[1])
 			// 1e-6 arcsec: rounding of degrees near 180 in double precision, times 3600.
 			if math.Abs(tx-got.Tx[i]) > 1e-6 || math.Abs(ty-got.Ty[i]) > 1e-6 {
 				t.Errorf("%s: pixel %v at (%v, %v) arcsec, outside (%v, %v)", name, p, tx, ty, got.Tx[i], got.Ty[i])

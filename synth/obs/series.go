@@ -2,7 +2,6 @@ package obs
 
 import (
 	"fmt"
-	"math"
 	"sort"
 	"strconv"
 
@@ -40,7 +39,7 @@ func WriteSeries(path string, g *Grid, pixels []int32, series *Cube, primary, he
 			return fmt.Errorf("%s: pixel %d: raster indices must ascend within the %d x %d image", path, p, g.Nx, g.Ny)
 		}
 		ix, iy := int(p)%g.Nx, int(p)/g.Nx
-		tx, ty := g.helioprojective(ix, iy)
+		tx, ty := g.Helioprojective(ix, iy)
 		if err := rows.WriteRow(int32(ix+1), int32(iy+1), tx, ty, series.Series(i, 0)); err != nil {
 			return err
 		}
@@ -48,55 +47,90 @@ func WriteSeries(path string, g *Grid, pixels []int32, series *Cube, primary, he
 	return w.Close()
 }
 
-// helioprojective returns longitude and latitude [arcsec] of pixel (ix, iy):
-// the inverse of the gnomonic projection about the disc centre (Thompson 2006).
-func (g *Grid) helioprojective(ix, iy int) (tx, ty float64) {
-	y, z := g.Sky(ix, iy)
-	y, z = y/g.Distance, z/g.Distance
-	return math.Atan(y) / Arcsec, math.Atan2(z, math.Hypot(1, y)) / Arcsec
+// A SeriesFile gives the series of a file that WriteSeries wrote, row by row. It is not
+// safe for concurrent use.
+type SeriesFile struct {
+	Len     int     // rows: pixels of the field, their raster indices ascending
+	Cadence float64 // card TIMESTEP [s]; 0: none
+
+	file   *fits.File
+	rows   *fits.Rows
+	nx     int
+	column [3]int
+}
+
+// OpenSeries opens a file of series.
+func OpenSeries(path string) (*SeriesFile, error) {
+	f, err := fits.Open(path)
+	if err != nil {
+		return nil, err
+	}
+	s := &SeriesFile{file: f}
+	if s.rows, err = f.Rows("SERIES"); err == nil {
+		s.Len = s.rows.Len
+		err = s.readHeader(path)
+	}
+	if err != nil {
+		f.Close()
+		return nil, err
+	}
+	return s, nil
+}
+
+func (s *SeriesFile) readHeader(path string) (err error) {
+	var ok bool
+	if s.nx, ok = s.rows.Header.Int("NXIMAGE"); !ok || s.nx < 1 {
+		return fmt.Errorf("%s[SERIES]: card NXIMAGE is missing", path)
+	}
+	for i, name := range []string{"x", "y", "series"} {
+		if s.column[i], err = s.rows.Column(name); err != nil {
+			return err
+		}
+	}
+	s.Cadence, _ = s.rows.Header.Float("TIMESTEP")
+	return nil
+}
+
+// Close closes the file.
+func (s *SeriesFile) Close() error { return s.file.Close() }
+
+// Pixel returns the raster index of the pixel of a row.
+func (s *SeriesFile) Pixel(row int) (int32, error) {
+	x, err := s.rows.Int(row, s.column[0])
+	if err != nil {
+		return 0, err
+	}
+	y, err := s.rows.Int(row, s.column[1])
+	return int32((y-1)*int64(s.nx) + x - 1), err
+}
+
+// Read returns the series [km/s] of a row in dst, which is grown as needed.
+func (s *SeriesFile) Read(row int, dst []float32) ([]float32, error) {
+	return s.rows.Float32s(row, s.column[2], dst)
 }
 
 // ReadSeries returns the series [km/s] of the pixel with that raster index,
 // reading its row only.
 func ReadSeries(path string, pixel int32) ([]float32, error) {
-	f, err := fits.Open(path)
+	s, err := OpenSeries(path)
 	if err != nil {
 		return nil, err
 	}
-	defer f.Close()
-	rows, err := f.Rows("SERIES")
-	if err != nil {
-		return nil, err
-	}
-	nx, ok := rows.Header.Int("NXIMAGE")
-	if !ok || nx < 1 {
-		return nil, fmt.Errorf("%s[SERIES]: card NXIMAGE is missing", path)
-	}
-	var column [3]int
-	for i, name := range []string{"x", "y", "series"} {
-		if column[i], err = rows.Column(name); err != nil {
-			return nil, err
+	defer s.Close()
+	at := func(i int) int32 {
+		p, e := s.Pixel(i)
+		if err == nil {
+			err = e
 		}
+		return p
 	}
-	// Rows ascend with the raster index.
-	at := func(i int) int64 {
-		x, e1 := rows.Int(i, column[0])
-		y, e2 := rows.Int(i, column[1])
-		if err == nil && e1 != nil {
-			err = e1
-		}
-		if err == nil && e2 != nil {
-			err = e2
-		}
-		return (y-1)*int64(nx) + x - 1
-	}
-	i := sort.Search(rows.Len, func(i int) bool { return at(i) >= int64(pixel) })
-	found := i < rows.Len && at(i) == int64(pixel)
+	i := sort.Search(s.Len, func(i int) bool { return at(i) >= pixel })
+	found := i < s.Len && at(i) == pixel
 	if err != nil {
 		return nil, err
 	}
 	if !found {
-		return nil, fmt.Errorf("%s[SERIES]: no row for pixel (%d, %d)", path, int(pixel)%nx+1, int(pixel)/nx+1)
+		return nil, fmt.Errorf("%s[SERIES]: no row for pixel (%d, %d)", path, int(pixel)%s.nx+1, int(pixel)/s.nx+1)
 	}
-	return rows.Float32s(i, column[2], nil)
+	return s.Read(i, nil)
 }
