@@ -50,13 +50,20 @@ const (
 // so rasters land on whole pixels.
 type canvas struct {
 	w, h int
-	img  *vgimg.Canvas
+	img  *vgimg.Canvas // nil: svg
+	svg  *vector
 	vgdraw.Canvas
 }
 
 func newCanvas(w, h int) *canvas {
 	img := vgimg.NewWith(vgimg.UseWH(vg.Length(w), vg.Length(h)), vgimg.UseDPI(72))
-	return &canvas{w, h, img, vgdraw.New(img)}
+	return &canvas{w: w, h: h, img: img, Canvas: vgdraw.New(img)}
+}
+
+// newVectorCanvas returns a canvas for an SVG document.
+func newVectorCanvas(w, h int) *canvas {
+	svg := newVector(w, h)
+	return &canvas{w: w, h: h, svg: svg, Canvas: vgdraw.New(svg)}
 }
 
 // A textStyle says how a string hangs on its point.
@@ -120,6 +127,10 @@ func (c *canvas) frame(x, y, w, h float64) {
 // blit copies a raster with its lower left corner at (x, y).
 func (c *canvas) blit(x, y int, m image.Image) {
 	b := m.Bounds()
+	if c.svg != nil {
+		c.DrawImage(vg.Rectangle{Min: pt(float64(x), float64(y)), Max: pt(float64(x+b.Dx()), float64(y+b.Dy()))}, m)
+		return
+	}
 	draw.Draw(c.img.Image(), image.Rect(x, c.h-y-b.Dy(), x+b.Dx(), c.h-y), m, b.Min, draw.Src)
 }
 
