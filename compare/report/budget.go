@@ -86,7 +86,7 @@ func Budget(b *budget.Budget) *Figure {
 	key(x, grey, "field")
 	x = budgetAlone - 150
 	for _, m := range budgetMarks {
-		c.DrawGlyph(vgdraw.GlyphStyle{Color: m.colour, Radius: 9, Shape: m.shape}, pt(x+10, hgt-50))
+		c.DrawGlyph(vgdraw.GlyphStyle{Color: m.colour, Radius: m.radius, Shape: m.shape}, pt(x+10, hgt-50))
 		c.text(x+28, hgt-50, m.label, textStyle{size: small, x: text.XLeft, y: text.YCenter})
 		x += 28 + width(m.label, small) + 40
 	}
@@ -189,7 +189,10 @@ func (p *budgetPanel) fall(steps []step, y func(i int) float64) {
 				p.c.FillPolygon(k, box(min(p.px(from), p.px(to)), low, math.Abs(p.px(to)-p.px(from)), high-low))
 			}
 		}
-		switch same := (s.mid-s.from)*(s.to-s.mid) >= 0; {
+		speed, density := s.mid-s.from, s.to-s.mid
+		// One way; a half too thin to see does not count.
+		same := speed*density >= 0 || min(math.Abs(speed), math.Abs(density)) < 0.002*(p.xhi-p.xlo)
+		switch {
 		case last || i == 0:
 			bar(grey, s.from, s.to, y(i)-half, y(i)+half)
 		case s.from == s.mid && s.mid == s.to:
@@ -216,10 +219,11 @@ var budgetMarks = []struct {
 	label  string
 	colour color.RGBA
 	shape  vgdraw.GlyphDrawer
+	radius vg.Length
 }{
-	{"share", ink, vgdraw.CircleGlyph{}},
-	{"alone in the ideal world", green, vgdraw.PyramidGlyph{}},
-	{"last in the scenario", vermillion, vgdraw.BoxGlyph{}},
+	{"share", ink, vgdraw.CircleGlyph{}, 7},
+	{"alone in the ideal world", green, vgdraw.PyramidGlyph{}, 11},
+	{"last in the scenario", vermillion, vgdraw.BoxGlyph{}, 9},
 }
 
 // alone draws share, first and last effect of every term.
@@ -230,12 +234,11 @@ func (p *budgetPanel) alone(rows []budget.Term, y func(i int) float64) {
 			continue
 		}
 		p.c.line(stroke{grey, 2, nil}, pt(p.px(float64(e.FromIdeal)), y(i)), pt(p.px(float64(e.FromFull)), y(i)))
-		for k, x := range []float64{float64(e.Share), float64(e.FromIdeal), float64(e.FromFull)} {
+		x := []float64{float64(e.Share), float64(e.FromIdeal), float64(e.FromFull)}
+		p.c.line(stroke{ink, 3, nil}, pt(p.px(x[0]-float64(e.Error)), y(i)), pt(p.px(x[0]+float64(e.Error)), y(i)))
+		for _, k := range []int{1, 2, 0} {
 			m := budgetMarks[k]
-			if k == 0 {
-				p.c.line(stroke{ink, 3, nil}, pt(p.px(x-float64(e.Error)), y(i)), pt(p.px(x+float64(e.Error)), y(i)))
-			}
-			p.c.DrawGlyph(vgdraw.GlyphStyle{Color: m.colour, Radius: 9, Shape: m.shape}, pt(p.px(x), y(i)))
+			p.c.DrawGlyph(vgdraw.GlyphStyle{Color: m.colour, Radius: m.radius, Shape: m.shape}, pt(p.px(x[k]), y(i)))
 		}
 	}
 }
