@@ -4,7 +4,6 @@ import (
 	_ "embed"
 	"fmt"
 	"math"
-	"os"
 
 	"gonum.org/v1/gonum/spatial/r3"
 
@@ -54,7 +53,7 @@ func ReadHarmonics(path string) (*Harmonics, error) {
 	data, name := exampleHarmonics, "the embedded harmonics"
 	if path != "" {
 		var err error
-		if data, err = os.ReadFile(path); err != nil {
+		if data, err = strict.ReadFile(path); err != nil {
 			return nil, err
 		}
 		name = path
@@ -65,23 +64,32 @@ func ReadHarmonics(path string) (*Harmonics, error) {
 // ParseHarmonics is ReadHarmonics from memory; name is for messages.
 func ParseHarmonics(name string, data []byte) (*Harmonics, error) {
 	var h Harmonics
-	if _, err := strict.Read(name, data, &h); err != nil {
+	at, err := strict.Read(name, data, &h)
+	if err != nil {
 		return nil, err
 	}
+	var problems strict.Problems
+	wrong := func(path, format string, args ...any) {
+		problems = append(problems, at.Problem(path, format, args...))
+	}
 	if len(h.Coefficients) == 0 {
-		return nil, fmt.Errorf("%s: coefficients: at least one is needed", name)
+		wrong("coefficients", "at least one is needed")
 	}
 	seen := map[[2]int]bool{}
 	for i, c := range h.Coefficients {
+		entry := fmt.Sprintf("coefficients.%d", i)
 		switch {
 		case c.M > c.L:
-			return nil, fmt.Errorf("%s: coefficients.%d: m = %d is more than l = %d", name, i, c.M, c.L)
+			wrong(entry+".m", "%d is more than l = %d", c.M, c.L)
 		case c.M == 0 && c.H != 0:
-			return nil, fmt.Errorf("%s: coefficients.%d: h means nothing for m = 0; leave it out", name, i)
+			wrong(entry+".h", "means nothing for m = 0; leave it out")
 		case seen[[2]int{c.L, c.M}]:
-			return nil, fmt.Errorf("%s: coefficients.%d: l = %d, m = %d stands there twice", name, i, c.L, c.M)
+			wrong(entry, "l = %d, m = %d stands there twice", c.L, c.M)
 		}
 		seen[[2]int{c.L, c.M}] = true
+	}
+	if err := problems.Err(); err != nil {
+		return nil, err
 	}
 	const deg = math.Pi / 180
 	p := spherical((90-h.Check.Latitude)*deg, h.Check.Longitude*deg)
@@ -92,8 +100,11 @@ func ParseHarmonics(name string, data []byte) (*Harmonics, error) {
 		scale = math.Hypot(scale, math.Hypot(c.G, c.H))
 	}
 	if !(math.Abs(got-h.Check.Radial) <= 1e-3*scale) {
-		return nil, fmt.Errorf("%s: check: the coefficients, read as %s, give B_r = %.6g G at latitude %g, longitude %g, not %.6g G; is the normalisation right, and the phase (-1)^m left out?",
-			name, h.Normalisation, got, h.Check.Latitude, h.Check.Longitude, h.Check.Radial)
+		wrong("check.radial", "the coefficients, read as %s, give B_r = %.6g G at latitude %g, longitude %g, not %.6g G; is the normalisation right, and the phase (-1)^m left out?",
+			h.Normalisation, got, h.Check.Latitude, h.Check.Longitude, h.Check.Radial)
+	}
+	if err := problems.Err(); err != nil {
+		return nil, err
 	}
 	return &h, nil
 }

@@ -5,8 +5,6 @@ import (
 	"embed"
 	"encoding/hex"
 	"fmt"
-	"io"
-	"os"
 	"path/filepath"
 	"slices"
 	"strings"
@@ -73,7 +71,7 @@ func Source(name string) ([]byte, error) {
 // found but is not valid.
 func Load(nameOrPath string, assignments ...string) (*Loaded, error) {
 	if IsFile(nameOrPath) {
-		data, err := read(nameOrPath)
+		data, err := strict.ReadFile(nameOrPath)
 		if err != nil {
 			stem := strings.TrimSuffix(filepath.Base(nameOrPath), filepath.Ext(nameOrPath))
 			if _, no := Source(stem); no == nil {
@@ -95,16 +93,6 @@ func Load(nameOrPath string, assignments ...string) (*Loaded, error) {
 func IsFile(name string) bool {
 	ext := filepath.Ext(name)
 	return ext == ".yaml" || ext == ".yml" || strings.ContainsRune(name, '/') || strings.ContainsRune(name, filepath.Separator)
-}
-
-// read returns no more of a file than shows that it is too large.
-func read(path string) ([]byte, error) {
-	f, err := os.Open(path)
-	if err != nil {
-		return nil, err
-	}
-	defer f.Close()
-	return io.ReadAll(io.LimitReader(f, strict.MaxBytes+1))
 }
 
 // Parse is Load from memory; source stands in messages and gives the name.
@@ -181,7 +169,7 @@ func Resolve(name string, s Scenario) (*Loaded, error) {
 // LoadInversion reads a file that holds an inversion section by itself, applies
 // assignments and validates it. Missing keys have the values of Default.
 func LoadInversion(path string, assignments ...string) (Inversion, error) {
-	data, err := read(path)
+	data, err := strict.ReadFile(path)
 	if err != nil {
 		return Inversion{}, err
 	}

@@ -270,7 +270,7 @@ func TestRules(t *testing.T) {
 		{"waves.spectrum.high=0.2 mHz", "--set waves.spectrum.high: 0.2 mHz must be more than low, 0.2 mHz"},
 		{"camera.cadence=100 s", "--set camera.cadence: 100 s has its Nyquist frequency 1/(2 cadence) at 5 mHz, but the inversion's filter reaches to centre + width = 5 mHz; write less than 100 s"},
 		{"inversion.filter.centre=16 mHz", "quiet-belt:" + line(t, "  cadence:") + ":3: camera.cadence: 30 s has its Nyquist frequency 1/(2 cadence) at 16.67 mHz, but the inversion's filter reaches to centre + width = 17.5 mHz; write less than 28.57 s"},
-		{"camera.duration=299 s", "--set camera.duration: 299 s holds 1 frequencies of the inversion's band, which needs 4; write 660 s or more"},
+		{"camera.duration=299 s", "--set camera.duration: 299 s is too short: the inversion's band needs 4 frequencies and has 1; write 660 s or more"},
 		{"camera.tunings=[]", "--set camera.tunings: 0 are too few; the three-point formula needs at least 3, such as [-0.12 nm, 0 nm, 0.12 nm]"},
 		{"camera.tunings=[0.12 nm, 0 nm, -0.12 nm]", "--set camera.tunings: must be in ascending order, each once"},
 		{"camera.tunings=[-0.12 nm, 0 nm, 0 nm]", "--set camera.tunings: must be in ascending order, each once"},

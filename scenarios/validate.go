@@ -203,7 +203,7 @@ func (v *validator) band(c *Camera, f *Band) {
 		enough++
 	}
 	v.rule(have >= leastFrequencies || enough == most, []string{"camera.duration", "camera.cadence", "inversion.filter.width"},
-		"%v holds %d frequencies of the inversion's band, which needs %d; write %v or more", c.Duration, have, leastFrequencies, units.Duration(float64(enough)*float64(c.Cadence)))
+		"%v is too short: the inversion's band needs %d frequencies and has %d; write %v or more", c.Duration, leastFrequencies, have, units.Duration(float64(enough)*float64(c.Cadence)))
 }
 
 // timing checks that everything finds its time.

@@ -5,7 +5,6 @@ import (
 	"embed"
 	"encoding/hex"
 	"fmt"
-	"os"
 	"path/filepath"
 	"strings"
 
@@ -117,7 +116,7 @@ func Source(name string) ([]byte, error) {
 func Load(nameOrPath string) (*Loaded, error) {
 	read := Source
 	if scenarios.IsFile(nameOrPath) {
-		read = os.ReadFile
+		read = strict.ReadFile
 	}
 	text, err := read(nameOrPath)
 	if err != nil {

@@ -15,6 +15,7 @@ import (
 	"offplane/invert"
 	"offplane/model"
 	"offplane/scenarios"
+	"offplane/scenarios/strict"
 	"offplane/synth"
 	"offplane/synth/line"
 	"offplane/synth/obs"
@@ -164,7 +165,7 @@ func atom(key, path string) (*line.Atom, *File, error) {
 	if path == "" {
 		return line.Default(), nil, nil
 	}
-	data, err := os.ReadFile(path)
+	data, err := strict.ReadFile(path)
 	if err != nil {
 		return nil, nil, fmt.Errorf("%s.data: %w", key, err)
 	}

@@ -66,7 +66,7 @@ func (d *decoder) checkStruct(v reflect.Value, path string) {
 	for _, f := range fs {
 		at := join(path, f.key)
 		if f.need && d.strictNeeds && !d.pos.Given(at) {
-			d.wrong(at, "is missing; write %s", want(v.Type().Field(f.index).Type))
+			d.wrong(at, "is missing; write %s", strings.TrimSuffix(want(v.Type().Field(f.index).Type), noText))
 		}
 		if f.choice != "" {
 			if _, seen := groups[f.choice]; !seen {
@@ -112,7 +112,15 @@ func (d *decoder) checkRange(v reflect.Value, path string, f field) {
 		d.wrong(path, "is missing; write %s, %s and %s", want(v.Type()), from, to)
 		return
 	}
-	d.wrong(path, "%s is out of range; it must be %s and %s", scalarText(v), from, to)
+	limits := from + " and " + to
+	if l == h {
+		limits = low
+	}
+	text := scalarText(v)
+	if at := d.pos.at[path]; at.text != "" {
+		text = at.text // in the unit in which it was written
+	}
+	d.wrong(path, "%s is out of range; it must be %s", text, limits)
 }
 
 func toFloat(v reflect.Value) float64 {

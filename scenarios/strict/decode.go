@@ -83,7 +83,10 @@ func (d *decoder) fail(n *yaml.Node, path, format string, args ...any) {
 func (d *decoder) note(path string, key, value *yaml.Node) {
 	at := place{source: d.source}
 	if d.prefix == "" {
-		at = place{d.source, key.Line, key.Column, value.Line, value.Column}
+		at = place{d.source, key.Line, key.Column, value.Line, value.Column, ""}
+	}
+	if value.Kind == yaml.ScalarNode {
+		at.text = value.Value
 	}
 	d.pos.at[path] = at
 }
@@ -149,6 +152,9 @@ func clip(s string) string {
 	return strconv.Quote(s)
 }
 
+// noText says how a text is left out, where it may be.
+const noText = ` ("" for none)`
+
 // want says what to write for a type.
 func want(t reflect.Type) string {
 	if w, ok := reflect.New(t).Interface().(interface{ Want() string }); ok {
@@ -164,7 +170,7 @@ func want(t reflect.Type) string {
 	case reflect.Bool:
 		return "true or false"
 	case reflect.String:
-		return `text ("" for none)`
+		return "text" + noText
 	case reflect.Slice:
 		return "a list ([] for none), each entry " + want(t.Elem())
 	case reflect.Map:

@@ -29,6 +29,7 @@ import (
 	"errors"
 	"fmt"
 	"io"
+	"os"
 	"reflect"
 	"sort"
 	"strings"
@@ -112,8 +113,9 @@ type Positions struct {
 
 type place struct {
 	source          string
-	keyLine, keyCol int // of the key; of the entry in a list
-	line, col       int // of the value
+	keyLine, keyCol int    // of the key; of the entry in a list
+	line, col       int    // of the value
+	text            string // of the value, if it is a single one
 }
 
 // Given reports whether the file or an assignment holds the key; "" stands for the
@@ -178,6 +180,16 @@ func join(path, key string) string {
 	return path + "." + key
 }
 
+// ReadFile returns no more of a file than shows Read that it is too large.
+func ReadFile(path string) ([]byte, error) {
+	f, err := os.Open(path)
+	if err != nil {
+		return nil, err
+	}
+	defer f.Close()
+	return io.ReadAll(io.LimitReader(f, MaxBytes+1))
+}
+
 // Decode reads one YAML document into the struct that into points to. Keys that are
 // missing leave their fields alone. The error is of type Problems and holds all of
 // them; the struct is then of no use. name stands in the messages.
@@ -195,7 +207,7 @@ func Read(name string, data []byte, into any, assignments ...string) (*Positions
 	if n == nil {
 		return d.pos, d.problems.Err()
 	}
-	d.pos.at[""] = place{name, n.Line, n.Column, n.Line, n.Column}
+	d.pos.at[""] = place{name, n.Line, n.Column, n.Line, n.Column, ""}
 	d.value(v, n, "")
 	for _, a := range assignments {
 		d.assign(v, a)

@@ -492,7 +492,7 @@ func TestOpenErrors(t *testing.T) {
 		raw  []byte
 		want string
 	}{
-		{"missing", nil, "no such file"},
+		{"missing", nil, "file does not exist"},
 		{"empty", []byte{}, "the file is empty"},
 		{"text", []byte("hello"), "not a FITS file"},
 		{"png", []byte("\x89PNG\r\n\x1a\n"), "not a FITS file"},
@@ -526,7 +526,7 @@ func TestOpenErrors(t *testing.T) {
 	}
 	f := open(t, good)
 	_, err = f.Image("B")
-	check(t, "missing image", err.Error(), good+": no image EXTENSION named B; it has VEL, FLAG, CUBE")
+	check(t, "missing image", err.Error(), good+": no image named B; it has VEL, FLAG, CUBE")
 	_, err = f.Table("B")
 	check(t, "missing table", err.Error(), good+": no table named B; it has TAB, BLOB, EMPTY")
 	_, err = f.Image("CUBE")

@@ -45,7 +45,7 @@ type HDU struct {
 func Open(path string) (*File, error) {
 	file, err := os.Open(path)
 	if errors.Is(err, os.ErrNotExist) {
-		return nil, fmt.Errorf("%s: no such file: %w", path, os.ErrNotExist)
+		return nil, fmt.Errorf("%s: %w", path, os.ErrNotExist)
 	}
 	if err != nil {
 		return nil, err
@@ -307,7 +307,7 @@ type Image struct {
 // FindImage returns the image HDU of that name without case, or that number in
 // the file; the empty name is the first image.
 func (f *File) FindImage(name string) (*HDU, error) {
-	return f.find("image EXTENSION", name, (*HDU).IsImage)
+	return f.find("image", name, (*HDU).IsImage)
 }
 
 // Image reads a two-dimensional image by its name without case, or its number

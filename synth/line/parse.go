@@ -112,6 +112,9 @@ func Parse(name string, data []byte) (*Atom, error) {
 	default:
 		p.wrong("base", "%q is no base; the only one is embedded", d.Base)
 	}
+	if len(p.problems) > 0 {
+		return nil, p.problems.Err()
+	}
 	// Each step needs what the one before it checked.
 	for _, step := range []func(*document){p.levels, p.transitions, p.rest, p.whole} {
 		if step(&d); len(p.problems) > 0 {

@@ -107,7 +107,7 @@ func ReadMaps(path string) (Grid, Maps, error) {
 		maps = append(maps, m)
 	}
 	if len(maps) == 0 {
-		return Grid{}, nil, fmt.Errorf("%s: has no image EXTENSION", path)
+		return Grid{}, nil, fmt.Errorf("%s: has no image", path)
 	}
 	return grid, maps, nil
 }

@@ -151,7 +151,7 @@ func TestMapErrors(t *testing.T) {
 			t.Errorf("left %v", left)
 		}
 	}
-	if _, _, err := ReadMaps(path); err == nil || err.Error() != path+": no such file: file does not exist" {
+	if _, _, err := ReadMaps(path); err == nil || err.Error() != path+": file does not exist" {
 		t.Error(err)
 	}
 	if err := WriteMaps(path, &g, testMaps(&g), nil); err != nil {
@@ -161,7 +161,7 @@ func TestMapErrors(t *testing.T) {
 	if err != nil || g2 != g || m.Name != "STRUCTURE" || m.Floats()[2] != 2 {
 		t.Errorf("%v %v", m, err)
 	}
-	if _, _, err := ReadMap(path, "NE"); err == nil || err.Error() != path+": no image EXTENSION named NE; it has B, RATIO, FLAG, STRUCTURE" {
+	if _, _, err := ReadMap(path, "NE"); err == nil || err.Error() != path+": no image named NE; it has B, RATIO, FLAG, STRUCTURE" {
 		t.Error(err)
 	}
 }

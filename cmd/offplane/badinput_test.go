@@ -1,0 +1,121 @@
+package main
+
+import (
+	"bytes"
+	"os"
+	"path/filepath"
+	"strconv"
+	"strings"
+	"testing"
+
+	"github.com/google/go-cmp/cmp"
+	"github.com/rogpeppe/go-internal/txtar"
+)
+
+// TestBadInput reads the broken files of testdata/bad: each archive begins with the
+// command that reads them, in place of FILE, and holds pairs of a file and what is said
+// of it. Files *.cards are headers of FITS files, see fitsOf; those whose name begins
+// with "ok" are material for the command line.
+func TestBadInput(t *testing.T) {
+	archives, err := filepath.Glob("testdata/bad/*.txtar")
+	if err != nil {
+		t.Fatal(err)
+	}
+	count := 0
+	for _, path := range archives {
+		a, err := txtar.ParseFile(path)
+		if err != nil {
+			t.Fatal(err)
+		}
+		kind := strings.TrimSuffix(filepath.Base(path), ".txtar")
+		t.Run(kind, func(t *testing.T) { count += tryBad(t, a) })
+	}
+	if count < 60 {
+		t.Errorf("%d broken files; there were 60 once", count)
+	}
+}
+
+// tryBad plays the cases of one archive and returns their number.
+func tryBad(t *testing.T, a *txtar.Archive) (count int) {
+	t.Chdir(t.TempDir())
+	command, _, _ := strings.Cut(string(a.Comment), "\n")
+	var want = map[string]string{}
+	var names []string
+	for _, f := range a.Files {
+		name, data := f.Name, f.Data
+		if is, ok := strings.CutSuffix(name, ".want"); ok {
+			want[is] = string(data)
+			continue
+		}
+		if is, ok := strings.CutSuffix(name, ".cards"); ok {
+			name, data = is+".fits", fitsOf(string(data))
+		}
+		if err := os.WriteFile(name, data, 0o666); err != nil {
+			t.Fatal(err)
+		}
+		if !strings.HasPrefix(name, "ok") {
+			names = append(names, name)
+		}
+	}
+	for _, name := range names {
+		t.Run(name, func(t *testing.T) {
+			words := strings.Fields(command)
+			for i := range words {
+				words[i] = strings.ReplaceAll(words[i], "FILE", name)
+			}
+			code, stdout, stderr := call(words[1:]...)
+			if code != exitMisuse || stdout != "" {
+				t.Errorf("code %d, %q", code, stdout)
+			}
+			stem := strings.TrimSuffix(name, filepath.Ext(name))
+			if diff := cmp.Diff(want[stem], stderr); diff != "" || stderr == "" {
+				t.Errorf("%s\n-- %s.want --\n%s", diff, stem, stderr)
+			}
+			if exists("out") {
+				t.Error("a folder was left")
+			}
+		})
+	}
+	return len(names)
+}
+
+// fitsOf makes a FITS file of its cards, a line each. An empty line ends a header; a line
+// @N adds N bytes of zeros up to a whole block, @N! as many and no more.
+func fitsOf(cards string) []byte {
+	var b []byte
+	pad := func(with string) {
+		for len(b)%2880 != 0 {
+			b = append(b, with...)
+		}
+	}
+	end := func() {
+		b = append(b, "END"+strings.Repeat(" ", 77)...)
+		pad(" ")
+	}
+	open := false
+	for line := range strings.Lines(cards) {
+		line = strings.TrimSuffix(line, "\n")
+		if count, ok := strings.CutPrefix(line, "@"); ok {
+			count, short := strings.CutSuffix(count, "!")
+			n, err := strconv.Atoi(count)
+			if err != nil {
+				panic("offplane: " + line)
+			}
+			if b = append(b, bytes.Repeat([]byte{0}, n)...); !short {
+				pad("\x00")
+			}
+			continue
+		}
+		if line == "" {
+			end()
+			open = false
+			continue
+		}
+		open = true
+		b = append(b, (line + strings.Repeat(" ", 80))[:80]...)
+	}
+	if open {
+		pad(" ")
+	}
+	return b
+}
