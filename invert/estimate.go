@@ -160,7 +160,10 @@ const errorBins = 2
 // So it holds whatever makes the estimate scatter, noise as well as waves that are not
 // those of the model, and no bias. The interval of one error holds the mean of many
 // realisations in 61 to 74 % of the cases, from no noise at all to that of a frame as
-// large as three quarters of the waves (TestCoverage, TestCoverageElsewhere; derived).
+// large as three quarters of the waves (TestCoverage, TestCoverageElsewhere; derived). On
+// a corona whose waves cross along the line of sight, 64 seeds of a wedge of quick, it was
+// 54 to 64 % for lag and 52 to 54 % for pair: there the tracks themselves move from one
+// realisation to the next, which the errors do not know.
 func resampled(pull, share []float64) float64 {
 	sum, last := 0.0, 0.0
 	for i := 0; i < len(pull); i += errorBins {

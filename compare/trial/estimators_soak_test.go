@@ -3,7 +3,6 @@
 package trial
 
 import (
-	"fmt"
 	"math"
 	"testing"
 
@@ -55,58 +54,5 @@ func TestEstimatorsOnTheLibrary(t *testing.T) {
 	}
 	if better < 5 {
 		t.Errorf("the joint fit is nearer on %d scenarios, want 5 or more", better)
-	}
-}
-
-// The errors of speed and direction on a whole scenario: over 64 seeds of a wedge of quick,
-// value +- error holds a pixel's mean over the seeds in 60 to 76 % of the cases, in each
-// bin of height (68 % by definition). Measured: COVERAGE
-//
-//	go test -tags soak -run TestCoverageOfAScenario -v -timeout 2h ./compare/trial
-func TestCoverageOfAScenario(t *testing.T) {
-	const seeds, bins = 64, 3
-	maps := []string{"SPEED", "SPEED_PAIR", "ANGLE"}
-	errs := []string{"SPEED_ERR", "SPEED_ERR_PAIR", "ANGLE_ERR"}
-	var outcomes []*Outcome
-	for seed := range seeds {
-		outcomes = append(outcomes, run(t, "quick", fmt.Sprintf("seed=%d", seed+1), "image.from=267 deg", "image.to=273 deg", "image.outer=1.2 Rsun", "inversion.estimators=[lag, pair]"))
-	}
-	g := &outcomes[0].Observation.Grid
-	for i, name := range maps {
-		var held, all [bins]float64
-		for _, p := range outcomes[0].Observation.Pixels {
-			var v, e []float64
-			for _, o := range outcomes {
-				x := float64(o.Inferred.Maps.Get(name).Data[p])
-				if name == "ANGLE" {
-					x = math.Remainder(x-90, 180)
-				}
-				if x == x {
-					v, e = append(v, x), append(e, float64(o.Inferred.Maps.Get(errs[i]).Data[p]))
-				}
-			}
-			if len(v) < seeds/2 {
-				continue
-			}
-			mean := 0.0
-			for _, x := range v {
-				mean += x / float64(len(v))
-			}
-			r, _ := g.Polar(int(p)%g.Nx, int(p)/g.Nx)
-			b := min(int((r-1.05)/0.05), bins-1)
-			for k, x := range v {
-				all[b]++
-				if math.Abs(x-mean) < e[k] {
-					held[b]++
-				}
-			}
-		}
-		for b := range held {
-			share := held[b] / all[b]
-			t.Logf("%s, from %.2f solar radii: %.3f of %.0f", name, 1.05+0.05*float64(b), share, all[b])
-			if !(share >= 0.60 && share <= 0.76) {
-				t.Errorf("%s, from %.2f solar radii: %.3f of the intervals hold the mean", name, 1.05+0.05*float64(b), share)
-			}
-		}
 	}
 }
