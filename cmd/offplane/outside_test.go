@@ -9,6 +9,7 @@ import (
 	"strings"
 	"testing"
 
+	"offplane/compare/table"
 	"offplane/synth/fits/fitstest"
 )
 
@@ -124,10 +125,13 @@ func TestReadmePythonOutside(t *testing.T) {
 		t.Fatal(err)
 	}
 	blocks := strings.Split(string(text), "```python\n")[1:]
-	if len(blocks) != 2 {
+	if len(blocks) != 3 {
 		t.Fatalf("%d blocks of Python", len(blocks))
 	}
 	dir := t.TempDir()
+	if code, _, stderr := offplane("table", "show", "--ecsv", filepath.Join(dir, "sky.ecsv")); code != 0 {
+		t.Fatal(stderr)
+	}
 	for _, b := range blocks {
 		b, _, _ = strings.Cut(b, "```")
 		fitstest.Python(t, "import os, sys\nos.chdir(sys.argv[1])\n"+b, dir)
@@ -176,5 +180,63 @@ for row, path in zip(index, sorted(glob.glob(d + "/members/*/member.fits"))):
     t = QTable.read(path, hdu="PIXELS")
     assert t["B"].unit == u.G and t["NE_SKY"].unit == u.cm**-3 and t["SPEED"].unit == u.km / u.s and t["R"].unit == u.R_sun
     assert np.isfinite(t["B"].value).sum() == row["valid"]
+`, dir)
+}
+
+// The Python of the README gives the factors of table apply, with the same domain, and the
+// corrected maps are clean.
+func TestTableOutside(t *testing.T) {
+	text, err := os.ReadFile("../../README.md")
+	if err != nil {
+		t.Fatal(err)
+	}
+	_, block, _ := strings.Cut(string(text), "def factor(")
+	block, _, _ = strings.Cut("import numpy as np\nfrom astropy.table import QTable\nfrom scipy.interpolate import RegularGridInterpolator\ndef factor("+block, "print(")
+	dir := t.TempDir()
+	field, density := writePublished(t, dir, true)
+	out := filepath.Join(dir, "out")
+	for _, args := range [][]string{
+		{"table", "show", "sky", "--ecsv", filepath.Join(dir, "sky.ecsv")},
+		{"table", "apply", field, "--density", density, "--recipe", "as-table", "--recipe", "pixel=4.35", "-o", out},
+	} {
+		if code, _, stderr := offplane(args...); code != 0 {
+			t.Fatalf("exit %d: %s", code, stderr)
+		}
+	}
+	tab, err := table.Open("sky")
+	if err != nil {
+		t.Fatal(err)
+	}
+	if err := tab.WriteFITS(filepath.Join(dir, "sky.fits")); err != nil {
+		t.Fatal(err)
+	}
+	fitstest.Verify(t, filepath.Join(dir, "sky.fits"), filepath.Join(out, "corrected.fits"))
+	fitstest.Python(t, fitstest.Strict+block+`
+import astropy.units as u
+d = sys.argv[1]
+a, b = QTable.read(d + "/sky.ecsv"), QTable.read(d + "/sky.fits", hdu="TABLE")
+assert a["height"].unit == b["height"].unit == u.solRad and a["field"].unit == b["field"].unit == u.G and a["density"].unit == b["density"].unit == u.cm**-3
+assert a.colnames == b.colnames and len(a) == len(b)
+for c in a.colnames:
+    x, y = np.asarray(a[c]), np.asarray(b[c])
+    assert np.array_equal(x, y, equal_nan=True) if x.dtype.kind == "f" else (x == y).all(), c
+with fits.open(d + "/out/corrected.fits", checksum=True) as f, fits.open(d + "/field.fits") as g, fits.open(d + "/density.fits") as h:
+    w, wn = WCS(g[1].header), WCS(h[1].header)
+    iy, ix = np.mgrid[:30, :40]
+    lon, lat = w.pixel_to_world_values(ix, iy)
+    lon, lat = np.radians(lon), np.radians(lat)
+    height = np.tan(np.arccos(np.cos(lat) * np.cos(lon))) * 1.495978707e11 / 6.957e8
+    jx, jy = np.rint(wn.world_to_pixel_values(np.degrees(lon), np.degrees(lat))).astype(int)
+    have = dict(height=height, field=np.float64(g[1].data) * 1e4, density=np.float64(h[1].data)[jy, jx] * 1e-6)
+    got, want = f["FACTOR"].data, factor(d + "/sky.ecsv", "field", **have)
+    assert np.isfinite(got).sum() > 300, np.isfinite(got).sum()
+    assert (np.isfinite(got) == np.isfinite(want)).all()
+    assert (np.isfinite(got) == (f["FLAG"].data & ~16 == 0)).all()
+    assert np.nanmax(np.abs(np.log(got / want))) < 1e-6, np.nanmax(np.abs(np.log(got / want)))
+    low = factor(d + "/sky.ecsv", "field", "ln_low68", **have)
+    assert np.nanmax(np.abs(np.log(f["B_LOW68"].data / g[1].data / low))) < 1e-6
+    assert f["B"].header["BUNIT"] == "T"
+for m in sunpy.map.Map(d + "/out/corrected.fits"):
+    m.pixel_to_world(0 * u.pix, 0 * u.pix)
 `, dir)
 }

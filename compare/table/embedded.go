@@ -1,0 +1,55 @@
+package table
+
+import (
+	"embed"
+	"fmt"
+	"io/fs"
+	"os"
+	"slices"
+	"strings"
+)
+
+// shipped holds a folder a table, with table.ecsv and coverage.ecsv of table build.
+//
+//go:embed shipped
+var shipped embed.FS
+
+// DefaultName is the name of the table that is used if none is named.
+const DefaultName = "sky"
+
+// Names lists the embedded tables.
+func Names() []string {
+	list, err := fs.ReadDir(shipped, "shipped")
+	if err != nil {
+		panic("table: " + err.Error())
+	}
+	var names []string
+	for _, e := range list {
+		names = append(names, e.Name())
+	}
+	return names
+}
+
+// Source returns the text of an embedded table.
+func Source(name string) ([]byte, error) {
+	if !slices.Contains(Names(), name) {
+		return nil, fmt.Errorf("no embedded table %q: there are %s", name, strings.Join(Names(), ", "))
+	}
+	return shipped.ReadFile("shipped/" + name + "/table.ecsv")
+}
+
+// Open reads a table by the name of an embedded one or from a file.
+func Open(nameOrPath string) (*Table, error) {
+	if slices.Contains(Names(), nameOrPath) {
+		text, err := Source(nameOrPath)
+		if err != nil {
+			return nil, err
+		}
+		return parse(text)
+	}
+	t, err := Read(nameOrPath)
+	if os.IsNotExist(err) {
+		return nil, fmt.Errorf("%s: no such file, and no embedded table of that name (there are %s)", nameOrPath, strings.Join(Names(), ", "))
+	}
+	return t, err
+}
