@@ -211,7 +211,8 @@ func (s *islander) without(p, g int) island {
 // Half a spectrum is more coherent by chance, and islands grow by jumps: halves differ by
 // more than their share. angleScale takes that back, for noise from none to half of the
 // waves and waves 5 to 12 Mm wide (see TestCoverage; own simulations). Six parts would
-// overdo it by 1.4 to 1.6, three by 1.05 to 1.4.
+// overdo it by 1.4 to 1.6, three by 1.05 to 1.4. Over 20 seeds of a wedge of quick, value
+// +- error held the mean in 65, 89 and 78 % of the cases in three bins of height.
 const (
 	angleParts   = 2
 	angleScale   = 0.8
