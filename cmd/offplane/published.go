@@ -6,6 +6,7 @@ import (
 	"slices"
 	"strings"
 
+	"offplane/compare"
 	"offplane/compare/ensemble"
 	"offplane/compare/table"
 	"offplane/scenarios/units"
@@ -15,21 +16,16 @@ import (
 
 // A published map is an image by anyone, with its place on the sky.
 type published struct {
-	path, ext string
-	grid      obs.Grid
-	values    []float64 // in the unit of scale 1
-	unit      string    // as in the file
-	scale     float64   // from the file's unit
-	header    fits.Header
+	*obs.Image
+	path   string
+	values []float64 // in G, km/s, cm-3, deg
+	unit   string    // to be written
+	scale  float64   // from unit to that of values
 }
 
-// unitScales are the units of maps that are understood, and their factors.
-var unitScales = map[table.Feature]map[string]float64{
-	table.Field:   {"G": 1, "Gauss": 1, "gauss": 1, "mG": 1e-3, "T": 1e4, "mT": 10, "uT": 1e-2, "nT": 1e-5},
-	table.Density: {"cm-3": 1, "cm**-3": 1, "cm^-3": 1, "cm^(-3)": 1, "1/cm3": 1, "1/cm**3": 1, "m-3": 1e-6, "m**-3": 1e-6, "m^-3": 1e-6, "1/m3": 1e-6},
-	table.Speed:   {"km/s": 1, "kms-1": 1, "kms**-1": 1, "m/s": 1e-3, "ms-1": 1e-3, "ms**-1": 1e-3, "Mm/s": 1e3, "cm/s": 1e-5},
-	table.Angle:   {"deg": 1, "rad": 180 / math.Pi},
-}
+// standardNames are the maps whose units are understood; a feature without one is a pure
+// number.
+var standardNames = map[table.Feature]string{table.Field: "B", table.Speed: "SPEED", table.Density: "NE", table.Angle: "ANGLE"}
 
 // splitExtension splits FILE[EXT].
 func splitExtension(s string) (file, ext string) {
@@ -40,84 +36,74 @@ func splitExtension(s string) (file, ext string) {
 }
 
 // readPublished reads a map; its unit must be one of a feature among wanted, which is
-// returned. A feature that is a pure number takes any map without a unit.
+// returned.
 func readPublished(name string, wanted ...table.Feature) (*published, table.Feature, error) {
-	m := &published{}
-	m.path, m.ext = splitExtension(name)
-	f, err := fits.Open(m.path)
+	path, ext := splitExtension(name)
+	im, err := obs.ReadImage(path, ext)
 	if err != nil {
 		return nil, 0, err
 	}
-	defer f.Close()
-	h, err := f.FindImage(m.ext)
-	if err != nil {
-		return nil, 0, err
-	}
-	m.header, m.ext = h.Header, h.Name
-	g, image, err := obs.ReadMap(m.path, h.Name)
-	if err != nil {
-		return nil, 0, fmt.Errorf("%w; the place of the pixels on the sky is not known", err)
-	}
-	m.grid, m.unit = g, strings.TrimSpace(image.Unit)
-	key := strings.ReplaceAll(m.unit, " ", "")
-	for _, f := range wanted {
-		scale, ok := unitScales[f][key]
-		if unitScales[f] == nil && key == "" {
-			scale, ok = 1, true
-		}
-		if !ok {
-			continue
-		}
-		m.scale = scale
-		for _, v := range image.Floats() {
-			m.values = append(m.values, scale*float64(v))
-		}
-		return m, f, nil
-	}
+	m := &published{Image: im, path: path}
 	var want []string
 	for _, f := range wanted {
+		if m.take(f) {
+			return m, f, nil
+		}
 		want = append(want, fmt.Sprintf("%s in %s", f, unitsOf(f)))
 	}
-	return nil, 0, fmt.Errorf("%s: BUNIT is %q: want a map of the %s", name, m.unit, strings.Join(want, ", or of the "))
+	return nil, 0, fmt.Errorf("%s: BUNIT is %q: want a map of the %s", name, im.Unit, strings.Join(want, ", or of the "))
+}
+
+// take reads the values as those of a feature, if the unit is one of it.
+func (m *published) take(f table.Feature) bool {
+	raw := m.Floats()
+	data := obs.Map{Unit: m.Unit, Data: raw}
+	m.unit, m.scale = strings.TrimSpace(m.Unit), 1
+	if name, ok := standardNames[f]; ok {
+		// What becomes of one and two tells the factor, and whether there is but a factor.
+		probe := obs.Map{Unit: m.Unit, Data: []float32{1, 2}}
+		if compare.Standardise(name, &data) != nil || compare.Standardise(name, &probe) != nil {
+			return false
+		}
+		if m.scale = float64(probe.Data[0]); probe.Data[1] != 2*probe.Data[0] { // a logarithm
+			m.unit, m.scale = data.Unit, 1
+		}
+	} else if m.unit != "" {
+		return false
+	}
+	m.values = make([]float64, len(raw))
+	for i := range m.values {
+		m.values[i] = m.scale * float64(raw[i])
+		if m.unit == data.Unit {
+			m.values[i] = float64(data.Data[i])
+		}
+	}
+	return true
 }
 
 func unitsOf(f table.Feature) string {
 	switch f {
 	case table.Field:
-		return "G, mG, T, mT, uT or nT"
+		return "G, T, mT"
 	case table.Density:
-		return "cm-3 or m-3"
+		return "cm-3, m-3"
 	case table.Speed:
-		return "km/s, m/s or Mm/s"
+		return "km/s, m/s"
 	case table.Angle:
-		return "deg or rad"
+		return "deg, rad"
 	}
 	return "no unit"
 }
 
-// heights returns the projected distances of the pixels [solar radii] and their position
-// angles [deg].
-func (m *published) heights() (r, pa []float64) {
-	n := m.grid.Nx * m.grid.Ny
-	r, pa = make([]float64, n), make([]float64, n)
-	for i := range r {
-		r[i], pa[i] = m.grid.Polar(i%m.grid.Nx, i/m.grid.Nx)
-	}
-	return r, pa
-}
-
-// on returns the values of the map at the pixels of another grid: those of the nearest
+// on returns the values of the map at the pixels of another image: those of the nearest
 // pixel, so that values which do not average, such as angles, may be used; NaN beyond.
-func (m *published) on(g *obs.Grid) []float64 {
-	out := make([]float64, g.Nx*g.Ny)
-	h := *g
-	h.Distance = m.grid.Distance // maps agree in angle, whatever distance a header says
-	for i := range out {
-		px, py := m.grid.PixelAt(h.Sky(i%g.Nx, i/g.Nx))
-		x, y := int(math.Round(px)), int(math.Round(py))
+func (m *published) on(other *published) []float64 {
+	near := m.Nearest(other.Image)
+	out := make([]float64, len(near))
+	for i, k := range near {
 		out[i] = math.NaN()
-		if x >= 0 && x < m.grid.Nx && y >= 0 && y < m.grid.Ny {
-			out[i] = m.values[y*m.grid.Nx+x]
+		if k >= 0 {
+			out[i] = m.values[k]
 		}
 	}
 	return out
@@ -126,7 +112,7 @@ func (m *published) on(g *obs.Grid) []float64 {
 // recipe returns what the file says of how the map was made: the inversion that maps of
 // this program carry, and the pixel.
 func (m *published) recipe() (table.Recipe, error) {
-	pixel := fmt.Sprintf("pixel=%.6g", m.grid.Pixel)
+	pixel := fmt.Sprintf("pixel=%.6g", m.Pixel())
 	v, ok, err := readInversion(m.path)
 	if err != nil {
 		return nil, err
@@ -134,8 +120,8 @@ func (m *published) recipe() (table.Recipe, error) {
 	if !ok || len(v.Estimators) == 0 {
 		return table.Recipe(nil).With(pixel)
 	}
-	r := ensemble.Recipe{Inversion: v, Pixel: units.SkyAngle(m.grid.Pixel)}
-	if k := slices.IndexFunc(v.Estimators, func(e string) bool { return strings.HasSuffix(m.ext, "_"+strings.ToUpper(e)) }); k > 0 {
+	r := ensemble.Recipe{Inversion: v, Pixel: units.SkyAngle(m.Pixel())}
+	if k := slices.IndexFunc(v.Estimators, func(e string) bool { return strings.HasSuffix(m.Name, "_"+strings.ToUpper(e)) }); k > 0 {
 		r.Inversion.Estimators = v.Estimators[k:]
 	}
 	f, err := fits.Open(m.path)
@@ -161,7 +147,7 @@ var skyCards = []string{"WCSNAME", "LONPOLE", "LATPOLE", "CROTA2", "RADESYS", "I
 func (m *published) sky() fits.Header {
 	var out fits.Header
 	out.Set("WCSAXES", 2, "")
-	for _, c := range m.header {
+	for _, c := range m.Header() {
 		axis := false
 		for _, stem := range []string{"CTYPE", "CUNIT", "CRVAL", "CDELT", "CRPIX"} {
 			axis = axis || c.Key == stem+"1" || c.Key == stem+"2"

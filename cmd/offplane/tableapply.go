@@ -36,7 +36,7 @@ func (p *program) tableApply() *cobra.Command {
 		Short: "Correct a published map",
 		Long: `table apply corrects a map of the coronal field, or of the phase speed or the density:
 which, its unit tells. The map may be any FITS image with a helioprojective WCS, rotated
-or on any grid of square pixels. Other maps of the same observation (--field, --density,
+or on any grid. Other maps of the same observation (--field, --density,
 --speed, --angle, --track, --coherence; each may be on a grid of its own, the nearest pixel counts)
 narrow the correction; what is missing is answered by a coarser table, which is said.
 From an inferred.fits of this program B is taken, and the other maps with it.
@@ -84,7 +84,9 @@ func (p *program) apply(ctx context.Context, w *work, a *application, name strin
 	}
 	inputs := []string{m.path}
 	var pa []float64
-	in.Features[table.Height], pa = m.heights()
+	if in.Features[table.Height], pa, err = m.Polar(); err != nil {
+		return misuse(err)
+	}
 	for i, c := range companions {
 		if a.maps[i] == "" {
 			continue
@@ -94,7 +96,7 @@ func (p *program) apply(ctx context.Context, w *work, a *application, name strin
 			return misusef("--%s: %w", c, err)
 		}
 		inputs = append(inputs, q.path)
-		in.Features[c] = q.on(&m.grid)
+		in.Features[c] = q.on(m)
 		if c == table.Angle {
 			if err := toRadial(in.Features[c], pa, a.from); err != nil {
 				return misuse(err)
@@ -247,7 +249,8 @@ func writeCorrected(path string, m *published, kind table.Feature, t *table.Tabl
 		return err
 	}
 	defer w.Abort()
-	axes := [2]int{m.grid.Nx, m.grid.Ny}
+	nx, ny := m.Size()
+	axes := [2]int{nx, ny}
 	add := func(name, unit, about string, data any, cards fits.Header) error {
 		var h fits.Header
 		if unit != "" {
