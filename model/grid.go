@@ -117,8 +117,7 @@ func ReadGrid(path string) (*Grid, error) {
 
 func (g *Grid) readImages(f *fits.File, path string) error {
 	np, nt, nr := len(g.phi), len(g.theta), len(g.r)
-	g.node = make([][gridValues]float32, nr*nt*np)
-	plane := make([]float32, nt*np)
+	var plane []float32
 	for v, want := range gridImages {
 		c, err := f.Cube(want.name)
 		if err != nil {
@@ -126,6 +125,9 @@ func (g *Grid) readImages(f *fits.File, path string) error {
 		}
 		if len(c.Axes) != 3 || c.Axes[0] != np || c.Axes[1] != nt || c.Axes[2] != nr {
 			return fmt.Errorf("%s: %s has the axes %v, but PHI, THETA and R have %d, %d and %d nodes", path, want.name, c.Axes, np, nt, nr)
+		}
+		if v == 0 { // not before the file is known to hold as many pixels
+			g.node, plane = make([][gridValues]float32, nr*nt*np), make([]float32, nt*np)
 		}
 		if u, ok := c.Header.Text("BUNIT"); ok && u != want.unit {
 			return fmt.Errorf("%s: %s is in %s; write it in %s", path, want.name, u, want.unit)

@@ -1,20 +1,20 @@
 package main
 
 import (
-	"bytes"
 	"os"
 	"path/filepath"
-	"strconv"
 	"strings"
 	"testing"
 
 	"github.com/google/go-cmp/cmp"
 	"github.com/rogpeppe/go-internal/txtar"
+
+	"offplane/synth/fits/fitstest"
 )
 
 // TestBadInput reads the broken files of testdata/bad: each archive begins with the
 // command that reads them, in place of FILE, and holds pairs of a file and what is said
-// of it. Files *.cards are headers of FITS files, see fitsOf; those whose name begins
+// of it. Files *.cards are headers of FITS files, see fitstest.File; those whose name begins
 // with "ok" are material for the command line.
 func TestBadInput(t *testing.T) {
 	archives, err := filepath.Glob("testdata/bad/*.txtar")
@@ -48,7 +48,7 @@ func tryBad(t *testing.T, a *txtar.Archive) (count int) {
 			continue
 		}
 		if is, ok := strings.CutSuffix(name, ".cards"); ok {
-			name, data = is+".fits", fitsOf(string(data))
+			name, data = is+".fits", fitstest.File(string(data))
 		}
 		if err := os.WriteFile(name, data, 0o666); err != nil {
 			t.Fatal(err)
@@ -77,45 +77,4 @@ func tryBad(t *testing.T, a *txtar.Archive) (count int) {
 		})
 	}
 	return len(names)
-}
-
-// fitsOf makes a FITS file of its cards, a line each. An empty line ends a header; a line
-// @N adds N bytes of zeros up to a whole block, @N! as many and no more.
-func fitsOf(cards string) []byte {
-	var b []byte
-	pad := func(with string) {
-		for len(b)%2880 != 0 {
-			b = append(b, with...)
-		}
-	}
-	end := func() {
-		b = append(b, "END"+strings.Repeat(" ", 77)...)
-		pad(" ")
-	}
-	open := false
-	for line := range strings.Lines(cards) {
-		line = strings.TrimSuffix(line, "\n")
-		if count, ok := strings.CutPrefix(line, "@"); ok {
-			count, short := strings.CutSuffix(count, "!")
-			n, err := strconv.Atoi(count)
-			if err != nil {
-				panic("offplane: " + line)
-			}
-			if b = append(b, bytes.Repeat([]byte{0}, n)...); !short {
-				pad("\x00")
-			}
-			continue
-		}
-		if line == "" {
-			end()
-			open = false
-			continue
-		}
-		open = true
-		b = append(b, (line + strings.Repeat(" ", 80))[:80]...)
-	}
-	if open {
-		pad(" ")
-	}
-	return b
 }

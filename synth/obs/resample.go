@@ -119,7 +119,7 @@ func (m *Image) Grid() (Grid, error) {
 		edge(0, float64(j))
 		edge(float64(p.nx-1), float64(j))
 	}
-	const most = 1 << 15
+	const most = 1 << 13
 	w, t := math.Ceil(hi[0]-lo[0])+1, math.Ceil(hi[1]-lo[1])+1
 	if !(w <= most && t <= most) {
 		return Grid{}, fmt.Errorf("%s: does not fit into %d x %d pixels of %.3g arcsec around the Sun", m.where, most, most, p.size()/Arcsec)
