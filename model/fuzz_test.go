@@ -59,10 +59,30 @@ func FuzzGrid(f *testing.F) {
 	})
 }
 
-// smallGrid is the file of a dipole's grid of 3 x 3 x 4 nodes.
+// smallGrid is the file of a grid of 3 x 3 x 4 nodes with ones everywhere.
 func smallGrid(f *testing.F) []byte {
 	path := filepath.Join(f.TempDir(), "grid.fits")
-	if err := spatial(f, smooth(f)).WriteGrid(path, []float64{1, 1.5, 2}, []float64{0, 90, 180}, []float64{0, 90, 180, 270}); err != nil {
+	w, err := fits.Create(path, nil)
+	if err != nil {
+		f.Fatal(err)
+	}
+	defer w.Abort()
+	for name, nodes := range map[string][]float64{"R": {1, 1.5, 2}, "THETA": {0, 90, 180}, "PHI": {0, 90, 180, 270}} {
+		err = errors.Join(err, w.AddTable(fits.Table{Name: name, Columns: []fits.Column{{Name: name, Data: nodes}}}))
+	}
+	for _, image := range gridImages {
+		c, err := w.Cube(image.name, nil, 4, 3, 3)
+		if err != nil {
+			f.Fatal(err)
+		}
+		for range 3 {
+			err = errors.Join(err, c.WritePlane([]float32{1, 1, 1, 1, 1, 1, 1, 1, 1, 1, 1, 1}))
+		}
+		if err != nil {
+			f.Fatal(err)
+		}
+	}
+	if err := errors.Join(err, w.Close()); err != nil {
 		f.Fatal(err)
 	}
 	raw, err := os.ReadFile(path)

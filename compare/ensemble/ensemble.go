@@ -132,11 +132,7 @@ func Parse(source string, text []byte) (*Loaded, error) {
 		l.Name = strings.TrimSuffix(l.Name, filepath.Ext(l.Name))
 	}
 	l.Ensemble = Ensemble{Seed: 1, Design: "latin-hypercube", Set: []string{}}
-	at, err := strict.Read(source, text, &l.Ensemble)
-	v := validation{l: l, at: at}
-	v.problems, _ = err.(strict.Problems)
-	v.count()
-	v.parameters()
+	v := l.read(source, text)
 	if len(v.problems) == 0 {
 		v.base(source)
 	}
@@ -146,6 +142,16 @@ func Parse(source string, text []byte) (*Loaded, error) {
 	l.BaseSHA256 = l.base.SHA256
 	l.seal(strict.Encode(l.Ensemble))
 	return l, nil
+}
+
+// read reads the text over what stands in l and checks all but the base.
+func (l *Loaded) read(source string, text []byte) *validation {
+	at, err := strict.Read(source, text, &l.Ensemble)
+	v := &validation{l: l, at: at}
+	v.problems, _ = err.(strict.Problems)
+	v.count()
+	v.parameters()
+	return v
 }
 
 // seal fills in what follows from the resolved text.
@@ -158,7 +164,7 @@ func (l *Loaded) seal(canonical []byte) {
 // parseResolved reads what Canonical was; the base is not needed.
 func parseResolved(path string, text []byte) (*Loaded, error) {
 	l := &Loaded{Name: filepath.Base(filepath.Dir(path))}
-	if err := strict.Decode(path, text, &l.Ensemble); err != nil {
+	if err := l.read(path, text).problems.Err(); err != nil {
 		return nil, err
 	}
 	l.seal(text)
