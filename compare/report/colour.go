@@ -109,3 +109,38 @@ func fromLab(l, a, b float64) (c color.RGBA, inside bool) {
 		0xff,
 	}, inside
 }
+
+// cyclic returns to its beginning, for angles: an ellipse in CIE 1976 L*a*b*, light at 0
+// and 180 deg, dark at 90, blue on the way there and red on the way back.
+var cyclic = func() (t table) {
+	for i := range t {
+		s, c := math.Sincos(2 * math.Pi * float64(i) / 256)
+		hue := divergingLow
+		if s < 0 {
+			hue = divergingHigh
+		}
+		sin, cos := math.Sincos(hue * math.Pi / 180)
+		t[i], _ = fromLab(60+28*c, 38*math.Abs(s)*cos, 38*math.Abs(s)*sin)
+	}
+	return t
+}()
+
+// Colours names a colour table.
+type Colours int
+
+// Colour tables.
+const (
+	Sequential Colours = iota // of quantities
+	Diverging                 // of what departs from a middle
+	Cyclic                    // of angles
+)
+
+// ColourTable returns 256 colours, three bytes each: red, green, blue.
+func ColourTable(c Colours) []byte {
+	t := [...]*table{&viridis, &diverging, &cyclic}[c]
+	b := make([]byte, 0, 3*len(t))
+	for _, k := range t {
+		b = append(b, k.R, k.G, k.B)
+	}
+	return b
+}
