@@ -115,7 +115,7 @@ function values(p) {
 function plots(p, chosen) {
   const root = $("plots"), c = p.curves, s = c.line_of_sight;
   root.replaceChildren();
-  const x = "distance from the plane of the sky, toward the observer [R☉]";
+  const x = "from the plane of the sky to the observer [R☉]";
   const keep = near(s);
   const cut = a => a.filter((_, i) => keep[i]);
   const X = cut(s.x_rsun);
@@ -136,7 +136,7 @@ function plots(p, chosen) {
   const speed = (p.estimators.find(e => e.name === chosen) || p.estimators[0]).speed_km_s;
   timeDistance(root, c.time_distance, speed, p.truth.speed_wave_km_s);
   kOmega(root, c.k_omega, speed, p.truth.speed_wave_km_s);
-  lags(root, c.lags.find(l => l.name === chosen) || c.lags[0], p.truth.speed_wave_km_s);
+  lags(root, c.lags.find(l => l.name === chosen) || c.lags[0], speed, p.truth.speed_wave_km_s);
 }
 
 // near marks the samples that hold all but a little of light and waves.
@@ -282,11 +282,13 @@ function kOmega(root, k, speed, truth) {
 }
 
 // lags shows lags with their line; of a fit of both waves what it explains at each speed.
-function lags(root, l, truth) {
+function lags(root, l, speed, truth) {
   if (!l) return;
   if (l.explained && l.explained.length) {
     const keep = l.speeds_km_s.map(v => v <= 4 * (truth || 1000)), cut = a => a.filter((_, i) => keep[i]);
-    curves(root, `Estimator ${l.name}: share of the power that it explains`, cut(l.speeds_km_s), [["share", cut(l.explained), blue]], "phase speed [km/s]", "share");
+    const x = cut(l.speeds_km_s), y = cut(l.explained);
+    const at = v => x.map((u, i) => v && Math.abs(u - v) === Math.min(...x.map(q => Math.abs(q - v))) ? y[i] : null);
+    curves(root, `Estimator ${l.name}: share of the power that it explains`, x, [["share", y, blue], ["measured", at(speed), ink, "points"], ["true (waves)", at(truth), purple, "points"]], "phase speed [km/s]", "share");
     return;
   }
   if (!l.lag_s || l.lag_s.length < 2) {
