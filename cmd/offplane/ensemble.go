@@ -132,7 +132,7 @@ func (p *program) runEnsemble(ctx context.Context, l *ensemble.Loaded, m *member
 	if err := m.prepare(l); err != nil {
 		return err
 	}
-	bar := newProgress(p.stderr, m.quiet)
+	bar := newProgress(p.stderr, m.quiet, m.progress)
 	defer bar.wipe()
 	s := ensemble.Settings{Workers: m.workers, Version: version().Version, RetryFailed: m.retry, Progress: bar.stageFunc("members")}
 	if err := ensemble.Run(ctx, l, m.out, numbers, s); err != nil {

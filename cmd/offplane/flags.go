@@ -12,11 +12,12 @@ import (
 
 // work holds the flags of commands that fill a folder.
 type work struct {
-	out     string
-	workers int
-	quiet   bool
-	json    bool
-	force   bool
+	out      string
+	workers  int
+	quiet    bool
+	json     bool
+	force    bool
+	progress progressKind
 }
 
 func (w *work) flags(cmd *cobra.Command) {
@@ -25,6 +26,7 @@ func (w *work) flags(cmd *cobra.Command) {
 	f.IntVar(&w.workers, "workers", 0, "cores to use; 0: all. Results do not depend on it")
 	f.BoolVar(&w.quiet, "quiet", false, "no progress, and no results on standard output but with --json")
 	f.BoolVar(&w.json, "json", false, "results on standard output as one JSON document")
+	f.Var(&w.progress, "progress", "progress on standard error: auto (a bar on a terminal, elsewhere a line a minute), json (a document a line, for programs) or none")
 	f.BoolVar(&w.force, "force", false, "write over what is in the folder")
 }
 
@@ -40,7 +42,7 @@ func (p *program) start(w *work, j job) (*folder, *record, *progress, error) {
 	if err != nil {
 		return nil, nil, nil, err
 	}
-	return f, newRecord(j.Command, p.args, w.out, parallel.Workers(w.workers)), newProgress(p.stderr, w.quiet), nil
+	return f, newRecord(j.Command, p.args, w.out, parallel.Workers(w.workers)), newProgress(p.stderr, w.quiet, w.progress), nil
 }
 
 // choice holds the flags that change a scenario.
