@@ -295,6 +295,9 @@ func TestRegion(t *testing.T) {
 		Ratios compare.Ratios
 		Angle  *stat.Summary `json:"angle_error_deg"`
 	}
+	same := func(a, b *stat.Summary) bool { // but for the interval, which depends on edges
+		return a.Median == b.Median && a.P16 == b.P16 && a.P97_5 == b.P97_5 && a.Count == b.Count
+	}
 	region := func(query string) (a answer) {
 		t.Helper()
 		if err := json.Unmarshal(s.get(t, "data/region?"+query), &a); err != nil {
@@ -307,13 +310,13 @@ func TestRegion(t *testing.T) {
 		t.Fatal(err)
 	}
 	all := region("r0=1&r1=2&pa0=0&pa1=360")
-	if all.Pixels != v.Summary.Pixels || *all.Ratios.Field.Wave != *v.Summary.Ratios.Field.Wave || *all.Angle != *v.Summary.AngleError {
-		t.Errorf("the whole field: %+v, want %+v", all, v.Summary)
+	if all.Pixels != v.Summary.Pixels || !same(all.Ratios.Field.Wave, v.Summary.Ratios.Field.Wave) || !same(all.Angle, v.Summary.AngleError) {
+		t.Errorf("the whole field: %+v %+v, want %+v", all.Pixels, all.Ratios.Field.Wave, v.Summary.Ratios.Field.Wave)
 	}
 	h := v.Summary.Heights[1]
 	bin := region("r0=1.17&r1=1.25&pa0=0&pa1=360")
-	if bin.Pixels.Total != h.Total || *bin.Ratios.Field.Sky != *h.Ratios.Field.Sky || *bin.Ratios.Density.Emission != *h.Ratios.Density.Emission {
-		t.Errorf("a height bin: %+v, want %+v", bin, h)
+	if bin.Pixels.Total != h.Total || !same(bin.Ratios.Field.Sky, h.Ratios.Field.Sky) || !same(bin.Ratios.Density.Emission, h.Ratios.Density.Emission) {
+		t.Errorf("a height bin: %+v %+v, want %+v", bin.Pixels, bin.Ratios.Field.Sky, h.Ratios.Field.Sky)
 	}
 	// A sector through north holds what is left of the field beside its complement.
 	in, out := region("r0=1&r1=2&pa0=300&pa1=75"), region("r0=1&r1=2&pa0=75&pa1=300")
