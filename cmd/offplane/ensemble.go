@@ -189,7 +189,7 @@ func (m *members) prepare(l *ensemble.Loaded) error {
 	case errors.Is(err, ensemble.ErrOther):
 		return misusef("%w: choose another folder, or write over it with --force", err)
 	case err != nil:
-		return misuse(err)
+		return unmade(err)
 	case m.part || m.retry:
 		return nil
 	case exists(filepath.Join(m.out, recordName)):

@@ -11,6 +11,7 @@ import (
 	"io/fs"
 	"os"
 	"path/filepath"
+	"syscall"
 )
 
 // Names in a folder of results. A folder is complete when the record stands, which is
@@ -60,13 +61,22 @@ func (p *program) open(dir string, j job, force bool) (*folder, error) {
 	_, err := os.Stat(dir)
 	f.made = errors.Is(err, fs.ErrNotExist)
 	if err := os.MkdirAll(dir, 0o777); err != nil {
-		return nil, misuse(err)
+		return nil, unmade(err)
 	}
 	if err := f.claim(force); err != nil {
 		f.abandon()
 		return nil, err
 	}
 	return f, nil
+}
+
+// unmade is the error of a folder that cannot be made: a file in its place is misuse, a
+// disk that takes nothing a failure.
+func unmade(err error) error {
+	if errors.Is(err, syscall.ENOTDIR) || errors.Is(err, fs.ErrExist) {
+		return misuse(err)
+	}
+	return err
 }
 
 func (f *folder) claim(force bool) error {
@@ -133,7 +143,7 @@ func (f *folder) lock() error {
 	for {
 		m, err := os.OpenFile(f.path(markerName), os.O_RDWR|os.O_CREATE, 0o666)
 		if err != nil {
-			return misuse(err)
+			return unmade(err)
 		}
 		switch err := lock(m); {
 		case errors.Is(err, errHeld):

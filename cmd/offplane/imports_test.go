@@ -112,3 +112,19 @@ func TestLibrariesHaveOneImporter(t *testing.T) {
 		}
 	}
 }
+
+// Nothing talks to a network but the viewer, on loopback.
+func TestNoNetworkImports(t *testing.T) {
+	out, err := exec.Command("go", "list", "-f", `{{.ImportPath}}:{{range .Imports}} {{.}}{{end}}`, "offplane/...").Output()
+	if err != nil {
+		t.Fatal(err)
+	}
+	for _, l := range strings.Split(string(out), "\n") {
+		path, list, _ := strings.Cut(l, ":")
+		for _, i := range strings.Fields(list) {
+			if (i == "net" || strings.HasPrefix(i, "net/") && i != "net/url" && i != "net/netip") && path != "offplane/cmd/offplane/view" {
+				t.Errorf("%s imports %s; only cmd/offplane/view may", path, i)
+			}
+		}
+	}
+}

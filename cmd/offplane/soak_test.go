@@ -1,0 +1,8 @@
+//go:build soak
+
+package main
+
+import "testing"
+
+// TestKillsSoak: 200 kills of each command; .ci/soak.
+func TestKillsSoak(t *testing.T) { tryKills(t, 200) }
