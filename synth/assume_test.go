@@ -11,7 +11,7 @@ import (
 
 func expose(t *testing.T, as Assume, set ...string) *Exposed {
 	t.Helper()
-	all := append([]string{"image.from=269 deg", "image.to=271 deg", "image.outer=1.1 Rsun", "camera.duration=10 min", "camera.second_line=4", "camera.noise=true"}, set...)
+	all := append([]string{"image.from=269 deg", "image.to=271 deg", "image.outer=1.1 Rsun", "camera.duration=12 min", "camera.second_line=4", "camera.noise=true"}, set...)
 	s, light := load(t, "plane-wave", all...)
 	c, err := NewSceneAs(context.Background(), s, light, 1, as)
 	if err != nil {
@@ -95,7 +95,7 @@ func TestPiece(t *testing.T) {
 			n := c.Frames / 2
 			for f, e := range p.LineExposures(l + 1) {
 				whole := o.LineExposures(l + 1)[k*n+f]
-				if e.Frame != f || e.Time != whole.Time-float64(k)*300 {
+				if e.Frame != f || e.Time != whole.Time-float64(k)*360 {
 					t.Errorf("piece %d, line %d, frame %d is logged as frame %d at %g s", k, l+1, f, e.Frame, e.Time)
 				}
 			}
@@ -105,7 +105,7 @@ func TestPiece(t *testing.T) {
 				}
 			}
 		}
-		if p.Grid.Duration != 300 || p.Mean[0][0][0] == o.Mean[0][0][0] {
+		if p.Grid.Duration != 360 || p.Mean[0][0][0] == o.Mean[0][0][0] {
 			t.Errorf("piece %d: duration %g s, means of the whole", k, p.Grid.Duration)
 		}
 	}
