@@ -94,13 +94,6 @@ func TestPlaneWave(t *testing.T) {
 	}
 }
 
-// w is the integral of cos^n over (-pi/2, pi/2).
-func w(n float64) float64 {
-	a, _ := math.Lgamma((n + 1) / 2)
-	b, _ := math.Lgamma(n/2 + 1)
-	return math.Sqrt(math.Pi) * math.Exp(a-b)
-}
-
 var wedge = []string{"image.from=250 deg", "image.to=290 deg"}
 
 // Spherical corona, real line: density against an independent high-order quadrature of
