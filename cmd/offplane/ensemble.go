@@ -45,9 +45,10 @@ func (p *program) ensembleList() *cobra.Command {
 func (p *program) ensembleShow() *cobra.Command {
 	member := -1
 	cmd := &cobra.Command{
-		Use:   "show ENSEMBLE",
-		Short: "Print an ensemble as it was written, or the scenario of one member",
-		Args:  argument("the name of an ensemble or a file"),
+		Use:               "show ENSEMBLE",
+		Short:             "Print an ensemble as it was written, or the scenario of one member",
+		Args:              argument("the name of an ensemble or a file"),
+		ValidArgsFunction: cobra.FixedCompletions(ensemble.Names(), cobra.ShellCompDirectiveDefault),
 	}
 	cmd.RunE = do(func(_ context.Context, args []string) error {
 		l, err := ensemble.Load(args[0])
@@ -106,7 +107,8 @@ the same bytes wherever it is computed, so an ensemble may be shared out: --task
 		Example: `  offplane ensemble run small -o small
   offplane ensemble run mine.yaml -o mine --task 3 --tasks 40
   offplane ensemble gather mine`,
-		Args: argument("the name of an ensemble or a file"),
+		Args:              argument("the name of an ensemble or a file"),
+		ValidArgsFunction: cobra.FixedCompletions(ensemble.Names(), cobra.ShellCompDirectiveDefault),
 	}
 	m.flags(cmd)
 	m.acceptFlag(cmd)

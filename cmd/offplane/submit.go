@@ -50,7 +50,8 @@ as many tasks as there are members, a task computes several.
 Engines: slurm; other, a pattern in which you fill in the engine's own directives.`,
 		Example: `  offplane ensemble submit belts -o belts --engine slurm --time 20 --memory 4G
   offplane ensemble submit belts -o belts --engine slurm --option --partition=short --go`,
-		Args: argument("the name of an ensemble or a file"),
+		Args:              argument("the name of an ensemble or a file"),
+		ValidArgsFunction: cobra.FixedCompletions(ensemble.Names(), cobra.ShellCompDirectiveDefault),
 	}
 	f := cmd.Flags()
 	f.StringVarP(&s.out, "output", "o", "", "`folder` for the results; every node must see it")
