@@ -17,7 +17,7 @@ import (
 	"offplane/synth/line"
 )
 
-func load(t *testing.T, name string, set ...string) *scenarios.Loaded {
+func load(t testing.TB, name string, set ...string) *scenarios.Loaded {
 	t.Helper()
 	l, err := scenarios.Load(name, set...)
 	if err != nil {
