@@ -1,0 +1,15 @@
+//go:build soak
+
+package trial
+
+import (
+	"fmt"
+	"testing"
+)
+
+// TestRandomScenariosSoak: .ci/soak tests.
+func TestRandomScenariosSoak(t *testing.T) {
+	for number := uint64(2); number < 200; number++ {
+		t.Run(fmt.Sprint(number), func(t *testing.T) { sane(t, drawn(t, number)) })
+	}
+}
