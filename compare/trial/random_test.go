@@ -36,8 +36,8 @@ func drawn(t *testing.T, number uint64) *scenarios.Loaded {
 	}
 	for _, s := range []string{
 		fmt.Sprintf("corona.belt={tilt: %.3g deg, warp: %.3g deg}", between(0, 60), between(0, 20)),
-		fmt.Sprintf("corona.mix={filling: %.3g, contrast: %.3g}", between(0.01, 0.99), between(1, 100)),
-		fmt.Sprintf("corona.strands={size: %.3g Mm, spread: %.3g}", between(1, 20), between(0, 1.2)),
+		fmt.Sprintf("corona.mix={filling: %.3g, contrast: %.3g}", between(0.2, 0.9), between(1, 4)),
+		fmt.Sprintf("corona.strands={size: %.3g Mm, spread: %.3g}", between(1, 20), between(0, 0.6)),
 		fmt.Sprintf("corona.outflow={terminal: %.3g km/s}", between(1, 400)),
 		"waves.inward=0", "waves.far_end=false", "camera.noise=false", "camera.sequential=false",
 		fmt.Sprintf("camera.lost=%.3g", between(0, 0.2)),
