@@ -38,8 +38,15 @@ type Session struct {
 	pixels   []int32    // raster indices of the rows
 	onePlane []float32  // METHOD_RATIO; nil: the run did not measure it
 
-	lock   sync.Mutex
-	series *obs.SeriesFile
+	lock    sync.Mutex
+	series  rows
+	cadence float64 // of the series [s]
+	close   func() error
+}
+
+// rows gives the series of the field's pixels, those of series.fits or the same in memory.
+type rows interface {
+	Read(row int, dst []float32) ([]float32, error)
 }
 
 // files of a run that a session reads.
@@ -94,7 +101,7 @@ func Open(ctx context.Context, dir string, workers int) (*Session, error) {
 }
 
 // Close closes the files.
-func (s *Session) Close() error { return s.series.Close() }
+func (s *Session) Close() error { return s.close() }
 
 // finished returns an error unless a run left its files in the folder.
 func finished(dir string) error {
@@ -157,12 +164,8 @@ func has(path string, maps obs.Maps, names ...string) error {
 	return nil
 }
 
-// openSeries finds the rows of the field's pixels: those that FLAG does not call outside.
-func (s *Session) openSeries(path string) error {
-	var err error
-	if s.series, err = obs.OpenSeries(path); err != nil {
-		return err
-	}
+// listRows lists the rows of the field's pixels: those that FLAG does not call outside.
+func (s *Session) listRows() {
 	flag := s.Inferred.Get("FLAG").Ints
 	s.rows = make([]int32, len(flag))
 	for i, f := range flag {
@@ -172,11 +175,21 @@ func (s *Session) openSeries(path string) error {
 			s.pixels = append(s.pixels, int32(i))
 		}
 	}
-	if s.series.Len == len(s.pixels) && s.series.Cadence > 0 {
+}
+
+// openSeries opens the series and checks that its rows are those of the field's pixels.
+func (s *Session) openSeries(path string) error {
+	f, err := obs.OpenSeries(path)
+	if err != nil {
+		return err
+	}
+	s.series, s.cadence, s.close = f, f.Cadence, f.Close
+	s.listRows()
+	if f.Len == len(s.pixels) && f.Cadence > 0 {
 		ok := true
-		for _, row := range []int{0, s.series.Len / 2, s.series.Len - 1} {
-			if row >= 0 && row < s.series.Len {
-				p, err := s.series.Pixel(row)
+		for _, row := range []int{0, f.Len / 2, f.Len - 1} {
+			if row >= 0 && row < f.Len {
+				p, err := f.Pixel(row)
 				ok = ok && err == nil && p == s.pixels[row]
 			}
 		}
@@ -184,8 +197,8 @@ func (s *Session) openSeries(path string) error {
 			return nil
 		}
 	}
-	s.series.Close()
-	return fmt.Errorf("%s: its %d rows are not those of the pixels of inferred.fits: the files are not of one run", path, s.series.Len)
+	f.Close()
+	return fmt.Errorf("%s: its %d rows are not those of the pixels of inferred.fits: the files are not of one run", path, f.Len)
 }
 
 // build makes the corona again and the inversion's side.
@@ -203,6 +216,12 @@ func (s *Session) build(ctx context.Context, named []compare.File, workers int) 
 	if s.scene, err = synth.NewScene(ctx, c, light, workers); err != nil {
 		return err
 	}
+	return s.invertSide()
+}
+
+// invertSide builds what the inversion knew.
+func (s *Session) invertSide() error {
+	c := &s.Scenario.Scenario
 	v := c.Inversion
 	emitter, _, err := trial.Model("inversion.line", v.Line, v.Helium)
 	if err != nil {
@@ -292,7 +311,7 @@ func (s *Session) diagnose(ix, iy int) (*invert.Diagnosis, error) {
 	if err != nil {
 		return nil, err
 	}
-	return invert.DiagnoseSeries(&s.Grid, near, cube, s.series.Cadence, s.options, pixel)
+	return invert.DiagnoseSeries(&s.Grid, near, cube, s.cadence, s.options, pixel)
 }
 
 func (s *Session) read(pixels []int32) (*obs.Cube, error) {

@@ -128,7 +128,7 @@ func (s *Session) walk(d *invert.Diagnosis, v float64) *walk {
 // directions along it.
 func (s *Session) method(p *Pixel, v *synth.Sight, d *invert.Diagnosis, w *walk) error {
 	c := &s.Scenario.Scenario
-	frames, cadence := len(d.Times), s.series.Cadence
+	frames, cadence := len(d.Times), s.cadence
 	tau := v.Samples[v.Sky].Point.Line.Tau[0]
 	q := invert.PlaneWave{Step: w.step, Centre: w.centre, Outward: d.Flag&invert.FlagUndirected == 0,
 		Power: func(f float64) float64 { return s.scene.Driver.Power(f, tau) }}
