@@ -6,7 +6,6 @@ import (
 	"fmt"
 	"io"
 	"math"
-	"path/filepath"
 	"strconv"
 	"strings"
 	"text/tabwriter"
@@ -19,7 +18,8 @@ import (
 )
 
 func (p *program) explainCommand() *cobra.Command {
-	var at, polar, figure string
+	var at, polar string
+	var figure figureFile
 	var json bool
 	var workers int
 	cmd := &cobra.Command{
@@ -41,13 +41,6 @@ truth.fits; the tracker goes its way again from series.fits.`,
 	cmd.RunE = do(func(ctx context.Context, args []string) error {
 		if (at == "") == (polar == "") {
 			return misusef("offplane explain needs a pixel: either --at X,Y [arcsec] or --polar PA,R [deg, solar radii]")
-		}
-		var format report.Format
-		if figure != "" {
-			var err error
-			if format, err = report.FormatOf(figure); err != nil {
-				return misusef("--figure %w", err)
-			}
 		}
 		flag, value, want := "at", at, "X,Y in arcsec, such as 1010,-25"
 		if polar != "" {
@@ -72,14 +65,8 @@ truth.fits; the tracker goes its way again from series.fits.`,
 		} else if err != nil {
 			return err
 		}
-		if figure != "" {
-			to := folder{dir: filepath.Dir(figure)}
-			if err := to.write(filepath.Base(figure), func(w io.Writer) error {
-				_, err := w.Write(report.PixelFigure(v, format))
-				return err
-			}); err != nil {
-				return err
-			}
+		if err := figure.write(func(f report.Format) []byte { return report.PixelFigure(v, f) }); err != nil {
+			return err
 		}
 		if json {
 			return writeJSON(p.stdout, v)
@@ -89,7 +76,7 @@ truth.fits; the tracker goes its way again from series.fits.`,
 	f := cmd.Flags()
 	f.StringVar(&at, "at", "", "pixel at helioprojective `X,Y` [arcsec], X toward solar west")
 	f.StringVar(&polar, "polar", "", "pixel at position angle and projected distance from the Sun's centre, `PA,R` [deg, solar radii]")
-	f.StringVar(&figure, "figure", "", "draw line of sight, time-distance map and lags into this PNG or SVG `file`")
+	f.Var(&figure, "figure", "draw line of sight, time-distance map and lags into this PNG or SVG `file`")
 	f.BoolVar(&json, "json", false, "one JSON document, with the curves")
 	f.IntVar(&workers, "workers", 0, "cores to use; 0: all")
 	return cmd

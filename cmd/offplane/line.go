@@ -4,9 +4,7 @@ import (
 	"context"
 	"encoding"
 	"fmt"
-	"io"
 	"math"
-	"path/filepath"
 	"slices"
 	"strconv"
 	"strings"
@@ -24,7 +22,8 @@ import (
 )
 
 func (p *program) lineCommand() *cobra.Command {
-	var density, height, temperature, ratio, law, figure, table string
+	var density, height, temperature, ratio, law, table string
+	var figure figureFile
 	var set []string
 	var json bool
 	cmd := &cobra.Command{
@@ -84,8 +83,8 @@ Lists are separated by commas; numbers are in cm-3, solar radii and K, or carry 
 		if err != nil {
 			return misuse(err)
 		}
-		if figure != "" {
-			if err := lineFigure(m, figure, rs, ts); err != nil {
+		if figure.path != "" {
+			if err := lineFigure(m, &figure, rs, ts); err != nil {
 				return err
 			}
 		}
@@ -111,7 +110,7 @@ Lists are separated by commas; numbers are in cm-3, solar radii and K, or carry 
 	f.StringVar(&ratio, "ratio", "", "ratios of energies to turn into densities")
 	f.StringVar(&law, "law", "", "published density profile, such as gibson-1999")
 	f.StringArrayVar(&set, "set", nil, "change the light: `KEY=VALUE`, such as line.photo=0 or corona.helium=0.05; repeatable")
-	f.StringVar(&figure, "figure", "", "draw the ratio against density into this PNG `file`")
+	f.Var(&figure, "figure", "draw the ratio against density into this PNG or SVG `file`")
 	f.StringVar(&table, "ecsv", "", "write the rows into this ECSV `file`")
 	f.BoolVar(&json, "json", false, "one JSON document")
 	return cmd
@@ -152,7 +151,7 @@ func list[T ~float64, P interface {
 }
 
 // lineFigure draws the ratio over the density range of the model.
-func lineFigure(m *line.Model, path string, rs, ts []float64) error {
+func lineFigure(m *line.Model, figure *figureFile, rs, ts []float64) error {
 	if n := len(rs) * len(ts); n > 6 {
 		return misusef("--figure: %d combinations of height and temperature; at most 6 can be told apart", n)
 	}
@@ -174,11 +173,7 @@ func lineFigure(m *line.Model, path string, rs, ts []float64) error {
 			curves = append(curves, c)
 		}
 	}
-	at := folder{dir: filepath.Dir(path)}
-	return at.write(filepath.Base(path), func(w io.Writer) error {
-		_, err := w.Write(report.RatioFigure(curves))
-		return err
-	})
+	return figure.write(func(f report.Format) []byte { return report.RatioFigure(curves, f) })
 }
 
 // rowsTable is the table of line.Rows with units.

@@ -3,8 +3,6 @@ package main
 import (
 	"context"
 	"fmt"
-	"io"
-	"path/filepath"
 	"text/tabwriter"
 	"time"
 
@@ -61,7 +59,7 @@ func (p *program) scenarioList() *cobra.Command {
 
 func (p *program) scenarioShow() *cobra.Command {
 	var resolved, json bool
-	var figure string
+	var figure figureFile
 	var c choice
 	cmd := &cobra.Command{
 		Use:   "show SCENARIO",
@@ -76,8 +74,8 @@ func (p *program) scenarioShow() *cobra.Command {
 		if err != nil {
 			return err
 		}
-		if figure != "" {
-			return p.showFigure(ctx, l, figure)
+		if figure.path != "" {
+			return p.showFigure(ctx, l, &figure)
 		}
 		if json {
 			return writeJSON(p.stdout, struct {
@@ -96,7 +94,7 @@ func (p *program) scenarioShow() *cobra.Command {
 		return err
 	})
 	c.flags(cmd)
-	cmd.Flags().StringVar(&figure, "figure", "", "draw the corona into this PNG `file` instead: density, field lines, border of the closed region")
+	cmd.Flags().Var(&figure, "figure", "draw the corona into this PNG or SVG `file` instead: density, field lines, border of the closed region")
 	cmd.Flags().BoolVar(&resolved, "resolved", false, "with every default filled in; so are files and changed scenarios in any case")
 	cmd.Flags().BoolVar(&json, "json", false, "one JSON document with the resolved scenario")
 	return cmd
@@ -104,7 +102,7 @@ func (p *program) scenarioShow() *cobra.Command {
 
 // showFigure draws the truth at a glance and prints how much of its light comes from
 // where the kink speed of low beta does not hold.
-func (p *program) showFigure(ctx context.Context, l *scenarios.Loaded, path string) error {
+func (p *program) showFigure(ctx context.Context, l *scenarios.Loaded, figure *figureFile) error {
 	light, _, err := trial.Light(&l.Scenario)
 	if err != nil {
 		return misuse(err)
@@ -117,11 +115,7 @@ func (p *program) showFigure(ctx context.Context, l *scenarios.Loaded, path stri
 	if err != nil {
 		return err
 	}
-	at := folder{dir: filepath.Dir(path)}
-	if err := at.write(filepath.Base(path), func(w io.Writer) error {
-		_, err := w.Write(report.CoronaFigure(v, l.Name))
-		return err
-	}); err != nil {
+	if err := figure.write(func(f report.Format) []byte { return report.CoronaFigure(v, l.Name, f) }); err != nil {
 		return err
 	}
 	_, err = fmt.Fprintf(p.stdout, "%.2g %% of the emission comes from where beta > 1; the kink speed of low beta fails there\n", 100*v.HighBeta)

@@ -60,10 +60,23 @@ func newCanvas(w, h int) *canvas {
 	return &canvas{w: w, h: h, img: img, Canvas: vgdraw.New(img)}
 }
 
-// newVectorCanvas returns a canvas for an SVG document.
-func newVectorCanvas(w, h int) *canvas {
+// canvasFor returns a white canvas for a figure of that format.
+func canvasFor(f Format, w, h int) *canvas {
+	if f == PNG {
+		return newCanvas(w, h)
+	}
 	svg := newVector(w, h)
-	return &canvas{w: w, h: h, svg: svg, Canvas: vgdraw.New(svg)}
+	c := &canvas{w: w, h: h, svg: svg, Canvas: vgdraw.New(svg)}
+	c.FillPolygon(paper, box(0, 0, float64(w), float64(h)))
+	return c
+}
+
+// encode returns the figure in its format; see png.
+func (c *canvas) encode(tables []*table, strokes []color.RGBA) []byte {
+	if c.svg != nil {
+		return c.svg.encode()
+	}
+	return c.png(tables, strokes)
 }
 
 // A textStyle says how a string hangs on its point.

@@ -13,14 +13,14 @@ import (
 	"offplane/synth"
 )
 
-// CoronaFigure draws the truth at a glance as a PNG: density in the plane of the sky,
+// CoronaFigure draws the truth at a glance in that format: density in the plane of the sky,
 // field lines projected on the sky, the border of the closed region in the plane of
 // the sky and the field of view.
-func CoronaFigure(v *synth.Survey, title string) []byte {
+func CoronaFigure(v *synth.Survey, title string, f Format) []byte {
 	const zoom = 6
 	side := v.Side * zoom
 	const left, bottom, top, right = 165, 270, 110, 60
-	c := newCanvas(left+side+right, bottom+side+top)
+	c := canvasFor(f, left+side+right, bottom+side+top)
 	var outside []float64
 	for _, n := range v.Density {
 		if !math.IsNaN(float64(n)) {
@@ -127,5 +127,5 @@ func CoronaFigure(v *synth.Survey, title string) []byte {
 		{label: "border of the closed region", stroke: border}, {label: "field of view", stroke: edge}}
 	c.legend(float64(left), float64(bottom+side+26), keys)
 	c.text(float64(c.w)-14, 10, fmt.Sprintf("share of the emission with beta > 1: %.3g", v.HighBeta), textStyle{size: small - 3, colour: grey, x: text.XRight, y: text.YBottom})
-	return c.png([]*table{s.table}, []color.RGBA{vermillion, blue, orange, grey})
+	return c.encode([]*table{s.table}, []color.RGBA{vermillion, blue, orange, grey})
 }

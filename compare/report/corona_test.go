@@ -38,8 +38,8 @@ func TestCoronaFigure(t *testing.T) {
 		{Closed: true, Sky: true, Points: []r3.Vec{{X: 1, Y: -0.5, Z: 0.3}, {X: 1, Y: 0.5, Z: 0.3}}},
 		{Sky: true, Points: []r3.Vec{{X: -1, Y: -0.5, Z: -0.3}, {X: -1, Y: 0.5, Z: -0.3}}},
 	}
-	data := CoronaFigure(v, "test")
-	if !bytes.Equal(data, CoronaFigure(v, "test")) {
+	data := CoronaFigure(v, "test", PNG)
+	if !bytes.Equal(data, CoronaFigure(v, "test", PNG)) {
 		t.Error("other bytes")
 	}
 	m, err := png.Decode(bytes.NewReader(data))

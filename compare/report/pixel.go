@@ -45,12 +45,7 @@ const (
 // PixelFigure draws what explain says of a pixel: along the line of sight emission, wave
 // power, density and field; the waves on the track and their lags; the causes of the bias.
 func PixelFigure(v *explain.Pixel, f Format) []byte {
-	c := newCanvas(figureWidth, pixelHeight)
-	if f == SVG {
-		c = newVectorCanvas(figureWidth, pixelHeight)
-	}
-	c.SetColor(paper)
-	c.Fill(vg.Rectangle{Max: pt(figureWidth, pixelHeight)}.Path())
+	c := canvasFor(f, figureWidth, pixelHeight)
 	at := &v.Place
 	c.text(60, pixelHeight-48, fmt.Sprintf("%s, pixel (%d, %d): X %s″, Y %s″, %.3f R☉, position angle %.1f°", v.Scenario, at.X, at.Y,
 		number(float64(at.SolarX), 1), number(float64(at.SolarY), 1), at.Height, at.PA), textStyle{size: medium + 2, bold: true, y: text.YCenter})
@@ -61,10 +56,7 @@ func PixelFigure(v *explain.Pixel, f Format) []byte {
 	c.causePanel(v)
 	c.text(figureWidth-14, 8, fmt.Sprintf("estimator %s; the truth is that in the plane of the sky unless said otherwise", v.Estimators[0].Name),
 		textStyle{size: small - 3, colour: grey, x: text.XRight, y: text.YBottom})
-	if f == SVG {
-		return c.svg.encode()
-	}
-	return c.png([]*table{bar}, lineColours)
+	return c.encode([]*table{bar}, lineColours)
 }
 
 func pixelSummary(v *explain.Pixel) string {

@@ -15,11 +15,11 @@ type RatioCurve struct {
 }
 
 // RatioFigure draws the ratio of the lines against density, and below it the factor
-// d ln n / d ln ratio by which an error of the ratio grows, as a PNG. At most six
+// d ln n / d ln ratio by which an error of the ratio grows, in that format. At most six
 // curves can be told apart.
-func RatioFigure(curves []RatioCurve) []byte {
+func RatioFigure(curves []RatioCurve, f Format) []byte {
 	const wide, high = 1500, 1500
-	c := newCanvas(wide, high)
+	c := canvasFor(f, wide, high)
 	lo, hi := math.Inf(1), math.Inf(-1)
 	for _, q := range curves {
 		lo, hi = min(lo, math.Log10(q.Density[0])), max(hi, math.Log10(q.Density[len(q.Density)-1]))
@@ -63,5 +63,5 @@ func RatioFigure(curves []RatioCurve) []byte {
 	half := (len(keys) + 1) / 2
 	c.legend(a.x, a.y+a.h+84, keys[:half])
 	c.legend(a.x, a.y+a.h+40, keys[half:])
-	return c.png(nil, lineColours)
+	return c.encode(nil, lineColours)
 }
