@@ -9,6 +9,7 @@ import (
 	"github.com/spf13/cobra"
 
 	"offplane/compare"
+	"offplane/compare/explain"
 	"offplane/compare/report"
 	"offplane/compare/stat"
 	"offplane/compare/trial"
@@ -91,9 +92,13 @@ func (p *program) run(ctx context.Context, l *scenarios.Loaded, w *work, g *gate
 	if err := writeVerdict(f, &o.Truth.Grid, o.Verdict, l, o.Files); err != nil {
 		return err
 	}
+	pixel, err := representative(l, o)
+	if err != nil {
+		return err
+	}
 	err = f.write("report.html", func(w io.Writer) error {
 		return report.WriteHTML(w, &report.Report{
-			Grid: o.Truth.Grid, Truth: o.Truth.Maps, Inferred: o.Inferred.Maps, Verdict: o.Verdict, Setup: setup(&l.Scenario),
+			Grid: o.Truth.Grid, Truth: o.Truth.Maps, Inferred: o.Inferred.Maps, Verdict: o.Verdict, Setup: setup(&l.Scenario), Pixel: pixel,
 		})
 	})
 	if err != nil {
@@ -115,6 +120,19 @@ func (p *program) run(ctx context.Context, l *scenarios.Loaded, w *work, g *gate
 		fmt.Fprintf(p.stdout, "next     offplane compare --truth %s --map B=YOURS.fits -o DIR    (your own map of it)\n", f.path("truth.fits"))
 	}
 	return g.check(&o.Verdict.Summary)
+}
+
+// representative explains the pixel that stands for the run; nil if none is valid.
+func representative(l *scenarios.Loaded, o *trial.Outcome) (*explain.Pixel, error) {
+	s, err := explain.Of(l, o)
+	if err != nil {
+		return nil, err
+	}
+	ix, iy, ok := s.Representative()
+	if !ok {
+		return nil, nil
+	}
+	return s.At(ix, iy)
 }
 
 // writeVerdict writes the files that run and compare share; of a user's own truth there

@@ -44,6 +44,19 @@ func somePixel() *explain.Pixel {
 		l.Distance, l.Lag = append(l.Distance, number(d)), append(l.Lag, number(d*2.6))
 	}
 	p.Curves.Lags = []explain.Lags{l}
+	k := &p.Curves.KOmega
+	for f := 0.5; f < 9; f += 0.5 {
+		k.Frequency = append(k.Frequency, explain.Number(f))
+	}
+	for w := -0.4; w < 0.41; w += 0.05 {
+		k.Wavenumber = append(k.Wavenumber, explain.Number(w))
+		row := make([]explain.Number, len(k.Frequency))
+		for i, f := range k.Frequency { // 400 km/s outward
+			d := w - 2*math.Pi*float64(f)/400
+			row[i] = explain.Number(math.Exp(-d * d * 400))
+		}
+		k.Power = append(k.Power, row)
+	}
 	return p
 }
 

@@ -20,6 +20,7 @@ import (
 	"strings"
 
 	"offplane/compare"
+	"offplane/compare/explain"
 	"offplane/compare/stat"
 	"offplane/scenarios/units"
 	"offplane/synth/obs"
@@ -31,6 +32,7 @@ type Report struct {
 	Truth, Inferred obs.Maps // as they were compared; any may be missing
 	Verdict         *compare.Verdict
 	Setup           Setup
+	Pixel           *explain.Pixel // one that stands for the run; may be nil
 }
 
 // Setup says in plain sentences what was simulated; empty ones are left out.
@@ -74,12 +76,43 @@ func WriteHTML(w io.Writer, r *Report) error {
 		url := template.URL("data:image/png;base64," + base64.StdEncoding.EncodeToString(f.PNG))
 		p.Figures = append(p.Figures, pageFigure{f, url, c.Width / 2, c.Width / 3})
 	}
+	var err error
+	if p.Downloads, err = downloads(r.Verdict); err != nil {
+		return fmt.Errorf("report: %w", err)
+	}
 	var b bytes.Buffer
 	if err := pageTemplate.Execute(&b, &p); err != nil {
 		return fmt.Errorf("report: %w", err)
 	}
-	_, err := w.Write(b.Bytes())
+	_, err = w.Write(b.Bytes())
 	return err
+}
+
+// A download is a file inside the page.
+type download struct {
+	Name, About string
+	URL         template.URL
+}
+
+// downloads puts the numbers behind the figures and tables into the page.
+func downloads(v *compare.Verdict) ([]download, error) {
+	var ds []download
+	add := func(name, about, kind string, text []byte) {
+		if len(text) > 0 {
+			ds = append(ds, download{name, about, template.URL("data:" + kind + ";base64," + base64.StdEncoding.EncodeToString(text))})
+		}
+	}
+	var table, summary bytes.Buffer
+	if err := v.Heights.Write(&table); err != nil {
+		return nil, err
+	}
+	if err := v.Summary.WriteJSON(&summary); err != nil {
+		return nil, err
+	}
+	add("bias.ecsv", "bias by height, a table with units", "text/plain", table.Bytes())
+	add("summary.json", "the whole verdict for programs", "application/json", summary.Bytes())
+	add("scenario.yaml", "the scenario with every default filled in", "text/plain", []byte(v.Summary.Text))
+	return ds, nil
 }
 
 //go:embed report.html
@@ -107,6 +140,7 @@ type page struct {
 	Heights    []heightRow
 	Structures []structureRow
 	Flags      []compare.Flag
+	Downloads  []download
 }
 
 type pageFigure struct {
@@ -208,7 +242,7 @@ func (r *Report) Figures() []Figure {
 			caption += fmt.Sprintf(" Inferred: %s [%s], same colour scale", q.inferred, q.unit)
 			switch {
 			case q.inferred == "NE":
-				caption += ", from the ratio of the two lines."
+				caption += ", estimator: the ratio of the two lines."
 			case s.Estimator != "":
 				caption += fmt.Sprintf(", phase-speed estimator %q.", s.Estimator)
 			default:
@@ -225,16 +259,18 @@ func (r *Report) Figures() []Figure {
 		caption += fmt.Sprintf(" North is up, east left; solar X grows toward west. Solid circle: limb; dashed: inner edge of the field; mid grey: pixels of the field without a value. Colour bars end in an arrow where values lie beyond the scale. Pixel %s. Domain of the ratio: %s.", r.pixel(), r.domain())
 		fs = append(fs, Figure{q.name, mapFigure(v, ps, foot), alt + ".", caption})
 	}
-	if f, ok := r.profiles(v, foot); ok {
-		fs = append(fs, f)
+	for _, draw := range []func() (Figure, bool){
+		func() (Figure, bool) { return r.unwrapped(v, foot) },
+		func() (Figure, bool) { return r.joints(foot) },
+		func() (Figure, bool) { return r.profiles(v, foot) },
+		func() (Figure, bool) { return r.parts(foot) },
+		func() (Figure, bool) { return r.quality(v, foot) },
+	} {
+		if f, ok := draw(); ok {
+			fs = append(fs, f)
+		}
 	}
-	if f, ok := r.parts(foot); ok {
-		fs = append(fs, f)
-	}
-	if f, ok := r.quality(v, foot); ok {
-		fs = append(fs, f)
-	}
-	return fs
+	return append(fs, r.pixelFigures()...)
 }
 
 // values returns the values of a map in the field.
@@ -439,8 +475,16 @@ func (r *Report) quality(v *view, foot string) (Figure, bool) {
 	return Figure{
 		Name: "quality", PNG: mapFigure(v, ps, foot),
 		Alt:     "Maps of the in-band Doppler rms, its share of the local velocity, and the coherence, around the occulted solar disc, north up, east left.",
-		Caption: caption + fmt.Sprintf(" Axes, circles and grey as in the other maps. Pixel %s. Domain: all pixels of the field.", r.pixel()),
+		Caption: caption + r.trackerText() + fmt.Sprintf(" Axes, circles and grey as in the other maps. Pixel %s. Domain: all pixels of the field.", r.pixel()),
 	}, true
+}
+
+// trackerText names in the caption of quality whom its maps serve.
+func (r *Report) trackerText() string {
+	if e := r.Verdict.Summary.Estimator; e != "" {
+		return fmt.Sprintf(" They serve the phase-speed estimator %q.", e)
+	}
+	return ""
 }
 
 type ratioRow struct {

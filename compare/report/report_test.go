@@ -2,6 +2,8 @@ package report
 
 import (
 	"bytes"
+	"encoding/base64"
+	"html"
 	"image"
 	"image/color"
 	"image/png"
@@ -70,8 +72,8 @@ func TestRingSize(t *testing.T) {
 	if len(s) > 5<<20 {
 		t.Errorf("%d bytes, want below 5 MB", len(s))
 	}
-	if n := strings.Count(s, "<figure "); n != 6 {
-		t.Errorf("%d figures, want 6", n)
+	if n := strings.Count(s, "<figure "); n != 8 {
+		t.Errorf("%d figures, want 8", n)
 	}
 }
 
@@ -292,6 +294,7 @@ func TestGlyphs(t *testing.T) {
 
 var (
 	dataURI    = regexp.MustCompile(`src="data:image/png;base64,[A-Za-z0-9+/=&#;]+"`) // the template writes + as &#43;
+	dataFile   = regexp.MustCompile(`href="data:(?:text/plain|application/json);base64,[A-Za-z0-9+/=&#;]+"`)
 	external   = regexp.MustCompile(`(?i)https?:|//|<script|<link|<iframe|@import|url\(|\bon[a-z]+=|file:|/work|/tmp|/home`)
 	caption    = regexp.MustCompile(`(?s)<figcaption>(.*?)</figcaption>`)
 	notANumber = regexp.MustCompile(`\bNaN\b|\bInf\b`)
@@ -301,11 +304,12 @@ var (
 
 func TestPage(t *testing.T) {
 	r := reportOf(t, comparetest.Wedge(0.01))
+	r.Pixel = somePixel()
 	s := render(t, r)
 	if !strings.Contains(s, `content="default-src 'none'; style-src 'unsafe-inline'; img-src data:"`) {
 		t.Error("no strict content policy")
 	}
-	bare := dataURI.ReplaceAllString(s, "")
+	bare := dataFile.ReplaceAllString(dataURI.ReplaceAllString(s, ""), "")
 	if strings.Contains(bare, "base64") {
 		t.Error("a data URI was spoilt by escaping")
 	}
@@ -318,9 +322,13 @@ func TestPage(t *testing.T) {
 		{"B_SKY", "estimator", "lag", "[G]", "Domain", "North is up, east left", "1.05–1.35 solar radii"},
 		{"SPEED_SKY", "estimator", "lag", "[km/s]", "Domain"},
 		{"NE_SKY", "ratio of the two lines", "[cm⁻³]", "Domain"},
+		{"B_SKY", "estimator", "lag", "[G]", "position angle", "Domain"},
+		{"SPEED_SKY", "estimator", "lag", "[km/s]", "inferred equals true", "Domain"},
 		{"B_EMIS", "estimator", "lag", "[G]", "[km/s]", "16th to the 84th", "Domain"},
 		{"NE_KINK", "estimator", "lag", "pure numbers", "Domain"},
 		{"DOPPLER_LOCAL", "[km/s]", "COHERENCE", "Domain"},
+		{"SPEED_WAVE", "estimator", "lag", "[G]", "[Mm]", "the one pixel"},
+		{"SPEED_WAVE", "estimator", "lag", "[mHz]", "[rad/Mm]", "the one pixel"},
 	}
 	if len(captions) != len(want) || len(alts) != len(want) {
 		t.Fatalf("%d captions, %d alt texts, want %d", len(captions), len(alts), len(want))
@@ -339,6 +347,111 @@ func TestPage(t *testing.T) {
 		if !strings.Contains(s, p) {
 			t.Errorf("the page lacks %q", p)
 		}
+	}
+}
+
+var (
+	truthName = regexp.MustCompile(`\b(B|BTOT|NE|SPEED)_(SKY|EMIS|WAVE|KINK)\b|\bDOPPLER_LOCAL\b`)
+	unitName  = regexp.MustCompile(`\[(G|km/s|cm⁻³|s|Mm|mHz|rad/Mm|deg)\]|pure number`)
+)
+
+// Every caption names its truth, the estimator, a unit and the domain.
+func TestCaptions(t *testing.T) {
+	r := reportOf(t, comparetest.Wedge(0.02))
+	r.Pixel = somePixel()
+	fs := r.Figures()
+	if len(fs) != 10 {
+		t.Errorf("%d figures, want 10", len(fs))
+	}
+	for _, f := range fs {
+		for what, found := range map[string]bool{
+			"truth": truthName.MatchString(f.Caption), "estimator": strings.Contains(f.Caption, "estimator"),
+			"unit": unitName.MatchString(f.Caption), "domain": strings.Contains(f.Caption, "Domain"),
+		} {
+			if !found {
+				t.Errorf("the caption of %s names no %s: %s", f.Name, what, f.Caption)
+			}
+		}
+	}
+}
+
+// The numbers inside the page are the verdict's, byte for byte.
+func TestDownloads(t *testing.T) {
+	c := comparetest.Wedge(0.02)
+	c.Options.Text = "seed: 7\n"
+	r := reportOf(t, c)
+	s := render(t, r)
+	var summary bytes.Buffer
+	if err := r.Verdict.Summary.WriteJSON(&summary); err != nil {
+		t.Fatal(err)
+	}
+	var table bytes.Buffer
+	if err := r.Verdict.Heights.Write(&table); err != nil {
+		t.Fatal(err)
+	}
+	for name, want := range map[string]string{"summary.json": summary.String(), "bias.ecsv": table.String(), "scenario.yaml": "seed: 7\n"} {
+		m := regexp.MustCompile(`download="` + name + `" href="data:[a-z/]+;base64,([^"]+)"`).FindStringSubmatch(s)
+		if m == nil {
+			t.Errorf("%s is not in the page", name)
+			continue
+		}
+		got, err := base64.StdEncoding.DecodeString(html.UnescapeString(m[1]))
+		if err != nil || string(got) != want {
+			t.Errorf("%s is %.80q %v, want %.80q", name, got, err, want)
+		}
+	}
+}
+
+// The histogram counts every pixel once, and equal maps lie on the line.
+func TestJoint(t *testing.T) {
+	r := reportOf(t, comparetest.Ring(200))
+	j := &joint{truth: "B_SKY", inferred: "B"}
+	if !r.fill(j) {
+		t.Fatal("no histogram")
+	}
+	sum := 0
+	for _, n := range j.count {
+		sum += n
+	}
+	if sum != r.Verdict.Summary.Pixels.Valid || len(j.x) != sum {
+		t.Errorf("%d pixels, want %d", sum, r.Verdict.Summary.Pixels.Valid)
+	}
+	copy(r.Inferred.Get("B").Data, r.Truth.Get("B_SKY").Data)
+	same := &joint{truth: "B_SKY", inferred: "B"}
+	r.fill(same)
+	for i, n := range same.count {
+		if n > 0 && i%jointCells != i/jointCells {
+			t.Fatalf("equal maps fill cell (%d, %d)", i%jointCells, i/jointCells)
+		}
+	}
+}
+
+// Laid flat, a mark on the sky is at its position angle and height; a wedge across north
+// stays in one piece.
+func TestUnwrapped(t *testing.T) {
+	c := comparetest.Ring(200)
+	r := reportOf(t, c)
+	if from, to := r.angles(); from != 0 || to != 360 {
+		t.Errorf("a ring from %g to %g", from, to)
+	}
+	v := newView(&c.Grid, r.Verdict.Field)
+	marked := make([]float32, len(r.Verdict.Field))
+	for i := range marked {
+		if d, pa := c.Grid.Polar(i%c.Grid.Nx, i/c.Grid.Nx); math.Abs(d-1.2) < 0.05 && math.Abs(pa-100) < 10 {
+			marked[i] = 1
+		}
+	}
+	m := v.flat(panel{data: marked, scale: &scale{lo: 0, hi: 1, table: &viridis}}, 0, 360, 360, 100)
+	row := int((v.outer - 1.2) / (v.outer - v.inner) * 100)
+	if a, b := at(m, 100, row), at(m, 260, row); a != viridis[255] || b != viridis[0] {
+		t.Errorf("at the mark %v, at its mirror image %v", a, b)
+	}
+	for i := range r.Verdict.Field {
+		_, pa := c.Grid.Polar(i%c.Grid.Nx, i/c.Grid.Nx)
+		r.Verdict.Field[i] = r.Verdict.Field[i] && (pa > 340 || pa < 30)
+	}
+	if from, to := r.angles(); math.Abs(from-340) > 1 || math.Abs(to-390) > 1 {
+		t.Errorf("a wedge across north from %g to %g", from, to)
 	}
 }
 
@@ -365,7 +478,7 @@ func TestPoorInput(t *testing.T) {
 					m.Data[i] = nan
 				}
 			}
-		}, []string{"field", "speed", "density", "profiles", "identity", "quality"}},
+		}, []string{"field", "speed", "density", "unwrapped", "profiles", "identity", "quality"}},
 		{"infinities and zeros", func(c *comparetest.Case) {
 			for i := range c.Inferred.Get("B").Data {
 				c.Inferred.Get("B").Data[i] = float32(math.Inf(1 - 2*(i%2)))
@@ -373,7 +486,7 @@ func TestPoorInput(t *testing.T) {
 				c.Truth.Get("NE_SKY").Data[i] = 0
 				c.Inferred.Get("COHERENCE").Data[i] = float32(math.Inf(1))
 			}
-		}, []string{"field", "speed", "density", "profiles", "identity", "quality"}},
+		}, []string{"field", "speed", "density", "unwrapped", "profiles", "identity", "quality"}},
 		{"constant maps", func(c *comparetest.Case) {
 			for _, m := range slices.Concat(c.Truth, c.Inferred) {
 				for i := range m.Data {
@@ -382,7 +495,7 @@ func TestPoorInput(t *testing.T) {
 					}
 				}
 			}
-		}, []string{"field", "speed", "density", "profiles", "identity", "quality"}},
+		}, []string{"field", "speed", "density", "unwrapped", "joint", "profiles", "identity", "quality"}},
 		{"one pixel", func(c *comparetest.Case) {
 			first := true
 			s := c.Truth.Get("STRUCTURE").Ints
@@ -392,12 +505,12 @@ func TestPoorInput(t *testing.T) {
 				}
 				first = first && s[i] == 0
 			}
-		}, []string{"field", "speed", "density", "profiles", "identity", "quality"}},
+		}, []string{"field", "speed", "density", "unwrapped", "profiles", "identity", "quality"}},
 		{"no field", func(c *comparetest.Case) { clear(c.Truth.Get("STRUCTURE").Ints) }, nil},
 		{"density alone", func(c *comparetest.Case) { c.Inferred = obs.Maps{*c.Inferred.Get("NE")} },
-			[]string{"field", "speed", "density", "profiles"}},
+			[]string{"field", "speed", "density", "joint", "profiles"}},
 		{"truth of the field alone", func(c *comparetest.Case) { c.Truth = obs.Maps{*c.Truth.Get("B_SKY")} },
-			[]string{"field", "speed", "density", "profiles", "identity", "quality"}},
+			[]string{"field", "speed", "density", "unwrapped", "joint", "profiles", "identity", "quality"}},
 	} {
 		c := comparetest.Wedge(0.02)
 		q.spoil(c)
