@@ -157,13 +157,13 @@ async function statistics(label) {
     const t = document.createElement("table");
     t.createCaption().textContent = `${label}: ${s.pixels.valid} of ${s.pixels.total} pixels valid (${s.pixels.total ? (100 * s.pixels.valid_fraction).toFixed(1) : 0} %), estimator ${$("estimator").value}`;
     const head = t.createTHead().insertRow();
-    for (const h of ["inferred / true", "median", "16 %", "84 %", "2.5 %", "97.5 %", "pixels"]) head.append(Object.assign(document.createElement("th"), { textContent: h }));
+    for (const h of ["inferred / true", "median", "its 68 %", "16 %", "84 %", "2.5 %", "97.5 %", "pixels"]) head.append(Object.assign(document.createElement("th"), { textContent: h }));
     const body = t.createTBody();
     for (const [name, v] of rows) {
       const r = body.insertRow();
       r.dataset.name = name;
       r.dataset.median = v.median;
-      for (const cell of [name, text(v.median, 4), text(v.p16, 4), text(v.p84, 4), text(v.p2_5, 4), text(v.p97_5, 4), v.count]) r.insertCell().textContent = cell;
+      for (const cell of [name, text(v.median, 4), v.median_low == null ? "–" : `${text(v.median_low, 4)}–${text(v.median_high, 4)}`, text(v.p16, 4), text(v.p84, 4), text(v.p2_5, 4), text(v.p97_5, 4), v.count]) r.insertCell().textContent = cell;
     }
     const scroll = Object.assign(document.createElement("div"), { className: "scroll" });
     const clear = Object.assign(document.createElement("button"), { type: "button", textContent: "clear" });
