@@ -698,3 +698,18 @@ func TestDamaged(t *testing.T) {
 		}
 	})
 }
+
+// Wrong sums in somebody's header do not keep its pixels from being read: files that were
+// edited by hand often have them.
+func TestWrongChecksums(t *testing.T) {
+	raw := foreign([]string{"SIMPLE  = T", "BITPIX  = 16", "NAXIS   = 2", "NAXIS1  = 2", "NAXIS2  = 1", "BUNIT   = 'furlong/fortnight'", "CHECKSUM= 'AAAAAAAAAAAAAAAA'", "DATASUM = '-1'"}, []byte{0, 1, 0, 2})
+	f, err := NewFile("x", bytes.NewReader(raw), int64(len(raw)))
+	if err != nil {
+		t.Fatal(err)
+	}
+	m, err := f.Image("")
+	if err != nil {
+		t.Fatal(err)
+	}
+	check(t, "pixels", m.Data, []float32{1, 2})
+}
