@@ -66,7 +66,7 @@ The data are synthetic and every verdict depends on the corona that was assumed.
 	}
 	root.SetVersionTemplate("{{.Version}}\n")
 	root.SetFlagErrorFunc(flagError)
-	root.AddCommand(p.runCommand(), p.synthCommand(), p.invertCommand(), p.compareCommand(), p.explainCommand(), p.viewCommand(), p.budgetCommand(), p.scenarioCommand(), p.lineCommand(), p.ensembleCommand(), p.exactCommand(), p.manualCommand(), p.tableCommand())
+	root.AddCommand(p.runCommand(), p.synthCommand(), p.invertCommand(), p.compareCommand(), p.explainCommand(), p.viewCommand(), p.budgetCommand(), p.planCommand(), p.scenarioCommand(), p.lineCommand(), p.ensembleCommand(), p.exactCommand(), p.manualCommand(), p.tableCommand())
 	return root
 }
 

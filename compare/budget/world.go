@@ -65,7 +65,7 @@ func newWorld(ctx context.Context, l *scenarios.Loaded, o Settings) (*world, err
 	if w.atoms[1], _, err = trial.Model("line", s.Line, s.Corona.Helium); err != nil {
 		return nil, err
 	}
-	s.Camera = lasting(s.Camera, w.frames, o.Pieces)
+	s.Camera = Lasting(s.Camera, w.frames, o.Pieces)
 	w.base = state{scenario: s, camera: s.Camera, lost: true}
 	w.grid = synth.NewGrid(&s, w.light.Rest[0])
 	w.pixels = synth.Field(&w.grid, &s)
@@ -90,9 +90,9 @@ func newWorld(ctx context.Context, l *scenarios.Loaded, o Settings) (*world, err
 	return w, nil
 }
 
-// lasting returns the camera for a run of so many pieces, each as long as the frames.
+// Lasting returns the camera for a run of so many pieces, each as long as the frames.
 // The drift of the pointing is that of one piece, spread over all.
-func lasting(c scenarios.Camera, frames, pieces int) scenarios.Camera {
+func Lasting(c scenarios.Camera, frames, pieces int) scenarios.Camera {
 	piece := c.Cadence * units.Duration(frames)
 	gaps := c.Gaps
 	c.Duration = piece * units.Duration(pieces)
