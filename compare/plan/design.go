@@ -69,10 +69,7 @@ func (l *Loaded) resolve(d *Design) {
 	c := &s.Scenario.Camera
 	more := []string{}
 	if l.Facts.Fill {
-		slots := 1.0
-		if c.Sequential {
-			slots = float64(len(c.Tunings))
-		}
+		slots := float64(len(c.Tunings)) // all find their time, at once or in turn
 		if c.Switching == "interleaved" {
 			slots *= 2
 		}

@@ -37,11 +37,16 @@ func (w *planner) explain(ctx context.Context) error {
 		return err
 	}
 	p.Density, p.Signal, p.From, p.To = law.densest, law.signal, law.region.from, law.region.to
-	p.Floor = w.calibrated(&Prediction{Outcome: c.Raw.floor()})
+	hours := float64(c.scenario.Scenario.Camera.Duration) / 3600
+	const endless = 1e7 // [h]
+	forever, err := w.predict(ctx, c.Design, If{1, 1, endless / hours, [2]bool{}})
+	if err != nil {
+		return err
+	}
+	p.Floor = w.calibrated(forever)
 	if err := w.limits(ctx, c); err != nil {
 		return err
 	}
-	hours := float64(c.scenario.Scenario.Camera.Duration) / 3600
 	for _, t := range []float64{0.5, 0.75, 1, 1.5, 2, 3, 4, 6, 8, 12, 16, 24, 48, 96} {
 		as := asItIs
 		as.Duration = t / hours

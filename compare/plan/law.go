@@ -38,7 +38,7 @@ const (
 	mainNode  = 2.0
 )
 
-var ratios = []float64{0, 0.5, 1, 2}
+var ratios = []float64{0, 0.3, 0.6, 0.85, 1.2}
 
 // learnLaw tries the recipe on every node; cadence is the longest that is asked about [s].
 func (r *reference) learnLaw(ctx context.Context, cadence float64) (*law, error) {
@@ -51,7 +51,7 @@ func (r *reference) learnLaw(ctx context.Context, cadence float64) (*law, error)
 		ends = append(ends, long)
 	}
 	for _, t := range ends {
-		w.nodes = append(w.nodes, node{t, 0, 1}, node{t, 1, 1})
+		w.nodes = append(w.nodes, node{t, 0, 1}, node{t, endRatio, 1})
 	}
 	w.cadence = []node{w.nodes[0]}
 	top := 1 / (2 * (r.recipe.Filter.Centre.Hz() + r.recipe.Filter.Width.Hz())) // as the scenario's own rule
@@ -113,12 +113,16 @@ func deviation(x []float64) float64 {
 	return math.Sqrt(squares / (n - 1))
 }
 
+// leastYield is the share of the pixels below which those that noise leaves are not what
+// the formula is about.
+const leastYield = 0.5
+
 // fit returns a, b and c of a bin: least squares of relative errors, none negative.
 func (w *law) fit(b int) [3]float64 {
 	var rows [][3]float64
 	for i := range ratios {
 		v := w.seen[i][b].random
-		if y := v * v * w.nodes[i].hours; y > 0 {
+		if y := v * v * w.nodes[i].hours; y > 0 && w.seen[i][b].yield > leastYield {
 			x := w.nodes[i].ratio * w.nodes[i].ratio
 			rows = append(rows, [3]float64{1 / y, x / y, x * x / y})
 		}
@@ -177,25 +181,40 @@ func (w *law) at(b int, hours, ratio, cadence float64) scatter {
 	if n := len(w.nodes); n > len(ratios)+2 {
 		s.spread = w.seen[n-2][b].spread // of the longest pieces, which tell it best
 	}
-	// The formula holds from two hours on; a shorter series adds what it was seen to add.
-	excess := w.lasting(b, min(hours, mainNode), u, func(i int, _ float64) float64 {
+	// What the nodes were seen to have beside the formula: short series more, and those in
+	// which noise leaves the best pixels only, less.
+	beside := func(i int) float64 {
 		n := w.nodes[i]
-		return math.Log(w.seen[i][b].random / w.formula(b, n.hours, n.ratio))
-	}, nil)
-	s.random *= math.Exp(excess)
+		if d := math.Log(w.seen[i][b].random / w.formula(b, n.hours, n.ratio)); !math.IsNaN(d) {
+			return d
+		}
+		return 0
+	}
+	main := w.noisyAt(u, beside)
+	s.random *= math.Exp(main + w.lasting(b, hours, u, func(i int, _ float64) float64 { return beside(i) - beside(w.twin(i)) }, nil))
 	w.sparse(&s, b, cadence)
 	return s
 }
 
+// endRatio is the noise of the nodes of other durations than the main one.
+const endRatio = 0.6
+
+// twin returns the main node with the noise of another node.
+func (w *law) twin(i int) int { return slices.Index(ratios, w.nodes[i].ratio) }
+
 // noisy interpolates the main nodes in u.
 func (w *law) noisy(b int, u float64, of func(*scatter) float64) float64 {
+	return w.noisyAt(u, func(i int) float64 { return of(&w.seen[i][b]) })
+}
+
+func (w *law) noisyAt(u float64, of func(i int) float64) float64 {
 	share := func(i int) float64 { return ratios[i] * ratios[i] / (1 + ratios[i]*ratios[i]) }
 	i := 0
 	for i+2 < len(ratios) && u > share(i+1) {
 		i++
 	}
 	t := min((u-share(i))/(share(i+1)-share(i)), 1)
-	lo, hi := of(&w.seen[i][b]), of(&w.seen[i+1][b])
+	lo, hi := of(i), of(i+1)
 	if math.IsNaN(hi) { // no pixel has a value at that much noise
 		return lo
 	}
@@ -217,11 +236,11 @@ func (w *law) lasting(b int, hours, u float64, change func(i int, main float64) 
 	for k := range y {
 		main := 0.0
 		if of != nil {
-			main = of(&w.seen[[2]int{0, 2}[k]][b])
+			main = of(&w.seen[w.twin(first+k)][b])
 		}
 		y[k] = change(first+k, main)
 	}
-	v := min(u/0.5, 1)
+	v := min(u*(1+endRatio*endRatio)/(endRatio*endRatio), 1)
 	if d := t * (y[0]*(1-v) + y[1]*v); !math.IsNaN(d) {
 		return d
 	}

@@ -56,7 +56,7 @@ func newPredictor(l *Loaded, o *Settings, ds []Design) *predictor {
 // An If changes the circumstances of a prediction.
 type If struct {
 	Background float64 // factor
-	Amplitude  float64 // of the waves, factor
+	Amplitude  float64 // of the waves, factor; the width of the line is left as it is
 	Duration   float64 // factor
 	Dark       [2]bool // photons of this line are without number
 }
@@ -176,14 +176,4 @@ func (w *law) predict(x []shine, s *scenarios.Scenario, hours, frames, second fl
 	r.Outcome = mixture(r.Bins)
 	r.chance = w.nearest(hours, r.Ratio)
 	return r
-}
-
-// floor returns the outcome of an observation without end and noise.
-func (r *Prediction) floor() Outcome {
-	var bins []scatter
-	for _, s := range r.Bins {
-		s.random = 0
-		bins = append(bins, s)
-	}
-	return mixture(bins)
 }

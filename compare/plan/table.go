@@ -54,7 +54,7 @@ func (p *Plan) Table() ecsv.Table {
 		t.Columns = append(t.Columns, ecsv.Column{Name: l.Vary[j].What, About: "as in the campaign", Data: x})
 	}
 	floats("hours", "h", "telescope time, overhead included", func(c *Candidate) float64 { return c.Hours })
-	floats("duration", "h", "of the first line", func(c *Candidate) float64 { return float64(c.scenario.Scenario.Camera.Duration) / 3600 })
+	floats("first_line", "h", "duration of the first line", func(c *Candidate) float64 { return float64(c.scenario.Scenario.Camera.Duration) / 3600 })
 	floats("random", "", "half the width of the central 68 % of the pixels", func(c *Candidate) float64 { return c.Outcome.Random })
 	floats("random_error", "", "standard deviation of the random error of one map about the prediction", func(c *Candidate) float64 { return c.Error.Random })
 	floats("systematic", "", "median of the pixels", func(c *Candidate) float64 { return c.Outcome.Systematic })

@@ -200,19 +200,10 @@ func (v *validation) try(what, x string) error {
 		}
 		return nil
 	}
-	// Rules that tie keys together are those of whole designs.
-	_, err := v.l.base.With(paths[what] + "=" + x)
-	ps, ok := err.(strict.Problems)
-	if !ok {
-		return err
-	}
-	var own strict.Problems
-	for _, p := range ps {
-		if p.Line == 0 && strings.HasSuffix(p.Source, paths[what]) && p.Path == paths[what] && !strings.Contains(p.Message, "cadence") && !strings.Contains(p.Message, "duration") {
-			own = append(own, p)
-		}
-	}
-	return own.Err()
+	// Without the rules that tie keys together: those are for whole designs.
+	c := scenarios.Default()
+	_, err := strict.Read(v.l.base.Name, v.l.base.Canonical, &c, paths[what]+"="+x)
+	return err
 }
 
 // foreign locates the problems of a scenario in this file.

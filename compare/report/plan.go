@@ -4,6 +4,7 @@ import (
 	"fmt"
 	"image/color"
 	"math"
+	"strconv"
 
 	"gonum.org/v1/plot/text"
 	"gonum.org/v1/plot/vg"
@@ -18,22 +19,26 @@ func Plan(p *plan.Plan) *Figure {
 	const hgt, base, top = 1000.0, 150.0, 760.0
 	c := newCanvas(figureWidth, hgt)
 	g := &p.Campaign.Goal
-	hours, worst := 0.0, g.Random
+	hours, high, worst := 0.0, 1.2*g.Random, max(g.Random, g.Systematic)
 	for i := range p.Candidates {
-		hours = max(hours, p.Candidates[i].Hours)
+		q := &p.Candidates[i]
+		hours = max(hours, q.Hours)
+		if e := q.Outcome.Random; e < 3*g.Random {
+			high = max(high, 1.1*e)
+		}
 	}
 	for _, q := range p.Curve {
-		if o := q.Outcome; q.Hours >= 1 && !math.IsNaN(o.Random) {
+		if o := q.Outcome; !math.IsNaN(o.Random) {
 			worst = max(worst, o.Random, math.Abs(o.Systematic))
 		}
 	}
-	worst = 130 * max(worst, g.Systematic)
+	high, worst = 100*high, 130*worst
 	xt := linearTicks(0, hours*1.05, 6)
-	a := &axes{c: c, x: 160, y: base, w: 560, h: top - base, xlo: 0, xhi: hours * 1.05, ylo: 0, yhi: worst}
-	y := &axes{c: c, x: 900, y: base, w: 500, h: top - base, xlo: 0, xhi: hours * 1.05, ylo: 0, yhi: 100}
+	a := &axes{c: c, x: 160, y: base, w: 560, h: top - base, xlo: 0, xhi: hours * 1.05, ylo: 0, yhi: high}
+	y := &axes{c: c, x: 900, y: base, w: 500, h: top - base, xlo: 0, xhi: hours * 1.05, ylo: 0, yhi: 104}
 	planDesigns(a, p, func(o plan.Outcome) float64 { return 100 * o.Random }, 100*g.Random)
 	planDesigns(y, p, func(o plan.Outcome) float64 { return 100 * o.Yield }, 100*g.Yield)
-	a.decorate(xt, linearTicks(0, worst, 6), "telescope time [h]", "random error of B [%]")
+	a.decorate(xt, linearTicks(0, high, 6), "telescope time [h]", "random error of B [%]")
 	y.decorate(xt, linearTicks(0, 100, 5), "telescope time [h]", "pixels with a field [%]")
 	planCurve(c, p, 1580, base, 560, top-base, worst)
 
@@ -93,7 +98,9 @@ func planDesigns(a *axes, p *plan.Plan, of func(plan.Outcome) float64, goal floa
 		}
 	}
 	q := p.Chosen()
-	dot(3, q.Hours, q.Outcome, 14)
+	for _, radius := range []float64{13, 14, 15, 16} {
+		dot(3, q.Hours, q.Outcome, radius)
+	}
 }
 
 // planCurve draws the error against the duration.
@@ -106,7 +113,7 @@ func planCurve(c *canvas, p *plan.Plan, x, y, w, h, worst float64) {
 	a := &axes{c: c, x: x, y: y, w: w, h: h, xlo: lt[0], xhi: lt[len(lt)-1], ylo: 1, yhi: max(worst, 20), ylog: true}
 	var ticks []tick
 	for _, t := range []float64{0.5, 1, 2, 4, 8, 24, 96} {
-		ticks = append(ticks, tick{math.Log10(t), number(t, 1)})
+		ticks = append(ticks, tick{math.Log10(t), strconv.FormatFloat(t, 'g', -1, 64)})
 	}
 	yt := logTicks(a.ylo, a.yhi)
 	a.grid(yt)
