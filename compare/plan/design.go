@@ -79,7 +79,7 @@ func (l *Loaded) resolve(d *Design) {
 			return
 		}
 		read := float64(l.base.Scenario.Camera.Exposure) / float64(l.base.Scenario.Camera.Coadds)
-		more = append(more, fmt.Sprintf("camera.exposure=%.6g s", exposure*(1-1e-9)), fmt.Sprintf("camera.coadds=%d", max(1, int(math.Round(exposure/read)))))
+		more = append(more, fmt.Sprintf("camera.exposure=%.9g s", exposure*(1-1e-7)), fmt.Sprintf("camera.coadds=%d", max(1, int(math.Round(exposure/read)))))
 	}
 	if share > 0 {
 		frames := float64(synth.Frames(&s.Scenario))

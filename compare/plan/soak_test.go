@@ -76,7 +76,7 @@ func TestSpeedOnAGrid(t *testing.T) {
 //	go test -tags soak -run TestRecommendation ./compare/plan -timeout 0 [-plan.trials 40]
 func TestRecommendation(t *testing.T) {
 	n := min(*trials, 40)
-	l := loadPlane(t, "goal.random=0.018", "goal.systematic=0.2", "effort.designs=6", "vary.0.values=[1 h, 1.5 h, 2 h, 3 h, 4 h, 6 h]")
+	l := loadPlane(t, "goal.random=0.025", "goal.systematic=0.2", "effort.designs=6", "vary.0.range={from: 1 h, to: 6 h, steps: 21}", "vary.2.range.steps=2", "vary.3.values=[0.05]")
 	p, err := Run(context.Background(), l, Settings{})
 	if err != nil {
 		t.Fatal(err)
