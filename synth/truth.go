@@ -175,6 +175,9 @@ func (c *Scene) truthOf(ray []sample) ([]float64, int32) {
 		bWave += w.Wave[i] * s.bSky
 		slow += w.Wave[i] / (s.point.Speed * s.sky)
 	}
+	if slow == 0 { // no wave anywhere on the ray: a mean without weights
+		bWave, slow = math.NaN(), math.NaN()
+	}
 	depth := depths(ray, w.Emission, 0.5, 0.9)
 	angle := math.Mod(sky.angle*180/math.Pi+360, 180)
 	p := &sky.point
