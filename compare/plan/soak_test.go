@@ -21,6 +21,10 @@ var (
 // of the points of a grid over duration, cadence and photons, none used in calibration.
 //
 //	go test -tags soak -run TestSpeedOnAGrid ./compare/plan -timeout 0 [-plan.trials 80] [-plan.points 30]
+//
+// Measured in the reduced form, 15 points of 8 realisations: all within 25 %, predicted
+// over simulated 0.87 to 1.13, at noise over waves from 0.03 to 0.61. The
+// full form has not been run. Beyond a ratio of about 1 hardly any pixel has a field.
 func TestSpeedOnAGrid(t *testing.T) {
 	l := loadPlane(t, "effort.designs=0", "facts.fill=true", "effort.waves=24 h")
 	o := &Settings{}
@@ -74,6 +78,10 @@ func TestSpeedOnAGrid(t *testing.T) {
 // and the likeliest design at 70 % of its hours fails in most.
 //
 //	go test -tags soak -run TestRecommendation ./compare/plan -timeout 0 [-plan.trials 40]
+//
+// Measured with 40 trials each: 36 met by the recommended design (1.75 h), 12 by the
+// likeliest at 70 % (1.22 h). With a goal of 0.018, near the floor, they were 36 and 29:
+// there 30 % of the hours make little difference.
 func TestRecommendation(t *testing.T) {
 	n := min(*trials, 40)
 	l := loadPlane(t, "goal.random=0.025", "goal.systematic=0.2", "effort.designs=6", "vary.0.range={from: 1 h, to: 6 h, steps: 21}", "vary.2.range.steps=2", "vary.3.values=[0.05]")
