@@ -5,7 +5,6 @@ import (
 	"embed"
 	"encoding/hex"
 	"fmt"
-	"os"
 	"path/filepath"
 	"strings"
 
@@ -120,7 +119,7 @@ func Source(name string) ([]byte, error) {
 func Load(nameOrPath string, assignments ...string) (*Loaded, error) {
 	read := Source
 	if scenarios.IsFile(nameOrPath) {
-		read = os.ReadFile
+		read = strict.ReadFile
 	}
 	text, err := read(nameOrPath)
 	if err != nil {
