@@ -206,8 +206,9 @@ export class Panel {
       for (let x = Math.max(0, Math.floor(b.x)); x < b.x + b.w; x++) {
         const i = this.sky.at(x, y);
         if (i < 0 || !this.sky.field[i] || inside(x, y)) continue;
-        const [px, py] = this.px(x, y);
-        c.fillRect(px - this.k / 2, py - this.k / 2, this.k, this.k);
+        // Whole screen pixels: no seams between neighbours.
+        const [l, t] = this.px(x - 0.5, y + 0.5).map(Math.round), [r, u] = this.px(x + 0.5, y - 0.5).map(Math.round);
+        c.fillRect(l, t, r - l, u - t);
       }
   }
 

@@ -106,6 +106,8 @@ async function explain(x, y) {
   const section = $("pixel"), turn = ++explain.turn;
   section.hidden = false;
   section.setAttribute("aria-busy", "true");
+  $("place").textContent = `Pixel (${x + 1}, ${y + 1})`;
+  if (!section.dataset.pixel) $("verdict").textContent = "The corona is being built; the first answer takes some seconds.";
   const started = performance.now();
   try {
     const p = await (await get(`data/pixel?x=${x + 1}&y=${y + 1}`)).json();

@@ -211,7 +211,7 @@ function heat(root, title, xs, ys, rows, scale, unit, xlabel, ylabel, lines = []
   c.strokeRect(left, top, wide, inner);
   c.font = "12px 'DejaVu Sans', sans-serif";
   c.textAlign = "center";
-  for (const t of marks(x0, x1, Math.ceil(wide / 80))) {
+  for (const t of marks(x0, x1, Math.max(2, Math.ceil(wide / 80)))) {
     c.fillRect(px(t), h - bottom, 1, 4);
     c.fillText(text(t, 6), px(t), h - bottom + 16);
   }
