@@ -303,9 +303,12 @@ var (
 )
 
 func TestPage(t *testing.T) {
-	r := reportOf(t, comparetest.Wedge(0.01))
+	c := comparetest.Wedge(0.01)
+	c.Options.Text = "seed: 7\n"
+	r := reportOf(t, c)
 	r.Pixel = somePixel()
 	s := render(t, r)
+	checkDownloads(t, r, s)
 	if !strings.Contains(s, `content="default-src 'none'; style-src 'unsafe-inline'; img-src data:"`) {
 		t.Error("no strict content policy")
 	}
@@ -339,6 +342,15 @@ func TestPage(t *testing.T) {
 				t.Errorf("caption %d lacks %q:\n%s", i+1, p, captions[i][1])
 			}
 		}
+		// Every caption names its truth, the estimator, a unit and the domain.
+		for what, found := range map[string]bool{
+			"truth": truthName.MatchString(captions[i][1]), "estimator": strings.Contains(captions[i][1], "estimator"),
+			"unit": unitName.MatchString(captions[i][1]), "domain": strings.Contains(captions[i][1], "Domain"),
+		} {
+			if !found {
+				t.Errorf("caption %d names no %s:\n%s", i+1, what, captions[i][1])
+			}
+		}
 		if len(alts[i][1]) < 60 {
 			t.Errorf("alt text %d says little: %q", i+1, alts[i][1])
 		}
@@ -355,32 +367,9 @@ var (
 	unitName  = regexp.MustCompile(`\[(G|km/s|cm⁻³|s|Mm|mHz|rad/Mm|deg)\]|pure number`)
 )
 
-// Every caption names its truth, the estimator, a unit and the domain.
-func TestCaptions(t *testing.T) {
-	r := reportOf(t, comparetest.Wedge(0.02))
-	r.Pixel = somePixel()
-	fs := r.Figures()
-	if len(fs) != 10 {
-		t.Errorf("%d figures, want 10", len(fs))
-	}
-	for _, f := range fs {
-		for what, found := range map[string]bool{
-			"truth": truthName.MatchString(f.Caption), "estimator": strings.Contains(f.Caption, "estimator"),
-			"unit": unitName.MatchString(f.Caption), "domain": strings.Contains(f.Caption, "Domain"),
-		} {
-			if !found {
-				t.Errorf("the caption of %s names no %s: %s", f.Name, what, f.Caption)
-			}
-		}
-	}
-}
-
-// The numbers inside the page are the verdict's, byte for byte.
-func TestDownloads(t *testing.T) {
-	c := comparetest.Wedge(0.02)
-	c.Options.Text = "seed: 7\n"
-	r := reportOf(t, c)
-	s := render(t, r)
+// checkDownloads: the numbers inside the page are the verdict's, byte for byte.
+func checkDownloads(t *testing.T, r *Report, s string) {
+	t.Helper()
 	var summary bytes.Buffer
 	if err := r.Verdict.Summary.WriteJSON(&summary); err != nil {
 		t.Fatal(err)
@@ -404,7 +393,7 @@ func TestDownloads(t *testing.T) {
 
 // The histogram counts every pixel once, and equal maps lie on the line.
 func TestJoint(t *testing.T) {
-	r := reportOf(t, comparetest.Ring(200))
+	r := reportOf(t, comparetest.Ring(120))
 	j := &joint{truth: "B_SKY", inferred: "B"}
 	if !r.fill(j) {
 		t.Fatal("no histogram")
@@ -429,7 +418,7 @@ func TestJoint(t *testing.T) {
 // Laid flat, a mark on the sky is at its position angle and height; a wedge across north
 // stays in one piece.
 func TestUnwrapped(t *testing.T) {
-	c := comparetest.Ring(200)
+	c := comparetest.Ring(120)
 	r := reportOf(t, c)
 	if from, to := r.angles(); from != 0 || to != 360 {
 		t.Errorf("a ring from %g to %g", from, to)
