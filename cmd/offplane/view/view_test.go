@@ -205,7 +205,7 @@ func TestWire(t *testing.T) {
 func TestWritesNothing(t *testing.T) {
 	dir, _ := folder(t)
 	state := func() (all []string) {
-		filepath.WalkDir(dir, func(path string, d fs.DirEntry, err error) error {
+		filepath.WalkDir(dir, func(path string, d fs.DirEntry, _ error) error {
 			i, err := d.Info()
 			if err != nil {
 				t.Fatal(err)
