@@ -105,11 +105,12 @@ func printBudget(w io.Writer, b *budget.Budget) {
 	fmt.Fprintf(w, "%-42s %9s %7s %8s %8s %8s %8s %8s\n", "ln(B/B_SKY)", "share", "error", "speed", "density", "alone", "last", "scatter")
 	for _, l := range b.Lines() {
 		if l.On {
-			fmt.Fprintf(w, "%-42s %+9.4f %7.4f %+8.4f %+8.4f %8s %8s %+8.4f\n", l.Name, l.Field.Share, l.Field.Error, l.Speed.Share, l.Density.Share,
-				signed(float64(l.Field.FromIdeal)), signed(float64(l.Field.FromFull)), l.Field.ScatterShare)
+			fmt.Fprintf(w, "%-42s %+9.4f %7.4f %+8.4f %+8.4f %8s %8s %8s\n", l.Name, l.Field.Share, l.Field.Error, l.Speed.Share, l.Density.Share,
+				signed(float64(l.Field.FromIdeal)), signed(float64(l.Field.FromFull)), signed(float64(l.Field.ScatterShare)))
 		}
 	}
-	fmt.Fprintf(w, "pixels   %d of %d, %d realisations of %.3g h; not in the scenario:", b.Pixels.Used, b.Pixels.Total, b.Pieces, b.Duration/3600)
+	fmt.Fprintf(w, "pixels   %d of %d, the scatter of %d, %d realisations of %.3g h; not in the scenario:",
+		b.Pixels.Used, b.Pixels.Total, b.Pixels.Scatter, b.Pieces, b.Duration/3600)
 	sep := " "
 	for _, l := range b.Lines() {
 		if !l.On {

@@ -200,6 +200,9 @@ func (c *compared) put(to *obs.Maps, name string, im *obs.Image, foreign bool) e
 	if foreign && !hasValue(im.Map, nil) {
 		return fmt.Errorf("%s: no pixel has a value, all are NaN or infinite", im.Where())
 	}
+	if foreign && slices.Contains(positive, name) && !slices.ContainsFunc(im.Map.Data, func(v float32) bool { return v > 0 }) {
+		return fmt.Errorf("%s: no pixel has a positive value, as %s needs: is it a signed component, or a map of something else?", im.Where(), name)
+	}
 	m, how := im.On(&c.grid)
 	m.Name = name
 	if how != "" {
@@ -215,6 +218,9 @@ func (c *compared) put(to *obs.Maps, name string, im *obs.Image, foreign bool) e
 	}
 	return nil
 }
+
+// positive maps are compared by their ratios.
+var positive = []string{"B", "SPEED", "NE", "B_SKY", "B_EMIS", "B_WAVE", "BTOT_SKY", "SPEED_SKY", "SPEED_WAVE", "NE_SKY", "NE_EMIS", "NE_KINK"}
 
 // field returns the pixels where the truth has values; nil while there is none.
 func (c *compared) field() []bool {

@@ -99,6 +99,7 @@ func TestTurnedAndRebinnedMap(t *testing.T) {
 	nan := func(float64) float64 { return math.NaN() }
 	one := func(float64) float64 { return 1 }
 	writeOwnMap(t, "nan.fits", 20, 17, 0, 1090, 15, "G", nan)
+	writeOwnMap(t, "signed.fits", 20, 17, 0, 1090, 15, "G", func(float64) float64 { return -1 })
 	writeOwnMap(t, "east.fits", 20, 17, 0, -1090, 15, "G", one)
 	writeOwnMap(t, "kelvin.fits", 20, 17, 0, 1090, 15, "K", one)
 	writeOwnMap(t, "unitless.fits", 20, 17, 0, 1090, 15, "", one)
@@ -114,6 +115,7 @@ func TestTurnedAndRebinnedMap(t *testing.T) {
 	}
 	for _, c := range []struct{ args, say string }{
 		{"--map B=nan.fits", "nan.fits[MINE]: no pixel has a value"},
+		{"--map B=signed.fits", "no pixel has a positive value, as B needs"},
 		{"--map B=east.fits", "none of its values lies in the field of the truth"},
 		{"--map B=kelvin.fits", `kelvin.fits[MINE] is in "K"; it must be in G (or T, mT)`},
 		{"--map NE=kelvin.fits", "must be in cm-3 (or m-3, log(cm-3))"},

@@ -463,6 +463,7 @@ func (t *tally) scatter(b *Budget) {
 			}
 		}
 	}
+	few := b.Pixels.Scatter < fewest
 	for k := range sums {
 		term := &b.Method
 		switch {
@@ -474,6 +475,12 @@ func (t *tally) scatter(b *Budget) {
 		for h, e := range []*Effect{&term.Speed, &term.Density, &term.Field} {
 			total := sums[n+1][h]
 			sums[k][h].put(e, t.o.Pieces, total.within/total.n)
+			if few {
+				e.Scatter, e.ScatterShare, e.Spread = stat.Number(math.NaN()), stat.Number(math.NaN()), stat.Number(math.NaN())
+			}
 		}
 	}
 }
+
+// fewest is the number of pixels below which nothing is said of their scatter.
+const fewest = 10

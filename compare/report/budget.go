@@ -66,7 +66,9 @@ func Budget(b *budget.Budget) *Figure {
 
 	lo, hi = 0, 0.01
 	for _, r := range rows {
-		lo, hi = min(lo, float64(r.Field.ScatterShare)), max(hi, float64(r.Field.ScatterShare))
+		if x := float64(r.Field.ScatterShare); !math.IsNaN(x) { // NaN: of too few pixels
+			lo, hi = min(lo, x), max(hi, x)
+		}
 	}
 	s := budgetAxes(c, budgetChance, budgetNarrow-30, base, top, lo, hi)
 	s.bars(rows, y)
@@ -90,7 +92,7 @@ func Budget(b *budget.Budget) *Figure {
 		c.text(x+28, hgt-50, m.label, textStyle{size: small, x: text.XLeft, y: text.YCenter})
 		x += 28 + width(m.label, small) + 40
 	}
-	c.text(figureWidth-14, 8, fmt.Sprintf("%s, seed %d: %d pixels, %d realisations of %.3g h", b.Scenario, b.Seed, b.Pixels.Used, b.Pieces, b.Duration/3600),
+	c.text(figureWidth-14, 8, fmt.Sprintf("%s, seed %d: %d pixels, the scatter of %d, %d realisations of %.3g h", b.Scenario, b.Seed, b.Pixels.Used, b.Pixels.Scatter, b.Pieces, b.Duration/3600),
 		textStyle{size: small - 3, colour: grey, x: text.XRight, y: text.YBottom})
 	return &Figure{
 		Name: "budget", PNG: c.png(nil, lineColours),
@@ -108,7 +110,7 @@ func budgetCaption(b *budget.Budget) string {
 	}
 	s := fmt.Sprintf("Left: what the method itself and each assumption add to ln(B/B_SKY), mean over %d pixels; the terms add up to the total. "+
 		"Middle: each term's share with its standard error, what it does alone in an otherwise ideal world and when it is the last to be turned on. "+
-		"Right: standard deviation of a pixel's total between %d realisations of %.3g h, and what of it each term makes.", b.Pixels.Used, b.Pieces, b.Duration/3600)
+		"Right: standard deviation of a pixel's total between %d realisations of %.3g h, and what of it each term makes, from the %d pixels with a value in every realisation and world.", b.Pixels.Used, b.Pieces, b.Duration/3600, b.Pixels.Scatter)
 	if len(off) > 0 {
 		s += " Not in the scenario: " + strings.Join(off, ", ") + "."
 	}
