@@ -49,27 +49,37 @@ var (
 // natural logarithm: log(cm-3), dex(cm-3), ln(cm-3). Integers become numbers. The error
 // says which units there are.
 func Standardise(name string, m *obs.Map) error {
-	q := inferredMaps[name]
-	if q == nil {
-		q = truthMaps[name]
-	}
-	if q == nil {
-		return fmt.Errorf("no map %q is compared", name)
-	}
-	to, ok := q.conversion(m.Unit)
-	if !ok {
-		if strings.TrimSpace(m.Unit) == "" {
-			return fmt.Errorf("has no unit (BUNIT); it must be in %s (or %s)", q.unit, q.example)
-		}
-		return fmt.Errorf("is in %q; it must be in %s (or %s)", m.Unit, q.unit, q.example)
+	to, unit, err := Conversion(name, m.Unit)
+	if err != nil {
+		return err
 	}
 	x := m.Floats()
 	m.Data, m.Ints, m.Codes = make([]float32, len(x)), nil, nil
 	for i, v := range x {
 		m.Data[i] = float32(to(float64(v)))
 	}
-	m.Name, m.Unit = name, q.unit
+	m.Name, m.Unit = name, unit
 	return nil
+}
+
+// Conversion returns the function that takes values in a unit to that of Compare for maps
+// of that name, and the name of the latter. The error says which units there are.
+func Conversion(name, unit string) (to func(float64) float64, standard string, err error) {
+	q := inferredMaps[name]
+	if q == nil {
+		q = truthMaps[name]
+	}
+	if q == nil {
+		return nil, "", fmt.Errorf("no map %q is compared", name)
+	}
+	to, ok := q.conversion(unit)
+	if !ok {
+		if strings.TrimSpace(unit) == "" {
+			return nil, "", fmt.Errorf("has no unit (BUNIT); it must be in %s (or %s)", q.unit, q.example)
+		}
+		return nil, "", fmt.Errorf("is in %q; it must be in %s (or %s)", unit, q.unit, q.example)
+	}
+	return to, q.unit, nil
 }
 
 var (

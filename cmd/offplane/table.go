@@ -56,6 +56,12 @@ table with the columns height [solRad] and density [cm-3], or brightness (shape 
 		if err != nil {
 			return misusef("--features: %w", err)
 		}
+		if len(fs) == 0 {
+			return misusef("--features: names none: give some of %s", strings.Join(table.FeatureNames(), ", "))
+		}
+		if least < 1 {
+			return misusef("--least %d: must be at least 1: without members there is nothing to correct by", least)
+		}
 		set, err := ensemble.Open(args[0])
 		if err != nil {
 			return misuse(err)
@@ -119,7 +125,7 @@ table with the columns height [solRad] and density [cm-3], or brightness (shape 
 	f := cmd.Flags()
 	f.StringVar(&truth, "truth", "sky", "`name` of the truth: sky, emission, wave or total")
 	f.StringVar(&estimator, "estimator", "", "estimator whose maps are to be corrected; empty: the ensemble's first")
-	f.StringVar(&features, "features", "height,field,density,angle", "what the reader has, at most four of height,field,density,speed,angle,track,coherence")
+	f.StringVar(&features, "features", "height,field,density,angle", "what the reader has: at most four, height among them always, of height,field,density,speed,angle,track,coherence")
 	f.IntVar(&least, "least", table.DefaultLeast, "members that a cell needs to be in the domain")
 	f.StringVar(&prior, "prior", "", "`file` with a profile of yours: weigh the members by it")
 	f.Float64Var(&width, "prior-width", table.DefaultWidth, "scatter of ln(member/profile) that --prior lets pass")

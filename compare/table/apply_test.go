@@ -82,7 +82,7 @@ func TestRecipe(t *testing.T) {
 			t.Errorf("%s: %q, %q", c.set, d, u)
 		}
 	}
-	for _, bad := range []string{"estimater=lag", "pixel", "pixel="} {
+	for _, bad := range []string{"estimater=lag", "pixel", "pixel=", "pixel=abc", "mu=NaN", "track=-1"} {
 		if _, err := Recipe(nil).With(bad); err == nil {
 			t.Errorf("%q is let pass", bad)
 		}

@@ -15,7 +15,7 @@ import (
 type Options struct {
 	Features []Feature // height is always among them; nil: DefaultFeatures
 	Weights  []float64 // of the members, 0..1; nil: all 1
-	Least    int       // members that a cell needs to be in the domain; 0: DefaultLeast
+	Least    int       // members that a cell needs to be in the domain, at least 1; 0: DefaultLeast
 	Workers  int
 	Progress func(done, total int)
 }
@@ -73,6 +73,9 @@ func Build(ctx context.Context, members []Member, o Options) (*Table, error) {
 		for i := range o.Weights {
 			o.Weights[i] = 1
 		}
+	}
+	if o.Least < 0 {
+		panic("table: Least is negative")
 	}
 	if o.Least == 0 {
 		o.Least = DefaultLeast

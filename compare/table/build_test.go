@@ -5,6 +5,7 @@ import (
 	"context"
 	"errors"
 	"math"
+	"os"
 	"path/filepath"
 	"reflect"
 	"strings"
@@ -219,6 +220,31 @@ func TestFiles(t *testing.T) {
 	}
 	if _, err := Read("build_test.go"); err == nil || !strings.Contains(err.Error(), "no correction table") {
 		t.Errorf("a Go file: %v", err)
+	}
+}
+
+// A profile may be in the units that maps may have, in the spelling of astropy too.
+func TestPriorUnits(t *testing.T) {
+	path := filepath.Join(t.TempDir(), "prior.ecsv")
+	for _, c := range []struct{ unit, value, refused string }{
+		{"1 / cm3", "2e8", ""}, {"1 / m3", "2e14", ""}, {"m-3", "2e14", ""}, {"cm-3", "2e8", ""}, {"G", "2", `density is in "G"; it must be in cm-3`},
+	} {
+		text := "# %ECSV 1.0\n# ---\n# datatype:\n# - {name: height, unit: solRad, datatype: float64}\n# - {name: density, unit: " + c.unit +
+			", datatype: float64}\n# schema: astropy-2.0\nheight density\n1.1 " + c.value + "\n"
+		if err := os.WriteFile(path, []byte(text), 0o644); err != nil {
+			t.Fatal(err)
+		}
+		p, err := ReadPrior(path, DefaultWidth)
+		switch {
+		case c.refused != "":
+			if err == nil || !strings.Contains(err.Error(), c.refused) {
+				t.Errorf("%s: %v", c.unit, err)
+			}
+		case err != nil:
+			t.Error(err)
+		case math.Abs(p.Values[0]/2e8-1) > 1e-12:
+			t.Errorf("%s %s is read as %g", c.value, c.unit, p.Values[0])
+		}
 	}
 }
 

@@ -235,6 +235,9 @@ func decode(e *ecsv.Table) (*Table, error) {
 			return nil, fmt.Errorf("meta %s is %q: must be a whole number", n.key, meta[n.key])
 		}
 	}
+	if t.Least < 1 {
+		return nil, fmt.Errorf("meta least is %d: must be at least 1", t.Least)
+	}
 	if t.Effective, err = strconv.ParseFloat(meta["effective_members"], 64); err != nil {
 		return nil, fmt.Errorf("meta effective_members is %q", meta["effective_members"])
 	}

@@ -4,6 +4,7 @@ import (
 	"fmt"
 	"math"
 
+	"offplane/compare"
 	"offplane/compare/stat"
 	"offplane/synth/ecsv"
 )
@@ -27,7 +28,7 @@ const DefaultWidth = 0.3
 const reach = 0.025
 
 // ReadPrior reads a profile from a table with the columns height [solRad] and density
-// [cm-3] or brightness.
+// [cm-3, or any unit that maps may have] or brightness.
 func ReadPrior(path string, width float64) (*Prior, error) {
 	t, err := ecsv.ReadFile(path)
 	if err != nil {
@@ -43,8 +44,19 @@ func ReadPrior(path string, width float64) (*Prior, error) {
 	if err != nil {
 		return nil, fmt.Errorf("%s: %w; a prior has the columns height [solRad] and density [cm-3] or brightness", path, err)
 	}
-	if u := t.Column("density"); u != nil && u.Unit != "" && u.Unit != "cm-3" {
-		return nil, fmt.Errorf("%s: density is in %q: must be in cm-3", path, u.Unit)
+	switch u := t.Column("height").Unit; u {
+	case "", "solRad", "R_sun", "Rsun":
+	default:
+		return nil, fmt.Errorf("%s: height is in %q: must be in solRad, from the Sun's centre", path, u)
+	}
+	if u := t.Column(p.Name).Unit; u != "" && !p.Brightness {
+		to, _, err := compare.Conversion("NE", u)
+		if err != nil {
+			return nil, fmt.Errorf("%s: density %w", path, err)
+		}
+		for i, v := range p.Values {
+			p.Values[i] = to(v)
+		}
 	}
 	for i, h := range p.Heights {
 		if !(h >= 1) || !(p.Values[i] > 0) || !finite(h) || !finite(p.Values[i]) {

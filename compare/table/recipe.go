@@ -102,6 +102,11 @@ func (r Recipe) With(assignments ...string) (Recipe, error) {
 		if !ok || value == "" {
 			return nil, fmt.Errorf("%q: must be KEY=VALUE", a)
 		}
+		if key == "pixel" || key == "mu" || key == "track" || key == "padding" {
+			if v, err := strconv.ParseFloat(value, 64); err != nil || !finite(v) || v < 0 || v == 0 && key != "padding" {
+				return nil, fmt.Errorf("%q: %s must be a positive number", a, key)
+			}
+		}
 		i := 0
 		for i < len(steps) && steps[i].key != key {
 			i++

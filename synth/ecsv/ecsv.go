@@ -1,8 +1,9 @@
 // Package ecsv writes and reads tables as ECSV 1.0: comma-separated values
 // under a YAML head in comments that carries units and descriptions
 // (Enhanced Character Separated Values, astropy proposal for enhancement 6).
-// Only what this program writes is read: scalar columns of float64, int64 and
-// string, and plain comma-separated columns without a head.
+// Scalar columns of float64, int64 and string are read, separated by commas or, as
+// is the default of the format, by blanks; and plain comma-separated columns without
+// a head.
 package ecsv
 
 import (
@@ -354,8 +355,10 @@ func Read(r io.Reader) (*Table, error) {
 		if err := yaml.Unmarshal([]byte(yamlText.String()), &h); err != nil {
 			return nil, fmt.Errorf("ECSV head: %w", err)
 		}
-		if h.Delimiter != "" && h.Delimiter != "," {
-			return nil, fmt.Errorf("ECSV head: delimiter is %q: must be ','", h.Delimiter)
+		switch h.Delimiter {
+		case "", " ", ",":
+		default:
+			return nil, fmt.Errorf("ECSV head: delimiter is %q: must be ' ' or ','", h.Delimiter)
 		}
 		if err := t.readMeta(&h.Meta); err != nil {
 			return nil, err
@@ -363,6 +366,9 @@ func Read(r io.Reader) (*Table, error) {
 	}
 	reader := csv.NewReader(in)
 	reader.ReuseRecord = true
+	if ecsv && h.Delimiter != "," && !(h.Delimiter == "" && commas(in, len(h.Datatype))) {
+		reader.Comma, reader.TrimLeadingSpace = ' ', true // several blanks separate like one
+	}
 	names, err := reader.Read()
 	if err != nil {
 		return nil, fmt.Errorf("line %d: the names of the columns are missing", line+1)
@@ -415,6 +421,14 @@ func Read(r io.Reader) (*Table, error) {
 		}
 	}
 	return t, nil
+}
+
+// commas tells whether the next line holds n names separated by commas, which tables
+// written by hand do without saying so.
+func commas(in *bufio.Reader, n int) bool {
+	ahead, _ := in.Peek(in.Size()) // less than that much is no error here
+	names, _, _ := strings.Cut(string(ahead), "\n")
+	return n > 1 && strings.Count(names, ",") == n-1 && !strings.ContainsAny(strings.TrimSpace(names), " \"")
 }
 
 func (c *Column) append(text string, row int) error {

@@ -114,12 +114,48 @@ func TestReadErrors(t *testing.T) {
 		{head + "a,b\n1,2\nx,2\n", `line 8: column a: "x" is not a number`},
 		{head + "a,b\n1,2.5\n", `line 7: column b: "2.5" is not a 64-bit integer`},
 		{head + "a,b\n1\n", "line 7: wrong number of fields"},
-		{"# %ECSV 1.0\n# ---\n# delimiter: ' '\n", `ECSV head: delimiter is " ": must be ','`},
+		{"# %ECSV 1.0\n# ---\n# delimiter: '|'\n", `ECSV head: delimiter is "|": must be ' ' or ','`},
 		{"# %ECSV 1.0\n# - {\n", "ECSV head: "},
 	} {
 		_, err := Read(strings.NewReader(c.text))
 		if err == nil || !strings.HasPrefix(err.Error(), c.want) {
 			t.Errorf("%q: %v, want %s", c.text, err, c.want)
+		}
+	}
+}
+
+// The format's default delimiter is the blank. The first text is what astropy 7 wrote
+// for a QTable and a masked column (copied from its output), the second says the delimiter.
+func TestBlanks(t *testing.T) {
+	head := `# datatype:
+# - {name: height, unit: solRad, datatype: float64}
+# - {name: density, unit: 1 / m3, datatype: float64}
+# - {name: my note, datatype: string}
+# - {name: k, datatype: int64}
+# meta: !!omap
+# - __serialized_columns__:
+#     height:
+#       __class__: astropy.units.quantity.Quantity
+#       unit: !astropy.units.Unit {unit: solRad}
+#       value: !astropy.table.SerializedColumn {name: height}
+# schema: astropy-2.0
+height density "my note" k
+1.05 100000000000000.0 "a b" 1
+1.2   50000000000000.0 "c ""d""" ""
+`
+	want := &Table{Columns: []Column{
+		{Name: "height", Unit: "solRad", Data: []float64{1.05, 1.2}},
+		{Name: "density", Unit: "1 / m3", Data: []float64{1e14, 5e13}},
+		{Name: "my note", Data: []string{"a b", `c "d"`}},
+		{Name: "k", Data: []int64{1, 0}, Missing: []bool{false, true}},
+	}}
+	for _, start := range []string{"# %ECSV 1.0\n# ---\n", "# %ECSV 1.0\n# ---\n# delimiter: ' '\n"} {
+		table, err := Read(strings.NewReader(start + head))
+		if err != nil {
+			t.Fatal(err)
+		}
+		if d := cmp.Diff(want, table); d != "" {
+			t.Error(d)
 		}
 	}
 }
