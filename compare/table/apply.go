@@ -2,6 +2,7 @@ package table
 
 import (
 	"math"
+	"slices"
 
 	"offplane/compare/stat"
 	"offplane/scenarios/units"
@@ -49,12 +50,74 @@ type Applied struct {
 	Valid, Corrected, Coarse     int     // pixels with a value; of these corrected; of these by a coarser table
 	Median                       float64 // of the factor
 	Used                         []Use   // surfaces that were asked, in the order of pixels
+	Past                         []Past  // ends of axes that pixels lie beyond, in the order of pixels
 }
 
 // A Use counts the pixels that had the features of one surface.
 type Use struct {
-	Surface *Surface
+	Surface           *Surface
+	Pixels, Corrected int
+}
+
+// A Past counts the pixels beyond one end of an axis; a pixel may lie beyond several.
+type Past struct {
+	Feature Feature
+	Above   bool    // the upper end
+	End     float64 // in the unit of the feature
 	Pixels  int
+}
+
+// past counts a pixel beyond the ends of the grid of s.
+func (a *Applied) past(s *Surface, x []float64) {
+	for k, axis := range s.Grid {
+		p := Past{Feature: axis.Feature, End: axis.Nodes[0]}
+		switch last := axis.Nodes[len(axis.Nodes)-1]; {
+		case x[k] > last:
+			p.Above, p.End = true, last
+		case x[k] >= axis.Nodes[0]:
+			continue
+		}
+		i := slices.IndexFunc(a.Past, func(q Past) bool { return q.Feature == p.Feature && q.Above == p.Above && q.End == p.End })
+		if i < 0 {
+			i, a.Past = len(a.Past), append(a.Past, p)
+		}
+		a.Past[i].Pixels++
+	}
+}
+
+// unitFactors are those between units in use: G and T, cm-3 and m-3, km/s and m/s.
+var unitFactors = map[Feature]float64{Field: 1e4, Density: 1e6, Speed: 1e3}
+
+// WrongUnit reports whether all values of a feature lie beyond the table, while their median
+// times factor would not: as of a map with the wrong unit in its header.
+func (t *Table) WrongUnit(in Input, f Feature) (factor float64, ok bool) {
+	in.Features[in.Quantity.Feature()] = in.Values
+	s, by := t.Find(in.Quantity, t.Features()), unitFactors[f]
+	if s == nil || by == 0 || !slices.Contains(s.Features(), f) {
+		return 0, false
+	}
+	nodes := s.Grid[slices.Index(s.Features(), f)].Nodes
+	low, high := nodes[0], nodes[len(nodes)-1]
+	var x []float64
+	for i, v := range in.Features[f] {
+		if v > 0 && finite(v) && in.Values[i] > 0 {
+			x = append(x, v)
+		}
+	}
+	if len(x) == 0 {
+		return 0, false
+	}
+	m := stat.Median(x)
+	switch {
+	case slices.Max(x) < low:
+		factor = by
+	case slices.Min(x) > high:
+		factor = 1 / by
+	default:
+		return 0, false
+	}
+	// The median of a map may itself lie a little beyond.
+	return factor, m*factor >= low/2 && m*factor <= 2*high
 }
 
 // Apply corrects a map. Each pixel is corrected by the surface of all the features that
@@ -108,12 +171,14 @@ func (t *Table) Apply(in Input) *Applied {
 		switch where {
 		case Beyond:
 			a.Flag[i] |= OutOfRange
+			a.past(s, x)
 			continue
 		case Sparse:
 			a.Flag[i] |= TooFew
 			continue
 		}
 		a.Corrected++
+		a.Used[uses[set]-1].Corrected++
 		if coarse {
 			a.Coarse++
 		}

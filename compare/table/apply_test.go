@@ -2,6 +2,7 @@ package table
 
 import (
 	"math"
+	"slices"
 	"strings"
 	"testing"
 
@@ -23,6 +24,18 @@ func TestApply(t *testing.T) {
 	}
 	if a.Valid != 4 || a.Corrected != 2 || a.Coarse != 1 || len(a.Used) != 2 {
 		t.Errorf("%+v", a)
+	}
+	full, coarse := tab.Find(FieldQ, []Feature{Height, Field, Speed}).Grid, &a.Used[1]
+	past := []Past{{Height, true, full[0].Nodes[len(full[0].Nodes)-1], 1}, {Speed, true, full[2].Nodes[len(full[2].Nodes)-1], 1}}
+	if !slices.Equal(a.Past, past) || a.Used[0].Pixels != 3 || a.Used[0].Corrected != 1 || coarse.Pixels != 1 || coarse.Corrected != 1 {
+		t.Errorf("beyond %+v, want %+v; used %+v", a.Past, past, a.Used)
+	}
+	for _, u := range []struct{ by, want float64 }{{1e4, 1e-4}, {1e-4, 1e4}, {1, 0}, {30, 0}} {
+		wrong := in
+		wrong.Values = []float64{2 * u.by, 2.1 * u.by, 1.9 * u.by, n, -1, n}
+		if f, ok := tab.WrongUnit(wrong, Field); ok != (u.want != 0) || ok && math.Abs(f/u.want-1) > 1e-12 {
+			t.Errorf("values times %g: wrong by %g, %v", u.by, f, ok)
+		}
 	}
 	c, _ := tab.Find(FieldQ, []Feature{Height, Field, Speed}).At([]float64{1.1, 2, 500}, tab.Least)
 	if a.Factor[0] != math.Exp(c.Median) || a.Values[0] != 2*a.Factor[0] || !(a.Low95[0] < a.Low68[0] && a.Low68[0] < a.Values[0] && a.Values[0] < a.High68[0] && a.High68[0] < a.High95[0]) {

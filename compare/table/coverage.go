@@ -1,6 +1,10 @@
 package table
 
-import "offplane/synth/ecsv"
+import (
+	"fmt"
+
+	"offplane/synth/ecsv"
+)
 
 // Coverage returns the scores as a table: for each surface one row over all heights, with
 // NaN bounds, and one for each bin of heights. Losses are over all heights.
@@ -67,4 +71,56 @@ func (t *Table) Coverage() *ecsv.Table {
 	score("median_error", "median of |ln(true/corrected)|", func(s *Score) float64 { return s.Left })
 	score("median_error_none", "median of |ln(true/inferred)|", func(s *Score) float64 { return s.None })
 	return out
+}
+
+// addScores takes losses and errors from the scores in e, over all heights, if e is of the
+// build of this table: the same metadata, which include what was achieved.
+func (t *Table) addScores(e *ecsv.Table) {
+	theirs := map[string]string{}
+	for _, p := range e.Meta {
+		theirs[p.Key] = fmt.Sprint(p.Value)
+	}
+	for _, p := range t.meta() {
+		if theirs[p.Key] != fmt.Sprint(p.Value) {
+			return
+		}
+	}
+	quantity, names, err := texts(e)
+	if err != nil {
+		return
+	}
+	from, err := e.Floats("height_from")
+	if err != nil {
+		return
+	}
+	rows := map[string]int{}
+	for i := range quantity {
+		if from[i] != from[i] {
+			rows[quantity[i]+" "+names[i]] = i
+		}
+	}
+	for k := range t.Surfaces {
+		s := &t.Surfaces[k]
+		i, ok := rows[s.Quantity.String()+" "+join(s.Features())]
+		if !ok {
+			continue
+		}
+		got, l := s.Score, &s.Score.Loss
+		for _, c := range []struct {
+			name string
+			to   *float64
+		}{
+			{"domain", &s.Score.Share}, {"loss", &l.Table}, {"loss_single", &l.Single}, {"loss_none", &l.None},
+			{"cut_none", &l.CutNone.Value}, {"cut_none_low", &l.CutNone.Low}, {"cut_none_high", &l.CutNone.High},
+			{"cut_single", &l.CutSingle.Value}, {"cut_single_low", &l.CutSingle.Low}, {"cut_single_high", &l.CutSingle.High},
+			{"median_error", &s.Score.Left}, {"median_error_none", &s.Score.None},
+		} {
+			x, err := e.Floats(c.name)
+			if err != nil {
+				s.Score = got
+				return
+			}
+			*c.to = x[i]
+		}
+	}
 }

@@ -1,12 +1,16 @@
 package table
 
 import (
+	"bytes"
 	"embed"
 	"fmt"
 	"io/fs"
 	"os"
+	"path/filepath"
 	"slices"
 	"strings"
+
+	"offplane/synth/ecsv"
 )
 
 // shipped holds a folder a table, with table.ecsv and coverage.ecsv of table build.
@@ -38,18 +42,41 @@ func Source(name string) ([]byte, error) {
 	return shipped.ReadFile("shipped/" + name + "/table.ecsv")
 }
 
-// Open reads a table by the name of an embedded one or from a file.
+// coverageFile is the name of the scores that table build leaves beside a table.
+const coverageFile = "coverage.ecsv"
+
+// Open reads a table by the name of an embedded one or from a file, with the losses of its
+// coverage.ecsv if that is there.
 func Open(nameOrPath string) (*Table, error) {
 	if slices.Contains(Names(), nameOrPath) {
 		text, err := Source(nameOrPath)
 		if err != nil {
 			return nil, err
 		}
-		return parse(text)
+		t, err := parse(text)
+		if err != nil {
+			return nil, err
+		}
+		cover, err := shipped.ReadFile("shipped/" + nameOrPath + "/" + coverageFile)
+		if err != nil {
+			return nil, err
+		}
+		e, err := ecsv.Read(bytes.NewReader(cover))
+		if err != nil {
+			return nil, err
+		}
+		t.addScores(e)
+		return t, nil
 	}
 	t, err := Read(nameOrPath)
 	if os.IsNotExist(err) {
 		return nil, fmt.Errorf("%s: no such file, and no embedded table of that name (there are %s)", nameOrPath, strings.Join(Names(), ", "))
+	}
+	if err == nil {
+		// What stands beside the table serves if it is of the same build, and is not needed.
+		if e, err := ecsv.ReadFile(filepath.Join(filepath.Dir(nameOrPath), coverageFile)); err == nil {
+			t.addScores(e)
+		}
 	}
 	return t, err
 }

@@ -2,7 +2,10 @@ package table
 
 import (
 	"bytes"
+	"math"
+	"path/filepath"
 	"slices"
+	"strings"
 	"testing"
 
 	"offplane/synth/ecsv"
@@ -47,6 +50,52 @@ func TestEmbedded(t *testing.T) {
 			t.Fatal(err)
 		}
 		checkShipped(t, tab, e)
+	}
+}
+
+// An embedded table carries the losses of its coverage.ecsv; a copy elsewhere does so only if
+// that stands beside it, and is of the same build.
+func TestScoresBeside(t *testing.T) {
+	tab, err := Open(DefaultName)
+	if err != nil {
+		t.Fatal(err)
+	}
+	for i := range tab.Surfaces {
+		s := &tab.Surfaces[i].Score
+		// By definition of the cut, to the five digits of the file.
+		if _, known := s.BeatsSingle(); !known || math.Abs(1-s.Loss.Table/s.Loss.Single-s.Loss.CutSingle.Value) > 3e-4 || !(s.Left > 0 && s.None > s.Left) {
+			t.Errorf("%s: %+v", scoreKey(&tab.Surfaces[i]), s)
+		}
+	}
+	path := filepath.Join(t.TempDir(), "table.ecsv")
+	known := func() bool {
+		t.Helper()
+		got, err := Open(path)
+		if err != nil {
+			t.Fatal(err)
+		}
+		_, known := got.Surfaces[0].Score.BeatsSingle()
+		return known
+	}
+	if err := tab.ECSV().WriteFile(path); err != nil {
+		t.Fatal(err)
+	}
+	if known() {
+		t.Error("losses from nowhere")
+	}
+	beside := filepath.Join(filepath.Dir(path), coverageFile)
+	if err := tab.Coverage().WriteFile(beside); err != nil {
+		t.Fatal(err)
+	}
+	if !known() {
+		t.Error("the coverage beside the table is not read")
+	}
+	tab.Origin.SHA256 = strings.Repeat("0", 64)
+	if err := tab.Coverage().WriteFile(beside); err != nil {
+		t.Fatal(err)
+	}
+	if known() {
+		t.Error("the coverage of another table is taken")
 	}
 }
 

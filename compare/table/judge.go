@@ -232,6 +232,12 @@ func cut(ms []memberScore, l int) Interval {
 	}
 }
 
+// BeatsSingle reports whether the surface cuts the loss against one factor for all pixels,
+// with 97.5 per cent confidence; known is false of a table read without its coverage.ecsv.
+func (s *Score) BeatsSingle() (beats, known bool) {
+	return s.Loss.CutSingle.Low > 0, s.Loss.None > 0
+}
+
 // Kept reports whether both intervals held what they promise: coverage not more than three
 // points below nominal, or two standard errors over members if that is more. Above it may
 // lie, by some 2/(members+1): the calibration leaves room for the member to come.
