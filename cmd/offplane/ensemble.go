@@ -127,6 +127,7 @@ the same bytes wherever it is computed, so an ensemble may be shared out: --task
 }
 
 func (p *program) runEnsemble(ctx context.Context, l *ensemble.Loaded, m *members) error {
+	r := newRecord("ensemble", p.args, m.out, parallel.Workers(m.workers))
 	numbers, err := m.share(l)
 	if err != nil {
 		return err
@@ -136,13 +137,29 @@ func (p *program) runEnsemble(ctx context.Context, l *ensemble.Loaded, m *member
 	}
 	bar := newProgress(p.stderr, m.quiet, m.progress)
 	defer bar.wipe()
+	idle := false
 	s := ensemble.Settings{Workers: m.workers, Version: version().Version, RetryFailed: m.retry, Progress: bar.stageFunc("members")}
+	s.Begin = func(todo int, damaged []*ensemble.Damage) error {
+		for _, d := range damaged {
+			p.say("%v: it is computed again", d)
+		}
+		idle = todo == 0
+		return m.reopen(todo)
+	}
 	if err := ensemble.Run(ctx, l, m.out, numbers, s); err != nil {
 		return err
 	}
 	bar.wipe()
-	if !m.part {
-		return p.gather(m)
+	r.stage("members")
+	switch {
+	case m.part:
+	case idle && exists(filepath.Join(m.out, recordName)) && exists(filepath.Join(m.out, membersFile)):
+		if !m.quiet && !m.json {
+			p.say("%s is complete: there is nothing to do", m.out)
+		}
+		return p.told(m)
+	default:
+		return p.gather(m, r)
 	}
 	set, err := ensemble.Open(m.out)
 	if err != nil {
@@ -192,12 +209,17 @@ func (m *members) prepare(l *ensemble.Loaded) error {
 		return misusef("%w: choose another folder, or write over it with --force", err)
 	case err != nil:
 		return unmade(err)
-	case m.part || m.retry:
-		return nil
-	case exists(filepath.Join(m.out, recordName)):
-		return misusef("%s is complete: choose another folder, or write over it with --force", m.out)
 	}
 	return nil
+}
+
+// reopen takes the record away if members are to be computed: from then on the folder is
+// not complete.
+func (m *members) reopen(todo int) error {
+	if todo == 0 {
+		return nil
+	}
+	return os.RemoveAll(filepath.Join(m.out, recordName))
 }
 
 // clearEnsemble takes away what run and gather leave; the record first, so that the
@@ -250,7 +272,11 @@ func (p *program) ensembleStatus() *cobra.Command {
 
 // printStatus tells how far an ensemble is.
 func (p *program) printStatus(set *ensemble.Set, json bool) error {
-	gathered := exists(filepath.Join(set.Dir, recordName))
+	gathered := exists(filepath.Join(set.Dir, recordName)) && len(set.Missing) == 0
+	damaged := []int{}
+	for _, d := range set.Damaged {
+		damaged = append(damaged, d.Number)
+	}
 	if json {
 		return writeJSON(p.stdout, struct {
 			Schema   int    `json:"schema"`
@@ -259,12 +285,16 @@ func (p *program) printStatus(set *ensemble.Set, json bool) error {
 			Done     int    `json:"done"`
 			Failed   []int  `json:"failed"`
 			Missing  []int  `json:"missing"`
+			Damaged  []int  `json:"damaged"` // among the missing
 			Gathered bool   `json:"gathered"`
-		}{1, set.Ensemble.SHA256, set.Ensemble.Members, len(set.Done), notNull(set.Failed), notNull(set.Missing), gathered})
+		}{1, set.Ensemble.SHA256, set.Ensemble.Members, len(set.Done), notNull(set.Failed), notNull(set.Missing), damaged, gathered})
 	}
 	fmt.Fprintf(p.stdout, "members  %d\ndone     %d\nfailed   %d\nmissing  %d\n", set.Ensemble.Members, len(set.Done), len(set.Failed), len(set.Missing))
 	for _, i := range set.Failed {
 		fmt.Fprintf(p.stdout, "%d: %s\n", i, strings.TrimSpace(set.Reason(i)))
+	}
+	for _, d := range set.Damaged {
+		fmt.Fprintf(p.stdout, "%d: damaged, counts as missing: %v\n", d.Number, d)
 	}
 	if gathered {
 		fmt.Fprintln(p.stdout, "gathered")
@@ -290,18 +320,21 @@ members are missing: offplane ensemble run goes on with them.`,
 	cmd.Flags().BoolVar(&m.json, "json", false, "results on standard output as one JSON document")
 	cmd.RunE = do(func(_ context.Context, args []string) error {
 		m.out = args[0]
-		return p.gather(&m)
+		return p.gather(&m, newRecord("ensemble", p.args, m.out, parallel.Workers(m.workers)))
 	})
 	return cmd
 }
 
 const membersFile = "members.ecsv"
 
-// gather makes the folder complete.
-func (p *program) gather(m *members) error {
+// gather makes the folder complete; r was begun with the command.
+func (p *program) gather(m *members, r *record) error {
 	set, err := ensemble.Open(m.out)
 	if err != nil {
 		return misuse(err)
+	}
+	if len(set.Damaged) > 0 {
+		return m.harmed(set.Damaged[0])
 	}
 	if n := len(set.Missing); n > 0 {
 		return &fault{exitStopped, fmt.Errorf("%s: %d of %d members are missing, the first is %d; offplane ensemble run goes on with them", m.out, n, set.Ensemble.Members, set.Missing[0])}
@@ -317,20 +350,39 @@ func (p *program) gather(m *members) error {
 	}
 	defer f.abandon()
 	index, err := set.Index()
+	var d *ensemble.Damage
+	if errors.As(err, &d) {
+		return m.harmed(d)
+	}
 	if err != nil {
 		return err
 	}
 	if err := index.WriteFile(f.path(membersFile)); err != nil {
 		return err
 	}
-	if err := f.finish(newRecord("ensemble", p.args, m.out, parallel.Workers(m.workers))); err != nil {
+	r.stage("gather")
+	if err := f.finish(r); err != nil {
+		return err
+	}
+	return p.told(m)
+}
+
+// harmed is the error of gathering a damaged member.
+func (m *members) harmed(d *ensemble.Damage) error {
+	return &fault{exitStopped, fmt.Errorf("%s: member %d is damaged: %w; offplane ensemble run makes it again", m.out, d.Number, d)}
+}
+
+// told prints what a complete folder holds.
+func (p *program) told(m *members) error {
+	set, err := ensemble.Open(m.out)
+	if err != nil {
 		return err
 	}
 	switch {
 	case m.json:
 		return p.printStatus(set, true)
 	case !m.quiet:
-		fmt.Fprintf(p.stdout, "members  %d, failed %d\nindex    %s\n", len(set.Done), len(set.Failed), f.path(membersFile))
+		fmt.Fprintf(p.stdout, "members  %d, failed %d\nindex    %s\n", len(set.Done), len(set.Failed), filepath.Join(m.out, membersFile))
 	}
 	return nil
 }

@@ -1,6 +1,7 @@
 package main
 
 import (
+	"encoding/json"
 	"errors"
 	"os"
 	"os/exec"
@@ -45,6 +46,7 @@ parameters:
 		t.Fatal(err)
 	}
 	member := func(out, number string) string { return filepath.Join(dir, out, "members", number, "member.fits") }
+	checkTimes(t, filepath.Join(dir, "whole", recordName), member("whole", "000000"))
 	sum := func(path string) string {
 		e, err := entryOf(path)
 		if err != nil {
@@ -90,5 +92,29 @@ parameters:
 		if sum(filepath.Join(dir, c.out, membersFile)) != sum(filepath.Join(dir, "whole", membersFile)) {
 			t.Errorf("%s: another index", c.out)
 		}
+	}
+}
+
+// checkTimes holds the record of an ensemble against a member: it tells of the whole
+// command, not of the gathering at its end.
+func checkTimes(t *testing.T, path, member string) {
+	t.Helper()
+	text, err := os.ReadFile(path)
+	if err != nil {
+		t.Fatal(err)
+	}
+	var r record
+	if err := json.Unmarshal(text, &r); err != nil {
+		t.Fatal(err)
+	}
+	info, err := os.Stat(member)
+	if err != nil {
+		t.Fatal(err)
+	}
+	if !r.Started.Before(info.ModTime()) {
+		t.Errorf("started %v, after the first member %v", r.Started, info.ModTime())
+	}
+	if len(r.Stages) != 2 || r.Stages[0].Name != "members" || r.Stages[1].Name != "gather" || r.Stages[0].Seconds > r.Seconds {
+		t.Errorf("stages %v of %v s", r.Stages, r.Seconds)
 	}
 }

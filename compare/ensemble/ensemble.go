@@ -133,9 +133,7 @@ func Parse(source string, text []byte) (*Loaded, error) {
 	}
 	l.Ensemble = Ensemble{Seed: 1, Design: "latin-hypercube", Set: []string{}}
 	v := l.read(source, text)
-	if len(v.problems) == 0 {
-		v.base(source)
-	}
+	v.base(source)
 	if err := v.problems.Err(); err != nil {
 		return nil, err
 	}

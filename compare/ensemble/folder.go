@@ -28,9 +28,10 @@ func memberFolder(dir string, number int) string {
 type Set struct {
 	Dir      string
 	Ensemble *Loaded
-	Done     []int // numbers of the members that are whole, ascending
-	Failed   []int // of those that left FAILED
-	Missing  []int // of those not computed yet
+	Done     []int     // numbers of the members that are whole, ascending
+	Failed   []int     // of those that left FAILED
+	Missing  []int     // of those not computed yet, and of the damaged
+	Damaged  []*Damage // a look at the headers finds them
 }
 
 // Open looks into the folder of an ensemble, complete or not.
@@ -48,11 +49,15 @@ func Open(dir string) (*Set, error) {
 		return nil, err
 	}
 	for i := range s.Ensemble.Members {
-		switch stateOf(dir, i) {
+		st, err := s.Ensemble.state(dir, i, Identify)
+		switch st {
 		case done:
 			s.Done = append(s.Done, i)
 		case failed:
 			s.Failed = append(s.Failed, i)
+		case damaged:
+			s.Damaged = append(s.Damaged, &Damage{i, err})
+			fallthrough
 		default:
 			s.Missing = append(s.Missing, i)
 		}
@@ -62,13 +67,29 @@ func Open(dir string) (*Set, error) {
 
 // Read reads member number, which must be one of Done.
 func (s *Set) Read(number int) (*Member, error) {
-	path := filepath.Join(memberFolder(s.Dir, number), memberName)
-	m, err := ReadMember(path)
-	if err == nil && (m.Ensemble != s.Ensemble.SHA256 || m.Number != number) {
-		err = fmt.Errorf("%s: is member %d of the ensemble %.12s, not %d of %.12s", path, m.Number, m.Ensemble, number, s.Ensemble.SHA256)
+	return s.Ensemble.readMember(s.Dir, number, ReadMember)
+}
+
+// readMember reads a member by ReadMember or Identify and holds it against its place.
+func (l *Loaded) readMember(dir string, number int, read func(path string) (*Member, error)) (*Member, error) {
+	path := filepath.Join(memberFolder(dir, number), memberName)
+	m, err := read(path)
+	if err == nil && (m.Ensemble != l.SHA256 || m.Number != number) {
+		err = fmt.Errorf("%s: is member %d of the ensemble %.12s, not %d of %.12s", path, m.Number, m.Ensemble, number, l.SHA256)
 	}
 	return m, err
 }
+
+// Damage is what is wrong with the file of a member. Run computes it again.
+type Damage struct {
+	Number int
+	Err    error // with the path
+}
+
+func (d *Damage) Error() string { return d.Err.Error() }
+
+// Unwrap returns Err.
+func (d *Damage) Unwrap() error { return d.Err }
 
 // Reason returns why member number failed.
 func (s *Set) Reason(number int) string {
@@ -85,15 +106,20 @@ const (
 	missing state = iota
 	done
 	failed
+	damaged
 )
 
-func stateOf(dir string, number int) state {
+// state tells how far a member is; the error says why it is damaged.
+func (l *Loaded) state(dir string, number int, read func(path string) (*Member, error)) (state, error) {
 	folder := memberFolder(dir, number)
 	if _, err := os.Stat(filepath.Join(folder, memberName)); err == nil {
-		return done
+		if _, err := l.readMember(dir, number, read); err != nil {
+			return damaged, err
+		}
+		return done, nil
 	}
 	if _, err := os.Stat(filepath.Join(folder, failedName)); err == nil {
-		return failed
+		return failed, nil
 	}
-	return missing
+	return missing, nil
 }

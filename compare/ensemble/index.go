@@ -14,7 +14,8 @@ import (
 
 // Index reads every member that is done, checks that they belong together and returns
 // one row for each, failed ones included: state, seed, parameters, counts, checksum. What
-// was left half-written by tries that ended is removed.
+// was left half-written by tries that ended is removed. The error is a *Damage if a member
+// cannot be read.
 func (s *Set) Index() (*ecsv.Table, error) {
 	if err := s.sweep(); err != nil {
 		return nil, err
@@ -29,7 +30,7 @@ func (s *Set) Index() (*ecsv.Table, error) {
 	for _, i := range s.Done {
 		m, err := s.Read(i)
 		if err != nil {
-			return nil, err
+			return nil, &Damage{i, err}
 		}
 		if first == nil {
 			first = m

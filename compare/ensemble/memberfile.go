@@ -18,6 +18,8 @@ const (
 	scenarioTable   = "SCENARIO"
 )
 
+const memberHDUs = 6 // the empty primary one and the tables
+
 // write writes the file of the member: binary tables under an empty primary HDU.
 func (m *Member) write(path string) error {
 	w, err := fits.Create(path, fits.Header{
@@ -89,16 +91,10 @@ func ReadMember(path string) (*Member, error) {
 		return nil, err
 	}
 	defer f.Close()
-	m := &Member{}
-	var ok [2]bool
-	primary := f.HDUs[0].Header
-	m.Ensemble, ok[0] = primary.Text("ENSSHA")
-	m.Number, ok[1] = primary.Int("MEMBER")
-	if !ok[0] || !ok[1] {
-		return nil, fmt.Errorf("%s: not a member of an ensemble: the cards ENSSHA and MEMBER are missing", path)
+	m, err := identify(f)
+	if err != nil {
+		return nil, err
 	}
-	creator, _ := primary.Text("CREATOR")
-	fmt.Sscanf(creator, "offplane %s", &m.Version)
 	pixels, err := f.Table("PIXELS")
 	if err != nil {
 		return nil, err
@@ -111,6 +107,35 @@ func ReadMember(path string) (*Member, error) {
 		if err := read(f); err != nil {
 			return nil, err
 		}
+	}
+	return m, nil
+}
+
+// Identify reads the headers of a member's file, which must hold the data they tell of,
+// and returns its number, ensemble and version only.
+func Identify(path string) (*Member, error) {
+	f, err := fits.Open(path)
+	if err != nil {
+		return nil, err
+	}
+	defer f.Close()
+	return identify(f)
+}
+
+func identify(f *fits.File) (*Member, error) {
+	m := &Member{}
+	var ok [2]bool
+	primary := f.HDUs[0].Header
+	m.Ensemble, ok[0] = primary.Text("ENSSHA")
+	m.Number, ok[1] = primary.Int("MEMBER")
+	if !ok[0] || !ok[1] {
+		return nil, fmt.Errorf("%s: not a member of an ensemble: the cards ENSSHA and MEMBER are missing", f.Name)
+	}
+	creator, _ := primary.Text("CREATOR")
+	fmt.Sscanf(creator, "offplane %s", &m.Version)
+	// The writer closes each HDU; a file cut between two of them has too few.
+	if len(f.HDUs) != memberHDUs {
+		return nil, fmt.Errorf("%s: has %d HDUs, a member has %d", f.Name, len(f.HDUs), memberHDUs)
 	}
 	return m, nil
 }

@@ -21,6 +21,10 @@ type Settings struct {
 	Version     string
 	RetryFailed bool // compute members again that left FAILED
 	Progress    func(done, total int)
+
+	// Begin, if set, is told before the first member is computed how many will be, and
+	// which of them are damaged. Its error stops the run.
+	Begin func(todo int, damaged []*Damage) error
 }
 
 // Prepare makes the folder of an ensemble and writes the resolved ensemble into it. It
@@ -65,7 +69,8 @@ const partMark = ".part-"
 // ownName returns a name beside path that nobody else uses.
 func ownName(path string) string { return path + partMark + rand.Text() }
 
-// Run computes those of the numbered members that are not there yet, each on one core.
+// Run computes those of the numbered members that are not there yet or cannot be read,
+// each on one core.
 // A member that cannot be computed leaves FAILED and does not stop the others. The error
 // is that of the folder or of a cancelled context; members that are whole stay.
 func Run(ctx context.Context, l *Loaded, dir string, numbers []int, s Settings) error {
@@ -73,9 +78,19 @@ func Run(ctx context.Context, l *Loaded, dir string, numbers []int, s Settings) 
 		return err
 	}
 	var todo []int
+	var harm []*Damage
 	for _, i := range numbers {
-		if st := stateOf(dir, i); st == missing || st == failed && s.RetryFailed {
+		st, err := l.state(dir, i, ReadMember)
+		if st == damaged {
+			harm = append(harm, &Damage{i, err})
+		}
+		if st == missing || st == damaged || st == failed && s.RetryFailed {
 			todo = append(todo, i)
+		}
+	}
+	if s.Begin != nil {
+		if err := s.Begin(len(todo), harm); err != nil {
+			return err
 		}
 	}
 	var mu sync.Mutex
@@ -99,11 +114,11 @@ func compute(ctx context.Context, l *Loaded, dir string, number int, version str
 	}
 	if err != nil {
 		reason := []byte(err.Error() + "\n")
-		return settle(dir, number, func(folder string) error {
+		return l.settle(dir, number, func(folder string) error {
 			return os.WriteFile(filepath.Join(folder, failedName), reason, 0o666)
 		})
 	}
-	return settle(dir, number, func(folder string) error { return m.write(filepath.Join(folder, memberName)) })
+	return l.settle(dir, number, func(folder string) error { return m.write(filepath.Join(folder, memberName)) })
 }
 
 // Compute returns a member, computed on one core.
@@ -120,8 +135,8 @@ func (l *Loaded) Compute(ctx context.Context, number int, version string) (*Memb
 }
 
 // settle fills a folder under a name of its own and gives it that of the member. Whoever
-// comes second finds the same bytes there and leaves them; what failed gives way.
-func settle(dir string, number int, fill func(folder string) error) error {
+// comes second finds the same bytes there and leaves them; what failed or is damaged gives way.
+func (l *Loaded) settle(dir string, number int, fill func(folder string) error) error {
 	folder := memberFolder(dir, number)
 	part := ownName(folder)
 	if err := os.Mkdir(part, 0o777); err != nil {
@@ -134,15 +149,16 @@ func settle(dir string, number int, fill func(folder string) error) error {
 	if err := flush(part); err != nil {
 		return err
 	}
-	if stateOf(dir, number) == failed {
+	if st, _ := l.state(dir, number, ReadMember); st == failed || st == damaged {
 		if err := os.RemoveAll(folder); err != nil {
 			return err
 		}
 	}
-	if err := os.Rename(part, folder); err != nil && stateOf(dir, number) == missing {
-		return err
+	err := os.Rename(part, folder)
+	if st, _ := l.state(dir, number, Identify); st == done || st == failed {
+		return nil
 	}
-	return nil
+	return err
 }
 
 // flush brings the files of a folder to the disk before it gets its name, so that a

@@ -1,6 +1,7 @@
 package ensemble
 
 import (
+	"bytes"
 	"context"
 	"crypto/sha256"
 	"errors"
@@ -104,6 +105,57 @@ func TestResume(t *testing.T) {
 	}
 	if diff := cmp.Diff(want, tree(t, dir)); diff != "" {
 		t.Error(diff)
+	}
+}
+
+// Damage that the headers show is found by a look, damage of the content by a full read;
+// a rerun makes either member again, the same bytes, and leaves the others.
+func TestDamaged(t *testing.T) {
+	l, dir := whole(t)
+	want := tree(t, dir)
+	file := func(i int) string { return filepath.Join(memberFolder(dir, i), memberName) }
+	data, err := os.ReadFile(file(0))
+	if err != nil {
+		t.Fatal(err)
+	}
+	content := bytes.Replace(data, []byte("strength: 2 G"), []byte("strength: 3 G"), 1)
+	if bytes.Equal(content, data) {
+		t.Fatal("the scenario does not stand in the file")
+	}
+	for _, c := range []struct {
+		name  string
+		data  []byte
+		shown bool // by the headers
+	}{
+		{"empty", nil, true},
+		{"garbage", bytes.Repeat([]byte("x"), len(data)), true},
+		{"cut within data", data[:len(data)-2880], true},
+		{"primary HDU only", data[:2880], true},
+		{"other member", bytes.Replace(data, []byte("MEMBER  =                    0"), []byte("MEMBER  =                    1"), 1), true},
+		{"content", content, false},
+	} {
+		if err := os.WriteFile(file(0), c.data, 0o666); err != nil {
+			t.Fatal(err)
+		}
+		s := open(t, dir)
+		if shown := len(s.Damaged) == 1 && len(s.Missing) == 1 && s.Missing[0] == 0; shown != c.shown || shown && !strings.Contains(s.Damaged[0].Error(), file(0)) {
+			t.Errorf("%s: damaged %v, missing %v", c.name, s.Damaged, s.Missing)
+		}
+		var d *Damage
+		if _, err := s.Index(); !c.shown && (!errors.As(err, &d) || d.Number != 0) {
+			t.Errorf("%s: index: %v", c.name, err)
+		}
+		begun := 0
+		run(t, l, dir, 0, 1, Settings{Begin: func(todo int, damaged []*Damage) error {
+			begun = todo
+			if len(damaged) != 1 || damaged[0].Number != 0 {
+				t.Errorf("%s: damaged %v", c.name, damaged)
+			}
+			return nil
+		}})
+		if diff := cmp.Diff(want, tree(t, dir)); diff != "" || begun != 1 {
+			t.Errorf("%s: %d computed: %s", c.name, begun, diff)
+		}
 	}
 }
 

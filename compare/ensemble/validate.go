@@ -14,6 +14,7 @@ type validation struct {
 	l        *Loaded
 	at       *strict.Positions
 	problems strict.Problems
+	sound    []int // numbers of the parameters that are right by themselves
 }
 
 func (v *validation) problem(path, format string, args ...any) {
@@ -26,7 +27,11 @@ func (v *validation) count() {
 	switch {
 	case !v.at.Sound("design", "members", "parameters"):
 	case e.Design != "grid":
-		if e.Members == 0 {
+		switch {
+		case e.Members > 0:
+		case v.at.Given("members"):
+			v.problem("members", "0 is out of range; it must be at least 1")
+		default:
 			v.problem("members", "is missing; write how many members the design %s has", e.Design)
 		}
 		if e.Design == "sobol" && len(e.Parameters) > len(joeKuo)+1 {
@@ -62,7 +67,7 @@ func (v *validation) parameters() {
 	}
 	first := map[string]int{}
 	for j := range v.l.Parameters {
-		p, path := &v.l.Parameters[j], fmt.Sprintf("parameters.%d", j)
+		p, path, before := &v.l.Parameters[j], fmt.Sprintf("parameters.%d", j), len(v.problems)
 		if !v.at.Sound(path) {
 			continue
 		}
@@ -81,13 +86,19 @@ func (v *validation) parameters() {
 		if key, err := p.check(); err != nil {
 			v.problem(path+key, "%v", err)
 		}
+		if len(v.problems) == before {
+			v.sound = append(v.sound, j)
+		}
 	}
 }
 
 // base loads the base scenario, applies the changes and tries every value and every end
-// of a range on it.
+// of a range on it, as far as the other mistakes of the file allow.
 func (v *validation) base(source string) {
 	l := v.l
+	if !v.at.Sound("base") {
+		return
+	}
 	name := l.Base
 	if scenarios.IsFile(name) && !filepath.IsAbs(name) && scenarios.IsFile(source) {
 		name = filepath.Join(filepath.Dir(source), name)
@@ -97,22 +108,22 @@ func (v *validation) base(source string) {
 		v.foreign("base", err)
 		return
 	}
+	var changes []string
 	for i, set := range l.Set {
 		if _, err := base.With(set); err != nil {
 			v.foreign(fmt.Sprintf("set.%d", i), err)
+			continue
 		}
+		changes = append(changes, set)
 	}
-	if len(v.problems) > 0 {
-		return
-	}
-	if l.base, err = base.With(l.Set...); err != nil {
+	if l.base, err = base.With(changes...); err != nil {
 		v.foreign("set", err)
 		return
 	}
-	if l.BaseSHA256 != "" && l.BaseSHA256 != l.base.SHA256 {
+	if l.BaseSHA256 != "" && len(changes) == len(l.Set) && v.at.Sound("base_sha256", "set") && l.BaseSHA256 != l.base.SHA256 {
 		v.problem("base_sha256", "is %s, but the base with its changes has %s", l.BaseSHA256, l.base.SHA256)
 	}
-	for j := range l.Parameters {
+	for _, j := range v.sound {
 		for _, s := range l.Parameters[j].samples() {
 			if _, err := l.base.With(l.Parameters[j].Path + "=" + s.text); err != nil {
 				v.foreign(fmt.Sprintf("parameters.%d.%s", j, s.key), err)
