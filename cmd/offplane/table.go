@@ -45,7 +45,8 @@ The intervals are calibrated by holding out whole members. The coverage that is 
 was achieved on members that were used neither for the fit nor for the calibration.
 
 --prior weighs the members by how well their own maps agree with a profile of yours: a
-table with the columns height [solRad] and density [cm-3], or brightness (shape only).`,
+table with the columns height [solRad] and density [cm-3, m-3], or brightness (shape
+only): an ECSV file separated by commas or blanks, or plain comma-separated values.`,
 		Example: `  offplane table build ensemble --truth sky -o table
   offplane table build ensemble --truth emission --features height,density -o coarse
   offplane table build ensemble --truth sky --prior density.ecsv -o mine`,
@@ -157,7 +158,7 @@ func writeTable(f *folder, t *table.Table) error {
 	})
 }
 
-// printTable tells of a table; scores only of one that was just built.
+// printTable tells of a table; losses only if they are known.
 func (p *program) printTable(t *table.Table) {
 	out := p.stdout
 	fmt.Fprintf(out, "truth     %s\n", t.Truth)
@@ -172,10 +173,16 @@ func (p *program) printTable(t *table.Table) {
 	}
 	fmt.Fprintf(out, "recipe    %s\n", strings.Join(recipe, ", "))
 	coarser := 0
+	var beating, others [3][]string // of quantities
 	for i := range t.Surfaces {
 		s := &t.Surfaces[i]
 		if len(s.Features()) < len(t.Features()) {
 			coarser++
+			if beats, known := s.Score.BeatsSingle(); beats {
+				beating[s.Quantity] = append(beating[s.Quantity], strings.Join(featureNames(s.Features()), "+"))
+			} else if known {
+				others[s.Quantity] = append(others[s.Quantity], strings.Join(featureNames(s.Features()), "+"))
+			}
 			continue
 		}
 		fmt.Fprintf(out, "%-9s by %s: %s\n", s.Quantity, strings.Join(featureNames(s.Features()), ", "), &s.Score)
@@ -186,6 +193,14 @@ func (p *program) printTable(t *table.Table) {
 	}
 	if coarser > 0 {
 		fmt.Fprintf(out, "coarser   %d more for readers who have less\n", coarser)
+	}
+	for q := range beating {
+		if len(beating[q]) > 0 {
+			fmt.Fprintf(out, "          %s: better than one factor by %s\n", table.Quantity(q), strings.Join(beating[q], ", "))
+		}
+		if len(others[q]) > 0 {
+			fmt.Fprintf(out, "          %s: not better than one factor by %s\n", table.Quantity(q), strings.Join(others[q], ", "))
+		}
 	}
 	fmt.Fprintf(out, "caution   %s\n", table.Caution)
 }

@@ -2,6 +2,9 @@ package main
 
 import (
 	"bytes"
+	"encoding/json"
+	"errors"
+	"fmt"
 	"math"
 	"os"
 	"path/filepath"
@@ -82,7 +85,7 @@ func TestPublishedMap(t *testing.T) {
 	field, density := writePublished(t, dir, false)
 	out := filepath.Join(dir, "out")
 	code, stdout, stderr := offplane("table", "apply", field, "--density", density, "--recipe", "as-table", "--recipe", "pixel=4.35", "-o", out)
-	if code != 0 || !strings.Contains(stdout, "by         height, field, density for 1200 pixels (coarser") {
+	if code != 0 {
 		t.Fatalf("exit %d: %s%s", code, stdout, stderr)
 	}
 	tab, err := table.Open(table.DefaultName)
@@ -107,7 +110,15 @@ func TestPublishedMap(t *testing.T) {
 	if cd, _ := b.Header.Float("CD1_2"); math.Abs(cd+6./3600*0.5) > 1e-12 {
 		t.Errorf("CD1_2 is %g", cd)
 	}
-	inside := 0
+	inside, corrected := 0, 0
+	for _, v := range factor.Data {
+		if v == v {
+			corrected++
+		}
+	}
+	if want := fmt.Sprintf("by         height, field, density for %d pixels (coarser", corrected); !strings.Contains(stdout, want) || corrected == 1200 {
+		t.Errorf("%s\nwant %s", stdout, want)
+	}
 	for i := range b.Data {
 		// By hand: the tangent plane, west and north of the disc centre in arcsec.
 		dx, dy := 6*(float64(i%40)-19.5), 6*(float64(i/40)-14.5)
@@ -149,5 +160,74 @@ func TestPublishedWithoutSky(t *testing.T) {
 	}
 	if _, err := os.Stat(filepath.Join(dir, "out")); err == nil {
 		t.Error("a refused map leaves a folder")
+	}
+}
+
+// What keeps pixels from being corrected is told alike in text and JSON, and a remedy with it.
+func TestLeft(t *testing.T) {
+	dir := t.TempDir()
+	path := filepath.Join(dir, "field.fits")
+	write := func(unit string, pixel float64, value func(i int) float64) {
+		writeImage(t, path, 20, 20, skyHeader(20, 20, pixel, 0, 1130, 120, unit, false), value)
+	}
+	apply := func(name string, more ...string) (int, string, string) {
+		return offplane(append([]string{"table", "apply", path, "--recipe", "as-table", "-o", filepath.Join(dir, name)}, more...)...)
+	}
+	tab, err := table.Open(table.DefaultName)
+	if err != nil {
+		t.Fatal(err)
+	}
+	grid := tab.Find(table.FieldQ, []table.Feature{table.Height, table.Field}).Grid
+	end := grid[1].Nodes[len(grid[1].Nodes)-1]
+	// A row of twenty pixels lies above the table.
+	write("G", 4.35, func(i int) float64 {
+		if i < 20 {
+			return 2 * end
+		}
+		return 2
+	})
+	code, out, stderr := apply("text")
+	if want := fmt.Sprintf("field: 20 pixels above %.4g G, where it ends)", end); code != 0 || !strings.Contains(out, want) {
+		t.Errorf("exit %d: %s%s\nwant %s", code, out, stderr, want)
+	}
+	_, out, _ = apply("json", "--json")
+	var got applied
+	if err := json.Unmarshal([]byte(out), &got); err != nil {
+		t.Fatal(err)
+	}
+	left := 0
+	for _, c := range got.Left {
+		left += c.Pixels
+	}
+	if left != 400-got.Corrected || len(got.Beyond) == 0 || got.Beyond[0] != (past{"field", "above", end, "G", 20}) {
+		t.Errorf("%s", out)
+	}
+	if len(got.By) != 1 || !got.By[0].Coarser || got.By[0].Corrected != got.Corrected || got.By[0].Members < 200 || got.By[0].Beats == nil || !*got.By[0].Beats {
+		t.Errorf("by %+v", got.By)
+	}
+	// A field in tesla that is called gauss, and the other way round.
+	write("G", 4.35, func(int) float64 { return 2e-4 })
+	if code, _, stderr = apply("small"); code != 3 || !strings.Contains(stderr, "10000 times too small: is BUNIT right (G, T, mT)?") {
+		t.Errorf("exit %d: %s", code, stderr)
+	}
+	write("T", 4.35, func(int) float64 { return 2 })
+	if code, _, stderr = apply("large"); code != 3 || !strings.Contains(stderr, "10000 times too large: is BUNIT right") {
+		t.Errorf("exit %d: %s", code, stderr)
+	}
+	write("G", 2, func(int) float64 { return 2 })
+	if code, _, stderr = apply("fine"); code != 3 || !strings.Contains(stderr, "give --recipe pixel=4.35") {
+		t.Errorf("exit %d: %s", code, stderr)
+	}
+	// The speed by height and field is the part that coverage.ecsv says is no better than one factor.
+	field := filepath.Join(dir, "with.fits")
+	writeImage(t, field, 20, 20, skyHeader(20, 20, 4.35, 0, 1130, 120, "G", false), func(int) float64 { return 2 })
+	alone := *tab
+	alone.Recipe = nil // without mu the density does not follow
+	if err := errors.Join(alone.ECSV().WriteFile(filepath.Join(dir, "table.ecsv")), alone.Coverage().WriteFile(filepath.Join(dir, "coverage.ecsv"))); err != nil {
+		t.Fatal(err)
+	}
+	write("km/s", 4.35, func(int) float64 { return 400 })
+	if code, out, stderr = apply("note", "--field", field, "--table", filepath.Join(dir, "table.ecsv")); code != 0 || !strings.Contains(out, "does not beat a single factor") {
+		t.Errorf("exit %d: %s%s", code, out, stderr)
 	}
 }

@@ -113,11 +113,16 @@ func (p *program) apply(ctx context.Context, w *work, a *application, name strin
 	if valid == 0 {
 		return misusef("%s: none of its %d pixels has a positive value: there is nothing to correct", name, len(m.values))
 	}
-	differ, err := a.mismatch(t, m)
-	if err != nil {
+	told := account{table: t}
+	if told.differ, told.remedy, err = a.mismatch(t, m); err != nil {
 		return err
 	}
-	in.SameWay = len(differ) == 0
+	in.SameWay = len(told.differ) == 0
+	for _, c := range companions[:3] {
+		if by, ok := t.WrongUnit(in, c); ok && !(completed && c == derived) {
+			told.units = append(told.units, suspect{c, by})
+		}
+	}
 
 	var parts []string
 	for _, path := range inputs {
@@ -134,8 +139,8 @@ func (p *program) apply(ctx context.Context, w *work, a *application, name strin
 	}
 	defer f.abandon()
 	defer bar.wipe()
-	out := t.Apply(in)
-	if err := writeCorrected(f.path("corrected.fits"), m, kind, t, out); err != nil {
+	told.Applied = t.Apply(in)
+	if err := writeCorrected(f.path("corrected.fits"), m, kind, t, told.Applied); err != nil {
 		return err
 	}
 	r.stage("correction")
@@ -145,15 +150,15 @@ func (p *program) apply(ctx context.Context, w *work, a *application, name strin
 	bar.wipe()
 	switch {
 	case w.json:
-		err = writeJSON(p.stdout, summaryOf(t, out, differ))
+		err = writeJSON(p.stdout, told.summary())
 	case !w.quiet:
-		p.printApplied(t, out, differ, f.path("corrected.fits"))
+		told.print(p.stdout, f.path("corrected.fits"))
 		if completed && slices.Contains(t.Features(), derived) {
 			fmt.Fprintf(p.stdout, "derived    the %s from the two others of field, density and speed\n", derived)
 		}
 	}
-	if err == nil && out.Corrected == 0 {
-		err = &fault{exitUnmet, errors.New("nothing was corrected: " + reason(out, differ))}
+	if err == nil && told.Corrected == 0 {
+		err = &fault{exitUnmet, errors.New("nothing was corrected: " + told.reason())}
 	}
 	return err
 }
@@ -212,13 +217,14 @@ func toRadial(angles, pa []float64, from string) error {
 	return nil
 }
 
-// mismatch lists where the map's recipe differs from the table's; what is not known is
-// asked for.
-func (a *application) mismatch(t *table.Table, m *published) (differ []string, err error) {
+// mismatch lists where the map's recipe differs from the table's, and what may be done
+// about it; what is not known is asked for.
+func (a *application) mismatch(t *table.Table, m *published) (differ []string, remedy string, err error) {
 	r, err := m.recipe()
 	if err != nil {
-		return nil, misuse(err)
+		return nil, "", misuse(err)
 	}
+	own := r.Get("estimator") != "" // the file tells its recipe
 	assumed := false
 	var set []string
 	for _, s := range a.recipe {
@@ -229,14 +235,21 @@ func (a *application) mismatch(t *table.Table, m *published) (differ []string, e
 		}
 	}
 	if r, err = r.With(set...); err != nil {
-		return nil, misusef("--recipe %w", err)
+		return nil, "", misusef("--recipe %w", err)
+	}
+	pixel := slices.ContainsFunc(set, func(s string) bool { return strings.HasPrefix(s, "pixel=") })
+	if others, err := r.With("pixel=" + t.Recipe.Get("pixel")); err == nil && !own && !pixel {
+		before, _ := t.Recipe.Differ(r)
+		if after, _ := t.Recipe.Differ(others); len(after) < len(before) {
+			remedy = fmt.Sprintf("if the map was put on this grid from data of the table's pixel, give --recipe pixel=%s", t.Recipe.Get("pixel"))
+		}
 	}
 	differ, unknown := t.Recipe.Differ(r)
 	if len(unknown) > 0 && len(differ) == 0 && !assumed {
-		return nil, misusef("the table is for maps made with %s, and %s does not say how it was made: give --recipe KEY=VALUE for each, or --recipe as-table if it is all the same",
+		return nil, "", misusef("the table is for maps made with %s, and %s does not say how it was made: give --recipe KEY=VALUE for each, or --recipe as-table if it is all the same",
 			strings.Join(unknown, ", "), m.path)
 	}
-	return differ, nil
+	return differ, remedy, nil
 }
 
 // names of the corrected maps by what was corrected.
@@ -295,80 +308,4 @@ func writeCorrected(path string, m *published, kind table.Feature, t *table.Tabl
 		return err
 	}
 	return w.Close()
-}
-
-// reason says in a few words why pixels were not corrected.
-func reason(a *table.Applied, differ []string) string {
-	if len(differ) > 0 {
-		return "the map was made by another recipe: " + strings.Join(differ, "; ")
-	}
-	var parts []string
-	for _, c := range table.FlagCodes {
-		n := 0
-		for _, f := range a.Flag {
-			if f&c.Value != 0 {
-				n++
-			}
-		}
-		if n > 0 && c.Value&(table.OutOfRange|table.TooFew) != 0 {
-			parts = append(parts, fmt.Sprintf("%d pixels %s", n, strings.TrimSuffix(c.About, ": left as it is")))
-		}
-	}
-	return strings.Join(parts, ", ")
-}
-
-func (p *program) printApplied(t *table.Table, a *table.Applied, differ []string, path string) {
-	out := p.stdout
-	fmt.Fprintf(out, "map        %s\n", path)
-	fmt.Fprintf(out, "table      truth %s, ensemble %s of %d members\n", t.Truth, t.Origin.Ensemble, t.Members)
-	fmt.Fprintf(out, "corrected  %d of %d pixels with a value (%.1f %%)\n", a.Corrected, a.Valid, 100*float64(a.Corrected)/float64(max(a.Valid, 1)))
-	if why := reason(a, differ); why != "" {
-		fmt.Fprintf(out, "left       %s\n", why)
-	}
-	if a.Corrected > 0 {
-		fmt.Fprintf(out, "factor     %.3f, median of true over inferred\n", a.Median)
-	}
-	all, used := t.Features(), a.Used
-	if a.Corrected == 0 {
-		used = nil
-	}
-	for _, u := range used {
-		have := u.Surface.Features()
-		note := ""
-		if len(have) < len(all) {
-			note = " (coarser: the full table takes " + strings.Join(featureNames(all), ", ") + ")"
-		}
-		fmt.Fprintf(out, "by         %s for %d pixels%s\n", strings.Join(featureNames(have), ", "), u.Pixels, note)
-		fmt.Fprintf(out, "coverage   %s\n", &u.Surface.Score)
-	}
-	fmt.Fprintf(out, "caution    %s\n", table.Caution)
-}
-
-func featureNames(fs []table.Feature) []string {
-	names := make([]string, len(fs))
-	for i, f := range fs {
-		names[i] = f.String()
-	}
-	return names
-}
-
-// applied is the JSON of table apply.
-type applied struct {
-	Schema    int      `json:"schema"`
-	Truth     string   `json:"truth"`
-	Ensemble  string   `json:"ensemble"`
-	Valid     int      `json:"valid"`
-	Corrected int      `json:"corrected"`
-	Coarser   int      `json:"corrected_by_a_coarser_table"`
-	Median    *float64 `json:"median_factor"`
-	Differ    []string `json:"recipe_differs"`
-	Caution   string   `json:"caution"`
-}
-
-func summaryOf(t *table.Table, a *table.Applied, differ []string) applied {
-	s := applied{1, t.Truth, t.Origin.Ensemble, a.Valid, a.Corrected, a.Coarse, nil, differ, table.Caution}
-	if a.Corrected > 0 {
-		s.Median = &a.Median
-	}
-	return s
 }
