@@ -124,8 +124,9 @@ func TestReadErrors(t *testing.T) {
 	}
 }
 
-// The format's default delimiter is the blank. The first text is what astropy 7 wrote
-// for a QTable and a masked column (copied from its output), the second says the delimiter.
+// The format's default delimiter is the blank. The text is put together from
+// what astropy wrote for a QTable and for a masked column, blanks added for alignment; once
+// more with the delimiter said.
 func TestBlanks(t *testing.T) {
 	head := `# datatype:
 # - {name: height, unit: solRad, datatype: float64}
