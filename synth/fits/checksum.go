@@ -1,6 +1,11 @@
 package fits
 
-import "encoding/binary"
+import (
+	"encoding/binary"
+	"fmt"
+	"io"
+	"strconv"
+)
 
 // A sum is the ones'-complement sum of 32-bit big-endian words of the FITS
 // checksum convention (FITS standard 4.0, appendix J).
@@ -88,3 +93,23 @@ func encodeChecksum(total uint32) string {
 }
 
 func punctuation(c byte) bool { return c >= ':' && c <= '@' || c >= '[' && c <= '`' }
+
+// Verify reads the data of every HDU and holds them against its DATASUM (FITS standard
+// 4.0, section 4.4.2.7), if it has one.
+func (f *File) Verify() error {
+	for _, h := range f.HDUs {
+		text, ok := h.Header.Text("DATASUM")
+		if !ok {
+			continue
+		}
+		var s sum
+		padded := (h.size + blockSize - 1) / blockSize * blockSize
+		if _, err := io.Copy(&s, io.NewSectionReader(f.r, h.start, padded)); err != nil {
+			return fmt.Errorf("%s: %w", f.where(h), err)
+		}
+		if want, err := strconv.ParseUint(text, 10, 32); err != nil || s.value() != uint32(want) {
+			return fmt.Errorf("%s: the data are damaged: their sum is %d, DATASUM says %q", f.where(h), s.value(), text)
+		}
+	}
+	return nil
+}

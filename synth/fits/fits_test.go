@@ -356,6 +356,23 @@ func TestChecksums(t *testing.T) {
 	if start != int64(len(raw)) {
 		t.Errorf("HDUs end at %d of %d bytes", start, len(raw))
 	}
+	if err := f.Verify(); err != nil {
+		t.Error(err)
+	}
+	for i, h := range f.HDUs {
+		if h.size == 0 {
+			continue
+		}
+		changed := bytes.Clone(raw)
+		changed[h.start+h.size-1] ^= 1
+		g, err := NewFile("x", bytes.NewReader(changed), int64(len(changed)))
+		if err != nil {
+			t.Fatal(err)
+		}
+		if err := g.Verify(); err == nil || !strings.Contains(err.Error(), "damaged") {
+			t.Errorf("HDU %d %s with one bit changed: %v", i, h.Name, err)
+		}
+	}
 }
 
 // Pieces of any length give the sum of the whole.
@@ -712,4 +729,7 @@ func TestWrongChecksums(t *testing.T) {
 		t.Fatal(err)
 	}
 	check(t, "pixels", m.Data, []float32{1, 2})
+	if err := f.Verify(); err == nil {
+		t.Error("Verify finds nothing")
+	}
 }
