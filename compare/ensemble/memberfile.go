@@ -84,7 +84,7 @@ func (m *Member) scenario() fits.Table {
 	return t
 }
 
-// ReadMember reads the file of one member.
+// ReadMember reads the file of one member and checks the sums of its data.
 func ReadMember(path string) (*Member, error) {
 	f, err := fits.Open(path)
 	if err != nil {
@@ -108,7 +108,7 @@ func ReadMember(path string) (*Member, error) {
 			return nil, err
 		}
 	}
-	return m, nil
+	return m, f.Verify()
 }
 
 // Identify reads the headers of a member's file, which must hold the data they tell of,

@@ -108,6 +108,19 @@ func TestResume(t *testing.T) {
 	}
 }
 
+// pixelsStart returns where the data of PIXELS begin: after the END card of its header,
+// at the next block of 2880 bytes.
+func pixelsStart(t *testing.T, data []byte) int {
+	t.Helper()
+	const block = 2880
+	header := bytes.Index(data, []byte("XTENSION"))
+	end := bytes.Index(data[max(header, 0):], []byte("END     "))
+	if header < 0 || end < 0 || !bytes.Contains(data[header:header+end], []byte("'PIXELS")) {
+		t.Fatal("PIXELS is not the first extension")
+	}
+	return (header + end + block) / block * block
+}
+
 // Damage that the headers show is found by a look, damage of the content by a full read;
 // a rerun makes either member again, the same bytes, and leaves the others.
 func TestDamaged(t *testing.T) {
@@ -122,6 +135,8 @@ func TestDamaged(t *testing.T) {
 	if bytes.Equal(content, data) {
 		t.Fatal("the scenario does not stand in the file")
 	}
+	flipped := bytes.Clone(data)
+	flipped[pixelsStart(t, data)] ^= 1
 	for _, c := range []struct {
 		name  string
 		data  []byte
@@ -133,6 +148,7 @@ func TestDamaged(t *testing.T) {
 		{"primary HDU only", data[:2880], true},
 		{"other member", bytes.Replace(data, []byte("MEMBER  =                    0"), []byte("MEMBER  =                    1"), 1), true},
 		{"content", content, false},
+		{"one bit of a pixel", flipped, false},
 	} {
 		if err := os.WriteFile(file(0), c.data, 0o666); err != nil {
 			t.Fatal(err)
