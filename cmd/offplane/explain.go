@@ -39,7 +39,10 @@ truth.fits; the tracker goes its way again from series.fits.`,
 		Args: argument("the folder of a run"),
 	}
 	cmd.RunE = do(func(ctx context.Context, args []string) error {
-		if (at == "") == (polar == "") {
+		if at != "" && polar != "" {
+			return misusef("offplane explain takes one pixel, and both --at and --polar were given: leave one out")
+		}
+		if at == "" && polar == "" {
 			return misusef("offplane explain needs a pixel: either --at X,Y [arcsec] or --polar PA,R [deg, solar radii]")
 		}
 		flag, value, want := "at", at, "X,Y in arcsec, such as 1010,-25"
@@ -49,6 +52,9 @@ truth.fits; the tracker goes its way again from series.fits.`,
 		n, err := numbers(flag, value)
 		if err != nil || len(n) != 2 || math.IsNaN(n[0]+n[1]) || math.IsInf(n[0]+n[1], 0) {
 			return misusef("--%s %s: write %s", flag, value, want)
+		}
+		if polar != "" && n[1] <= 0 {
+			return misusef("--polar %s: the distance from the Sun's centre is %g solar radii and must be greater than 0", value, n[1])
 		}
 		s, err := explain.Open(ctx, args[0], workers)
 		if err != nil {

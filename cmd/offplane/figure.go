@@ -1,13 +1,16 @@
 package main
 
 import (
+	"fmt"
 	"io"
+	"os"
 	"path/filepath"
 
 	"offplane/compare/report"
 )
 
-// A figureFile is the value of --figure: a file whose name ends in .png or .svg.
+// A figureFile is the value of --figure: a file whose name ends in .png or .svg, in a
+// folder that exists.
 type figureFile struct {
 	path   string // empty: no figure
 	format report.Format
@@ -17,9 +20,15 @@ func (f *figureFile) String() string { return f.path }
 func (f *figureFile) Type() string   { return "file" }
 
 func (f *figureFile) Set(path string) (err error) {
-	f.format, err = report.FormatOf(path)
+	if f.format, err = report.FormatOf(path); err != nil {
+		return err
+	}
+	dir := filepath.Dir(path)
+	if i, err := os.Stat(dir); err != nil || !i.IsDir() { // told before anything is computed
+		return fmt.Errorf("there is no folder %s", dir)
+	}
 	f.path = path
-	return err
+	return nil
 }
 
 // write draws the figure, if one was asked for.

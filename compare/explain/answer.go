@@ -6,6 +6,7 @@ import (
 
 	"offplane/invert"
 	"offplane/model"
+	"offplane/scenarios"
 	"offplane/synth"
 )
 
@@ -36,7 +37,7 @@ func (s *Session) answer(ix, iy int, sight *synth.Sight, d *invert.Diagnosis) (*
 	if err := s.follow(p, sight, d, i); err != nil {
 		return nil, err
 	}
-	p.Noise = noiseOf(p, d, i, s.Scenario.Scenario.Camera.Noise)
+	p.Noise = noiseOf(p, d, i, &s.Scenario.Scenario.Camera)
 	p.Causes = s.causesOf(p, sight)
 	p.Flags = s.flagsOf(p, i)
 	s.caution(p, sight, i)
@@ -83,11 +84,16 @@ func ratiosOf(p *Pixel) Ratios {
 // fold brings the difference of two axes [deg] to -90..90.
 func fold(a float64) float64 { return a - 180*math.Round(a/180) }
 
-func noiseOf(p *Pixel, d *invert.Diagnosis, i int, noisy bool) Noise {
+// hourScatter is the scatter of the speed between realisations of an hour, a fraction; it
+// falls as one over the root of the duration. Derived: own simulations.
+const hourScatter = 0.05
+
+func noiseOf(p *Pixel, d *invert.Diagnosis, i int, c *scenarios.Camera) Noise {
+	noisy := c.Noise
 	v := &p.Inferred
 	n := Noise{
 		Doppler: v.DopplerRMS, InBand: Number(nan), SignalNoise: Number(nan), Reduction: v.DopplerRMS / p.Truth.DopplerLocal,
-		SpeedErr: v.SpeedErr / v.Speed, NeErr: v.NeErr / v.Ne, FieldErr: v.FieldErr / v.Field, NoiselessRun: !noisy,
+		SpeedErr: v.SpeedErr / v.Speed, SpeedScatter: Number(hourScatter * math.Sqrt(3600/float64(c.Duration))), NeErr: v.NeErr / v.Ne, FieldErr: v.FieldErr / v.Field, NoiselessRun: !noisy,
 	}
 	if d == nil || !noisy {
 		return n

@@ -15,20 +15,18 @@ import (
 // which are what is left of the measured values; so the parts add up.
 //
 //	v/SPEED_SKY = line of sight, without and with fine structure, times outflow,
-//	              times what the estimator makes of a plane wave on the track, times the rest
+//	              times the method's part, times the rest
 //	n/NE_KINK   = ratio as measured over that of the line of sight, over that without fine
 //	              structure, over that of the plane of the sky, over the density there
 //
+// The method's part is METHOD_RATIO, what the run's own one-plane run found on this track
+// with these waves, less the outflow that carries them there too; without it, what the
+// estimator makes of a plane wave on the track, at one speed and along the true ones.
 // Where a value is missing its rest is NaN and the other parts stand.
 func (s *Session) causesOf(p *Pixel, v *synth.Sight) []Cause {
 	ln := func(a, b Number) float64 { return math.Log(float64(a / b)) }
 	t, d := &p.Truth, &p.Density
 	kink := Number(v.Samples[v.Sky].Point.Kink)
-	method := &p.Estimators[0]
-	path := method.Path
-	if !finite(path) {
-		path = method.Plane
-	}
 	known := func(x float64) float64 { // a part that is not known is left to the rest
 		if math.IsNaN(x) || math.IsInf(x, 0) {
 			return 0
@@ -38,8 +36,13 @@ func (s *Session) causesOf(p *Pixel, v *synth.Sight) []Cause {
 	smooth := math.Log(v.SmoothSpeeds[1] / v.SmoothSpeeds[0])
 	fineSpeed := ln(t.SpeedWave, t.SpeedSky) - smooth
 	flow := ln(Number(v.FlowSpeed), t.SpeedWave)
-	short, along := known(ln(method.Plane, 1)), known(ln(path, method.Plane))
-	speedRest := ln(p.Inferred.Speed, t.SpeedSky) - smooth - fineSpeed - flow - short - along
+	e := &p.Estimators[0]
+	measured := finite(e.OnePlane)
+	method, along := known(ln(e.Plane, 1)), known(ln(e.Path, e.Plane))
+	if measured {
+		method, along = known(ln(e.OnePlane, 1)-flow), 0 // it holds the true speeds along the track
+	}
+	speedRest := ln(p.Inferred.Speed, t.SpeedSky) - smooth - fineSpeed - flow - method - along
 
 	sight := known(ln(d.Smooth, d.Local) / 2)
 	fine := known((ln(d.Sight, d.Smooth) + ln(d.Mean, kink)) / 2)
@@ -58,9 +61,13 @@ func (s *Session) causesOf(p *Pixel, v *synth.Sight) []Cause {
 		"the plasma in the plane of the sky is at %s; the inversion assumes %s and its own atomic data", kelvin(v.Samples[v.Sky].Point.T), kelvin(s.options.Temperature)))
 	add(Mu, "mean mass of the inversion", mu, fmt.Sprintf("mu is %.3f in the corona, the inversion takes %.3f", s.mu[1], s.mu[0]))
 	add(Outflow, "outflow", flow, "the plasma carries the waves")
-	add(ShortTrack, "method: the estimator on this track", short, p.methodText())
-	add(TrackPath, "speed and direction along the track", along, p.pathText())
-	add(SpeedRest, "chance of the waves, noise and the rest of the speed", speedRest, p.speedRestText(short+along))
+	if measured {
+		add(Method, "method: the estimator on this track, with these waves", method, p.onePlaneText(method))
+	} else {
+		add(Method, "method: the estimator on this track", method, p.methodText())
+		add(TrackPath, "speed and direction along the track", along, p.pathText())
+	}
+	add(SpeedRest, p.speedRestName(speedRest), speedRest, p.speedRestText())
 	add(DensityRest, "noise, point spread and the rest of the density", densityRest, p.densityRestText())
 	slices.SortStableFunc(cs, func(a, b Cause) int { return cmp.Compare(weight(b), weight(a)) })
 	return cs
@@ -149,6 +156,12 @@ func (p *Pixel) methodText() string {
 	return fmt.Sprintf("the track of %.0f Mm is %.2f wavelengths long; on it %s makes %.3f of the speed of a plane wave", t.Length, t.True, e.Name, e.Plane)
 }
 
+// onePlaneText sets the method's part [ln] as the run measured it beside that of a plane wave.
+func (p *Pixel) onePlaneText(ln float64) string {
+	return fmt.Sprintf("the run's own waves on one plane, without noise, come out at %.3f of the true speed on this track; for comparison, one plane wave: %s; %s",
+		math.Exp(ln), p.methodText(), p.pathText())
+}
+
 func (p *Pixel) pathText() string {
 	t := &p.Track
 	if t.Points == 0 {
@@ -161,17 +174,30 @@ func (p *Pixel) pathText() string {
 	return fmt.Sprintf("along the track the true speed runs from %.3g to %.3g km/s, and the track lies %.0f deg off the field in the mean", lo, hi, t.Off)
 }
 
-// speedRestText gets what the method does to a plane wave, in logarithms.
-func (p *Pixel) speedRestText(method float64) string {
+// speedRestName calls the rest [ln] chance only where chance may make it: within twice the
+// stated error and the scatter of a run so short.
+func (p *Pixel) speedRestName(ln float64) string {
+	stated := 0.0
+	if finite(p.Noise.SpeedErr) {
+		stated = float64(p.Noise.SpeedErr)
+	}
+	switch {
+	case math.IsNaN(ln):
+		return "rest of the speed"
+	case math.Abs(ln) > 2*math.Hypot(stated, float64(p.Noise.SpeedScatter)):
+		return "rest of the speed, not explained by the parts above"
+	}
+	return "chance of the waves, noise and the rest of the speed"
+}
+
+func (p *Pixel) speedRestText() string {
 	if !finite(p.Inferred.Speed) {
 		return "there is no speed"
 	}
-	text := fmt.Sprintf("the error of the speed is given as %.1f %%", 100*p.Noise.SpeedErr)
-	if x := p.Estimators[0].OnePlane; finite(x) {
-		text += fmt.Sprintf("; the chance of the waves on one plane, without noise, makes %s", times(math.Log(float64(x))-method))
-	}
-	if finite(p.Noise.SignalNoise) {
-		text += fmt.Sprintf("; the waves are %.1f times the noise in the band", p.Noise.SignalNoise)
+	n := &p.Noise
+	text := fmt.Sprintf("the error of the speed is given as %.1f %%, the waves of a run so short scatter it by %.1f %%", 100*n.SpeedErr, 100*n.SpeedScatter)
+	if finite(n.SignalNoise) {
+		text += fmt.Sprintf("; the waves are %.1f times the noise in the band", n.SignalNoise)
 	}
 	return text
 }

@@ -63,9 +63,9 @@ const (
 	Plasma        = "plasma"         // temperature and atomic data that the inversion assumes
 	Mu            = "mu"             // mean mass that the inversion assumes
 	Outflow       = "outflow"        // carries the waves
-	ShortTrack    = "method"         // what the estimator makes of a plane wave on such a track
-	TrackPath     = "track_path"     // speed that changes along the track, track beside the field
-	SpeedRest     = "speed_rest"     // chance of the waves, noise, all that is left of the speed
+	Method        = "method"         // what the estimator makes of the run's waves on one plane; unmeasured: of a plane wave on the track
+	TrackPath     = "track_path"     // speed that changes along the track, track beside the field; only where Method is of a plane wave
+	SpeedRest     = "speed_rest"     // all that is left of the speed; its name says whether it may be chance
 	DensityRest   = "density_rest"   // noise, point spread, filter: the ratio as measured
 )
 
@@ -218,6 +218,7 @@ type Noise struct {
 	SignalNoise  Number `json:"signal_to_noise"`       // ratio of the two
 	Reduction    Number `json:"doppler_rms_reduction"` // waves seen over waves at x = 0
 	SpeedErr     Number `json:"speed_err"`             // fractions
+	SpeedScatter Number `json:"speed_scatter"`         // of one realisation as long as the run, a fraction too
 	NeErr        Number `json:"n_e_err"`
 	FieldErr     Number `json:"field_err"`
 	NoiselessRun bool   `json:"noiseless"`

@@ -281,14 +281,19 @@ func TestShortTrack(t *testing.T) {
 	for _, r := range []float64{1.12, 1.14, 1.16, 1.18} {
 		for _, pa := range []float64{268, 269, 270, 271, 272} {
 			p := at(t, s, pa, r)
-			causes(t, p)
+			c := causes(t, p)
 			if !p.Valid {
 				continue
 			}
-			if p.Causes[0].Key != ShortTrack || !strings.Contains(p.Verdict, "largest cause is method: the estimator on this track") {
+			if p.Causes[0].Key != Method || !strings.Contains(p.Verdict, "largest cause is method: the estimator on this track") {
 				t.Errorf("verdict %q", p.Verdict)
 			}
 			e := p.Estimators[0]
+			// The run's own waves on one plane are the method's part, whole; no flow here.
+			_, path := c[TrackPath]
+			if math.Abs(c[Method]-math.Log(float64(e.OnePlane))) > 1e-9 || path {
+				t.Errorf("the method makes %g, METHOD_RATIO %g", math.Exp(c[Method]), e.OnePlane)
+			}
 			// 0.59 to 0.65 from 0.16 to 0.32 wavelengths, more below (derived; own simulations).
 			if x := p.Track.True; x > 0.3 || x > 0.13 && math.Abs(float64(e.Plane)-0.62) > 0.05 {
 				t.Errorf("%.2f wavelengths, a plane wave comes out at %.3f", x, e.Plane)
@@ -303,6 +308,25 @@ func TestShortTrack(t *testing.T) {
 	// realisation scatters by 5 % (derived; own simulations), and these pixels share it.
 	if m := stat.Median(chance); len(chance) < 10 || math.Abs(m-1) > 0.1 {
 		t.Errorf("the run's own waves on one plane give %.3f of what a plane wave does, in %d pixels", m, len(chance))
+	}
+}
+
+// Only a rest within twice the stated error and the scatter of so short a run is chance.
+func TestRestOfSpeed(t *testing.T) {
+	for _, x := range []struct {
+		ln, stated, scatter float64
+		want                string
+	}{
+		{0.12, 0.04, 0.05, "chance"},
+		{-0.12, 0.04, 0.05, "chance"},
+		{-0.14, 0.04, 0.05, "rest of the speed, not explained by"},
+		{0.14, 0.08, 0.05, "chance"},
+		{0.11, nan, 0.05, "rest of the speed, not explained by"},
+	} {
+		p := Pixel{Noise: Noise{SpeedErr: Number(x.stated), SpeedScatter: Number(x.scatter)}}
+		if got := p.speedRestName(x.ln); !strings.HasPrefix(got, x.want) {
+			t.Errorf("%+v: %q", x, got)
+		}
 	}
 }
 

@@ -105,7 +105,9 @@ func (s *Session) Close() error { return s.close() }
 
 // finished returns an error unless a run left its files in the folder.
 func finished(dir string) error {
-	if i, err := os.Stat(dir); err != nil {
+	if i, err := os.Stat(dir); errors.Is(err, fs.ErrNotExist) {
+		return fmt.Errorf("%s: there is no such folder of a run; offplane run SCENARIO -o DIR leaves one", dir)
+	} else if err != nil {
 		return err
 	} else if !i.IsDir() {
 		return fmt.Errorf("%s is no folder: explain takes the folder that offplane run left", dir)
