@@ -15,6 +15,8 @@ import (
 //go:embed library/*.yaml
 var library embed.FS
 
+var shelf = strict.Library{Kind: "scenario", Files: library}
+
 // A Loaded scenario is complete and valid.
 type Loaded struct {
 	Scenario  Scenario
@@ -30,17 +32,7 @@ type Loaded struct {
 }
 
 // Names returns the names of the embedded scenarios in alphabetical order.
-func Names() []string {
-	files, err := library.ReadDir("library")
-	if err != nil {
-		panic("scenarios: " + err.Error())
-	}
-	names := make([]string, len(files))
-	for i, f := range files {
-		names[i] = strings.TrimSuffix(f.Name(), ".yaml")
-	}
-	return names
-}
+func Names() []string { return shelf.Names() }
 
 // About returns the one-line description of an embedded scenario.
 func About(name string) (string, error) {
@@ -52,18 +44,7 @@ func About(name string) (string, error) {
 }
 
 // Source returns the YAML of an embedded scenario with its comments.
-func Source(name string) ([]byte, error) {
-	data, err := library.ReadFile("library/" + name + ".yaml")
-	if err != nil {
-		hint := ""
-		if near := strict.Nearest(name, Names()); near != "" {
-			hint = fmt.Sprintf("; did you mean %q?", near)
-		}
-		return nil, fmt.Errorf("no scenario is called %q%s (there are %s; a file is named by its suffix, %s.yaml, or with a folder, ./%s)",
-			name, hint, strings.Join(Names(), ", "), name, name)
-	}
-	return data, nil
-}
+func Source(name string) ([]byte, error) { return shelf.Source(name) }
 
 // Load reads a scenario, applies assignments (see strict.Set) and validates it. A
 // name with the suffix .yaml or .yml or with a path separator is a file, any other

@@ -16,6 +16,8 @@ import (
 //go:embed library/*.yaml
 var library embed.FS
 
+var shelf = strict.Library{Kind: "ensemble", Files: library}
+
 // An Ensemble is what an ensemble file says.
 type Ensemble struct {
 	About      string      `yaml:"about" about:"one line that says what this is"`
@@ -84,31 +86,10 @@ type Loaded struct {
 }
 
 // Names returns the names of the embedded ensembles in alphabetical order.
-func Names() []string {
-	files, err := library.ReadDir("library")
-	if err != nil {
-		panic("ensemble: " + err.Error())
-	}
-	names := make([]string, len(files))
-	for i, f := range files {
-		names[i] = strings.TrimSuffix(f.Name(), ".yaml")
-	}
-	return names
-}
+func Names() []string { return shelf.Names() }
 
 // Source returns the YAML of an embedded ensemble with its comments.
-func Source(name string) ([]byte, error) {
-	text, err := library.ReadFile("library/" + name + ".yaml")
-	if err != nil {
-		hint := ""
-		if near := strict.Nearest(name, Names()); near != "" {
-			hint = fmt.Sprintf("; did you mean %q?", near)
-		}
-		return nil, fmt.Errorf("no ensemble is called %q%s (there are %s; a file is named by its suffix, %s.yaml)",
-			name, hint, strings.Join(Names(), ", "), name)
-	}
-	return text, nil
-}
+func Source(name string) ([]byte, error) { return shelf.Source(name) }
 
 // Load reads an ensemble and the scenario it is based on. A name that scenarios.IsFile
 // takes for a file is one, any other that of an embedded ensemble. The error is of type

@@ -4,7 +4,6 @@ import (
 	"crypto/sha256"
 	"embed"
 	"encoding/hex"
-	"fmt"
 	"path/filepath"
 	"strings"
 
@@ -16,6 +15,8 @@ import (
 
 //go:embed library/*.yaml
 var library embed.FS
+
+var shelf = strict.Library{Kind: "campaign", Files: library}
 
 // A Campaign is what a campaign file says.
 type Campaign struct {
@@ -87,31 +88,10 @@ type Loaded struct {
 }
 
 // Names returns the names of the embedded campaigns in alphabetical order.
-func Names() []string {
-	files, err := library.ReadDir("library")
-	if err != nil {
-		panic("plan: " + err.Error())
-	}
-	names := make([]string, len(files))
-	for i, f := range files {
-		names[i] = strings.TrimSuffix(f.Name(), ".yaml")
-	}
-	return names
-}
+func Names() []string { return shelf.Names() }
 
 // Source returns the YAML of an embedded campaign with its comments.
-func Source(name string) ([]byte, error) {
-	text, err := library.ReadFile("library/" + name + ".yaml")
-	if err != nil {
-		hint := ""
-		if near := strict.Nearest(name, Names()); near != "" {
-			hint = fmt.Sprintf("; did you mean %q?", near)
-		}
-		return nil, fmt.Errorf("no campaign is called %q%s (there are %s; a file is named by its suffix, %s.yaml)",
-			name, hint, strings.Join(Names(), ", "), name)
-	}
-	return text, nil
-}
+func Source(name string) ([]byte, error) { return shelf.Source(name) }
 
 // Load reads a campaign and its target, with assignments to the campaign's keys. A name
 // that scenarios.IsFile takes for a file is one, any other that of an embedded campaign.
