@@ -249,7 +249,7 @@ type Line struct {
 // Sight is how the line of sight is integrated.
 type Sight struct {
 	Plane bool         `yaml:"plane" about:"true: only the plane of the sky emits (method tests)"`
-	Step  float64      `yaml:"step" in:"0.05..1.5" about:"sample spacing over cell * r"`
+	Step  float64      `yaml:"step" in:"0.05..1.5" about:"sample spacing over cell * r where a ray shines; up to four times that where it is dark"`
 	Reach units.Height `yaml:"reach" in:"0.2 Rsun..10 Rsun" about:"farthest sample from the plane of the sky; integration may stop earlier once the rest is below tail"`
 	Tail  float64      `yaml:"tail" in:"1e-6..0.01" about:"share of either line's emission that may be left out at each end"`
 }
