@@ -31,7 +31,7 @@ func plane(t *testing.T, set ...string) *Scene {
 // light returns the radiance of a ray through every tuning of a line.
 func light(l *lamp, ray, line int) [][]float32 {
 	var out [][]float32
-	for k, a := range l.acc[line] {
+	for k, a := range l.groups[0][line] {
 		out = append(out, make([]float32, len(a)/kernel.Rays))
 		l.take(out[k], ray, line, k)
 	}
@@ -184,13 +184,11 @@ func TestFiveStageFilterScalesTheVelocity(t *testing.T) {
 		for i := range moving {
 			moving[i] = v
 		}
-		for _, a := range lamp.acc[0] {
-			clear(a)
-		}
+		dark := lamp.dark(1)[0]
 		for line := range 2 {
 			lamp.kindle(line, &batch{3: &s})
 		}
-		lamp.expose(0, moving)
+		lamp.expose(dark, 0, moving)
 		a := light(lamp, 3, 0)
 		for _, f := range []int{0, Frames(c.s) - 1} {
 			got := doppler(float64(a[0][f]), float64(a[1][f]), float64(a[2][f]), c.tunings[0][2]) / v

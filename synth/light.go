@@ -14,7 +14,8 @@ import (
 // lightSpeed in km/s.
 const lightSpeed = units.LightSpeed / kms
 
-// A lamp adds up the light of the samples of a few neighbouring rays over the frames. It holds the scratch space of one worker.
+// A lamp adds up the light of the samples of neighbouring rays over the frames. It holds
+// the scratch space of one worker.
 type lamp struct {
 	c      *Scene
 	frames int
@@ -28,12 +29,15 @@ type lamp struct {
 	waves    *wave.Bundle
 	trains   []train
 	atSecond []float32
-	acc      [2][][]float32 // line, tuning: of kernel.Rays rays, frame by frame
+	groups   []beam
 	glow     [2]glow
 
 	lyot   [2]filter.Birefringent // without stages: unused
 	series []float64
 }
+
+// A beam is the light of kernel.Rays rays by line and tuning, frame by frame.
+type beam [2][][]float32
 
 // A glow is how the samples of a batch shine in a line: either a Gaussian or a sum of
 // cosines of the velocity from a tuning.
@@ -60,10 +64,6 @@ func (c *Scene) newLamp(plan *camera.Schedule) *lamp {
 	}
 	l.waves = c.Driver.NewBundle(l.leads)
 	l.atSecond = make([]float32, len(l.second)*kernel.Lanes)
-	for range c.tunings[0] {
-		l.acc[0] = append(l.acc[0], make([]float32, l.frames*kernel.Rays))
-		l.acc[1] = append(l.acc[1], make([]float32, len(l.second)*kernel.Rays))
-	}
 	if n := c.s.Camera.Stages; n > 0 {
 		for line := range 2 {
 			l.lyot[line] = filter.NewBirefringent(n, float64(c.s.Camera.Filter)*lightSpeed/c.light.Rest[line])
@@ -73,42 +73,64 @@ func (c *Scene) newLamp(plan *camera.Schedule) *lamp {
 	return l
 }
 
-// A batch is two samples of every ray; nil: none.
+// dark returns n groups without light.
+func (l *lamp) dark(n int) []beam {
+	for len(l.groups) < n {
+		var g beam
+		for range l.c.tunings[0] {
+			g[0] = append(g[0], make([]float32, l.frames*kernel.Rays))
+			g[1] = append(g[1], make([]float32, len(l.second)*kernel.Rays))
+		}
+		l.groups = append(l.groups, g)
+	}
+	for _, g := range l.groups[:n] {
+		for line := range g {
+			for _, a := range g[line] {
+				clear(a)
+			}
+		}
+	}
+	return l.groups[:n]
+}
+
+// A batch is two samples of every ray of a group; nil: none.
 type batch [kernel.Lanes]*sample
 
-// shine fills acc with the radiance [erg cm^-2 s^-1 sr^-1] of up to kernel.Rays rays
-// through every tuning: the sum over samples of each sample's own Gaussian, shifted by
+// shine makes the radiance [erg cm^-2 s^-1 sr^-1] of neighbouring rays through every
+// tuning: the sum over samples of each sample's own Gaussian, shifted by
 // its own velocity at each tuning's own time, through the filter. Nothing is expanded;
 // the functions of package kernel are good to 2e-6.
 //
 // The loop over depth is outside and that over rays inside, so that neighbours find
 // the driver's spectra in the cache; each ray adds its samples from back to front.
 func (l *lamp) shine(rays [][]sample) {
+	groups := l.dark((len(rays) + kernel.Rays - 1) / kernel.Rays)
 	back, front := 0, 0 // samples behind and before the plane of the sky
 	plane := make([]int, len(rays))
-	for line := range 2 {
-		for _, a := range l.acc[line] {
-			clear(a)
-		}
-	}
 	for i, r := range rays {
 		for r[plane[i]].x < 0 {
 			plane[i]++
 		}
 		back, front = max(back, plane[i]), max(front, len(r)-plane[i])
 	}
-	var b batch
 	for k := -(back + 1) &^ 1; k < front; k += 2 {
-		for i, r := range rays {
-			for side := range 2 {
-				b[side*kernel.Rays+i] = nil
-				if q := plane[i] + k + side; q >= 0 && q < len(r) {
-					b[side*kernel.Rays+i] = &r[q]
+		for g := range groups {
+			var b batch
+			lit := false
+			first := g * kernel.Rays
+			for i, r := range rays[first:min(first+kernel.Rays, len(rays))] {
+				for side := range 2 {
+					if q := plane[first+i] + k + side; q >= 0 && q < len(r) {
+						b[side*kernel.Rays+i] = &r[q]
+						lit = true
+					}
 				}
 			}
+			if lit {
+				l.move(&b)
+				l.emit(groups[g], &b)
+			}
 		}
-		l.move(&b)
-		l.emit(&b)
 	}
 }
 
@@ -127,12 +149,12 @@ func (l *lamp) move(b *batch) {
 }
 
 // emit adds the light of the samples that move with the waves.
-func (l *lamp) emit(b *batch) {
+func (l *lamp) emit(to beam, b *batch) {
 	for line := range 2 {
 		l.kindle(line, b)
 	}
 	for lead := range l.leads {
-		l.expose(lead, l.waves.Velocity(lead))
+		l.expose(to, lead, l.waves.Velocity(lead))
 	}
 }
 
@@ -169,7 +191,7 @@ func (l *lamp) kindle(line int, b *batch) {
 
 // expose adds the light of the samples through all tunings that are exposed at a lead,
 // when they move with v.
-func (l *lamp) expose(lead int, v []float32) {
+func (l *lamp) expose(to beam, lead int, v []float32) {
 	for line := range 2 {
 		if line == 1 && slices.Contains(l.lead[1], lead) {
 			for t, f := range l.second {
@@ -179,14 +201,14 @@ func (l *lamp) expose(lead int, v []float32) {
 		}
 		for k, at := range l.lead[line] {
 			if at == lead {
-				l.filter(line, k, v)
+				l.filter(to, line, k, v)
 			}
 		}
 	}
 }
 
 // filter adds the light of the samples through one tuning.
-func (l *lamp) filter(line, tuning int, v []float32) {
+func (l *lamp) filter(to beam, line, tuning int, v []float32) {
 	g := &l.glow[line]
 	offset := float32(l.c.tunings[line][tuning])
 	var d [kernel.Lanes]float32
@@ -195,15 +217,16 @@ func (l *lamp) filter(line, tuning int, v []float32) {
 	}
 	switch {
 	case l.c.s.Camera.Stages == 0:
-		kernel.Profile(l.acc[line][tuning], v, &g.amp, &d, &g.inv)
+		kernel.Profile(to[line][tuning], v, &g.amp, &d, &g.inv)
 	case len(g.cosine) > 0:
-		kernel.Cosines(l.acc[line][tuning], v, g.cosine, &d, g.period)
+		kernel.Cosines(to[line][tuning], v, g.cosine, &d, g.period)
 	}
 }
 
 // take copies the light of a ray through a tuning into its series.
 func (l *lamp) take(series []float32, ray, line, tuning int) {
+	a := l.groups[ray/kernel.Rays][line][tuning]
 	for t := range series {
-		series[t] = l.acc[line][tuning][t*kernel.Rays+ray]
+		series[t] = a[t*kernel.Rays+ray%kernel.Rays]
 	}
 }

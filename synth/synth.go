@@ -30,7 +30,7 @@ func Synthesize(ctx context.Context, s *scenarios.Scenario, light Light, workers
 
 // tile is the number of neighbouring pixels that a worker takes at a time. It changes
 // nothing but the time taken.
-const tile = 2 * kernel.Rays
+const tile = 8 * kernel.Rays
 
 // Observe is Synthesize for a scene that is ready.
 func (c *Scene) Observe(ctx context.Context, workers int, progress func(done, total int)) (*obs.Observation, *Truth, error) {
@@ -92,14 +92,11 @@ func (c *Scene) expose(ctx context.Context, workers, tile int, progress func(don
 				truth.set(q, v, structure)
 			}
 		}
-		for at := 0; at < len(part); at += kernel.Rays {
-			few := part[at:min(at+kernel.Rays, len(part))]
-			lamps[w].shine(rays[w][at : at+len(few)])
-			for n, q := range few {
-				for line := range 2 {
-					for k := range nk {
-						lamps[w].take(raw[line].Series(q, k), n, line, k)
-					}
+		lamps[w].shine(rays[w][:len(part)])
+		for n, q := range part {
+			for line := range 2 {
+				for k := range nk {
+					lamps[w].take(raw[line].Series(q, k), n, line, k)
 				}
 			}
 		}

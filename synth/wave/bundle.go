@@ -147,7 +147,7 @@ func (b *Bundle) Velocity(lead int) []float32 {
 		b.ready = true
 	}
 	for _, p := range b.blank {
-		clear(b.x[p*kernel.Lanes : (p+1)*kernel.Lanes])
+		*(*[kernel.Lanes]float32)(b.x[p*kernel.Lanes:]) = [kernel.Lanes]float32{}
 	}
 	turn, bins := b.turns[lead], b.d.padded
 	kernel.Assemble(b.x, b.points, bins, turn[:2*b.alone], b.at[:2*b.alone], false)
