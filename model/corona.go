@@ -46,7 +46,7 @@ type Corona struct {
 	flat meridionalSum
 
 	grid           *Grid
-	streamer, hole Law
+	streamer, hole *lawTable
 	active         []region
 	tStreamer      float64 // [K]
 	tHole          float64
@@ -256,11 +256,11 @@ func (k *Corona) describe(c scenarios.Corona) error {
 		k.flat = flat
 	}
 	var err error
-	if k.streamer, err = NewLaw(c.Density.Streamer, c.Helium); err != nil {
+	if k.streamer, err = newLawTable(c.Density.Streamer, c.Helium, k.outer); err != nil {
 		return err
 	}
 	if c.Density.Hole != nil {
-		if k.hole, err = NewLaw(*c.Density.Hole, c.Helium); err != nil {
+		if k.hole, err = newLawTable(*c.Density.Hole, c.Helium, k.outer); err != nil {
 			return err
 		}
 	}
@@ -372,13 +372,14 @@ func (c *Corona) share(lat float64) float64 {
 // w. The blend is logarithmic, so that it is smooth over the decade between hole and
 // streamer.
 func (c *Corona) background(r, lat, w float64) float64 {
+	lnR := math.Log(r)
 	switch {
 	case c.hole == nil || w > 1-1e-12:
-		return c.streamer(r, lat)
+		return math.Exp(c.streamer.at(r, lnR, lat))
 	case w < 1e-12:
-		return c.hole(r, lat)
+		return math.Exp(c.hole.at(r, lnR, lat))
 	}
-	return math.Exp(w*math.Log(c.streamer(r, lat)) + (1-w)*math.Log(c.hole(r, lat)))
+	return math.Exp(w*c.streamer.at(r, lnR, lat) + (1-w)*c.hole.at(r, lnR, lat))
 }
 
 // A mixture is what the density needs to know of a field line.

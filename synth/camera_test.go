@@ -28,12 +28,16 @@ func plane(t *testing.T, set ...string) *Scene {
 	return scene(t, s, l)
 }
 
-// light returns the radiance of a ray through every tuning of a line.
+// light returns the radiance of a ray of the first group through every tuning of a line.
 func light(l *lamp, ray, line int) [][]float32 {
 	var out [][]float32
 	for k, a := range l.groups[0][line] {
-		out = append(out, make([]float32, len(a)/kernel.Rays))
-		l.take(out[k], ray, line, k)
+		rays := make([][]float32, ray+1)
+		for i := range rays {
+			rays[i] = make([]float32, len(a)/kernel.Rays)
+		}
+		l.take(rays, 0, line, k)
+		out = append(out, rays[ray])
 	}
 	return out
 }

@@ -223,10 +223,14 @@ func (l *lamp) filter(to beam, line, tuning int, v []float32) {
 	}
 }
 
-// take copies the light of a ray through a tuning into its series.
-func (l *lamp) take(series []float32, ray, line, tuning int) {
-	a := l.groups[ray/kernel.Rays][line][tuning]
-	for t := range series {
-		series[t] = a[t*kernel.Rays+ray%kernel.Rays]
+// take copies the light of up to kernel.Rays rays, of a group, through a tuning into
+// their series.
+func (l *lamp) take(series [][]float32, group, line, tuning int) {
+	a := l.groups[group][line][tuning]
+	for t := range len(a) / kernel.Rays {
+		point := (*[kernel.Rays]float32)(a[t*kernel.Rays:])
+		for i, s := range series {
+			s[t] = point[i]
+		}
 	}
 }

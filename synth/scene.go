@@ -321,7 +321,7 @@ func (c *Scene) sampleAt(x, dx, y, z float64) sample {
 	b := c.view.ToSky(p.B)
 	bSky := math.Sqrt(b.Y*b.Y + b.Z*b.Z)
 	s.bSky = bSky
-	s.sky = bSky / r3.Norm(b)
+	s.sky = bSky / math.Sqrt(b.X*b.X+b.Y*b.Y+b.Z*b.Z)
 	s.angle = math.Atan2(-b.Y, b.Z)
 	s.j = c.emissivities(p, 1)
 	s.smooth = s.j

@@ -79,6 +79,7 @@ func (c *Scene) expose(ctx context.Context, workers, tile int, progress func(don
 			lamps[w] = c.newLamp(plan)
 			rays[w] = make([][]sample, tile)
 		}
+		series := make([][]float32, 0, kernel.Rays)
 		part := order[i*tile : min((i+1)*tile, len(order))]
 		for n, q := range part {
 			p := lit[q]
@@ -93,10 +94,15 @@ func (c *Scene) expose(ctx context.Context, workers, tile int, progress func(don
 			}
 		}
 		lamps[w].shine(rays[w][:len(part)])
-		for n, q := range part {
+		for g := 0; g*kernel.Rays < len(part); g++ {
+			few := part[g*kernel.Rays : min((g+1)*kernel.Rays, len(part))]
 			for line := range 2 {
 				for k := range nk {
-					lamps[w].take(raw[line].Series(q, k), n, line, k)
+					series = series[:0]
+					for _, q := range few {
+						series = append(series, raw[line].Series(q, k))
+					}
+					lamps[w].take(series, g, line, k)
 				}
 			}
 		}

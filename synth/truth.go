@@ -1,9 +1,7 @@
 package synth
 
 import (
-	"cmp"
 	"math"
-	"slices"
 
 	"gonum.org/v1/gonum/spatial/r3"
 
@@ -232,32 +230,53 @@ func depths(ray []sample, e []float64, shares ...float64) []float64 {
 	if len(ray) == 1 {
 		return out
 	}
+	sky := 0
+	for ray[sky].x != 0 {
+		sky++
+	}
 	// Each sample is spread over its stretch, so that the emission within a depth grows
-	// in straight pieces; an edge is where the slope changes.
-	type edge struct{ at, slope float64 }
-	edges := make([]edge, 0, 4*len(ray))
-	for i := range ray {
-		lo, hi := stretch(ray, i)
-		slope := e[i] / (hi - lo)
-		for _, part := range [2][2]float64{{lo, hi}, {-hi, -lo}} {
-			if a, b := math.Max(part[0], 0), part[1]; b > a {
-				edges = append(edges, edge{a, slope}, edge{b, -slope})
-			}
+	// in straight pieces: walk away from the plane on both sides at once.
+	type side struct {
+		i, step    int
+		end, slope float64
+	}
+	var sides [2]side
+	at := func(d *side) {
+		if d.i < 0 || d.i == len(ray) {
+			d.end, d.slope = math.Inf(1), 0
+			return
+		}
+		lo, hi := stretch(ray, d.i)
+		d.end, d.slope = hi, e[d.i]/(hi-lo)
+		if d.step < 0 {
+			d.end = -lo
 		}
 	}
-	slices.SortFunc(edges, func(a, b edge) int { return cmp.Or(cmp.Compare(a.at, b.at), cmp.Compare(a.slope, b.slope)) })
-	k, within, slope, at := 0, 0.0, 0.0, 0.0
-	for _, g := range edges {
-		next := within + slope*(g.at-at)
+	for n, step := range [2]int{-1, 1} {
+		sides[n] = side{i: sky, step: step}
+		at(&sides[n])
+	}
+	k, within, depth := 0, 0.0, 0.0
+	for k < len(shares) {
+		near := &sides[0]
+		if sides[1].end < near.end {
+			near = &sides[1]
+		}
+		if math.IsInf(near.end, 1) {
+			break
+		}
+		slope := sides[0].slope + sides[1].slope
+		next := within + slope*(near.end-depth)
 		for k < len(shares) && next >= shares[k] {
-			out[k] = at + (shares[k]-within)/slope
+			out[k] = depth + (shares[k]-within)/slope
 			k++
 		}
-		within, at = next, g.at
-		slope += g.slope
+		within, depth = next, near.end
+		near.i += near.step
+		at(near)
 	}
 	for ; k < len(shares); k++ { // rounding
-		out[k] = at
+		out[k] = depth
 	}
 	return out
 }
