@@ -127,7 +127,8 @@ func (q *Point) Structure() int32 {
 // (about the belt's axis if the corona is symmetric about it), made normal to the line
 // and carried along it without twist; the second completes B, e1, e2.
 func (q *Point) Frame() (e1, e2 r3.Vec) {
-	return q.e1, r3.Unit(r3.Cross(q.B, q.e1))
+	e2 = r3.Cross(q.B, q.e1)
+	return q.e1, r3.Scale(1/norm(e2), e2)
 }
 
 // Settings are what the corona needs to know beyond its own description.

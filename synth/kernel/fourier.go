@@ -8,7 +8,7 @@ import "math"
 // of time. It is safe for concurrent use.
 //
 // The stages are those of Cooley & Tukey 1965, Math. Comput. 19, 297: at first one of
-// three or of two if the size asks for it, then of four.
+// eight, or of three and of two, if the size asks for it, then of four.
 type Fourier struct {
 	Size   int
 	Place  []int32 // where element k of the input belongs
@@ -51,7 +51,11 @@ func NewFourier(n int) *Fourier {
 	for m := f.Size / inner; m > 1; m /= 2 {
 		twos++
 	}
-	if twos%2 == 1 {
+	switch {
+	case twos%2 == 0:
+	case twos >= 3 && inner == 1:
+		add(8)
+	default:
 		add(2)
 	}
 	for inner < f.Size {
@@ -110,6 +114,8 @@ func (s *stage) pass(x []float32) {
 				join3(at(0), at(1), at(2))
 			case 4:
 				join4(at(0), at(1), at(2), at(3), turn)
+			case 8:
+				join8(at)
 			}
 		}
 	}
@@ -147,6 +153,33 @@ func join4(p, q, r, s *[Lanes]float32, turn []float32) {
 		r[l], r[8+l] = sumR-oddR, sumI-oddI
 		q[l], q[8+l] = difR-ofI, difI+ofR
 		s[l], s[8+l] = difR+ofI, difI-ofR
+	}
+}
+
+const rootHalf = 0.70710678118654752
+
+// join8 has no turns either.
+func join8(at func(j int) *[Lanes]float32) {
+	var x [8]*[Lanes]float32
+	for j := range x {
+		x[j] = at(j)
+	}
+	for l := range 8 {
+		four := func(p, q, r, s *[Lanes]float32) (re, im [4]float32) {
+			sumR, sumI, difR, difI := p[l]+r[l], p[8+l]+r[8+l], p[l]-r[l], p[8+l]-r[8+l]
+			oddR, oddI, ofR, ofI := q[l]+s[l], q[8+l]+s[8+l], q[l]-s[l], q[8+l]-s[8+l]
+			return [4]float32{sumR + oddR, difR - ofI, sumR - oddR, difR + ofI},
+				[4]float32{sumI + oddI, difI + ofR, sumI - oddI, difI - ofR}
+		}
+		er, ei := four(x[0], x[2], x[4], x[6])
+		or, oi := four(x[1], x[3], x[5], x[7])
+		or[1], oi[1] = float32(rootHalf*(or[1]-oi[1])), float32(rootHalf*(or[1]+oi[1]))
+		or[2], oi[2] = -oi[2], or[2]
+		or[3], oi[3] = -float32(rootHalf*(or[3]+oi[3])), float32(rootHalf*(or[3]-oi[3]))
+		for k := range 4 {
+			x[k][l], x[k][8+l] = er[k]+or[k], ei[k]+oi[k]
+			x[4+k][l], x[4+k][8+l] = er[k]-or[k], ei[k]-oi[k]
+		}
 	}
 }
 

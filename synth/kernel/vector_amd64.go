@@ -58,6 +58,8 @@ func passVector(x []float32, s *stage, blocks int) bool {
 		join3AVX2(&x[0], blocks)
 	case 4:
 		join4AVX2(&x[0], &s.turn[0], s.inner, blocks)
+	case 8:
+		join8AVX2(&x[0], blocks)
 	}
 	return true
 }
@@ -93,6 +95,9 @@ func join2AVX2(x, turn *float32, inner, blocks int)
 
 //go:noescape
 func join3AVX2(x *float32, blocks int)
+
+//go:noescape
+func join8AVX2(x *float32, blocks int)
 
 //go:noescape
 func join4AVX2(x, turn *float32, inner, blocks int)

@@ -48,6 +48,11 @@ DATA sin60<>+8(SB)/8, $0x3f5db3d73f5db3d7
 DATA sin60<>+16(SB)/8, $0x3f5db3d73f5db3d7
 DATA sin60<>+24(SB)/8, $0x3f5db3d73f5db3d7
 GLOBL sin60<>(SB), RODATA|NOPTR, $32
+DATA rootHalf<>+0(SB)/8, $0x3f3504f33f3504f3
+DATA rootHalf<>+8(SB)/8, $0x3f3504f33f3504f3
+DATA rootHalf<>+16(SB)/8, $0x3f3504f33f3504f3
+DATA rootHalf<>+24(SB)/8, $0x3f3504f33f3504f3
+GLOBL rootHalf<>(SB), RODATA|NOPTR, $32
 
 DATA cos1<>+0(SB)/8, $0xc21de9e6c21de9e6
 DATA cos1<>+8(SB)/8, $0xc21de9e6c21de9e6
@@ -525,6 +530,113 @@ block3:
 	ADDQ    $192, DI
 	DECQ    CX
 	JNZ     block3
+	VZEROUPPER
+	RET
+
+// FOUR leaves the transform of the points at p, q, r, s in Y0 to Y7.
+#define FOUR(p, q, r, s) \
+	VMOVUPS p(DI), Y8      \
+	VMOVUPS p+32(DI), Y9   \
+	VMOVUPS r(DI), Y10     \
+	VMOVUPS r+32(DI), Y11  \
+	VADDPS  Y10, Y8, Y12   \
+	VADDPS  Y11, Y9, Y13   \
+	VSUBPS  Y10, Y8, Y14   \
+	VSUBPS  Y11, Y9, Y15   \
+	VMOVUPS q(DI), Y8      \
+	VMOVUPS q+32(DI), Y9   \
+	VMOVUPS s(DI), Y10     \
+	VMOVUPS s+32(DI), Y11  \
+	VADDPS  Y10, Y8, Y6    \
+	VADDPS  Y11, Y9, Y7    \
+	VSUBPS  Y10, Y8, Y8    \
+	VSUBPS  Y11, Y9, Y9    \
+	VADDPS  Y6, Y12, Y0    \
+	VADDPS  Y7, Y13, Y1    \
+	VSUBPS  Y6, Y12, Y4    \
+	VSUBPS  Y7, Y13, Y5    \
+	VSUBPS  Y9, Y14, Y2    \
+	VADDPS  Y8, Y15, Y3    \
+	VADDPS  Y9, Y14, Y6    \
+	VSUBPS  Y8, Y15, Y7
+
+// func join8AVX2(x *float32, blocks int)
+// Transforms of the even points wait in their places while those of the odd ones stay
+// in Y0 to Y7.
+TEXT ·join8AVX2(SB), NOSPLIT, $0-16
+	MOVQ    x+0(FP), DI
+	MOVQ    blocks+8(FP), CX
+
+block8:
+	FOUR(0, 128, 256, 384)
+	VMOVUPS Y0, 0(DI)
+	VMOVUPS Y1, 32(DI)
+	VMOVUPS Y2, 128(DI)
+	VMOVUPS Y3, 160(DI)
+	VMOVUPS Y4, 256(DI)
+	VMOVUPS Y5, 288(DI)
+	VMOVUPS Y6, 384(DI)
+	VMOVUPS Y7, 416(DI)
+	FOUR(64, 192, 320, 448)
+	VMOVUPS rootHalf<>(SB), Y15
+
+	// Even ones that will be overwritten.
+	VMOVUPS 128(DI), Y8
+	VMOVUPS 160(DI), Y9
+	VMOVUPS 256(DI), Y10
+	VMOVUPS 288(DI), Y11
+
+	VMOVUPS 0(DI), Y12
+	VMOVUPS 32(DI), Y13
+	VADDPS  Y0, Y12, Y14
+	VSUBPS  Y0, Y12, Y12
+	VMOVUPS Y14, 0(DI)
+	VMOVUPS Y12, 256(DI)
+	VADDPS  Y1, Y13, Y14
+	VSUBPS  Y1, Y13, Y13
+	VMOVUPS Y14, 32(DI)
+	VMOVUPS Y13, 288(DI)
+
+	VSUBPS  Y3, Y2, Y0
+	VADDPS  Y3, Y2, Y1
+	VMULPS  Y15, Y0, Y0
+	VMULPS  Y15, Y1, Y1
+	VADDPS  Y0, Y8, Y12
+	VADDPS  Y1, Y9, Y13
+	VSUBPS  Y0, Y8, Y8
+	VSUBPS  Y1, Y9, Y9
+	VMOVUPS Y12, 64(DI)
+	VMOVUPS Y13, 96(DI)
+	VMOVUPS Y8, 320(DI)
+	VMOVUPS Y9, 352(DI)
+
+	VMOVUPS 384(DI), Y8
+	VMOVUPS 416(DI), Y9
+	VSUBPS  Y5, Y10, Y12
+	VADDPS  Y4, Y11, Y13
+	VADDPS  Y5, Y10, Y10
+	VSUBPS  Y4, Y11, Y11
+	VMOVUPS Y12, 128(DI)
+	VMOVUPS Y13, 160(DI)
+	VMOVUPS Y10, 384(DI)
+	VMOVUPS Y11, 416(DI)
+
+	VADDPS  Y7, Y6, Y0
+	VSUBPS  Y7, Y6, Y1
+	VMULPS  Y15, Y0, Y0
+	VMULPS  Y15, Y1, Y1
+	VSUBPS  Y0, Y8, Y12
+	VADDPS  Y1, Y9, Y13
+	VADDPS  Y0, Y8, Y8
+	VSUBPS  Y1, Y9, Y9
+	VMOVUPS Y12, 192(DI)
+	VMOVUPS Y13, 224(DI)
+	VMOVUPS Y8, 448(DI)
+	VMOVUPS Y9, 480(DI)
+
+	ADDQ    $512, DI
+	DECQ    CX
+	JNZ     block8
 	VZEROUPPER
 	RET
 

@@ -2,7 +2,6 @@ package wave
 
 import (
 	"math"
-	"math/cmplx"
 
 	"offplane/synth/kernel"
 )
@@ -130,7 +129,7 @@ func (d *Driver) carrier(tau float64) (start [16]float32, step [2]float32) {
 
 // filter is delay and damping at one frequency.
 func (d *Driver) filter(f, tau float64) complex128 {
-	return cmplx.Rect(d.damping(f, tau), -2*math.Pi*f*tau)
+	return complex(d.damping(f, tau), 0) * turn(-f*tau)
 }
 
 // Velocity returns the Doppler velocities [km/s] at every frame plus a lead, point by

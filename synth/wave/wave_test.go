@@ -185,3 +185,14 @@ func BenchmarkBundle(b *testing.B) {
 	}
 	b.ReportMetric(float64(b.Elapsed().Nanoseconds())/float64(b.N*kernel.Lanes), "ns/sample")
 }
+
+// Cosine and sine from the table against the library's, which the weights of sites and
+// the phases of trains go through.
+func TestTurn(t *testing.T) {
+	for x := -3.0; x < 3; x += 0.000731 {
+		s, c := math.Sincos(2 * math.Pi * x)
+		if z := turn(x); math.Abs(real(z)-c) > 1e-14 || math.Abs(imag(z)-s) > 1e-14 {
+			t.Fatalf("turn(%g) = %v, want %g, %g", x, z, c, s)
+		}
+	}
+}
