@@ -11,6 +11,7 @@
 package compare
 
 import (
+	"context"
 	"errors"
 	"fmt"
 	"math"
@@ -20,6 +21,7 @@ import (
 	"offplane/compare/stat"
 	"offplane/synth/ecsv"
 	"offplane/synth/obs"
+	"offplane/synth/parallel"
 )
 
 // Options say what cannot be read from the maps.
@@ -159,6 +161,7 @@ type comparison struct {
 	bins         []subset     // by height
 	classes      [5]subset    // by code of STRUCTURE
 	layout       *stat.Layout // of the used pixels
+	later        []func()     // summaries that are still to be made, side by side
 }
 
 // A subset is one height bin or one structure.
@@ -404,19 +407,30 @@ func (c *comparison) each(do func(region int, of []int)) {
 	}
 }
 
-// summarise returns the Summary of x over every region, with the interval of its median;
-// none if x is nil.
+// summarise puts the Summary of x over every region, with the interval of its median, when
+// settle is called; none if x is nil. What put changes belongs to x alone.
 func (c *comparison) summarise(x []float64, put func(region int, s *stat.Summary)) {
 	if x == nil {
 		return
 	}
-	scale := c.layout.Scale(x)
-	c.each(func(region int, of []int) {
-		s := stat.Summarise(pick(x, of))
-		i := c.layout.MedianInterval(x, of, scale)
-		s.Interval = &i
-		put(region, &s)
+	c.later = append(c.later, func() {
+		scale := c.layout.Scale(x)
+		c.each(func(region int, of []int) {
+			s := stat.Summarise(pick(x, of))
+			i := c.layout.MedianInterval(x, of, scale)
+			s.Interval = &i
+			put(region, &s)
+		})
 	})
+}
+
+// settle makes the summaries.
+func (c *comparison) settle() {
+	_ = parallel.For(context.Background(), len(c.later), 0, func(_, i int) error { // nothing can fail
+		c.later[i]()
+		return nil
+	})
+	c.later = nil
 }
 
 // Regions count height bins from 0, structures downward from -1 (by code), and

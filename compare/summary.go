@@ -167,6 +167,7 @@ func (c *comparison) summary() Summary {
 			s.AngleSigned = x
 		}
 	})
+	angle = slices.Clone(angle)
 	for i := range angle {
 		angle[i] = math.Abs(angle[i])
 	}
@@ -191,6 +192,7 @@ func (c *comparison) summary() Summary {
 		}
 		return &regions[-1-region].Identity
 	})
+	c.settle()
 	return s
 }
 
@@ -232,16 +234,17 @@ func (c *comparison) identity(parts func(region int) *LnParts) {
 	for k, i := range c.used {
 		pixels[k] = id.At(i)
 	}
-	x := make([]float64, len(pixels))
 	for _, q := range lnParts {
 		if slices.ContainsFunc(q.maps(id), func(m []float32) bool { return m == nil }) {
 			continue
 		}
+		x := make([]float64, len(pixels))
 		for k := range pixels {
 			x[k] = q.part(&pixels[k])
 		}
 		c.summarise(x, func(region int, s *stat.Summary) { *q.of(parts(region)) = s })
 	}
+	x := make([]float64, len(pixels))
 	for k := range pixels {
 		x[k] = math.Abs(pixels[k].Residual())
 	}
