@@ -340,7 +340,9 @@ func (r *run) steps(ctx context.Context, workers int, progress func(done, total 
 			return err
 		}
 		if i == 0 {
-			r.removeTrend()
+			if err := r.removeTrend(ctx, workers); err != nil {
+				return err
+			}
 		}
 	}
 	return nil

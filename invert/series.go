@@ -1,11 +1,14 @@
 package invert
 
 import (
+	"context"
 	"fmt"
 	"math"
 	"slices"
 
 	"gonum.org/v1/gonum/dsp/fourier"
+
+	"offplane/synth/parallel"
 )
 
 // least is the smallest weight of the amplitude filter that is kept: what is left out
@@ -314,7 +317,7 @@ const (
 // by more than six standard deviations, otherwise nothing at all is done; nor is
 // anything in a field of fewer than six sectors, where a trend cannot be told from
 // a wave.
-func (f *field) removeTrend() {
+func (f *field) removeTrend(ctx context.Context, workers int) error {
 	members := make([][]int, int(360/sector))
 	west := make([]float64, len(f.pixels))
 	for p := range f.pixels {
@@ -330,18 +333,17 @@ func (f *field) removeTrend() {
 	members = slices.DeleteFunc(members, func(m []int) bool { return len(m) < leastPixels })
 	n := len(members)
 	if n < leastSectors {
-		return
+		return nil
 	}
 	row := f.band.row
 	medians := make([]float64, n*row)
-	var column []float32
 	y := make([]float64, n)
-	mean := 0.0
-	for i, m := range members {
+	err := parallel.For(ctx, n, workers, func(_, i int) error {
+		m := members[i]
+		column := make([]float32, 0, len(m))
 		for _, p := range m {
 			y[i] += west[p] / float64(len(m))
 		}
-		mean += y[i] / float64(n)
 		for j := range 2 * len(f.band.freq) {
 			column = column[:0]
 			for _, p := range m {
@@ -350,8 +352,15 @@ func (f *field) removeTrend() {
 			slices.Sort(column)
 			medians[i*row+j] = (float64(column[len(column)/2]) + float64(column[(len(column)-1)/2])) / 2
 		}
+		return nil
+	})
+	if err != nil {
+		return err
 	}
-	var yy float64
+	var mean, yy float64
+	for i := range y {
+		mean += y[i] / float64(n)
+	}
 	for i := range y {
 		y[i] -= mean
 		yy += y[i] * y[i]
@@ -379,7 +388,7 @@ func (f *field) removeTrend() {
 		slope = fit(func(i int) float64 { return y[i] / yy })
 	}
 	if constant == nil && slope == nil {
-		return
+		return nil
 	}
 	for p := range f.pixels {
 		if f.norm[p] == 0 {
@@ -395,4 +404,5 @@ func (f *field) removeTrend() {
 			}
 		}
 	}
+	return nil
 }

@@ -154,7 +154,9 @@ func TestTrendSparesWaves(t *testing.T) {
 	for _, wedge := range [][2]float64{{0, 360}, {40, 140}, {80, 110}} {
 		f := ring(t, wedge[0], wedge[1])
 		before := slices.Clone(f.spec)
-		f.removeTrend()
+		if err := f.removeTrend(t.Context(), 2); err != nil {
+			t.Fatal(err)
+		}
 		if !slices.Equal(before, f.spec) {
 			t.Errorf("wedge %v: waves were changed", wedge)
 		}
@@ -182,7 +184,9 @@ func TestTrendIsRemoved(t *testing.T) {
 			}
 		}
 	}
-	f.removeTrend()
+	if err := f.removeTrend(t.Context(), 2); err != nil {
+		t.Fatal(err)
+	}
 	left, put := 0.0, 0.0
 	for p := range f.pixels {
 		ix, iy := f.at(p)
