@@ -38,7 +38,7 @@ func Default() Scenario {
 			FarEnd:     true,
 		},
 		Line:  line,
-		Sight: Sight{Step: 1, Reach: 2, Tail: 0.001},
+		Sight: Sight{Step: 1.25, Reach: 2, Tail: 0.001},
 		Image: Image{Pixel: 4.35, Inner: 1.05, Outer: 1.35, From: 0, To: 360},
 		Camera: Camera{
 			Like:        "none",

@@ -312,7 +312,7 @@ func TestRules(t *testing.T) {
 		{"waves.inward_from=1.3 Rsun", "--set waves.inward_from: 1.3 Rsun must be more than image.outer, 1.35 Rsun, so that inward waves cross the whole image"},
 		{"waves.inward_from=3 Rsun", "--set waves.inward_from: 3 Rsun must be at most corona.closed_below, 2.5 Rsun: lower open lines do not reach it"},
 		{"waves.inward_from=3 Rsun|waves.inward=0", ""},
-		{"waves.cell=100 Mm|sight.reach=0.5 Rsun", "--set sight.reach: 0.5 Rsun holds fewer than 10 samples of step * cell * outer = 0.194 Rsun; write at least 1.94 Rsun"},
+		{"waves.cell=100 Mm|sight.reach=0.5 Rsun", "--set sight.reach: 0.5 Rsun holds fewer than 10 samples of step * cell * outer = 0.243 Rsun; write at least 2.43 Rsun"},
 		{"waves.cell=100 Mm|sight.reach=0.5 Rsun|sight.plane=true", ""},
 		{"corona.density.streamer.named=gibson", "--set corona.density.streamer.named: \"gibson\" is not allowed; write one of " + strings.Join(model.LawNames(), ", ")},
 	} {

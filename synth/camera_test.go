@@ -218,7 +218,7 @@ func TestBrighteningLooksLikeAVelocity(t *testing.T) {
 			q := frame(o, p, 0)
 			got := doppler(q[0], q[1], q[2], d)
 			// The profile's width by the formula, without the brightening.
-			w2 := math.Pow(math.Hypot(c.sampleAt(0, 1, 1.1, 0).width, c.filter), 2)
+			w2 := math.Pow(math.Hypot(sampled(c, 0, 1, 1.1, 0).width, c.filter), 2)
 			if want := w2 / (4 * d) * 3 * between / 3600; math.Abs(got/want-1) > 0.02 {
 				t.Fatalf("%s: %.5g km/s, want %.5g", order, got, want)
 			}
@@ -238,7 +238,7 @@ func TestSequentialTuningReducesAWave(t *testing.T) {
 		"waves.spectrum.low=3.4 mHz", "waves.spectrum.high=3.6 mHz", "camera.duration=6 h"}
 	s, l := load(t, "plane-wave", set...)
 	c := scene(t, s, l)
-	q := c.sampleAt(0, 1e10, 1.1, 0.01)
+	q := sampled(c, 0, 1e10, 1.1, 0.01)
 	d := c.tunings[0][2]
 	rms := func(delay ...float64) float64 {
 		lamp := c.newLamp(&camera.Schedule{Delay: delay})
@@ -268,7 +268,7 @@ func TestSequentialTuningReducesAWave(t *testing.T) {
 func TestSecondLineHasItsOwnTime(t *testing.T) {
 	s, l := load(t, "plane-wave", "camera.sequential=true", "camera.tuning_time=4 s", "camera.exposure=1 s", "camera.switching=interleaved", "camera.second_line=20", "camera.duration=1 h")
 	c := scene(t, s, l)
-	q := c.sampleAt(0, 1e10, 1.1, 0.01)
+	q := sampled(c, 0, 1e10, 1.1, 0.01)
 	plan := camera.NewSchedule(s.Camera, Frames(s), 1)
 	lamp := c.newLamp(plan)
 	lamp.shine([][]sample{{q}})

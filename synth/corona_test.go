@@ -110,8 +110,8 @@ func TestTiltIsLatitude(t *testing.T) {
 	a := see("observer.latitude=12 deg")
 	b := see("corona.belt={tilt: 12 deg, toward: 0 deg}")
 	for _, p := range []r3.Vec{{X: 0.2, Y: 1.1, Z: 0.1}, {X: -0.5, Y: 1.05, Z: 0.4}} {
-		q, r := a.sampleAt(p.X, 1, p.Y, p.Z), b.sampleAt(p.X, 1, p.Y, p.Z)
-		if math.Abs(q.j[0]/r.j[0]-1) > 1e-9 || math.Abs(q.angle-r.angle) > 1e-9 || math.Abs(q.los[0]-r.los[0]) > 1e-9 {
+		q, r := sampled(a, p.X, 1, p.Y, p.Z), sampled(b, p.X, 1, p.Y, p.Z)
+		if math.Abs(q.j[0]/r.j[0]-1) > 1e-9 || math.Abs(a.angle(&q)-b.angle(&r)) > 1e-7 || math.Abs(q.los[0]-r.los[0]) > 1e-9 {
 			t.Errorf("at %v: %+v, tilted %+v", p, q, r)
 		}
 	}

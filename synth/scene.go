@@ -301,7 +301,6 @@ type sample struct {
 	dx     float64 // its share of the ray [cm]
 	point  model.Point
 	sky    float64    // plane-of-sky component of the unit vector along B
-	angle  float64    // of B on the sky [rad], counter-clockwise from north
 	bSky   float64    // plane-of-sky component of B [G]
 	j      [2]float64 // emissivities [erg cm^-3 s^-1 sr^-1]
 	width  float64    // of the lines [km/s]
@@ -311,10 +310,10 @@ type sample struct {
 }
 
 // sampleAt evaluates the corona at (x, y, z) of the observer's frame.
-func (c *Scene) sampleAt(x, dx, y, z float64) sample {
-	pos := c.view.ToSun(r3.Vec{X: x, Y: y, Z: z})
-	s := sample{x: x, dx: dx, point: c.Corona.At(pos)}
+func (c *Scene) sampleAt(s *sample, x, dx, y, z float64) {
+	s.x, s.dx = x, dx
 	p := &s.point
+	*p = c.Corona.At(c.view.ToSun(r3.Vec{X: x, Y: y, Z: z}))
 	if c.as.Projected {
 		p.R = math.Hypot(y, z)
 	}
@@ -322,7 +321,6 @@ func (c *Scene) sampleAt(x, dx, y, z float64) sample {
 	bSky := math.Sqrt(b.Y*b.Y + b.Z*b.Z)
 	s.bSky = bSky
 	s.sky = bSky / math.Sqrt(b.X*b.X+b.Y*b.Y+b.Z*b.Z)
-	s.angle = math.Atan2(-b.Y, b.Z)
 	s.j = c.emissivities(p, 1)
 	s.smooth = s.j
 	if p.N != p.Mean {
@@ -334,7 +332,13 @@ func (c *Scene) sampleAt(x, dx, y, z float64) sample {
 	// Doppler velocity is positive away from the observer.
 	s.los = [2]float64{-a * c.view.ToSky(e1).X, -a * c.view.ToSky(e2).X}
 	s.flow = -c.view.ToSky(p.Flow).X / kms
-	return s
+}
+
+// angle returns the direction of the field on the sky [deg], counter-clockwise from north,
+// 0..180.
+func (c *Scene) angle(s *sample) float64 {
+	b := c.view.ToSky(s.point.B)
+	return math.Mod(math.Atan2(-b.Y, b.Z)*180/math.Pi+360, 180)
 }
 
 // emissivities returns the mean emissivities of a point's dense and thin plasma, with

@@ -73,7 +73,7 @@ func (c *Scene) Sight(ix, iy int) (*Sight, error) {
 		b := c.view.ToSky(s.point.B)
 		v.Samples = append(v.Samples, SightSample{
 			X: s.x, Length: s.dx / units.SolarRadius, Point: s.point,
-			Field: s.bSky, Angle: math.Mod(s.angle*180/math.Pi+360, 180), Tilt: math.Atan2(math.Abs(b.X), s.bSky) * 180 / math.Pi,
+			Field: s.bSky, Angle: c.angle(s), Tilt: math.Atan2(math.Abs(b.X), s.bSky) * 180 / math.Pi,
 			Speed: s.point.Speed * s.sky / kms, Emissivity: s.j, Smooth: smooth[i].j,
 			Emission: w.Emission[i], Wave: w.Wave[i],
 		})

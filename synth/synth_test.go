@@ -129,6 +129,12 @@ func TestLightAgainstTheExactSum(t *testing.T) {
 	}
 }
 
+func sampled(c *Scene, x, dx, y, z float64) sample {
+	var s sample
+	c.sampleAt(&s, x, dx, y, z)
+	return s
+}
+
 // One pixel of quiet-belt by a direct sum that shares no code with the program but the
 // atomic model and the named density formulas' papers: field and flux function of the
 // dipole plus sheet (Banaszkiewicz et al. 1998), footpoints by the flux function,
@@ -433,7 +439,7 @@ func TestOrientation(t *testing.T) {
 		}
 	}
 	c := scene(t, s, l)
-	q := c.sampleAt(0, 1, 1.2, 0)
+	q := sampled(c, 0, 1, 1.2, 0)
 	// At the west limb the azimuthal direction points away from the observer (-x): a
 	// positive motion along it is a positive Doppler velocity.
 	if q.los[0] <= 0 || math.Abs(q.los[1]) > 1e-6*q.los[0] {

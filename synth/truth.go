@@ -177,7 +177,7 @@ func (c *Scene) truthOf(ray []sample) ([]float64, int32) {
 		bWave, slow = math.NaN(), math.NaN()
 	}
 	depth := depths(ray, w.Emission, 0.5, 0.9)
-	angle := math.Mod(sky.angle*180/math.Pi+360, 180)
+	angle := c.angle(sky)
 	p := &sky.point
 	var ts []train
 	local := 0.0
