@@ -53,10 +53,37 @@ type Key uint64
 func NewKey(address ...uint64) Key { return Key(Hash(address...)) }
 
 // Normal returns the standard normal number at the address (key, i), by the
-// inverse of the normal distribution function: no state, no order.
+// inverse of the normal distribution function: no state, no order. Within two standard
+// deviations that is read from a table by Hermite's cubics, good to 2e-8 (tested).
 func (k Key) Normal(i uint64) float64 {
-	return math.Sqrt2 * math.Erfinv(2*k.Uniform(i)-1)
+	u := k.Uniform(i)
+	x := u * cells
+	j := int(x)
+	if j < inner || j >= cells-inner {
+		return quantile(u)
+	}
+	t := x - float64(j)
+	a, b := &inverse[j], &inverse[j+1]
+	d := b[0] - a[0]
+	return a[0] + t*(a[1]+t*(3*d-2*a[1]-b[1]+t*(a[1]+b[1]-2*d)))
 }
+
+// quantile is the inverse of the normal distribution function.
+func quantile(u float64) float64 { return math.Sqrt2 * math.Erfinv(2*u-1) }
+
+const (
+	cells = 1024
+	inner = 24 // the first cell of the table: two standard deviations
+)
+
+// inverse holds quantile and its slope times a cell at the nodes.
+var inverse = func() (t [cells + 1][2]float64) {
+	for j := inner; j <= cells-inner; j++ {
+		z := quantile(float64(j) / cells)
+		t[j] = [2]float64{z, math.Sqrt(2*math.Pi) * math.Exp(z*z/2) / cells}
+	}
+	return t
+}()
 
 // Uniform returns the number in (0, 1) at the address (key, i).
 func (k Key) Uniform(i uint64) float64 {

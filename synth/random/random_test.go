@@ -134,3 +134,13 @@ func TestPoisson(t *testing.T) {
 		t.Error("light out of nothing")
 	}
 }
+
+// The tabulated inverse of the distribution function against the library's.
+func TestNormalAgainstErfinv(t *testing.T) {
+	k := NewKey(11)
+	for i := range uint64(200_000) {
+		if got, want := k.Normal(i), quantile(k.Uniform(i)); math.Abs(got-want) > 2e-8 {
+			t.Fatalf("at %g: %.12g, want %.12g", k.Uniform(i), got, want)
+		}
+	}
+}
