@@ -9,7 +9,10 @@ import (
 
 var blas gonum.Implementation
 
-const none = blasapi.NoTrans
+const (
+	none       = blasapi.NoTrans
+	transposed = blasapi.Trans
+)
 
 const (
 	leastIsland = 6    // pixels, the pixel itself included

@@ -577,12 +577,7 @@ func (r *run) series(w *worker, p int) (bad int) {
 			v[i], broken[i] = float64(x), math.IsNaN(float64(x)) || math.IsInf(float64(x), 0)
 		}
 	case 3: // never with a background
-		g := r.means[0].gaussian
-		i1, i2, i3 := r.cube.Series(p, 0), r.cube.Series(p, 1), r.cube.Series(p, 2)
-		for i := range v {
-			x, ok := g.doppler(i1[i], i2[i], i3[i])
-			v[i], broken[i] = x, !ok
-		}
+		r.means[0].doppler(r.cube.Series(p, 0), r.cube.Series(p, 1), r.cube.Series(p, 2), v, broken)
 	default:
 		g := r.means[0].gaussian
 		for i := range v {

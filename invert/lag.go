@@ -28,27 +28,26 @@ type lagger struct {
 	pure    []complex128
 
 	middle []float32 // spectrum of the track's centre
-	turned []float32 // middle turned by every lag of the search: three rows each
+	turned []float32 // middle turned by every lag of the search
 	stamp  []int     // when that was done
 	turn   int
-	curve  [3]float32 // cross-correlation and its derivatives
 	fit    []lag
+	parts  []float32 // what each frequency adds at the lags of fit to the first derivative and to curve
 	pull   [2][]float32
 	terms  [2][]float64
 }
 
 // A lag is that of one point of a track against its centre.
 type lag struct {
-	s, tau, weight float64   // [km, s]
-	x              []float32 // spectrum of the point
-	m              int       // step of the search nearest to tau
-	curve          float64   // minus the second derivative of the cross-correlation at its peak [1/s^2]
+	s, tau, weight float64 // [km, s]
+	curve          float64 // minus the second derivative of the cross-correlation at its peak [1/s^2]
+	off            float64 // of the peak from the step of the search nearest to it [s]
 }
 
 // A split holds what the separation of tracks of one length needs.
 type split struct {
 	h         []float32 // H(d) for d = -(n-1)..n-1
-	even, odd []float32 // H from even parts to odd ones and from odd parts to even ones, by columns
+	even, odd []float32 // H from even parts to odd ones, a row of zeros beneath if n is odd, and back, by columns
 	leaks     []float64 // of a pure wave; NaN: not asked for yet
 }
 
@@ -68,7 +67,8 @@ func newLagger(b *band, opt *Options, points int, step, grid float64) *lagger {
 			r[j], r[n+j] = float32(c), float32(s)
 		}
 	}
-	l.turned, l.stamp = make([]float32, 3*lags*b.row), make([]int, lags)
+	l.turned, l.stamp = make([]float32, lags*b.row), make([]int, lags)
+	l.parts = make([]float32, 2*points*n)
 	l.folded = make([]float32, (points+1)*b.row)
 	l.product = make([]float32, (points+1)*b.row)
 	l.wave[0] = make([]float32, points*b.row)
@@ -99,45 +99,38 @@ func (l *lagger) rising(rows []float32, n int) []float32 {
 	h := l.split(n)
 
 	// H turns what is even about the middle of the track into what is odd and back,
-	// which halves the work: with e, o the sum and difference of mirrored points,
-	// z_i = D_i + A_i and, mirrored, D_i - A_i, A from e and D from o.
-	m, mid := n/2, n%2
-	even, odd := l.folded[:(m+mid)*row], l.folded[(m+mid)*row:n*row]
+	// which halves the work: e and o are the sum and difference of mirrored points x and y,
+	// x/2 - i H x = D + A and, mirrored, D - A, with D = e/4 - i H o and A = o/4 - i H e.
+	// -i (r, i) = (i, -r).
+	m, k := n/2, n-n/2
+	even, odd := l.folded[:k*row], l.folded[k*row:n*row]
+	A, D := l.product[:k*row], l.product[k*row:2*k*row]
 	for j := range m {
 		x, y := at(rows, j), at(rows, n-1-j)
-		e, o := at(even, j)[:len(x)], at(odd, j)[:len(x)]
-		y = y[:len(x)]
-		for k, a := range x {
-			b := y[k]
-			e[k], o[k] = a+b, a-b
+		fold(x[:nf], y[:nf], at(even, j)[nf:], at(odd, j)[nf:], at(D, j), at(A, j), -1)
+		fold(x[nf:2*nf], y[nf:2*nf], at(even, j), at(odd, j), at(D, j)[nf:], at(A, j)[nf:], 1)
+	}
+	if k > m { // the middle is its own mirror image
+		x, e, d := at(rows, m), at(even, m), at(D, m)
+		for j := range nf {
+			e[j], e[nf+j] = x[nf+j], -x[j]
+			d[j], d[nf+j] = 0.5*x[j], 0.5*x[nf+j]
 		}
+		clear(at(A, m))
 	}
-	if mid == 1 {
-		copy(at(even, m), at(rows, m))
-	}
-	A, D := l.product[:m*row], l.product[m*row:n*row]
-	multiply(m, m+mid, row, h.even, even, A)
-	multiply(m+mid, m, row, h.odd, odd, D)
+	multiply(k, k, row, h.even, even, A)
+	multiply(k, m, row, h.odd, odd, D)
 
 	out := l.wave[0][:n*row]
+	copy(out, D[:m*row])
+	blas.Saxpy(m*row, 1, A, 1, out, 1)
 	for i := range m {
-		// i H x = (-hi, hr); rising waves take its negative.
-		x, y, a, d := at(rows, i), at(rows, n-1-i), at(A, i), at(D, i)
-		u, v := at(out, i), at(out, n-1-i)
-		xr, xi, yr, yi := x[:nf], x[nf:2*nf], y[:nf], y[nf:2*nf]
-		ar, ai, dr, di := a[:nf], a[nf:2*nf], d[:nf], d[nf:2*nf]
-		ur, ui, vr, vi := u[:nf], u[nf:2*nf], v[:nf], v[nf:2*nf]
-		for j, p := range xr {
-			ar, ai, dr, di := ar[j], ai[j], dr[j], di[j]
-			ur[j], ui[j] = float32(0.5*p)+(di+ai), float32(0.5*xi[j])-(dr+ar)
-			vr[j], vi[j] = float32(0.5*yr[j])+(di-ai), float32(0.5*yi[j])-(dr-ar)
-		}
+		v := at(out, n-1-i)
+		copy(v, at(D, i))
+		blas.Saxpy(row, -1, at(A, i), 1, v, 1)
 	}
-	if mid == 1 {
-		x, d, u := at(rows, m), at(D, m), at(out, m)
-		for j := range nf {
-			u[j], u[nf+j] = float32(0.5*x[j])+d[nf+j], float32(0.5*x[nf+j])-d[j]
-		}
+	if k > m {
+		copy(at(out, m), at(D, m))
 	}
 	if l.sum(rows, n) {
 		for i := range n {
@@ -182,9 +175,20 @@ func (l *lagger) sum(rows []float32, n int) bool {
 	return true
 }
 
-// multiply sets c = a b, with the k columns of a, of length m, one after the other.
+// fold puts sum and difference of x and y, times sign, into even and odd, and a quarter
+// of them into e and o.
+func fold(x, y, even, odd, e, o []float32, sign float32) {
+	y, even, odd, e, o = y[:len(x)], even[:len(x)], odd[:len(x)], e[:len(x)], o[:len(x)]
+	for j, a := range x {
+		b := y[j]
+		s, d := a+b, a-b
+		even[j], odd[j] = float32(sign*s), float32(sign*d)
+		e[j], o[j] = float32(0.25*s), float32(0.25*d)
+	}
+}
+
+// multiply adds a b to c, with the k columns of a, of length m, one after the other.
 func multiply(m, k, row int, a, b, c []float32) {
-	clear(c)
 	for j := range k {
 		blas.Sger(m, row, 1, a[j*m:], 1, b[j*row:], 1, c, row)
 	}
@@ -275,13 +279,14 @@ func (l *lagger) split(n int) *split {
 			t.odd = append(t.odd, (h[n-1+i-j]-h[i+j])/2)
 		}
 		if mid == 1 {
-			t.odd = append(t.odd, h[n-1+m-j])
+			t.even, t.odd = append(t.even, 0), append(t.odd, h[n-1+m-j])
 		}
 	}
 	if mid == 1 {
 		for i := range m {
 			t.even = append(t.even, h[n-1+i-m])
 		}
+		t.even = append(t.even, 0)
 	}
 	l.splits[n] = t
 	return t
@@ -379,20 +384,16 @@ func (l *lagger) variance(ws, sxx float64) float64 {
 	pull, share := l.pull[0][:nf], l.pull[1][:nf]
 	clear(pull)
 	clear(share)
-	for _, q := range l.fit {
-		if q.x == nil { // the centre itself
-			continue
-		}
-		t := l.at(q.m)
-		first, second := t[l.row:], t[2*l.row:]
-		wr, wi, qr, qi, xr, xi := first[:nf], first[nf:2*nf], second[:nf], second[nf:2*nf], q.x[:nf], q.x[nf:2*nf]
+	for i := 1; i < len(l.fit); i++ { // the first is the centre itself
+		q := &l.fit[i]
+		slopes, curves := l.part(i)
 		a, b := float32(q.weight*(q.s-ws)/(sxx*q.curve)), float32(1/(q.curve*float64(len(l.fit)-1)))
-		off := float32(q.tau - float64(q.m)*l.grid)
-		for j, x := range xr {
-			y := xi[j]
-			bend := float32(x*qr[j]) + float32(y*qi[j])
-			pull[j] += float32(a * (float32(x*wr[j]) + float32(y*wi[j]) - float32(off*bend)))
-			share[j] += float32(b * bend)
+		slopes, curves, off := slopes[:len(pull)], curves[:len(pull)], float32(q.off)
+		share := share[:len(pull)]
+		for j, v := range pull {
+			c := curves[j]
+			pull[j] = v + float32(a*(slopes[j]-float32(off*c)))
+			share[j] += float32(b * c)
 		}
 	}
 	for j := range nf {
@@ -407,56 +408,78 @@ func (l *lagger) face(c []float32) {
 	l.turn++
 }
 
-// at returns the spectrum c that lags refer to, delayed by m steps, in three rows whose
-// products with a spectrum are the cross-correlation, its first derivative by the lag
-// and minus its second.
+// at returns the spectrum that lags refer to, delayed by m steps.
 func (l *lagger) at(m int) []float32 {
 	row, nf := l.row, len(l.freq)
 	i := m + l.reach
-	t := l.turned[3*i*row : 3*(i+1)*row]
+	t := l.turned[i*row : (i+1)*row]
 	if l.stamp[i] == l.turn {
 		return t
 	}
 	l.stamp[i] = l.turn
-	r := l.phasor[i*row:]
+	r := l.phasor[i*row : (i+1)*row]
 	c, s, xr, xi := r[:nf], r[nf:2*nf], l.middle[:nf], l.middle[nf:2*nf]
 	zr, zi := t[:nf], t[nf:2*nf]
-	wr, wi := t[row:row+nf], t[row+nf:row+2*nf]
-	qr, qi := t[2*row:2*row+nf], t[2*row+nf:2*row+2*nf]
-	for j, o := range l.omega {
-		c, s, a, b := c[j], s[j], xr[j], xi[j]
-		re, im := float32(a*c)+float32(b*s), float32(b*c)-float32(a*s)
-		zr[j], zi[j] = re, im
-		ur, ui := o*re, o*im
-		wr[j], wi[j] = ui, -ur
-		qr[j], qi[j] = o*ur, o*ui
+	for j, c := range c {
+		s, a, b := s[j], xr[j], xi[j]
+		zr[j], zi[j] = float32(a*c)+float32(b*s), float32(b*c)-float32(a*s)
 	}
 	return t
+}
+
+// derivatives returns the cross-correlation of x with the spectrum t, its first
+// derivative by the lag and minus its second, and puts what each frequency adds to those
+// into slopes and curves.
+func (l *lagger) derivatives(x, t, slopes, curves []float32) (height, slope, curve float32) {
+	nf := len(l.omega)
+	xr, xi, zr, zi := x[:nf], x[nf:2*nf], t[:nf], t[nf:2*nf]
+	slopes, curves = slopes[:nf], curves[:nf]
+	for j, o := range l.omega {
+		a, b, u, v := xr[j], xi[j], zr[j], zi[j]
+		p := float32(a*u) + float32(b*v)
+		s := float32(o * (float32(a*v) - float32(b*u)))
+		c := float32(o * float32(o*p))
+		slopes[j], curves[j] = s, c
+		height += p
+		slope += s
+		curve += c
+	}
+	return height, slope, curve
+}
+
+// part returns the parts of lag i of the fit.
+func (l *lagger) part(i int) (slopes, curves []float32) {
+	nf := len(l.freq)
+	p := l.parts[2*nf*i : 2*nf*(i+1)]
+	return p[:nf], p[nf:]
 }
 
 // nearest is the distance of a lag from the step of the search that it is taken from
 // [steps]: a little above one half, so that no peak lies between two.
 const nearest = 0.6
 
-// peak climbs from lag start to the nearest maximum of the cross-correlation of x: by
-// Newton's method from the step of the search beside it, in the tangent of the phase,
-// which makes it exact for one frequency. height is that of the maximum.
+// peak climbs from lag start to the nearest maximum of the cross-correlation of x, the
+// next point of the fit: by Newton's method from the step of the search beside it, in the
+// tangent of the phase, which makes it exact for one frequency. height is that of the
+// maximum.
 func (l *lagger) peak(x []float32, start float64) (q lag, height float64, ok bool) {
-	y := l.curve[:]
+	slopes, curves := l.part(len(l.fit))
 	m := max(min(int(math.Round(start/l.grid)), l.reach-1), 1-l.reach)
 	for range l.reach {
-		blas.Sgemv(none, 3, l.row, 1, l.at(m), l.row, x, 1, 0, y, 1)
-		h, slope, curve := float64(y[0]), float64(y[1]), float64(y[2])
+		y, d1, d2 := l.derivatives(x, l.at(m), slopes, curves)
+		h, slope, curve := float64(y), float64(d1), float64(d2)
 		off := math.Copysign(l.grid, slope)
 		if h > 0 && curve > 0 {
 			w := math.Sqrt(curve / h)
-			u := w * slope / curve
-			off = slope / curve * (1 - u*u/3)
+			r := slope / curve
+			u := w * r
+			off = r * (1 - u*u/3)
 			if math.Abs(u) > 0.25 {
 				off = math.Atan(u) / w
 			}
 			if math.Abs(off) <= nearest*l.grid {
-				return lag{tau: float64(m)*l.grid + off, x: x, m: m, curve: curve}, h + slope*off/2, true
+				q.tau, q.off, q.curve = float64(m)*l.grid+off, off, curve
+				return q, h + slope*off/2, true
 			}
 		}
 		m += max(-2, min(2, int(math.Round(off/l.grid))))

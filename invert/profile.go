@@ -184,20 +184,26 @@ func (g *gaussian) fit(I []float64) profile {
 	return profile{peak: math.Exp(y), v: v, w: math.Sqrt(-1 / c), ok: true, b: b, c: c, y: y}
 }
 
-// doppler is fit for the Doppler shift alone at three tunings, two logarithms.
-func (g *gaussian) doppler(i1, i2, i3 float32) (v float64, ok bool) {
-	if !(i1 > 0 && i2 > 0 && i3 > 0) || i1 > math.MaxFloat32 || i2 > math.MaxFloat32 || i3 > math.MaxFloat32 {
-		return 0, false
+// doppler is fit for the Doppler shifts alone of frames at three tunings, two logarithms
+// each; bad marks those that are not ok.
+func (g *gaussian) doppler(i1, i2, i3 []float32, v []float64, bad []bool) {
+	b1, b3, c1, c3, limit := g.b[0], g.b[2], g.c[0], g.c[2], 2*g.reach
+	i2, i3, v, bad = i2[:len(i1)], i3[:len(i1)], v[:len(i1)], bad[:len(i1)]
+	for i, y1 := range i1 {
+		y2, y3 := i2[i], i3[i]
+		v[i], bad[i] = 0, true
+		if !(y1 > 0 && y2 > 0 && y3 > 0) || y1 > math.MaxFloat32 || y2 > math.MaxFloat32 || y3 > math.MaxFloat32 {
+			continue
+		}
+		r := 1 / float64(y2)
+		l1, l3 := ln(float64(y1)*r), ln(float64(y3)*r)
+		c := float64(c1*l1) + float64(c3*l3)
+		if !(c < 0) {
+			continue
+		}
+		x := -(float64(b1*l1) + float64(b3*l3)) / (2 * c)
+		v[i], bad[i] = x, !(math.Abs(x) <= limit)
 	}
-	r := 1 / float64(i2)
-	l1, l3 := ln(float64(i1)*r), ln(float64(i3)*r)
-	b := g.b[0]*l1 + g.b[2]*l3
-	c := g.c[0]*l1 + g.c[2]*l3
-	if !(c < 0) {
-		return 0, false
-	}
-	v = -b / (2 * c)
-	return v, math.Abs(v) <= 2*g.reach
 }
 
 // shiftVariance returns the variance of the Doppler shift [(km/s)^2] when the

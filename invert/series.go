@@ -146,8 +146,7 @@ func fill(v []float64, bad []bool) int {
 type dft struct {
 	half    int       // numbers of a folded series, padded to whole 16-byte blocks
 	forward []float32 // two rows a bin: weight * cos, -weight * sin
-	inverse []float32 // two rows a folded frame: 2/n cos, -2/n sin
-	width   int       // of those, padded
+	inverse []float32 // two rows a bin: 2/n cos, -2/n sin
 }
 
 // largestDFT is the size of one table [numbers] up to which the tables stay in the
@@ -163,15 +162,14 @@ func newDFT(b *band) *dft {
 		return nil
 	}
 	d.forward = make([]float32, 2*nf*d.half)
-	d.width = (nf + 3) &^ 3
-	d.inverse = make([]float32, 2*folded*d.width)
+	d.inverse = make([]float32, 2*nf*d.half)
 	for j, w := range b.weight {
 		for i := range folded {
 			s, c := math.Sincos(2 * math.Pi * float64(i*(b.first+j)%n) / float64(n))
 			d.forward[2*j*d.half+i] = float32(w * c)
 			d.forward[(2*j+1)*d.half+i] = float32(-w * s)
-			d.inverse[2*i*d.width+j] = float32(2 * c / float64(n))
-			d.inverse[(2*i+1)*d.width+j] = float32(-2 * s / float64(n))
+			d.inverse[2*j*d.half+i] = float32(2 * c / float64(n))
+			d.inverse[(2*j+1)*d.half+i] = float32(-2 * s / float64(n))
 		}
 	}
 	return d
@@ -185,7 +183,6 @@ type transformer struct {
 	v         []float64
 	bad       []bool
 	even, odd []float32
-	parts     [2][]float32 // real and imaginary parts of a spectrum
 	coeff     []complex128
 	high      []float64
 }
@@ -201,7 +198,6 @@ func newTransformer(b *band, d *dft) *transformer {
 	}
 	if d != nil {
 		t.even, t.odd = make([]float32, d.half), make([]float32, d.half)
-		t.parts = [2][]float32{make([]float32, d.width), make([]float32, d.width)}
 	}
 	return t
 }
@@ -275,17 +271,15 @@ func (t *transformer) noise() float64 {
 func (t *transformer) backward(row, series []float32) {
 	n, nf := t.frames, len(t.freq)
 	if d := t.dft; d != nil {
-		w, half := d.width, n/2+1
-		re, im := t.parts[0], t.parts[1]
-		copy(re, row[:nf])
-		copy(im, row[nf:2*nf])
+		blas.Sgemv(transposed, nf, d.half, 1, d.inverse, 2*d.half, row, 1, 0, t.even, 1)
+		blas.Sgemv(transposed, nf, d.half, 1, d.inverse[d.half:], 2*d.half, row[nf:], 1, 0, t.odd, 1)
+		half := n/2 + 1
 		even, odd := t.even[:half], t.odd[:half]
-		blas.Sgemv(none, half, w, 1, d.inverse, 2*w, re, 1, 0, even, 1)
-		blas.Sgemv(none, half, w, 1, d.inverse[w:], 2*w, im, 1, 0, odd, 1)
 		series[0] = even[0] + odd[0]
-		for i := 1; i < half; i++ {
-			series[i] = even[i] + odd[i]
-			series[n-i] = even[i] - odd[i] // for even n the middle frame again: its sines are zero
+		for i, e := range even[1:] {
+			o := odd[1+i]
+			series[1+i] = e + o
+			series[n-1-i] = e - o // for even n the middle frame again: its sines are zero
 		}
 		return
 	}

@@ -176,13 +176,29 @@ func (t *tracker) sample() []float32 {
 		t.rows = make([]float32, need)
 	}
 	rows := t.rows[:len(t.points)*row]
-	clear(rows)
+	var spec [4][]float32
+	var weight [4]float32
 	for i := range t.points {
 		q := &t.points[i]
-		out := rows[i*row : (i+1)*row]
-		for _, c := range q.near[:q.n] {
-			blas.Saxpy(row, float32(c.w/q.sum)*t.norm[c.p], t.spec[int(c.p)*row:(int(c.p)+1)*row], 1, out, 1)
+		for k := range spec { // of the places without a pixel the first with no weight
+			c := &q.near[0]
+			weight[k] = 0
+			if k < q.n {
+				c = &q.near[k]
+				weight[k] = float32(c.w/q.sum) * t.norm[c.p]
+			}
+			spec[k] = t.spec[int(c.p)*row : (int(c.p)+1)*row]
 		}
+		add4(rows[i*row:(i+1)*row], &spec, &weight)
 	}
 	return rows
+}
+
+// add4 sets out to the weighted sum of four spectra.
+func add4(out []float32, spec *[4][]float32, weight *[4]float32) {
+	a, b, c, d := spec[0][:len(out)], spec[1][:len(out)], spec[2][:len(out)], spec[3][:len(out)]
+	wa, wb, wc, wd := weight[0], weight[1], weight[2], weight[3]
+	for j, x := range a {
+		out[j] = (float32(wa*x) + float32(wb*b[j])) + (float32(wc*c[j]) + float32(wd*d[j]))
+	}
 }
