@@ -88,28 +88,32 @@ func Diagnose(ctx context.Context, o *obs.Observation, e line.Emitter, opt Optio
 	if err != nil {
 		return nil, err
 	}
-	if err := r.steps(ctx, workers, nil, r.spectrum, r.normalise, near); err != nil {
+	if err := r.steps(ctx, workers, nil, r.spectrum, r.normalise, near[0], near[1], near[2]); err != nil {
 		return nil, err
 	}
 	return r.diagnose(r.newWorker(), pixel), nil
 }
 
-// trackReach is how far directions are needed for the track of a pixel, and for the error
-// of its own [pixels].
-func (o *Options) trackReach() int { return max(o.Track/2+2, angleReach) }
+// trackReach is how far directions are needed for the track of a pixel and those that
+// tell its error [pixels].
+func (o *Options) trackReach() int { return o.Track/2 + 2 + angleReach + angleLattice }
 
-// around returns the step that finds directions as far as the track of a pixel may run.
-func (r *run) around(pixel int) (func(w *worker, q int), error) {
+// around returns the steps between those of the series and measure for one pixel alone.
+func (r *run) around(pixel int) (steps [3]func(w *worker, q int), err error) {
 	nx := r.grid.Nx
 	if pixel < 0 || pixel >= nx*r.grid.Ny || r.index[pixel] < 0 {
-		return nil, fmt.Errorf("pixel (%d, %d) is outside the observed field", pixel%nx+1, pixel/nx+1)
+		return steps, fmt.Errorf("pixel (%d, %d) is outside the observed field", pixel%nx+1, pixel/nx+1)
 	}
-	px, py, reach := pixel%nx, pixel/nx, r.opt.trackReach()
-	return func(w *worker, q int) {
-		if x, y := r.at(q); max(x-px, px-x) <= reach && max(y-py, py-y) <= reach {
-			r.direct(w, q)
+	px, py := pixel%nx, pixel/nx
+	within := func(reach int, step func(w *worker, q int)) func(w *worker, q int) {
+		return func(w *worker, q int) {
+			if x, y := r.at(q); max(x-px, px-x) <= reach && max(y-py, py-y) <= reach {
+				step(w, q)
+			}
 		}
-	}, nil
+	}
+	far := r.opt.trackReach()
+	return [3]func(w *worker, q int){within(far, r.direct), within(far, r.swing), within(angleReach+angleLattice, r.sway)}, nil
 }
 
 // diagnose tells of a pixel of the field whose surroundings have directions.
@@ -191,7 +195,7 @@ func (d *Diagnosis) track(r *run, w *worker, p int) {
 	w.noise = r.noise(p)
 	for i, e := range w.estimators {
 		m := e.measure(w, rows, n, centre, rise >= leastRise)
-		x := Estimate{Name: r.opt.Estimators[i], Speed: m.v, Err: m.err, Inward: m.share}
+		x := Estimate{Name: r.opt.Estimators[i], Speed: m.v, Err: m.err, Inward: m.inward}
 		if !m.ok || !(m.v > 0) {
 			x.Speed, x.Err = math.NaN(), math.NaN()
 		}

@@ -12,6 +12,7 @@
 //	series.go     Doppler series: repair, band-pass, noise, trend of the whole field
 //	direction.go  coherence islands and the direction of their axis
 //	track.go      a track along the directions, the wave signal on it
+//	sway.go       the error of a speed that its track makes
 //	estimate.go   the phase-speed estimators side by side
 //	lag.go        outward and inward waves, lags along the track, phase speed
 //	pair.go       an outward and an inward wave of one speed, fitted together

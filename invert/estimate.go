@@ -41,7 +41,7 @@ type estimate struct {
 	speed
 	against bool    // the waves run toward falling index; v is the absolute value
 	in      float64 // speed of the inward waves [km/s]; 0: none
-	share   float64 // of the inward waves in the power; NaN: not known
+	inward  float64 // share of the inward waves in the power; NaN: not known
 }
 
 func newEstimator(name string, opt *Options) estimator {
@@ -71,7 +71,7 @@ func (splitEstimator) measure(w *worker, rows []float32, n, centre int, outward 
 		other, main = main, l.falling(rows, main, n)
 		p, q, sign = q, p, -1
 	}
-	e := estimate{speed: l.speed(main, n, centre), share: math.NaN()}
+	e := estimate{speed: l.speed(main, n, centre), inward: math.NaN()}
 	e.v *= sign
 	// What outward waves leak into the other direction has a speed too, but it is not
 	// that of inward waves; white noise goes either way alike.
@@ -82,6 +82,7 @@ func (splitEstimator) measure(w *worker, rows []float32, n, centre int, outward 
 	if other == nil {
 		other = l.falling(rows, main, n)
 	}
+	l.terms, l.spare = l.spare, l.terms // e has those of the main waves
 	if in := l.speed(other, n, centre); in.ok && in.v*sign < 0 {
 		e.in = math.Abs(in.v)
 	}
@@ -91,7 +92,7 @@ func (splitEstimator) measure(w *worker, rows []float32, n, centre int, outward 
 type unsplitEstimator struct{}
 
 func (unsplitEstimator) measure(w *worker, rows []float32, n, centre int, _ bool) estimate {
-	e := estimate{speed: w.lags.speed(rows, n, centre), share: math.NaN()}
+	e := estimate{speed: w.lags.speed(rows, n, centre), inward: math.NaN()}
 	if e.v < 0 {
 		e.v, e.against = -e.v, true
 	}
@@ -102,15 +103,15 @@ type pairEstimator struct{}
 
 func (pairEstimator) measure(w *worker, rows []float32, n, _ int, outward bool) estimate {
 	q := w.pairs.fit(rows, n)
-	e := estimate{speed: speed{v: q.v, err: q.err, ok: q.ok}, share: q.inward, against: q.inward > 0.5}
+	e := estimate{speed: q.speed, inward: q.inward, against: q.inward > 0.5}
 	if !outward {
-		e.share = math.NaN()
+		e.inward = math.NaN()
 	}
 	return e
 }
 
 // estimatorMaps are the indices of an estimator's maps; 0: it has none.
-type estimatorMaps struct{ speed, err, in, share, field, fieldErr int }
+type estimatorMaps struct{ speed, err, in, inward, field, fieldErr int }
 
 // addEstimators adds the maps of the estimators. The first fills those of the result's
 // own names; the others' names end in the estimator's.
@@ -137,7 +138,7 @@ func addEstimators(ms *obs.Maps, names []string) []estimatorMaps {
 			}
 		}
 		if name == Pair {
-			out[i].share = add(obs.Map{Name: "INWARD", About: "share of the inward waves in the power of both"})
+			out[i].inward = add(obs.Map{Name: "INWARD", About: "share of the inward waves in the power of both"})
 		}
 	}
 	return out
@@ -157,13 +158,14 @@ const errorBins = 2
 // square: where the method pulls long waves one way and short ones the other, as the
 // separation does in every realisation alike, that is bias and not scatter.
 //
-// So it holds whatever makes the estimate scatter, noise as well as waves that are not
-// those of the model, and no bias. The interval of one error holds the mean of many
-// realisations in 61 to 74 % of the cases, from no noise at all to that of a frame as
-// large as three quarters of the waves (TestCoverage, TestCoverageElsewhere; derived). On
-// a corona whose waves cross along the line of sight, 64 seeds of a wedge of quick, it was
-// 54 to 64 % for lag and 52 to 54 % for pair: there the tracks themselves move from one
-// realisation to the next, which the errors do not know.
+// So it holds whatever makes the estimate scatter on one track, noise as well as waves that
+// are not those of the model, and no bias. What the track adds is in sway.go. With that the
+// interval of one error holds the mean of many realisations in 61 to 74 % of the cases on
+// patches of plane waves, from no noise at all to that of a frame as large as three quarters of
+// the waves (TestCoverage, TestCoverageElsewhere), and in 59 to 75 % on a wedge of quick, where
+// structures cross along the line of sight (TestCoverageOnQuick in compare/trial; derived).
+// Unsplit is the exception there: where waves run both ways its slowness passes through zero,
+// and no interval holds a mean of such speeds.
 func resampled(pull, share []float64) float64 {
 	sum, last := 0.0, 0.0
 	for i := 0; i < len(pull); i += errorBins {

@@ -227,7 +227,7 @@ func Invert(ctx context.Context, o *obs.Observation, e line.Emitter, opt Options
 	if err != nil {
 		return nil, err
 	}
-	if err := r.steps(ctx, workers, progress, r.spectrum, r.normalise, r.direct, r.measure); err != nil {
+	if err := r.steps(ctx, workers, progress, r.spectrum, r.normalise, r.direct, r.swing, r.sway, r.measure); err != nil {
 		return nil, err
 	}
 	r.finish()
@@ -295,6 +295,9 @@ func newRun(o *obs.Observation, e line.Emitter, opt Options) (*run, error) {
 	maps, estimators := mapsOf(&o.Grid, o.Unit, opt.Estimators)
 	r := &Result{Maps: maps, Series: obs.NewCube(np, 1, when.frames), Cadence: when.cadence}
 	run := &run{estimatorMaps: estimators, field: f, cube: cube, timing: when, means: means, result: r, variance: make([]float64, np), spread: make([][2]float32, np), dft: newDFT(b)}
+	run.turns = make([][2]float32, np)
+	run.swung = [2][][2]float32{make([][2]float32, np), make([][2]float32, np)}
+	run.moved = make([]float32, np*len(estimators))
 
 	for i, m := range [2][]float32{o.Density, o.Ratio} {
 		if m != nil && len(m) != np {
@@ -399,9 +402,12 @@ type run struct {
 	means         [2]*means
 	inverter      *line.Inverter // nil without a second line
 	result        *Result
-	dft           *dft         // nil for long series
-	spread        [][2]float32 // variance of the axis, resampled and formal [rad^2]; zeros: not known
-	variance      []float64    // white-noise variance of the Doppler series [(km/s)^2]; NaN: not known
+	dft           *dft            // nil for long series
+	spread        [][2]float32    // variance of the axis, resampled and formal [rad^2]; zeros: not known
+	turns         [][2]float32    // cos and sin of twice the error of the axis; zeros: not known
+	swung         [2][][2]float32 // axes turned by that error, both ways
+	moved         []float32       // squared relative error of each estimator's speed from that of the track; NaN: not known
+	variance      []float64       // white-noise variance of the Doppler series [(km/s)^2]; NaN: not known
 	estimatorMaps []estimatorMaps
 }
 
@@ -420,7 +426,8 @@ type worker struct {
 	weight     [2][]float64
 	usable     []float64
 	frame      []float64
-	v          []float64 // a series of frames that are not evenly spaced
+	swayed     [2][]swayed // on tracks turned either way, by estimators
+	v          []float64   // a series of frames that are not evenly spaced
 	bad        []bool
 }
 
@@ -436,6 +443,9 @@ func (r *run) newWorker() *worker {
 	}
 	if r.timing.from != nil {
 		w.v, w.bad = make([]float64, r.cube.Frames), make([]bool, r.cube.Frames)
+	}
+	for k := range w.swayed {
+		w.swayed[k] = make([]swayed, len(r.opt.Estimators))
 	}
 	for _, name := range r.opt.Estimators {
 		w.estimators = append(w.estimators, newEstimator(name, r.opt))
@@ -672,9 +682,11 @@ func (r *run) direct(w *worker, p int) {
 		return
 	}
 	r.turn(p, s.angle)
-	if ix, iy := r.at(p); ix%angleLattice == 0 && iy%angleLattice == 0 {
-		if variance, ok := w.islands.halves(p); ok {
-			r.spread[p] = [2]float32{float32(variance), float32(s.err * s.err)}
+	if r.onLattice(p) {
+		if d, ok := w.islands.halves(p); ok {
+			r.spread[p] = [2]float32{float32(d * d), float32(s.err * s.err)}
+			sin, cos := math.Sincos(2 * d)
+			r.turns[p] = [2]float32{float32(cos), float32(sin)}
 		}
 	}
 	// PA = atan2(-y, z) of a vector at angle a + roll from west toward north.
@@ -691,23 +703,15 @@ func (r *run) direct(w *worker, p int) {
 
 // calibrate makes the formal error of a pixel's angle a true one.
 func (r *run) calibrate(p int) {
-	x, y := r.at(p)
 	var found, formal float64
-	for j := up(y - angleReach); j <= y+angleReach; j += angleLattice {
-		for i := up(x - angleReach); i <= x+angleReach; i += angleLattice {
-			if q := r.find(i, j); q >= 0 {
-				found += float64(r.spread[q][0])
-				formal += float64(r.spread[q][1])
-			}
-		}
-	}
+	r.lattice(p, func(q int) {
+		found += float64(r.spread[q][0])
+		formal += float64(r.spread[q][1])
+	})
 	if i := r.pixels[p]; formal > 0 {
 		r.result.Maps[mapAngleErr].Data[i] *= float32(math.Sqrt(found / formal))
 	}
 }
-
-// up returns the next line of the lattice from x.
-func up(x int) int { return (max(x, 0) + angleLattice - 1) / angleLattice * angleLattice }
 
 // turn sets the axis of a pixel at an angle of the image [rad].
 func (r *run) turn(p int, angle float64) {
@@ -730,6 +734,9 @@ func (r *run) follow(p int) {
 // a track has no outward side.
 const leastRise = 0.2
 
+// leastTrack is the number of points that a track has to have.
+func (r *run) leastTrack() int { return max(leastLags, r.opt.Track/3) }
+
 // measure: track, speed, field.
 func (r *run) measure(w *worker, p int) {
 	if r.axis[p] == ([2]float32{}) {
@@ -739,7 +746,7 @@ func (r *run) measure(w *worker, p int) {
 	t := &w.track
 	centre, rise := t.trace(p, r.opt.Track/2)
 	n := len(t.points)
-	if n < max(leastLags, r.opt.Track/3) {
+	if n < r.leastTrack() {
 		r.flag[p] |= FlagTrackShort
 		return
 	}
@@ -753,6 +760,8 @@ func (r *run) measure(w *worker, p int) {
 	w.noise = r.noise(p)
 	for i, e := range w.estimators {
 		m := e.measure(w, rows, n, centre, rise >= leastRise)
+		m.err = math.Hypot(m.err, m.v*r.trackError(p, i))
+		m.ok = m.ok && m.err < m.v
 		r.note(p, i, m, n, w.lags.step)
 		if i == 0 && m.against && rise >= leastRise {
 			r.flag[p] |= FlagInward
@@ -776,8 +785,8 @@ func (r *run) note(p, i int, m estimate, n int, step float64) {
 	}
 	r.set(maps.speed, p, m.v)
 	r.set(maps.err, p, m.err)
-	if maps.share != 0 {
-		r.set(maps.share, p, m.share)
+	if maps.inward != 0 {
+		r.set(maps.inward, p, m.inward)
 	}
 	if i == 0 {
 		r.set(mapTrack, p, float64(n-1)*step*r.opt.Centre/m.v)

@@ -35,6 +35,7 @@ type patch struct {
 	cell           float64 // transverse size of independent waves [Mm]
 	rms            float64 // [km/s]
 	inward         float64 // power of waves the other way, over that of the outward ones
+	shear          float64 // change of the arrival times across the waves' direction, over that along it
 	noise          float64 // white, of the Doppler shift [km/s]; Doppler cubes only
 	tunings        bool    // frames through the filter; otherwise a Doppler cube
 	electrons      float64
@@ -127,12 +128,13 @@ func (q patch) waves(g *obs.Grid) *obs.Cube {
 		along, across := mm*(-s*y+c*z), mm*(c*y+s*z)
 		i := math.Floor(across / q.cell)
 		wb, wa := math.Sincos((across/q.cell - i) * math.Pi / 2)
+		late := (along + q.shear*across) * 1e3 / q.v
 		clear(v)
-		m.add(v, cell(int(i)), q.rms*wa, along*1e3/q.v)
-		m.add(v, cell(int(i)+1), q.rms*wb, along*1e3/q.v)
+		m.add(v, cell(int(i)), q.rms*wa, late)
+		m.add(v, cell(int(i)+1), q.rms*wb, late)
 		if in := q.rms * math.Sqrt(q.inward); in > 0 {
-			m.add(v, cell(int(i)+1000), in*wa, -along*1e3/q.v)
-			m.add(v, cell(int(i)+1001), in*wb, -along*1e3/q.v)
+			m.add(v, cell(int(i)+1000), in*wa, -late)
+			m.add(v, cell(int(i)+1001), in*wb, -late)
 		}
 		for t, out := 0, cube.Series(p, 0); t < len(out); t++ {
 			out[t] = float32(v[t] + q.noise*rng.NormFloat64())
@@ -327,11 +329,12 @@ func TestWorkers(t *testing.T) {
 	q.nx, q.ny, q.frames, q.tunings, q.electrons = 30, 25, 120, true, 3000
 	o := q.observe()
 	var first *Result
+	const steps = 6
 	for _, workers := range []int{1, 2, 3} {
 		calls, last := 0, 0
 		r, err := Invert(context.Background(), o, powerLaw{1.4, 1.8}, Default(), workers, func(done, total int) {
 			calls++
-			if done <= last || total != 4*len(o.Pixels) {
+			if done <= last || total != steps*len(o.Pixels) {
 				t.Errorf("progress %d of %d after %d", done, total, last)
 			}
 			last = done
@@ -339,7 +342,7 @@ func TestWorkers(t *testing.T) {
 		if err != nil {
 			t.Fatal(err)
 		}
-		if last != 4*len(o.Pixels) {
+		if last != steps*len(o.Pixels) {
 			t.Errorf("progress ended at %d", last)
 		}
 		if first == nil {
@@ -395,6 +398,10 @@ func TestBadDataDoNotSpread(t *testing.T) {
 		dx, dy := i%q.nx-x, i/q.nx-y
 		if dx*dx+dy*dy > 12*12 { // half a window and half a track away
 			for m := range after.Maps {
+				around := 12 + angleReach + angleLattice // errors are those of the surroundings
+				if strings.Contains(after.Maps[m].Name, "_ERR") && dx*dx+dy*dy <= around*around {
+					continue
+				}
 				if after.Maps[m].Data != nil && math.Float32bits(after.Maps[m].Data[i]) != math.Float32bits(before.Maps[m].Data[i]) {
 					t.Fatalf("%s changed %d, %d pixels from the dead one", after.Maps[m].Name, dx, dy)
 				}

@@ -34,7 +34,8 @@ type lagger struct {
 	fit    []lag
 	parts  []float32 // what each frequency adds at the lags of fit to the first derivative and to curve
 	pull   [2][]float32
-	terms  [2][]float64
+	terms  [2][]float64 // of the last speed: see resampled
+	spare  [2][]float64
 }
 
 // A lag is that of one point of a track against its centre.
@@ -78,7 +79,7 @@ func newLagger(b *band, opt *Options, points int, step, grid float64) *lagger {
 		l.omega = append(l.omega, float32(2*math.Pi*f))
 	}
 	for i := range l.terms {
-		l.terms[i], l.pull[i] = make([]float64, n), make([]float32, n)
+		l.terms[i], l.spare[i], l.pull[i] = make([]float64, n), make([]float64, n), make([]float32, n)
 	}
 	return l
 }
@@ -297,6 +298,9 @@ type speed struct {
 	v, err float64
 	points int  // with a lag
 	ok     bool // significant: err < |v|
+	// What each frequency moved the slowness [s/km], and its share in what holds it: see
+	// resampled. Valid until the next measurement.
+	pull, share []float64
 }
 
 // speed cross-correlates every point of a track with point centre, takes the lag
@@ -351,6 +355,7 @@ func (l *lagger) speed(rows []float32, n, centre int) speed {
 	r.v = 1 / slope
 	r.err = r.v * r.v * math.Sqrt(l.variance(ws, sxx))
 	r.ok = r.err < math.Abs(r.v)
+	r.pull, r.share = l.terms[0], l.terms[1]
 	return r
 }
 

@@ -221,9 +221,8 @@ func (q *pairer) explain(p float64, n, m int, out []float64) float64 {
 
 // A pair is a fitted pair of waves.
 type pair struct {
-	v, err float64 // [km/s]
+	speed
 	inward float64 // share of the waves toward falling index in the power of both; NaN: the track is too short to tell
-	ok     bool    // significant: err < v
 }
 
 // fit fits the spectra of n points. The waves of the two directions share one speed,
@@ -265,6 +264,7 @@ refine:
 	r.v = 1 / p
 	r.err = r.v * r.v * math.Sqrt(resampled(a, c))
 	r.ok = r.err < r.v
+	r.pull, r.share = a, c
 	r.inward = q.inward(n)
 	return r
 }

@@ -47,7 +47,7 @@ func DiagnoseSeries(g *obs.Grid, pixels []int32, series *obs.Cube, cadence float
 	as.weight, as.taper = slices.Repeat([]float64{1}, len(as.weight)), slices.Repeat([]float64{1}, len(as.taper))
 	w := r.newWorker()
 	w.transform = newTransformer(&as, newDFT(&as))
-	for _, step := range []func(w *worker, p int){r.spectrum, r.normalise, near} {
+	for _, step := range []func(w *worker, p int){r.spectrum, r.normalise, near[0], near[1], near[2]} {
 		for p := range pixels {
 			step(w, p)
 		}

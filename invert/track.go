@@ -5,6 +5,7 @@ import "math"
 // A tracker holds one worker's scratch for tracks.
 type tracker struct {
 	*field
+	axis   [][2]float32 // of the pixels, that tracks follow
 	arm    [2][]point
 	points []point
 	rows   []float32 // the wave spectra on the track, band.row numbers a point
@@ -60,10 +61,10 @@ const longestBridge = 5
 
 // direction returns the unit vector of the axis at a point that points along
 // (dx, dy). Angles of axes are interpolated as unit vectors of the double angle.
-func (f *field) direction(at *point, dx, dy float64) (ux, uy float64, ok bool) {
+func (t *tracker) direction(at *point, dx, dy float64) (ux, uy float64, ok bool) {
 	var c, s, sum float64
 	for _, q := range at.near[:at.n] {
-		if a := f.axis[q.p]; a != ([2]float32{}) {
+		if a := t.axis[q.p]; a != ([2]float32{}) {
 			c += q.w * float64(a[0])
 			s += q.w * float64(a[1])
 			sum += q.w
@@ -126,7 +127,11 @@ func (t *tracker) walk(arm []point, at *point, dx, dy float64, n int) []point {
 // arm, and puts the points into t.points in order of distance along the track. Outward
 // is away from the Sun as the whole track has it; rise is the gain in distance from the
 // Sun over the track's length, 0..1. centre is the index of the pixel.
-func (t *tracker) trace(p, n int) (centre int, rise float64) {
+func (t *tracker) trace(p, n int) (centre int, rise float64) { return t.along(t.field.axis, p, n) }
+
+// along is trace on other axes.
+func (t *tracker) along(axis [][2]float32, p, n int) (centre int, rise float64) {
+	t.axis = axis
 	ix, iy := t.at(p)
 	ry, rz := t.grid.Sky(ix, iy)
 	// The outward direction in the image, from the sky by the roll.
