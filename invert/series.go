@@ -343,8 +343,7 @@ func (f *field) removeTrend(ctx context.Context, workers int) error {
 			for _, p := range m {
 				column = append(column, f.spec[p*row+j])
 			}
-			slices.Sort(column)
-			medians[i*row+j] = (float64(column[len(column)/2]) + float64(column[(len(column)-1)/2])) / 2
+			medians[i*row+j] = medianOf(column)
 		}
 		return nil
 	})
@@ -399,4 +398,39 @@ func (f *field) removeTrend(ctx context.Context, workers int) error {
 		}
 	}
 	return nil
+}
+
+// medianOf returns the median of x, which it reorders (Hoare 1961, Commun. ACM 4, 321, from
+// memory: partition and go on in the part that holds it).
+func medianOf(x []float32) float64 {
+	k := len(x) / 2
+	for low, high := 0, len(x)-1; low < high; {
+		pivot := x[(low+high)/2]
+		i, j := low, high
+		for i <= j {
+			for x[i] < pivot {
+				i++
+			}
+			for x[j] > pivot {
+				j--
+			}
+			if i <= j {
+				x[i], x[j] = x[j], x[i]
+				i++
+				j--
+			}
+		}
+		switch {
+		case k <= j:
+			high = j
+		case k >= i:
+			low = i
+		default:
+			low = high
+		}
+	}
+	if len(x)%2 == 1 {
+		return float64(x[k])
+	}
+	return (float64(x[k]) + float64(slices.Max(x[:k]))) / 2
 }

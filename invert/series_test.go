@@ -206,3 +206,20 @@ func TestTrendIsRemoved(t *testing.T) {
 		t.Errorf("left of the trend's power: %.5f, want below %.5f", left/put, limit)
 	}
 }
+
+func TestMedianOf(t *testing.T) {
+	rng := rand.New(rand.NewPCG(5, 6))
+	for n := 1; n < 60; n++ {
+		for _, values := range []int{2, 1000} { // many equal ones, and hardly any
+			var x []float32
+			var y []float64
+			for range n {
+				v := float32(rng.IntN(values))
+				x, y = append(x, v), append(y, float64(v))
+			}
+			if got := medianOf(x); got != median(y) {
+				t.Fatalf("median of %v: %g, want %g", y, got, median(y))
+			}
+		}
+	}
+}
