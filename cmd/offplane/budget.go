@@ -1,16 +1,21 @@
 package main
 
 import (
+	"bytes"
 	"context"
+	"encoding/json"
 	"fmt"
 	"io"
 	"math"
+	"os"
+	"path/filepath"
 
 	"github.com/spf13/cobra"
 
 	"offplane/compare/budget"
 	"offplane/compare/report"
 	"offplane/scenarios"
+	"offplane/scenarios/strict"
 )
 
 func (p *program) budgetCommand() *cobra.Command {
@@ -25,7 +30,7 @@ combinations, and leaves in DIR
 
   budget.json  every term: for the field, the speed and the density, by height
   budget.ecsv  the same as a table
-  budget.png   the terms from nothing to the total
+  budget.png   the terms from nothing to the total; budget.svg is the same
   run.json     command line, versions, timings, sums of the files; written last
 
 Numbers are natural logarithms of B over B_SKY: -0.10 is a field ten per cent low. Each
@@ -35,7 +40,9 @@ in the scenario as it is. What is not in the scenario is exactly 0.
 
 The bias is told from the scatter of chance by realisations: pieces of one long run, each
 as long as the observation of the scenario. "finite duration" compares them with the
-inversion of all of them as one observation.`,
+inversion of all of them as one observation.
+
+"offplane run SCENARIO --budget DIR" shows the budget in its report.`,
 		Example: `  offplane budget quick -o terms
   offplane budget two-loops --set "image.from=80 deg" --set "image.to=100 deg" --orders 8 -o terms2`,
 		Args: argument("the name of a scenario or a file"),
@@ -58,7 +65,7 @@ inversion of all of them as one observation.`,
 }
 
 func (p *program) budget(ctx context.Context, l *scenarios.Loaded, w *work, o budget.Settings) error {
-	f, r, bar, err := p.start(w, job{Command: "budget", SHA256: digest(l.SHA256, fmt.Sprint(o.Pieces, o.Orders)), files: []string{"budget.json", "budget.ecsv", "budget.png"}})
+	f, r, bar, err := p.start(w, job{Command: "budget", SHA256: digest(l.SHA256, fmt.Sprint(o.Pieces, o.Orders)), files: append([]string{"budget.json", "budget.ecsv"}, bothFormats("budget")...)})
 	if err != nil {
 		return err
 	}
@@ -79,7 +86,7 @@ func (p *program) budget(ctx context.Context, l *scenarios.Loaded, w *work, o bu
 	if err := table.WriteFile(f.path("budget.ecsv")); err != nil {
 		return err
 	}
-	if err := f.write("budget.png", func(w io.Writer) error { _, err := w.Write(report.Budget(b).PNG); return err }); err != nil {
+	if err := f.writeFigure("budget", report.Budget(b).Draw); err != nil {
 		return err
 	}
 	r.stage("writing")
@@ -98,6 +105,48 @@ func (p *program) budget(ctx context.Context, l *scenarios.Loaded, w *work, o bu
 		fmt.Fprintf(p.stdout, "figure   %s\n", f.path("budget.png"))
 	}
 	return nil
+}
+
+// readBudget reads what budget left in a folder: of the scenario, or of another seed or
+// part of the image.
+func readBudget(dir string, l *scenarios.Loaded) (*budget.Budget, entry, error) {
+	path := filepath.Join(dir, "budget.json")
+	if !exists(filepath.Join(dir, recordName)) || !exists(path) {
+		return nil, entry{}, fmt.Errorf("--budget %s: not a complete folder of offplane budget", dir)
+	}
+	e, err := entryOf(path)
+	if err != nil {
+		return nil, e, err
+	}
+	text, err := os.ReadFile(path)
+	if err != nil {
+		return nil, e, err
+	}
+	b := new(budget.Budget)
+	if err := json.Unmarshal(text, b); err != nil {
+		return nil, e, fmt.Errorf("%s: %w", path, err)
+	}
+	of, err := anywhere(b.Text)
+	if err != nil {
+		return nil, e, fmt.Errorf("%s: scenario_text: %w", path, err)
+	}
+	if here, err := anywhere(string(l.Canonical)); err != nil || !bytes.Equal(of, here) {
+		return nil, e, fmt.Errorf("--budget %s: the budget is of another scenario, %s: only the seed and the limits of the image may differ", dir, b.Scenario)
+	}
+	return b, e, nil
+}
+
+// anywhere returns a resolved scenario without its words, seed and limits of the image.
+func anywhere(text string) ([]byte, error) {
+	l, err := scenarios.Parse("scenario", []byte(text))
+	if err != nil {
+		return nil, err
+	}
+	s := &l.Scenario
+	i, d := &s.Image, scenarios.Default()
+	s.About, s.Seed = "", 0
+	i.Inner, i.Outer, i.From, i.To = d.Image.Inner, d.Image.Outer, d.Image.From, d.Image.To
+	return strict.Encode(s), nil
 }
 
 // printBudget lists the lines that are on.

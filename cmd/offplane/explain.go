@@ -15,6 +15,7 @@ import (
 
 	"offplane/compare/explain"
 	"offplane/compare/report"
+	"offplane/scenarios/units"
 )
 
 func (p *program) explainCommand() *cobra.Command {
@@ -158,7 +159,11 @@ func printTracker(print func(string, ...any), v *explain.Pixel) {
 			t.Points, t.Length, t.Inner, t.Outer, num(t.Wavelengths), t.True, t.Off, t.Island)
 	}
 	for _, e := range v.Estimators {
-		print("estimator\t%s: %s km/s, error %s; of a plane wave it makes %s, along the true speeds and directions %s", e.Name, num(e.Speed), num(e.SpeedErr), num(e.Plane), num(e.Path))
+		plane := ""
+		if !math.IsNaN(float64(e.OnePlane)) {
+			plane = fmt.Sprintf(", of the run's own waves on one plane %s", num(e.OnePlane))
+		}
+		print("estimator\t%s: %s km/s, error %s; of a plane wave it makes %s, along the true speeds and directions %s%s", e.Name, num(e.Speed), num(e.SpeedErr), num(e.Plane), num(e.Path), plane)
 	}
 	noise := "the run has no noise"
 	if !n.NoiselessRun {
@@ -172,6 +177,9 @@ func num(x explain.Number) string {
 	v := float64(x)
 	if math.IsNaN(v) || math.IsInf(v, 0) {
 		return "-"
+	}
+	if v >= 1e5 {
+		return units.Scientific(v, 2)
 	}
 	return strconv.FormatFloat(v, 'g', 3, 64)
 }

@@ -31,6 +31,23 @@ func (f *figureFile) Set(path string) (err error) {
 	return nil
 }
 
+// bothFormats names the files of a figure in a folder.
+func bothFormats(name string) []string { return []string{name + ".png", name + ".svg"} }
+
+// writeFigure draws a figure in both formats into a folder.
+func (f *folder) writeFigure(name string, draw func(report.Format) []byte) error {
+	for i, path := range bothFormats(name) {
+		err := f.write(path, func(w io.Writer) error {
+			_, err := w.Write(draw(report.Format(i)))
+			return err
+		})
+		if err != nil {
+			return err
+		}
+	}
+	return nil
+}
+
 // write draws the figure, if one was asked for.
 func (f *figureFile) write(draw func(report.Format) []byte) error {
 	if f.path == "" {

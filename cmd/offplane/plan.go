@@ -25,7 +25,8 @@ yield of every design, takes those on which the decision hangs through the whole
 and leaves in DIR
 
   plan.txt   half a page for a proposal
-  plan.png   designs against telescope time; error against duration with its floor
+  plan.png   designs against telescope time; error against duration with its floor;
+             plan.svg is the same
   plan.ecsv  every design
   plan.json  the same answer for machines: recommended and nearest design, those that no
              other beats, limits, curve, other backgrounds and wave amplitudes
@@ -63,7 +64,7 @@ have to change.`,
 }
 
 func (p *program) plan(ctx context.Context, l *plan.Loaded, w *work) error {
-	f, r, bar, err := p.start(w, job{Command: "plan", SHA256: l.SHA256, files: []string{"plan.json", "plan.ecsv", "plan.txt", "plan.png"}})
+	f, r, bar, err := p.start(w, job{Command: "plan", SHA256: l.SHA256, files: append([]string{"plan.json", "plan.ecsv", "plan.txt"}, bothFormats("plan")...)})
 	if err != nil {
 		return err
 	}
@@ -110,6 +111,6 @@ func writePlan(f *folder, a *plan.Plan) error {
 		f.write("plan.json", a.WriteJSON),
 		table.WriteFile(f.path("plan.ecsv")),
 		f.write("plan.txt", text([]byte(a.Text()))),
-		f.write("plan.png", text(report.Plan(a).PNG)),
+		f.writeFigure("plan", report.Plan(a).Draw),
 	)
 }

@@ -9,6 +9,7 @@ import (
 	"github.com/spf13/cobra"
 
 	"offplane/compare"
+	"offplane/compare/budget"
 	"offplane/compare/explain"
 	"offplane/compare/report"
 	"offplane/compare/stat"
@@ -22,7 +23,7 @@ func (p *program) runCommand() *cobra.Command {
 	var w work
 	var c choice
 	var g gates
-	var frames bool
+	var o runOptions
 	cmd := &cobra.Command{
 		Use:   "run SCENARIO -o DIR",
 		Short: "Make the data of a known corona, invert them, report the bias",
@@ -40,10 +41,14 @@ and leaves in DIR
   series.fits       the Doppler series it used
   run.json          command line, versions, timings, sums of the files; written last
 
+With --budget the report also shows the error budget that "offplane budget" left in a
+folder, of the same scenario; seed and limits of the image may differ.
+
 The same scenario, seed and program give the same bytes in every file but run.json.`,
 		Example: `  offplane run quick -o out
   offplane run quiet-belt --set camera.cadence=15s --seed 7 -o out15
-  offplane run my.yaml -o out --require 'valid_fraction>=0.4'`,
+  offplane run my.yaml -o out --require 'valid_fraction>=0.4'
+  offplane run quick -o out --budget terms`,
 		Args: argument("the name of a scenario or a file"),
 	}
 	cmd.RunE = do(func(ctx context.Context, args []string) error {
@@ -54,24 +59,41 @@ The same scenario, seed and program give the same bytes in every file but run.js
 		if err := g.parse(); err != nil {
 			return err
 		}
-		return p.run(ctx, l, &w, &g, frames)
+		return p.run(ctx, l, &w, &g, o)
 	})
 	w.flags(cmd)
 	c.flags(cmd)
 	g.flags(cmd)
-	cmd.Flags().BoolVar(&frames, "frames", false, "keep the frames in observation.fits, so that invert can read it")
+	cmd.Flags().BoolVar(&o.frames, "frames", false, "keep the frames in observation.fits, so that invert can read it")
+	cmd.Flags().StringVar(&o.budget, "budget", "", "`folder` that offplane budget left for the same scenario: show it in the report")
 	return cmd
 }
 
-func (p *program) run(ctx context.Context, l *scenarios.Loaded, w *work, g *gates, frames bool) error {
-	f, r, bar, err := p.start(w, job{Command: "run", SHA256: l.SHA256, files: []string{
-		"truth.fits", "observation.fits", "inferred.fits", "bias.fits", "series.fits", "summary.json", "bias.ecsv", "report.html"}})
+type runOptions struct {
+	frames bool   // keep them
+	budget string // folder; empty: none
+}
+
+func (p *program) run(ctx context.Context, l *scenarios.Loaded, w *work, g *gates, opt runOptions) error {
+	j := job{Command: "run", SHA256: l.SHA256, files: []string{
+		"truth.fits", "observation.fits", "inferred.fits", "bias.fits", "series.fits", "summary.json", "bias.ecsv", "report.html"}}
+	var terms *budget.Budget
+	var inputs []entry
+	if opt.budget != "" {
+		b, e, err := readBudget(opt.budget, l)
+		if err != nil {
+			return misuse(err)
+		}
+		terms, inputs, j.inputs, j.SHA256 = b, []entry{e}, []string{e.Name}, digest(l.SHA256, e.SHA256)
+	}
+	f, r, bar, err := p.start(w, j)
 	if err != nil {
 		return err
 	}
+	r.Inputs = inputs
 	defer f.abandon()
 	defer bar.wipe()
-	o, err := p.observe(ctx, l, w, f, r, bar, frames)
+	o, err := p.observe(ctx, l, w, f, r, bar, opt.frames)
 	if err != nil {
 		return err
 	}
@@ -98,7 +120,7 @@ func (p *program) run(ctx context.Context, l *scenarios.Loaded, w *work, g *gate
 	}
 	err = f.write("report.html", func(w io.Writer) error {
 		return report.WriteHTML(w, &report.Report{
-			Grid: o.Truth.Grid, Truth: o.Truth.Maps, Inferred: o.Inferred.Maps, Verdict: o.Verdict, Setup: setup(&l.Scenario), Pixel: pixel,
+			Grid: o.Truth.Grid, Truth: o.Truth.Maps, Inferred: o.Inferred.Maps, Verdict: o.Verdict, Setup: setup(&l.Scenario), Pixel: pixel, Budget: terms,
 		})
 	})
 	if err != nil {

@@ -4,7 +4,6 @@ import (
 	"context"
 	"errors"
 	"fmt"
-	"io"
 	"strings"
 
 	"github.com/spf13/cobra"
@@ -26,7 +25,7 @@ func (p *program) tableCommand() *cobra.Command {
 }
 
 // tableFiles are what table build leaves.
-var tableFiles = []string{"table.ecsv", "table.fits", "coverage.ecsv", "table.png"}
+var tableFiles = append([]string{"table.ecsv", "table.fits", "coverage.ecsv"}, bothFormats("table")...)
 
 func (p *program) tableBuild() *cobra.Command {
 	var w work
@@ -39,7 +38,7 @@ func (p *program) tableBuild() *cobra.Command {
 		Long: `table build turns the members of an ensemble into a correction of the inferred field,
 speed and density: the median of ln(true/inferred) and its 68 and 95 % intervals as a
 function of what the reader of a map has. It leaves table.ecsv, table.fits (the same
-content), coverage.ecsv, table.png and run.json in DIR.
+content), coverage.ecsv, the figure table.png and table.svg, and run.json in DIR.
 
 The intervals are calibrated by holding out whole members. The coverage that is printed
 was achieved on members that were used neither for the fit nor for the calibration.
@@ -152,10 +151,7 @@ func writeTable(f *folder, t *table.Table) error {
 	if err := f.write("coverage.ecsv", t.Coverage().Write); err != nil {
 		return err
 	}
-	return f.write("table.png", func(w io.Writer) error {
-		_, err := w.Write(report.TableFigure(t))
-		return err
-	})
+	return f.writeFigure("table", func(g report.Format) []byte { return report.TableFigure(t, g) })
 }
 
 // printTable tells of a table; losses only if they are known.

@@ -6,6 +6,7 @@ import (
 	"strings"
 
 	"offplane/invert"
+	"offplane/scenarios/units"
 	"offplane/synth"
 )
 
@@ -132,7 +133,7 @@ func density(n Number) string {
 	if !finite(n) {
 		return "no density"
 	}
-	return fmt.Sprintf("%.3g cm⁻³", n)
+	return units.Scientific(float64(n), 2) + " cm⁻³"
 }
 
 func kelvin(t float64) string { return fmt.Sprintf("%.3g MK", t/1e6) }

@@ -4,7 +4,6 @@ import (
 	"fmt"
 	"image/color"
 	"math"
-	"strings"
 
 	"gonum.org/v1/plot/text"
 	"gonum.org/v1/plot/vg"
@@ -28,14 +27,17 @@ const (
 // Budget draws an error budget: its terms from nothing to the total, what each does
 // alone, and the scatter of one pixel. Terms that are not in the scenario are left out.
 func Budget(b *budget.Budget) *Figure {
-	var rows []budget.Term
-	for _, l := range b.Lines() {
-		if l.On {
-			rows = append(rows, l)
-		}
+	return &Figure{
+		Name: "budget", Draw: func(f Format) []byte { return budgetFigure(b, f) },
+		Alt:     "Waterfall of the terms of the error budget, from the method alone to the total, with what each does alone and last, and its part in the scatter.",
+		Caption: budgetCaption(b),
 	}
+}
+
+func budgetFigure(b *budget.Budget, f Format) []byte {
+	rows := present(b)
 	hgt := budgetBelow + budgetAbove + budgetRow*float64(len(rows))
-	c := newCanvas(figureWidth, int(hgt))
+	c := newCanvas(f, figureWidth, int(hgt))
 	base, top := budgetBelow, hgt-budgetAbove
 	y := func(i int) float64 { return top - budgetRow*(float64(i)+0.5) }
 
@@ -73,6 +75,9 @@ func Budget(b *budget.Budget) *Figure {
 	s := budgetAxes(c, budgetChance, budgetNarrow-30, base, top, lo, hi)
 	s.bars(rows, y)
 	s.title("scatter of one pixel")
+	if math.IsNaN(float64(b.Total.Field.ScatterShare)) {
+		c.text(s.x+s.w/2, base+s.h/2, "too few pixels", textStyle{size: small, colour: grey, x: text.XCenter, y: text.YCenter})
+	}
 
 	for _, x := range []*budgetPanel{a, d} {
 		x.label("ln (B / B_SKY)")
@@ -94,27 +99,7 @@ func Budget(b *budget.Budget) *Figure {
 	}
 	c.text(figureWidth-14, 8, fmt.Sprintf("%s, seed %d: %d pixels, the scatter of %d, %d realisations of %.3g h", b.Scenario, b.Seed, b.Pixels.Used, b.Pixels.Scatter, b.Pieces, b.Duration/3600),
 		textStyle{size: small - 3, colour: grey, x: text.XRight, y: text.YBottom})
-	return &Figure{
-		Name: "budget", PNG: c.png(nil, lineColours),
-		Alt:     "Waterfall of the terms of the error budget",
-		Caption: budgetCaption(b),
-	}
-}
-
-func budgetCaption(b *budget.Budget) string {
-	var off []string
-	for _, l := range b.Lines() {
-		if !l.On {
-			off = append(off, l.Name)
-		}
-	}
-	s := fmt.Sprintf("Left: what the method itself and each assumption add to ln(B/B_SKY), mean over %d pixels; the terms add up to the total. "+
-		"Middle: each term's share with its standard error, what it does alone in an otherwise ideal world and when it is the last to be turned on. "+
-		"Right: standard deviation of a pixel's total between %d realisations of %.3g h, and what of it each term makes, from the %d pixels with a value in every realisation and world.", b.Pixels.Used, b.Pieces, b.Duration/3600, b.Pixels.Scatter)
-	if len(off) > 0 {
-		s += " Not in the scenario: " + strings.Join(off, ", ") + "."
-	}
-	return s
+	return c.encode(nil, lineColours)
 }
 
 // A step of the waterfall runs over mid: speed first, density second.

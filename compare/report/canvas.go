@@ -23,6 +23,8 @@ import (
 	"gonum.org/v1/plot/vg"
 	vgdraw "gonum.org/v1/plot/vg/draw"
 	"gonum.org/v1/plot/vg/vgimg"
+
+	"offplane/scenarios/units"
 )
 
 // fonts returns the DejaVu faces: the ones that have superscripts and the solar
@@ -55,15 +57,11 @@ type canvas struct {
 	vgdraw.Canvas
 }
 
-func newCanvas(w, h int) *canvas {
-	img := vgimg.NewWith(vgimg.UseWH(vg.Length(w), vg.Length(h)), vgimg.UseDPI(72))
-	return &canvas{w: w, h: h, img: img, Canvas: vgdraw.New(img)}
-}
-
-// canvasFor returns a white canvas for a figure of that format.
-func canvasFor(f Format, w, h int) *canvas {
+// newCanvas returns a white canvas for a figure of that format.
+func newCanvas(f Format, w, h int) *canvas {
 	if f == PNG {
-		return newCanvas(w, h)
+		img := vgimg.NewWith(vgimg.UseWH(vg.Length(w), vg.Length(h)), vgimg.UseDPI(72))
+		return &canvas{w: w, h: h, img: img, Canvas: vgdraw.New(img)}
 	}
 	svg := newVector(w, h)
 	c := &canvas{w: w, h: h, svg: svg, Canvas: vgdraw.New(svg)}
@@ -123,6 +121,9 @@ func (s stroke) style() vgdraw.LineStyle {
 	}
 	return l
 }
+
+// thin is the stroke of what goes along with s.
+func (s stroke) thin() stroke { return stroke{s.colour, 1.8, s.dashes} }
 
 func (c *canvas) line(s stroke, pts ...vg.Point) { c.StrokeLines(s.style(), pts) }
 
@@ -301,20 +302,11 @@ func power(m float64, e int) string {
 	if e >= -2 && e <= 3 {
 		return strconv.FormatFloat(m*math.Pow(10, float64(e)), 'g', 6, 64)
 	}
-	s := "10" + superscript(e)
+	s := "10" + units.Superscript(e)
 	if m != 1 {
 		s = strconv.FormatFloat(m, 'g', 3, 64) + "×" + s
 	}
 	return s
-}
-
-func superscript(e int) string {
-	return strings.Map(func(r rune) rune {
-		if r == '-' {
-			return '⁻'
-		}
-		return []rune("⁰¹²³⁴⁵⁶⁷⁸⁹")[r-'0']
-	}, strconv.Itoa(e))
 }
 
 // ratioTicks are the marks of a ratio scale from a half to two; sparseTicks those

@@ -20,7 +20,7 @@ func CoronaFigure(v *synth.Survey, title string, f Format) []byte {
 	const zoom = 6
 	side := v.Side * zoom
 	const left, bottom, top, right = 165, 270, 110, 60
-	c := canvasFor(f, left+side+right, bottom+side+top)
+	c := newCanvas(f, left+side+right, bottom+side+top)
 	var outside []float64
 	for _, n := range v.Density {
 		if !math.IsNaN(float64(n)) {

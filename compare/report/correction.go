@@ -10,18 +10,19 @@ import (
 	"gonum.org/v1/plot/text"
 
 	correction "offplane/compare/table"
+	"offplane/scenarios/units"
 )
 
 // TableFigure draws a correction table, one column a quantity: the factor with its
 // intervals against height, at the middle of the other features; below it the coverage
 // achieved on members that were never used.
-func TableFigure(t *correction.Table) []byte {
+func TableFigure(t *correction.Table, f Format) []byte {
 	const (
 		high            = 1250
 		top, mid, below = 1010.0, 520.0, 130.0
 		gap, left       = 185.0, 175.0
 	)
-	c := newCanvas(figureWidth, high)
+	c := newCanvas(f, figureWidth, high)
 	var ss []*correction.Surface
 	for i := range t.Surfaces {
 		if s := &t.Surfaces[i]; slices.Equal(s.Features(), t.Features()) {
@@ -43,7 +44,7 @@ func TableFigure(t *correction.Table) []byte {
 		{"held by 68 %", stroke{blue, 3, nil}, false}, {"held by 95 %", stroke{vermillion, 3, nil}, false}, {"nominal", stroke{ink, 2.5, []float64{14, 8}}, false}})
 	c.text(figureWidth-14, 8, fmt.Sprintf("%s; ensemble %s, %d members, effective %.0f", t.Origin.Program, t.Origin.Ensemble, t.Members, t.Effective),
 		textStyle{size: small - 3, colour: grey, x: text.XRight, y: text.YBottom})
-	return c.png(nil, lineColours)
+	return c.encode(nil, lineColours)
 }
 
 // middle returns the middle of each axis.
@@ -61,7 +62,11 @@ func middleText(s *correction.Surface) string {
 	var parts []string
 	for k, x := range middle(s) {
 		if f := s.Grid[k].Feature; f != correction.Height {
-			parts = append(parts, strings.TrimSpace(fmt.Sprintf("%s %.3g %s", f, x, f.Unit())))
+			v := fmt.Sprintf("%.3g", x)
+			if x >= 1e4 {
+				v = units.Scientific(x, 1)
+			}
+			parts = append(parts, strings.TrimSpace(fmt.Sprintf("%s %s %s", f, v, strings.Replace(f.Unit(), "-3", "⁻³", 1))))
 		}
 	}
 	if parts == nil {

@@ -141,7 +141,11 @@ type key struct {
 func (c *canvas) legend(x, y float64, keys []key) {
 	for _, k := range keys {
 		const long = 62
-		if k.band {
+		switch {
+		case k.band && k.stroke.dashes != nil:
+			c.line(k.stroke.thin(), pt(x, y-12), pt(x+long, y-12))
+			c.line(k.stroke.thin(), pt(x, y+12), pt(x+long, y+12))
+		case k.band:
 			r, g, b, _ := k.stroke.colour.RGBA()
 			c.FillPolygon(color.NRGBA{uint8(r >> 8), uint8(g >> 8), uint8(b >> 8), 0x40}, []vg.Point{pt(x, y-12), pt(x+long, y-12), pt(x+long, y+12), pt(x, y+12)})
 		}
@@ -167,14 +171,14 @@ type profile struct {
 }
 
 // profileFigure draws the columns: values above, ratios below.
-func profileFigure(heights []float64, span [2]float64, ps []profile, foot string) []byte {
+func profileFigure(f Format, heights []float64, span [2]float64, ps []profile, foot string) []byte {
 	const (
 		hgt             = 1180
 		top, mid, below = 1010.0, 480.0, 118.0
 		gap             = 185.0
 		left            = 175.0
 	)
-	c := newCanvas(figureWidth, hgt)
+	c := newCanvas(f, figureWidth, hgt)
 	n := float64(len(ps))
 	w := min((figureWidth-left-50-(n-1)*gap)/n, 900)
 	xt := linearTicks(span[0], span[1], 6)
@@ -217,8 +221,13 @@ func profileFigure(heights []float64, span [2]float64, ps []profile, foot string
 		}
 		a.grid(yt)
 		for _, cv := range p.curves {
-			if cv.lo != nil {
+			switch {
+			case cv.lo == nil:
+			case cv.stroke.dashes == nil:
 				a.band(cv.stroke.colour.(color.RGBA), heights, cv.lo, cv.hi)
+			default: // a fifth fill over the others would tell nothing
+				a.line(cv.stroke.thin(), heights, cv.lo, false)
+				a.line(cv.stroke.thin(), heights, cv.hi, false)
 			}
 		}
 		for _, cv := range p.curves {
@@ -240,17 +249,17 @@ func profileFigure(heights []float64, span [2]float64, ps []profile, foot string
 	}
 	c.legend(left, hgt-40, legend)
 	c.text(figureWidth-14, 8, foot, textStyle{size: small - 3, colour: grey, x: text.XRight, y: text.YBottom})
-	return c.png(nil, lineColours)
+	return c.encode(nil, lineColours)
 }
 
 // partsFigure draws the factors of B/B_SKY and the valid fraction by height bin.
-func partsFigure(heights []float64, edges [2]float64, factors []curve, valid []float64, foot string) []byte {
+func partsFigure(f Format, heights []float64, edges [2]float64, factors []curve, valid []float64, foot string) []byte {
 	const hgt = 940
-	c := newCanvas(figureWidth, hgt)
+	c := newCanvas(f, figureWidth, hgt)
 	xt := linearTicks(edges[0], edges[1], 6)
 	lo, hi := 0.7, 1.4
-	for _, f := range factors {
-		for _, v := range slices.Concat(f.median, f.lo, f.hi) {
+	for _, q := range factors {
+		for _, v := range slices.Concat(q.median, q.lo, q.hi) {
 			if v > 0 && !math.IsInf(v, 0) {
 				lo, hi = min(lo, v*0.97), max(hi, v*1.03)
 			}
@@ -269,12 +278,12 @@ func partsFigure(heights []float64, edges [2]float64, factors []curve, valid []f
 	a.grid(yt)
 	a.line(stroke{ink, 1.5, nil}, edges[:], []float64{1, 1}, false)
 	var keys []key
-	for _, f := range factors {
-		if f.lo != nil {
-			a.band(f.stroke.colour.(color.RGBA), heights, f.lo, f.hi)
+	for _, q := range factors {
+		if q.lo != nil {
+			a.band(q.stroke.colour.(color.RGBA), heights, q.lo, q.hi)
 		}
-		a.line(f.stroke, heights, f.median, true)
-		keys = append(keys, f.key)
+		a.line(q.stroke, heights, q.median, true)
+		keys = append(keys, q.key)
 	}
 	a.decorate(xt, yt, "projected heliocentric distance [R☉]", "factor of B / B_SKY")
 	c.text(a.x+a.w/2, a.y+a.h+16, "factors of the field's bias (median of each bin)", textStyle{size: medium, bold: true, x: text.XCenter, y: text.YBottom})
@@ -289,5 +298,5 @@ func partsFigure(heights []float64, edges [2]float64, factors []curve, valid []f
 	c.legend(175, hgt-34, keys[:half])
 	c.legend(175, hgt-76, keys[half:])
 	c.text(figureWidth-14, 8, foot, textStyle{size: small - 3, colour: grey, x: text.XRight, y: text.YBottom})
-	return c.png(nil, lineColours)
+	return c.encode(nil, lineColours)
 }

@@ -51,21 +51,26 @@ func (r *Report) joints(foot string) (Figure, bool) {
 	if len(js) == 0 {
 		return Figure{}, false
 	}
-	const left, bottom, gap, hgt = 165, 280, 160, 930
-	c := newCanvas(left+len(js)*jointSide+(len(js)-1)*gap+60, hgt)
 	s := &scale{lo: 1, hi: roundLog(float64(max(most, 2)), true), log: true, table: &viridis, label: "pixels in a cell, logarithmic"}
 	s.ticks = logTicks(s.lo, s.hi)
+	return Figure{
+		Name: "joint", Draw: func(f Format) []byte { return jointFigure(f, js, s, foot) },
+		Alt: "Histograms of inferred against true field, phase speed and density, pixel by pixel, with the line where they are equal and the median in bins of the truth.",
+		Caption: fmt.Sprintf("Inferred against true, pixel by pixel. Truth: B_SKY [G], SPEED_SKY [km/s], NE_SKY [cm⁻³], at the plane of the sky. Inferred: B and SPEED%s, NE from the line ratio. Colour: number of pixels in a cell, on a logarithmic scale. Line: inferred equals true. Points and bars: median and 16th to 84th percentile of the inferred values in bins of the truth. N pixels; r is the correlation of their ranks. Values beyond the axes lie in the outermost cells. Domain: %s.",
+			r.estimator(), r.domain()),
+	}, true
+}
+
+// jointFigure draws histograms side by side.
+func jointFigure(f Format, js []*joint, s *scale, foot string) []byte {
+	const left, bottom, gap, hgt = 165, 280, 160, 930
+	c := newCanvas(f, left+len(js)*jointSide+(len(js)-1)*gap+60, hgt)
 	for i, j := range js {
 		c.joint(j, left+i*(jointSide+gap), bottom, s)
 	}
 	c.colourBar(left+60, 92, 900, s, nil)
 	c.text(float64(c.w)-14, 8, foot, textStyle{size: small - 3, colour: grey, x: text.XRight, y: text.YBottom})
-	return Figure{
-		Name: "joint", PNG: c.png([]*table{s.table}, lineColours),
-		Alt: "Histograms of inferred against true field, phase speed and density, pixel by pixel, with the line where they are equal and the median in bins of the truth.",
-		Caption: fmt.Sprintf("Inferred against true, pixel by pixel. Truth: B_SKY [G], SPEED_SKY [km/s], NE_SKY [cm⁻³], at the plane of the sky. Inferred: B and SPEED%s, NE from the line ratio. Colour: number of pixels in a cell, on a logarithmic scale. Line: inferred equals true. Points and bars: median and 16th to 84th percentile of the inferred values in bins of the truth. N pixels; r is the correlation of their ranks. Values beyond the axes lie in the outermost cells. Domain: %s.",
-			r.estimator(), r.domain()),
-	}, true
+	return c.encode([]*table{s.table}, lineColours)
 }
 
 // fill collects the pixels of a histogram; false if there are too few.

@@ -25,14 +25,14 @@ func (r *Report) pixelFigures() []Figure {
 	}
 	where := fmt.Sprintf("the one pixel (%d, %d) at %.3f solar radii and position angle %.1f°, whose bias is near the median", p.Place.X, p.Place.Y, p.Place.Height, p.Place.PA)
 	fs := []Figure{{
-		Name: "pixel", PNG: PixelFigure(p, PNG),
+		Name: "pixel", Draw: func(f Format) []byte { return PixelFigure(p, f) },
 		Alt: "One pixel: emission, wave power, density and field along its line of sight; Doppler shift along its track against time; lags against distance; causes of its bias.",
-		Caption: fmt.Sprintf("A pixel that stands for the run. Left, along its line of sight: shares of the two lines' emission and of the wave power [1/R☉], electron density [cm⁻³], component of the field in the plane of the sky [G]; dashed: inferred. Right: Doppler shift [km/s] along the track, and the lags [s] against distance [Mm] with their fit (for an estimator that fits no lags, the share of the power it explains); dashed: truth SPEED_WAVE [km/s]. Below: the causes of the bias against the truth B_SKY, as factors. Phase-speed estimator %q. Domain: %s.",
+		Caption: fmt.Sprintf("A pixel that stands for the run. Left, along its line of sight: shares of the two lines' emission and of the wave power [1/R☉], electron density [cm⁻³], component of the field in the plane of the sky [G]; dashed: inferred. Right: Doppler shift [km/s] along the track, and the lags [s] against distance [Mm] with their fit (for an estimator that fits no lags, the share of the power it explains); dashed: truth SPEED_WAVE [km/s], dotted: 250 and 1000 km/s. Below: the causes of the bias against the truth B_SKY, as factors. Phase-speed estimator %q. Domain: %s.",
 			e, where),
 	}}
 	if k := &p.Curves.KOmega; len(k.Power) > 1 && len(k.Frequency) > 1 {
 		fs = append(fs, Figure{
-			Name: "komega", PNG: kOmegaFigure(p),
+			Name: "komega", Draw: func(f Format) []byte { return kOmegaFigure(p, f) },
 			Alt: "Power of the Doppler shift on the track of that pixel against wavenumber and frequency, with lines of constant phase speed, and the spectra of outward and inward waves.",
 			Caption: fmt.Sprintf("Waves on the track of the same pixel. Left: power of the band-passed Doppler shift against wavenumber [rad/Mm], positive outward, and frequency [mHz], over its peak, on a logarithmic scale; lines of constant phase speed: inferred SPEED (phase-speed estimator %q), truth SPEED_WAVE, and 250, 500 and 1000 km/s. Right: the same power summed over outward and over inward wavenumbers [km²/s²]. Domain: %s.",
 				e, where),
@@ -42,19 +42,22 @@ func (r *Report) pixelFigures() []Figure {
 }
 
 // kOmegaFigure draws the power on a track.
-func kOmegaFigure(p *explain.Pixel) []byte {
+func kOmegaFigure(p *explain.Pixel, f Format) []byte {
 	const left, y, wide, high = 165.0, 290.0, 1100, 640
-	c := newCanvas(figureWidth, 1050)
+	c := newCanvas(f, figureWidth, 1050)
 	w := wavesOf(&p.Curves.KOmega)
 	a := &axes{c: c, x: left, y: y, w: wide, h: high, xlo: -w.reach, xhi: w.reach, ylo: w.f[0], yhi: w.f[len(w.f)-1]}
 	s := &scale{lo: 1e-4, hi: 1, log: true, table: &viridis, label: "power over its peak, logarithmic", ticks: logTicks(1e-4, 1)}
 	m := image.NewRGBA(image.Rect(0, 0, wide, high))
+	var drawn []float32
 	for px := range wide {
 		k := a.xlo + (float64(px)+0.5)/wide*(a.xhi-a.xlo)
 		for py := range high {
-			f := a.yhi - (float64(py)+0.5)/high*(a.yhi-a.ylo)
+			at := a.yhi - (float64(py)+0.5)/high*(a.yhi-a.ylo)
 			colour := noValue
-			if t := s.norm(w.at(k, f)); !math.IsNaN(t) {
+			power := w.at(k, at)
+			drawn = append(drawn, float32(power))
+			if t := s.norm(power); !math.IsNaN(t) {
 				colour = s.colour(t)
 			}
 			m.SetRGBA(px, py, colour)
@@ -70,12 +73,13 @@ func kOmegaFigure(p *explain.Pixel) []byte {
 	for _, v := range []float64{250, 500, 1000} {
 		line(v, stroke{paper, 2, []float64{5, 7}})
 		line(-v, stroke{paper, 2, []float64{5, 7}})
+		c.text(a.px(-2*math.Pi*a.yhi/v)-8, y+high-20, fmt.Sprint(v), textStyle{size: small - 3, colour: paper, x: text.XRight, y: text.YCenter})
 	}
 	inferred, truth := stroke{paper, 5, nil}, stroke{vermillion, 5, []float64{14, 8}}
 	line(float64(p.Inferred.Speed), inferred)
 	line(float64(p.Truth.SpeedWave), truth)
 	a.decorate(linearTicks(a.xlo, a.xhi, 7), linearTicks(a.ylo, a.yhi, 6), "wavenumber, outward positive [rad/Mm]", "frequency [mHz]")
-	c.colourBar(int(left)+100, 92, wide-200, s, nil)
+	c.colourBar(int(left)+100, 92, wide-200, s, []panel{{data: drawn, scale: s}})
 	c.text(left, y+high+36, fmt.Sprintf("inferred %.0f km/s (full), true %.0f km/s (dashed), 250, 500, 1000 km/s (dotted)", p.Inferred.Speed, p.Truth.SpeedWave), textStyle{size: small, y: text.YCenter})
 
 	top := slices.Max(append(slices.Clone(w.out), w.in...))
@@ -87,7 +91,7 @@ func kOmegaFigure(p *explain.Pixel) []byte {
 	b.line(in, w.f, w.in, false)
 	b.decorate(linearTicks(b.xlo, b.xhi, 5), bt, "frequency [mHz]", "power [km²/s²]")
 	c.legend(b.x, y+high+36, []key{{label: "outward", stroke: out}, {label: "inward", stroke: in}})
-	return c.png([]*table{s.table}, []color.RGBA{vermillion, blue, orange, faint, grey})
+	return c.encode([]*table{s.table}, []color.RGBA{vermillion, blue, orange, faint, grey})
 }
 
 // waves is the power on a track in order of wavenumber.

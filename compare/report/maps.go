@@ -4,6 +4,7 @@ import (
 	"image"
 	"image/color"
 	"math"
+	"math/cmplx"
 	"slices"
 
 	"gonum.org/v1/plot/text"
@@ -171,13 +172,15 @@ func (v *view) place(west, north float64) (x, y float64) {
 	return (west - v.west0 + v.step/2) * k, (north - v.north0 + v.step/2) * k
 }
 
-// raster paints a map. In blocks, the mean place on the scale counts.
+// raster paints a map. In blocks, the mean place on the scale counts, of angles on the
+// circle.
 func (v *view) raster(data []float32, s *scale) *image.RGBA {
 	w, h := v.size()
 	m := image.NewRGBA(image.Rect(0, 0, w, h))
 	for by := 0; by*v.block < v.rows; by++ {
 		for bx := 0; bx*v.block < v.cols; bx++ {
 			sum, n, in := 0.0, 0, false
+			var turn complex128
 			for row := by * v.block; row < min(v.rows, (by+1)*v.block); row++ {
 				for col := bx * v.block; col < min(v.cols, (bx+1)*v.block); col++ {
 					i := v.pixel(col, row)
@@ -187,12 +190,16 @@ func (v *view) raster(data []float32, s *scale) *image.RGBA {
 					in = true
 					if t := s.norm(float64(data[i])); !math.IsNaN(t) && !math.IsInf(float64(data[i]), 0) {
 						sum += min(max(t, 0), 1)
+						turn += cmplx.Rect(1, 2*math.Pi*t)
 						n++
 					}
 				}
 			}
 			c := paper
 			switch {
+			case n > 0 && s.table == &cyclic:
+				_, at := math.Modf(cmplx.Phase(turn)/(2*math.Pi) + 1)
+				c = s.colour(at)
 			case n > 0:
 				c = s.colour(sum / float64(n))
 			case in:
@@ -262,9 +269,9 @@ func layoutMaps(v *view, ps []panel) mapLayout {
 }
 
 // mapFigure draws panels side by side with shared axes.
-func mapFigure(v *view, ps []panel, foot string) []byte {
+func mapFigure(f Format, v *view, ps []panel, foot string) []byte {
 	l := layoutMaps(v, ps)
-	c := newCanvas(l.width, l.height)
+	c := newCanvas(f, l.width, l.height)
 	w, h := v.size()
 	fw, fh, y := float64(w), float64(h), float64(l.y)
 	for i, p := range ps {
@@ -297,7 +304,7 @@ func mapFigure(v *view, ps []panel, foot string) []byte {
 	for _, p := range ps {
 		tables = append(tables, p.scale.table)
 	}
-	return c.png(tables, []color.RGBA{grey})
+	return c.encode(tables, []color.RGBA{grey})
 }
 
 // mapAxes marks arcsec below and left, solar radii above and right.
@@ -395,7 +402,7 @@ func (c *canvas) colourBar(x, y, w int, s *scale, ps []panel) {
 	}
 	end := math.Inf(-1)
 	ticks := s.ticks
-	if s.table == &diverging && w < 430 {
+	if s.table == &diverging && s.log && w < 430 {
 		ticks = sparseTicks
 	}
 	for _, t := range ticks {

@@ -45,7 +45,7 @@ const (
 // PixelFigure draws what explain says of a pixel: along the line of sight emission, wave
 // power, density and field; the waves on the track and their lags; the causes of the bias.
 func PixelFigure(v *explain.Pixel, f Format) []byte {
-	c := canvasFor(f, figureWidth, pixelHeight)
+	c := newCanvas(f, figureWidth, pixelHeight)
 	at := &v.Place
 	c.text(60, pixelHeight-48, fmt.Sprintf("%s, pixel (%d, %d): X %s″, Y %s″, %.3f R☉, position angle %.1f°", v.Scenario, at.X, at.Y,
 		number(float64(at.SolarX), 1), number(float64(at.SolarY), 1), at.Height, at.PA), textStyle{size: medium + 2, bold: true, y: text.YCenter})
@@ -149,7 +149,7 @@ func (c *canvas) sightPanels(v *explain.Pixel) {
 	near(a)
 	a.line(stroke{blue, 4, nil}, x, b, marked)
 	level(a, v.Inferred.Field)
-	a.decorate(xt, linearTicks(0, a.yhi, 4), "distance from the plane of the sky, toward the observer [R☉]", "B in the sky [G]")
+	a.decorate(xt, linearTicks(0, a.yhi, 4), "distance from the plane of the sky, toward the observer [R☉]", "B in plane of sky [G]")
 	c.legend(left+20, pixelBase+high+25, []key{{label: "true", stroke: stroke{blue, 4, nil}}, {label: "inferred", stroke: stroke{ink, 3, []float64{14, 8}}}})
 }
 
@@ -195,7 +195,7 @@ func (c *canvas) timeDistance(v *explain.Pixel) *table {
 	const y, high, barY = 1450.0, 490.0, 1300
 	t := &v.Curves.TimeDistance
 	a := &axes{c: c, x: waveLeft, y: y, w: waveWide, h: high, xhi: 1, ylo: -1, yhi: 1}
-	c.text(waveLeft, pixelTop+28, "Doppler shift along the track, in the band", textStyle{size: small, bold: true, y: text.YCenter})
+	c.text(waveLeft, pixelTop+28, "Doppler shift along the track (dotted: 250, 1000 km/s)", textStyle{size: small, y: text.YCenter})
 	if len(t.Waves) == 0 {
 		c.missing(a, "no track")
 		return &diverging
@@ -219,7 +219,7 @@ func (c *canvas) timeDistance(v *explain.Pixel) *table {
 	peak = max(peak, 1e-6)
 	step := niceStep(peak / 4)
 	peak = math.Ceil(peak/step) * step
-	s := &scale{lo: -peak, hi: peak, table: &diverging, label: "Doppler shift [km/s]", ticks: linearTicks(-peak, peak, 6)}
+	s := &scale{lo: -peak, hi: peak, table: &diverging, label: "Doppler shift [km/s]: red away, blue toward", ticks: linearTicks(-peak, peak, 6)}
 	m := image.NewRGBA(image.Rect(0, 0, waveWide, high))
 	for px := range int(waveWide) {
 		for py := range int(high) {
@@ -237,7 +237,13 @@ func (c *canvas) timeDistance(v *explain.Pixel) *table {
 	middle := (a.xlo + a.xhi) / 2
 	slope := func(speed explain.Number, at float64, k stroke) {
 		f := 1e3 / float64(speed) / 60 // min/Mm
-		a.line(k, []float64{at + a.ylo*f, at + a.yhi*f}, []float64{a.ylo, a.yhi}, false)
+		c.cased(a, k, []float64{at + a.ylo*f, at + a.yhi*f}, []float64{a.ylo, a.yhi})
+	}
+	fan := a.xlo + 0.12*(a.xhi-a.xlo) // lines of constant speed, apart from the fit
+	for _, speed := range []explain.Number{250, 1000} {
+		f := 1e3 / float64(speed) / 60
+		c.cased(a, stroke{ink, 2.5, []float64{3, 6}}, []float64{fan, fan + (a.yhi-a.ylo)*f}, []float64{a.ylo, a.yhi})
+		c.label(a.px(fan+(a.yhi-a.ylo)*f)+8, y+high-22, fmt.Sprint(speed))
 	}
 	slope(v.Inferred.Speed, middle, inferredLine)
 	slope(v.Truth.SpeedWave, middle, trueLine)
@@ -250,6 +256,18 @@ var (
 	inferredLine = stroke{ink, 4, nil}
 	trueLine     = stroke{vermillion, 4, []float64{14, 8}}
 )
+
+// cased draws a line with a white rim, to be seen on a map.
+func (c *canvas) cased(a *axes, s stroke, x, y []float64) {
+	a.line(stroke{paper, s.width + 4, nil}, x, y, false)
+	a.line(s, x, y, false)
+}
+
+// label writes on a map.
+func (c *canvas) label(x, y float64, s string) {
+	c.FillPolygon(paper, box(x-3, y-13, width(s, small-4)+6, 26))
+	c.text(x, y, s, textStyle{size: small - 4, x: text.XLeft, y: text.YCenter})
+}
 
 // missing says inside a panel why it is empty.
 func (c *canvas) missing(a *axes, why string) {

@@ -73,7 +73,7 @@ func TestPixelFigure(t *testing.T) {
 		t.Error("two figures of one answer differ")
 	}
 	text := texts(t, svg)
-	for _, want := range []string{"share of the whole [1/R☉]", "electron density [cm⁻³]", "B in the sky [G]", "distance from the plane of the sky, toward the observer [R☉]",
+	for _, want := range []string{"share of the whole [1/R☉]", "electron density [cm⁻³]", "B in plane of sky [G]", "distance from the plane of the sky, toward the observer [R☉]",
 		"time [min]", "distance along the track [Mm]", "Doppler shift [km/s]", "lag [s]", "density along the line of sight", "0.833", "inferred 380 km/s", "true (waves) 400 km/s", "estimator lag"} {
 		if !strings.Contains(text, want) {
 			t.Errorf("%q is not on the figure", want)

@@ -16,8 +16,13 @@ import (
 // Plan draws a campaign plan: error and yield of every design against telescope time, and
 // the error of the chosen design against its duration with the floor below it.
 func Plan(p *plan.Plan) *Figure {
+	return &Figure{Name: "plan", Draw: func(f Format) []byte { return planFigure(p, f) }, Alt: "Error and yield of designs against telescope time, and error against duration",
+		Caption: "Left and middle: predictions for every design, and what simulations of the whole chain gave. Right: the chosen design at other durations; the dotted line is the random error that no duration removes."}
+}
+
+func planFigure(p *plan.Plan, f Format) []byte {
 	const hgt, base, top = 1000.0, 150.0, 760.0
-	c := newCanvas(figureWidth, hgt)
+	c := newCanvas(f, figureWidth, hgt)
 	g := &p.Campaign.Goal
 	hours, high, worst := 0.0, 1.2*g.Random, max(g.Random, g.Systematic)
 	for i := range p.Candidates {
@@ -59,8 +64,7 @@ func Plan(p *plan.Plan) *Figure {
 		{"speed of one pixel", stroke{green, 3, []float64{18, 9}}, false}, {"random error without end", stroke{blue, 3, []float64{4, 7}}, false}})
 	c.text(figureWidth-14, 8, fmt.Sprintf("%s, seed %d: %d designs, %d simulated", p.Campaign.Name, p.Campaign.Seed, len(p.Candidates), p.Calibration.Designs),
 		textStyle{size: small - 3, colour: grey, x: text.XRight, y: text.YBottom})
-	return &Figure{Name: "plan", PNG: c.png(nil, lineColours), Alt: "Error and yield of designs against telescope time, and error against duration",
-		Caption: "Left and middle: predictions for every design, and what simulations of the whole chain gave. Right: the chosen design at other durations; the dotted line is the random error that no duration removes."}
+	return c.encode(nil, lineColours)
 }
 
 // The symbols of designs, drawn in this order.
@@ -111,6 +115,9 @@ func planCurve(c *canvas, p *plan.Plan, x, y, w, h, worst float64) {
 		random, shift, speed = append(random, 100*q.Outcome.Random), append(shift, 100*math.Abs(q.Outcome.Systematic)), append(speed, 100*q.Speed)
 	}
 	a := &axes{c: c, x: x, y: y, w: w, h: h, xlo: lt[0], xhi: lt[len(lt)-1], ylo: 1, yhi: max(worst, 20), ylog: true}
+	if floor := 80 * p.Floor.Random; floor > 0.1 {
+		a.ylo = min(a.ylo, floor)
+	}
 	var ticks []tick
 	for _, t := range []float64{0.5, 1, 2, 4, 8, 24, 96} {
 		ticks = append(ticks, tick{math.Log10(t), strconv.FormatFloat(t, 'g', -1, 64)})

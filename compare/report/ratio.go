@@ -19,7 +19,7 @@ type RatioCurve struct {
 // curves can be told apart.
 func RatioFigure(curves []RatioCurve, f Format) []byte {
 	const wide, high = 1500, 1500
-	c := canvasFor(f, wide, high)
+	c := newCanvas(f, wide, high)
 	lo, hi := math.Inf(1), math.Inf(-1)
 	for _, q := range curves {
 		lo, hi = min(lo, math.Log10(q.Density[0])), max(hi, math.Log10(q.Density[len(q.Density)-1]))

@@ -16,10 +16,10 @@ import (
 	"image/png"
 	"io"
 	"math"
-	"strconv"
 	"strings"
 
 	"offplane/compare"
+	"offplane/compare/budget"
 	"offplane/compare/explain"
 	"offplane/compare/stat"
 	"offplane/scenarios/units"
@@ -33,6 +33,7 @@ type Report struct {
 	Verdict         *compare.Verdict
 	Setup           Setup
 	Pixel           *explain.Pixel // one that stands for the run; may be nil
+	Budget          *budget.Budget // may be nil
 }
 
 // Setup says in plain sentences what was simulated; empty ones are left out.
@@ -48,7 +49,7 @@ type Setup struct {
 // A Figure is one drawing with its words.
 type Figure struct {
 	Name    string // of its anchor
-	PNG     []byte
+	Draw    func(Format) []byte
 	Alt     string
 	Caption string
 }
@@ -69,15 +70,13 @@ func WriteHTML(w io.Writer, r *Report) error {
 		}
 	}
 	for _, f := range r.Figures() {
-		c, err := png.DecodeConfig(bytes.NewReader(f.PNG))
-		if err != nil {
-			return fmt.Errorf("report: %w", err)
-		}
-		url := template.URL("data:image/png;base64," + base64.StdEncoding.EncodeToString(f.PNG))
-		p.Figures = append(p.Figures, pageFigure{f, url, c.Width / 2, c.Width / 3})
+		p.Figures = append(p.Figures, r.show(&f))
+	}
+	if r.Budget != nil {
+		p.Budget = r.budget()
 	}
 	var err error
-	if p.Downloads, err = downloads(r.Verdict); err != nil {
+	if p.Downloads, err = r.downloads(); err != nil {
 		return fmt.Errorf("report: %w", err)
 	}
 	var b bytes.Buffer
@@ -94,8 +93,29 @@ type download struct {
 	URL         template.URL
 }
 
+// show draws a figure for the page: a PNG to look at, all of whose type is drawn, and an
+// SVG to save.
+func (r *Report) show(f *Figure) pageFigure {
+	image := f.Draw(PNG)
+	c, err := png.DecodeConfig(bytes.NewReader(image))
+	if err != nil {
+		panic("report: png: " + err.Error()) // it is ours
+	}
+	return pageFigure{Figure: *f, Width: c.Width / 2, Narrow: c.Width / 3,
+		// Ready-made attributes: the template would write every + as five characters.
+		Image: template.HTMLAttr(`src="data:image/png;base64,` + base64.StdEncoding.EncodeToString(image) + `"`),
+		// What is base64 within need not be so again.
+		SVG:  template.HTMLAttr(`href="data:image/svg+xml,` + inAttribute.Replace(string(f.Draw(SVG))) + `"`),
+		File: r.Verdict.Summary.Scenario + "-" + f.Name + ".svg",
+	}
+}
+
+// inAttribute writes text as the body of a data URL in quotes.
+var inAttribute = strings.NewReplacer("%", "%25", "#", "%23", `"`, "%22", "'", "%27", "&", "%26", "<", "%3C", ">", "%3E", "\n", "%0A")
+
 // downloads puts the numbers behind the figures and tables into the page.
-func downloads(v *compare.Verdict) ([]download, error) {
+func (r *Report) downloads() ([]download, error) {
+	v := r.Verdict
 	var ds []download
 	add := func(name, about, kind string, text []byte) {
 		if len(text) > 0 {
@@ -112,6 +132,15 @@ func downloads(v *compare.Verdict) ([]download, error) {
 	add("bias.ecsv", "bias by height, a table with units", "text/plain", table.Bytes())
 	add("summary.json", "the whole verdict for programs", "application/json", summary.Bytes())
 	add("scenario.yaml", "the scenario with every default filled in", "text/plain", []byte(v.Summary.Text))
+	if b := r.Budget; b != nil {
+		var terms, whole bytes.Buffer
+		t := b.Table()
+		if err := errors.Join(t.Write(&terms), b.WriteJSON(&whole)); err != nil {
+			return nil, err
+		}
+		add("budget.ecsv", "the error budget, a table with heights", "text/plain", terms.Bytes())
+		add("budget.json", "the same for programs", "application/json", whole.Bytes())
+	}
 	return ds, nil
 }
 
@@ -125,7 +154,10 @@ var pageTemplate = template.Must(template.New("report").Funcs(template.FuncMap{
 		}
 		return fmt.Sprintf("%.0f %%", 100*float64(n))
 	},
-	"inc": func(i int) int { return i + 1 },
+	"number": func(f pageFigure, before int) pageFigure {
+		f.Number = before + 1
+		return f
+	},
 }).Parse(pageText))
 
 type page struct {
@@ -136,6 +168,7 @@ type page struct {
 	Domain     string
 	Pixel      string
 	Figures    []pageFigure
+	Budget     *budgetSection // nil without
 	Ratios     []ratioRow
 	Heights    []heightRow
 	Structures []structureRow
@@ -145,7 +178,9 @@ type page struct {
 
 type pageFigure struct {
 	Figure
-	URL           template.URL
+	Image, SVG    template.HTMLAttr // source of the picture, reference to the document
+	File          string            // name of the SVG
+	Number        int
 	Width, Narrow int // shown width, and the least it shrinks to [CSS px]
 }
 
@@ -186,7 +221,7 @@ func (r *Report) identitySentence() string {
 	}
 	s += fmt.Sprintf("density that the wave feels ×%.3f; the field as a whole ×%.3f.", math.Exp(id.Kink.Median), math.Exp(id.Field.Median))
 	if !math.IsNaN(float64(id.ResidualMax)) {
-		s += " Pixel by pixel the factors multiply to the bias of the field within " + scientific(float64(id.ResidualMax), 0) + "."
+		s += " Pixel by pixel the factors multiply to the bias of the field within " + units.Scientific(float64(id.ResidualMax), 0) + "."
 	}
 	return s + methodSentence(&id)
 }
@@ -257,9 +292,10 @@ func (r *Report) Figures() []Figure {
 			}
 		}
 		caption += fmt.Sprintf(" North is up, east left; solar X grows toward west. Solid circle: limb; dashed: inner edge of the field; mid grey: pixels of the field without a value. Colour bars end in an arrow where values lie beyond the scale. Pixel %s. Domain of the ratio: %s.", r.pixel(), r.domain())
-		fs = append(fs, Figure{q.name, mapFigure(v, ps, foot), alt + ".", caption})
+		fs = append(fs, Figure{q.name, func(f Format) []byte { return mapFigure(f, v, ps, foot) }, alt + ".", caption})
 	}
 	for _, draw := range []func() (Figure, bool){
+		func() (Figure, bool) { return r.direction(v, foot) },
 		func() (Figure, bool) { return r.unwrapped(v, foot) },
 		func() (Figure, bool) { return r.joints(foot) },
 		func() (Figure, bool) { return r.profiles(v, foot) },
@@ -273,13 +309,26 @@ func (r *Report) Figures() []Figure {
 	return append(fs, r.pixelFigures()...)
 }
 
+// good returns the values of a map at the valid pixels: a scale that serves them shows
+// more than one that serves the noise around them. Without any it returns those of the
+// field.
+func (r *Report) good(m []float32) []float64 {
+	if x := pick(m, r.Verdict.Valid); len(x) > 0 {
+		return x
+	}
+	return r.values(m)
+}
+
 // values returns the values of a map in the field.
-func (r *Report) values(m []float32) []float64 {
+func (r *Report) values(m []float32) []float64 { return pick(m, r.Verdict.Field) }
+
+// pick returns the values of a map, if there is one, at the pixels that count.
+func pick(m []float32, pixels []bool) []float64 {
 	if m == nil {
 		return nil
 	}
 	var x []float64
-	for i, in := range r.Verdict.Field {
+	for i, in := range pixels {
 		if in {
 			x = append(x, float64(m[i]))
 		}
@@ -345,9 +394,9 @@ func (r *Report) profiles(v *view, foot string) (Figure, bool) {
 	}
 	sky := key{"truth at the plane of the sky", stroke{ink, 4, nil}, true}
 	inferred := key{"inferred", stroke{vermillion, 4, nil}, true}
-	emission := key{"truth, emission-weighted", stroke{blue, 3.5, []float64{18, 9}}, false}
-	wave := key{"truth, wave-weighted", stroke{green, 3.5, []float64{14, 7, 4, 7}}, false}
-	total := key{"truth, total field", stroke{purple, 3.5, []float64{5, 7}}, false}
+	emission := key{"truth, emission-weighted", stroke{blue, 3.5, []float64{18, 9}}, true}
+	wave := key{"truth, wave-weighted", stroke{green, 3.5, []float64{14, 7, 4, 7}}, true}
+	total := key{"truth, total field", stroke{purple, 3.5, []float64{5, 7}}, true}
 	any := false
 	var ps []profile
 	for _, q := range []struct {
@@ -386,9 +435,9 @@ func (r *Report) profiles(v *view, foot string) (Figure, bool) {
 	}
 	return Figure{
 		Name: "profiles",
-		PNG:  profileFigure(heights, [2]float64{edges[0], edges[n]}, ps, foot),
+		Draw: func(f Format) []byte { return profileFigure(f, heights, [2]float64{edges[0], edges[n]}, ps, foot) },
 		Alt:  "Height profiles of field, phase speed and density: truths and inferred values with bands from the 16th to the 84th percentile, and below them the ratio of inferred to true.",
-		Caption: fmt.Sprintf("Height profiles: median of the pixels in steps of %.2g solar radii; bands run from the 16th to the 84th percentile. Black: truth at the plane of the sky (B_SKY [G], SPEED_SKY [km/s], NE_SKY [cm⁻³]); dashed and dotted: the other truths, weighted by emission (B_EMIS, NE_EMIS) or by wave power (B_WAVE, SPEED_WAVE), and the total field (BTOT_SKY); red: inferred B, SPEED, NE%s. Below: inferred over the sky truth, pixel by pixel, on a logarithmic axis from 0.5 to 2. Domain: %s; truths over the same pixels.",
+		Caption: fmt.Sprintf("Height profiles: median of the pixels in steps of %.2g solar radii; bands, of the dashed truths between thin lines, run from the 16th to the 84th percentile. Black: truth at the plane of the sky (B_SKY [G], SPEED_SKY [km/s], NE_SKY [cm⁻³]); dashed and dotted: the other truths, weighted by emission (B_EMIS, NE_EMIS) or by wave power (B_WAVE, SPEED_WAVE), and the total field (BTOT_SKY); red: inferred B, SPEED, NE%s. Below: inferred over the sky truth, pixel by pixel, on a logarithmic axis from 0.5 to 2. Domain: %s; truths over the same pixels.",
 			1/float64(perRadius), e, r.domain()),
 	}, true
 }
@@ -423,10 +472,10 @@ func (r *Report) parts(foot string) (Figure, bool) {
 		get(key{"field: B / B_SKY", stroke{vermillion, 5, nil}, true}, func(p *compare.LnParts) *stat.Summary { return p.Field }),
 		get(key{"speed: v / SPEED_SKY", stroke{blue, 3.5, []float64{18, 9}}, false}, func(p *compare.LnParts) *stat.Summary { return p.Speed }),
 		get(key{"density: √(n / NE_SKY)", stroke{green, 3.5, []float64{14, 7, 4, 7}}, false}, func(p *compare.LnParts) *stat.Summary { return p.Density }),
-		get(key{"density the wave feels: √(NE_SKY / NE_KINK)", stroke{orange, 3.5, []float64{5, 7}}, false}, func(p *compare.LnParts) *stat.Summary { return p.Kink }),
-		get(key{"composition: √(μ / μ true)", stroke{purple, 3.5, []float64{26, 8}}, false}, func(p *compare.LnParts) *stat.Summary {
+		get(key{"composition: √(μ / μ true)", stroke{purple, 9, []float64{26, 8}}, false}, func(p *compare.LnParts) *stat.Summary {
 			return &stat.Summary{Median: float64(p.Mu)}
 		}),
+		get(key{"density the wave feels: √(NE_SKY / NE_KINK)", stroke{orange, 3.5, []float64{5, 7}}, false}, func(p *compare.LnParts) *stat.Summary { return p.Kink }),
 	}
 	method := ""
 	if r.Verdict.Summary.Identity.Method != nil {
@@ -439,8 +488,10 @@ func (r *Report) parts(foot string) (Figure, bool) {
 	}
 	return Figure{
 		Name: "identity",
-		PNG:  partsFigure(heights, [2]float64{float64(hs[0].From), float64(hs[n-1].To)}, factors, valid, foot),
-		Alt:  "Left: the median factors of the field's bias against height: speed, square root of density, density that the wave feels, composition, and their product. Right: the fraction of valid pixels against height.",
+		Draw: func(f Format) []byte {
+			return partsFigure(f, heights, [2]float64{float64(hs[0].From), float64(hs[n-1].To)}, factors, valid, foot)
+		},
+		Alt: "Left: the median factors of the field's bias against height: speed, square root of density, density that the wave feels, composition, and their product. Right: the fraction of valid pixels against height.",
 		Caption: fmt.Sprintf("Where the bias comes from. Left: factors of B / B_SKY (pure numbers, logarithmic scale), median of each height bin; the band is the 16–84 %% range of the whole. Truths: B_SKY, SPEED_SKY, NE_SKY, NE_KINK%s. In each pixel B / B_SKY is the product of the four; medians of factors need not multiply exactly.%s Right: valid pixels over pixels of the field. Domain: %s.",
 			e, method, r.domain()),
 	}, true
@@ -451,7 +502,7 @@ func (r *Report) quality(v *view, foot string) (Figure, bool) {
 	var ps []panel
 	caption := "What the tracker had to work with."
 	if m := data(r.Inferred, "DOPPLER_RMS"); m != nil {
-		ps = append(ps, panel{"in-band Doppler rms", "DOPPLER_RMS", m, sharedScale("rms velocity [km/s]", false, nil, r.values(m))})
+		ps = append(ps, panel{"in-band Doppler rms", "DOPPLER_RMS", m, sharedScale("rms velocity [km/s]", false, nil, r.good(m))})
 		caption += " DOPPLER_RMS [km/s]: rms of the band-passed Doppler velocity, noise variance subtracted."
 		if t := data(r.Truth, "DOPPLER_LOCAL"); t != nil {
 			q := make([]float32, len(m))
@@ -461,7 +512,7 @@ func (r *Report) quality(v *view, foot string) (Figure, bool) {
 					q[i] = m[i] / t[i]
 				}
 			}
-			ps = append(ps, panel{"share left by the line of sight", "DOPPLER_RMS / DOPPLER_LOCAL", q, sharedScale("observed rms / local rms", false, nil, r.values(q))})
+			ps = append(ps, panel{"share left by the line of sight", "DOPPLER_RMS / DOPPLER_LOCAL", q, sharedScale("observed rms / local rms", false, nil, r.good(q))})
 			caption += " Its share of the truth, the rms of the local in-band line-of-sight velocity at x = 0 (DOPPLER_LOCAL): what superposition along the line of sight leaves."
 		}
 	}
@@ -473,7 +524,7 @@ func (r *Report) quality(v *view, foot string) (Figure, bool) {
 		return Figure{}, false
 	}
 	return Figure{
-		Name: "quality", PNG: mapFigure(v, ps, foot),
+		Name: "quality", Draw: func(f Format) []byte { return mapFigure(f, v, ps, foot) },
 		Alt:     "Maps of the in-band Doppler rms, its share of the local velocity, and the coherence, around the occulted solar disc, north up, east left.",
 		Caption: caption + r.trackerText() + fmt.Sprintf(" Axes, circles and grey as in the other maps. Pixel %s. Domain: all pixels of the field.", r.pixel()),
 	}, true
@@ -498,19 +549,6 @@ func cell(v float64, decimals int) string {
 		return "–"
 	}
 	return number(v, decimals)
-}
-
-// scientific prints a positive number as 1.23×10⁸.
-func scientific(v float64, decimals int) string {
-	switch {
-	case v == 0:
-		return "0"
-	case !(v > 0):
-		return "–"
-	}
-	mantissa, exponent, _ := strings.Cut(strconv.FormatFloat(v, 'e', decimals, 64), "e")
-	e, _ := strconv.Atoi(exponent)
-	return mantissa + "×10" + superscript(e)
 }
 
 // interval prints the 68 % interval of a median.
@@ -590,7 +628,7 @@ func heightRows(v *compare.Verdict) (rows []heightRow) {
 			Range: fmt.Sprintf("%.2f–%.2f", h.From, h.To), Pixels: fmt.Sprint(h.Total), Valid: h.ValidFraction,
 			B: cell(at("b", i), 2), BSky: cell(at("b_sky", i), 2),
 			Speed: cell(at("speed", i), 0), SpeedSky: cell(at("speed_sky", i), 0),
-			NE: scientific(at("ne", i), 2), NESky: scientific(at("ne_sky", i), 2), Angles: "–",
+			NE: units.Scientific(at("ne", i), 2), NESky: units.Scientific(at("ne_sky", i), 2), Angles: "–",
 		}
 		row.Field, row.FieldSpan = medianSpan(h.Ratios.Field.Sky)
 		row.FieldBy = interval(h.Ratios.Field.Sky, 3)

@@ -126,7 +126,7 @@ func (v *vector) Fill(p vg.Path) {
 	fmt.Fprintf(&v.body, `<path d="%s"%s/>`+"\n", v.data(p), v.paint("fill"))
 }
 
-// data writes a path. Arcs become chords of a degree or two, which no eye tells from them.
+// data writes a path. Arcs become chords that leave them by a twentieth of a pixel at most.
 func (v *vector) data(p vg.Path) string {
 	var b strings.Builder
 	put := func(letter byte, q vg.Point) {
@@ -145,7 +145,7 @@ func (v *vector) data(p vg.Path) string {
 			if b.Len() == 0 {
 				letter = 'M'
 			}
-			n := max(int(math.Abs(c.Angle)*40), 1)
+			n := int(math.Ceil(math.Abs(c.Angle) * math.Sqrt(max(float64(c.Radius), 1)/0.4)))
 			for i := range n + 1 {
 				s, co := math.Sincos(c.Start + c.Angle*float64(i)/float64(n))
 				put(letter, vg.Point{X: c.Pos.X + c.Radius*vg.Length(co), Y: c.Pos.Y + c.Radius*vg.Length(s)})
@@ -186,11 +186,36 @@ func (v *vector) DrawImage(r vg.Rectangle, m image.Image) {
 	x0, y0 := v.at(r.Min)
 	x1, y1 := v.at(r.Max)
 	var b bytes.Buffer
-	if err := png.Encode(&b, m); err != nil {
+	if err := png.Encode(&b, fewColours(m)); err != nil {
 		panic("report: png: " + err.Error()) // a buffer takes all; sizes are ours
 	}
-	fmt.Fprintf(&v.body, `<image x="%s" y="%s" width="%s" height="%s" href="data:image/png;base64,%s"/>`+"\n",
+	fmt.Fprintf(&v.body, `<image x="%s" y="%s" width="%s" height="%s" style="image-rendering:pixelated" href="data:image/png;base64,%s"/>`+"\n",
 		decimal(x0), decimal(y1), decimal(x1-x0), decimal(y0-y1), base64.StdEncoding.EncodeToString(b.Bytes()))
+}
+
+// fewColours returns the same image with a palette, if 256 colours are enough: it is
+// smaller.
+func fewColours(m image.Image) image.Image {
+	rgba, ok := m.(*image.RGBA)
+	if !ok {
+		return m
+	}
+	p := image.NewPaletted(rgba.Rect, nil)
+	index := map[[4]byte]uint8{}
+	for i := range p.Pix {
+		k := [4]byte(rgba.Pix[4*i:])
+		n, have := index[k]
+		if !have {
+			if len(p.Palette) == 256 {
+				return m
+			}
+			n = uint8(len(p.Palette))
+			index[k] = n
+			p.Palette = append(p.Palette, color.RGBA{k[0], k[1], k[2], k[3]})
+		}
+		p.Pix[i] = n
+	}
+	return p
 }
 
 // encode returns the document.

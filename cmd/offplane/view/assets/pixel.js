@@ -104,8 +104,9 @@ function values(p) {
   const shown = table(root, "Inferred and true", ["", "inferred", "error", "true, x = 0", "emission", "wave"], rows.map(r => [r[0], ...r.slice(1).map(x => text(x, 4))]));
   shown.id = "numbers";
   shown.dataset.field = v.field_G;
-  table(root, "Estimators", ["", "speed [km/s]", "error", "B [G]", "plane wave", "along the track"],
-    p.estimators.map(e => [e.name, text(e.speed_km_s, 4), text(e.speed_err_km_s, 2), text(e.field_G, 3), text(e.plane_wave, 3), text(e.plane_wave_path, 3)]));
+  table(root, "Estimators", ["", "speed [km/s]", "error", "B [G]", "plane wave", "along the track", "own waves, one plane"],
+    p.estimators.map(e => [e.name, text(e.speed_km_s, 4), text(e.speed_err_km_s, 2), text(e.field_G, 3), text(e.plane_wave, 3), text(e.plane_wave_path, 3), text(e.one_plane_run, 3)]));
+  element("p", root, { className: "note", textContent: "The last three: what the estimator makes of a plane wave, of one that bends with the true speeds and directions, and of the run's own waves on one plane without noise, over the true speed." });
   const k = p.track, s = p.line_of_sight;
   element("p", root, { className: "note", textContent: `Track: ${k.points} points, ${text(k.length_Mm)} Mm, ${text(k.wavelengths, 2)} wavelengths; ${text(k.off_field_deg, 2)}° off the field; island of ${k.island_pixels} pixels.` });
   element("p", root, { className: "note", textContent: `Half the emission within ${text(s.depth50_rsun, 2)} R☉ of the plane of the sky, half the wave power within ${text(s.wave_depth50_rsun, 2)} R☉.` });
@@ -115,7 +116,7 @@ function values(p) {
 function plots(p, chosen) {
   const root = $("plots"), c = p.curves, s = c.line_of_sight;
   root.replaceChildren();
-  const x = "from the plane of the sky to the observer [R☉]";
+  const x = "x, toward the observer [R☉]"; // 0 at the plane of the sky
   const keep = near(s);
   const cut = a => a.filter((_, i) => keep[i]);
   const X = cut(s.x_rsun);

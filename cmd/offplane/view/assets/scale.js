@@ -92,7 +92,7 @@ export function text(v, precision = 3) {
   if (size !== 0 && (size >= 1e5 || size < 1e-3)) {
     const [m, e] = v.toExponential(precision - 1).split("e");
     const power = String(Math.abs(+e)).replace(/\d/g, d => digits[d]);
-    return `${m.replace("-", "−")}×10${+e < 0 ? "⁻" : ""}${power}`;
+    return `${/^-?1(\.0*)?$/.test(m) ? m.replace(/1.*/, "") : m + "×"}10${+e < 0 ? "⁻" : ""}${power}`.replace("-", "−");
   }
   return String(+v.toPrecision(precision)).replace("-", "−");
 }
@@ -122,5 +122,5 @@ export function drawBar(canvas, s, unit) {
     c.fillText(label, at, 28);
     end = at + half;
   }
-  c.fillText(unit, w / 2, 41);
+  c.fillText(unit, w / 2, 41, w - 4);
 }
