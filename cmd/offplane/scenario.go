@@ -168,6 +168,9 @@ func (p *program) printPrediction(q *prediction, s *scenarios.Scenario) error {
 	fmt.Fprintf(p.stdout, "time      %s\n", roundTime(time.Duration(q.Seconds*float64(time.Second))))
 	fmt.Fprintf(p.stdout, "memory    %.2g GB\n", q.Memory/1e9)
 	fmt.Fprintf(p.stdout, "disk      %.2g GB; %.2g GB with the frames\n", q.Disk/1e9, q.Framed/1e9)
+	if why := coarse(s); why != "" {
+		fmt.Fprintf(p.stdout, "caution   %s\n", why)
+	}
 	if len(q.Heights) == 0 {
 		return nil
 	}

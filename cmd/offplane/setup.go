@@ -14,7 +14,7 @@ import (
 // setup says in plain sentences what a scenario simulates.
 func setup(s *scenarios.Scenario) report.Setup {
 	return report.Setup{
-		About: s.About, Corona: coronaText(s), Waves: wavesText(&s.Waves), Sight: sightText(&s.Sight),
+		About: s.About, Corona: coronaText(s), Waves: wavesText(&s.Waves), Sight: sightText(s),
 		Observation: observationText(s), Inversion: inversionText(&s.Inversion),
 	}
 }
@@ -120,12 +120,26 @@ func wavesText(w *scenarios.Waves) string {
 	return text
 }
 
-func sightText(v *scenarios.Sight) string {
+func sightText(s *scenarios.Scenario) string {
+	v := &s.Sight
 	if v.Plane {
 		return "Only the plane of the sky emits: there is no line of sight."
 	}
-	return fmt.Sprintf("The full profile is summed along parallel lines of sight in steps of %g times the size of the cells, as far as %s from the plane of the sky or until less than %g of either line is left out at an end.",
+	text := fmt.Sprintf("The full profile is summed along parallel lines of sight in steps of %g times the size of the cells where they shine, up to four times that where they are dark, as far as %s from the plane of the sky or until less than %g of either line is left out at an end.",
 		v.Step, v.Reach, v.Tail)
+	if why := coarse(s); why != "" {
+		text += " Caution: " + why + "."
+	}
+	return text
+}
+
+// coarse says that strands are sampled less often than they vary; empty if they are not.
+func coarse(s *scenarios.Scenario) string {
+	step := s.Sight.Step * float64(s.Waves.Cell)
+	if v := s.Corona.Strands; v == nil || s.Sight.Plane || step <= 2*float64(v.Size) {
+		return ""
+	}
+	return fmt.Sprintf("lines of sight are sampled every %.2g Mm, strands are %s wide: light, density and Doppler signal scatter more than such strands make them; sight.step %.2g would do", step, s.Corona.Strands.Size, float64(s.Corona.Strands.Size/s.Waves.Cell))
 }
 
 func observationText(s *scenarios.Scenario) string {
