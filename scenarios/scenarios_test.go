@@ -2,7 +2,9 @@ package scenarios_test
 
 import (
 	"bytes"
+	"crypto/sha256"
 	"encoding"
+	"encoding/hex"
 	"errors"
 	"os"
 	"path/filepath"
@@ -457,4 +459,45 @@ func FuzzLoad(f *testing.F) {
 			t.Fatalf("%s\n%s", diff, l.Canonical)
 		}
 	})
+}
+
+// A file that a scenario names is looked for when it is loaded, not when it is restored: it
+// may have been made elsewhere.
+func TestRestore(t *testing.T) {
+	path := filepath.Join(t.TempDir(), "atoms.yaml")
+	if err := os.WriteFile(path, nil, 0o666); err != nil {
+		t.Fatal(err)
+	}
+	l, err := scenarios.Load("quick", "line.data="+path)
+	if err != nil {
+		t.Fatal(err)
+	}
+	if err := os.Remove(path); err != nil {
+		t.Fatal(err)
+	}
+	if _, err := scenarios.Load("quick", "line.data="+path); err == nil || !strings.Contains(err.Error(), "--set line.data: there is no file "+path) {
+		t.Errorf("%v", err)
+	}
+	sum := func(text string) string {
+		s := sha256.Sum256([]byte(text))
+		return hex.EncodeToString(s[:])
+	}
+	text := string(l.Canonical)
+	older := strings.Replace(text, "  far_end: true\n", "", 1) // before that key was added
+	newer := text + "magic: 1\n"
+	for _, c := range []struct{ text, sum, say string }{
+		{text, l.SHA256, ""},
+		{text + "#", l.SHA256, "x.fits: the scenario is damaged"},
+		{older, sum(older), "x.fits: was written by another version (offplane 0.1), whose scenarios have other keys: "},
+		{newer, sum(newer), "x.fits: was written by another version (offplane 0.1), whose scenarios this one cannot read: "},
+	} {
+		got, err := scenarios.Restore("x.fits", []byte(c.text), c.sum, "offplane 0.1")
+		if c.say == "" {
+			if err != nil || got.SHA256 != l.SHA256 {
+				t.Errorf("%v", err)
+			}
+		} else if err == nil || !strings.HasPrefix(err.Error(), c.say) {
+			t.Errorf("want %s, got %v", c.say, err)
+		}
+	}
 }

@@ -71,6 +71,7 @@ same tracks. --method=false leaves that out.`,
 		defer f.abandon()
 		defer bar.wipe()
 		r.Inputs = entries
+		p.doubt(in.paths...)
 		l := in.scenario
 		if l != nil {
 			r.Scenario, r.ScenarioSHA256, r.Seed = l.Name, l.SHA256, &l.Scenario.Seed

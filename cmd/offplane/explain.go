@@ -62,6 +62,7 @@ truth.fits; the tracker goes its way again from series.fits.`,
 			return misuse(err)
 		}
 		defer s.Close()
+		p.doubt(mapsOf(args[0])...)
 		ix, iy := s.Find(n[0], n[1])
 		if polar != "" {
 			ix, iy = s.FindPolar(n[0], n[1])

@@ -45,7 +45,7 @@ The recipe is the inversion section of a scenario by itself: --with reads it fro
 		if estimator != "" {
 			keys = append(keys, "estimators=["+estimator+"]")
 		}
-		v, err := recipe(with, keys)
+		v, err := scenarios.LoadInversion(with, keys...)
 		if err != nil {
 			return misuse(err)
 		}
@@ -73,6 +73,7 @@ The recipe is the inversion section of a scenario by itself: --with reads it fro
 		defer bar.wipe()
 		r.Inputs = append(r.Inputs, ins...)
 		bar.update("reading", 0, 0)
+		p.doubt(paths...)
 		o, err := own.read(cmd, args[0], m.RestWavelengths())
 		if err != nil {
 			return misuse(err)
@@ -109,14 +110,6 @@ The recipe is the inversion section of a scenario by itself: --with reads it fro
 	cmd.Flags().StringVar(&with, "with", "", "`file` with the inversion section")
 	cmd.Flags().StringArrayVar(&set, "set", nil, "change the inversion section: `KEY=VALUE`, such as track=21; repeatable")
 	return cmd
-}
-
-// recipe returns the inversion section of a file, or the default one.
-func recipe(path string, set []string) (scenarios.Inversion, error) {
-	if path != "" {
-		return scenarios.LoadInversion(path, set...)
-	}
-	return scenarios.ParseInversion("default", scenarios.EncodeInversion(scenarios.Default().Inversion), set...)
 }
 
 // readFrames reads an observation that can be inverted.

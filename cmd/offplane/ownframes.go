@@ -80,13 +80,9 @@ func (o *ownFrames) read(cmd *cobra.Command, path string, rest [2]float64) (*obs
 func (o *ownFrames) inputs() []string {
 	var paths []string
 	for _, p := range []string{o.u.Second, o.u.Density, o.u.Ratio} {
-		if p == "" {
-			continue
+		if file, _ := splitExtension(p); file != "" {
+			paths = append(paths, file)
 		}
-		if i := strings.LastIndex(p, "["); i > 0 && strings.HasSuffix(p, "]") {
-			p = p[:i]
-		}
-		paths = append(paths, p)
 	}
 	return paths
 }

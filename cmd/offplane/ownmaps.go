@@ -172,10 +172,7 @@ func (c *compared) open(flag, text string, names []string) (name string, im *obs
 	if !slices.Contains(names, name) {
 		return "", nil, fmt.Errorf("--%s %s: NAME must be one of %s", flag, text, strings.Join(names, ", "))
 	}
-	ext := ""
-	if i := strings.LastIndex(file, "["); i > 0 && strings.HasSuffix(file, "]") {
-		file, ext = file[:i], file[i+1:len(file)-1]
-	}
+	file, ext := splitExtension(file)
 	if im, err = obs.ReadImage(file, ext); err != nil {
 		return "", nil, fmt.Errorf("--%s %s: %w", flag, name, err)
 	}

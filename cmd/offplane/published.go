@@ -27,14 +27,6 @@ type published struct {
 // number.
 var standardNames = map[table.Feature]string{table.Field: "B", table.Speed: "SPEED", table.Density: "NE", table.Angle: "ANGLE"}
 
-// splitExtension splits FILE[EXT].
-func splitExtension(s string) (file, ext string) {
-	if i := strings.LastIndexByte(s, '['); i > 0 && strings.HasSuffix(s, "]") {
-		return s[:i], s[i+1 : len(s)-1]
-	}
-	return s, ""
-}
-
 // readPublished reads a map; its unit must be one of a feature among wanted, which is
 // returned.
 func readPublished(name string, wanted ...table.Feature) (*published, table.Feature, error) {

@@ -77,6 +77,7 @@ func (p *program) observe(ctx context.Context, l *scenarios.Loaded, w *work, f *
 			return nil, err
 		}
 		r.Inputs = append(r.Inputs, e)
+		p.doubt(file.Path)
 	}
 	r.stage("synthesis")
 	bar.update("writing", 0, 0)

@@ -139,12 +139,16 @@ func (p *program) apply(ctx context.Context, w *work, a *application, name strin
 	}
 	defer f.abandon()
 	defer bar.wipe()
+	p.doubt(inputs...)
 	told.Applied = t.Apply(in)
 	if err := writeCorrected(f.path("corrected.fits"), m, kind, t, told.Applied); err != nil {
 		return err
 	}
 	r.stage("correction")
-	if err := errors.Join(ctx.Err(), f.finish(r)); err != nil {
+	if err := ctx.Err(); err != nil {
+		return err
+	}
+	if err := f.finish(r); err != nil {
 		return err
 	}
 	bar.wipe()

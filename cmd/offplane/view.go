@@ -31,6 +31,7 @@ time. Nothing is written, and nothing outside the folder is served.`,
 		if err != nil {
 			return misuse(err)
 		}
+		p.doubt(mapsOf(args[0])...)
 		fmt.Fprintln(p.stdout, s.URL())
 		p.say("open the address above in a browser; Ctrl-C ends")
 		return s.Serve(ctx)

@@ -121,7 +121,7 @@ func (v *validation) base(source string) {
 		return
 	}
 	if l.BaseSHA256 != "" && len(changes) == len(l.Set) && v.at.Sound("base_sha256", "set") && l.BaseSHA256 != l.base.SHA256 {
-		v.problem("base_sha256", "is %s, but the base with its changes has %s", l.BaseSHA256, l.base.SHA256)
+		v.problem("base_sha256", "is %s, but the base with its changes has %s: it was changed since, or is of another version of offplane", l.BaseSHA256, l.base.SHA256)
 	}
 	for _, j := range v.sound {
 		for _, s := range l.Parameters[j].samples() {

@@ -136,6 +136,7 @@ func readScenario(path string) (*scenarios.Loaded, []compare.File, error) {
 	}
 	var v struct {
 		Scenario string         `json:"scenario"`
+		Version  string         `json:"version"`
 		SHA256   string         `json:"scenario_sha256"`
 		Text     string         `json:"scenario_text"`
 		Files    []compare.File `json:"files"`
@@ -146,12 +147,9 @@ func readScenario(path string) (*scenarios.Loaded, []compare.File, error) {
 	if v.Text == "" {
 		return nil, nil, fmt.Errorf("%s: carries no scenario: it is not of offplane run", path)
 	}
-	l, err := scenarios.Parse(path+"[scenario_text]", []byte(v.Text))
+	l, err := scenarios.Restore(path, []byte(v.Text), v.SHA256, "offplane "+v.Version)
 	if err != nil {
 		return nil, nil, err
-	}
-	if l.SHA256 != v.SHA256 {
-		return nil, nil, fmt.Errorf("%s: the SHA-256 of scenario_text is %s, scenario_sha256 is %q", path, l.SHA256, v.SHA256)
 	}
 	l.Name = v.Scenario
 	return l, v.Files, nil

@@ -4,7 +4,9 @@ import (
 	"encoding/binary"
 	"fmt"
 	"io"
+	"math"
 	"strconv"
+	"strings"
 )
 
 // A sum is the ones'-complement sum of 32-bit big-endian words of the FITS
@@ -94,22 +96,45 @@ func encodeChecksum(total uint32) string {
 
 func punctuation(c byte) bool { return c >= ':' && c <= '@' || c >= '[' && c <= '`' }
 
-// Verify reads the data of every HDU and holds them against its DATASUM (FITS standard
-// 4.0, section 4.4.2.7), if it has one.
+// Verify holds every HDU against its sums and returns the first mismatch.
 func (f *File) Verify() error {
 	for _, h := range f.HDUs {
-		text, ok := h.Header.Text("DATASUM")
-		if !ok {
-			continue
+		if err := f.VerifyHDU(h); err != nil {
+			return err
 		}
-		var s sum
-		padded := (h.size + blockSize - 1) / blockSize * blockSize
-		if _, err := io.Copy(&s, io.NewSectionReader(f.r, h.start, padded)); err != nil {
-			return fmt.Errorf("%s: %w", f.where(h), err)
-		}
-		if want, err := strconv.ParseUint(text, 10, 32); err != nil || s.value() != uint32(want) {
-			return fmt.Errorf("%s: the data are damaged: their sum is %d, DATASUM says %q", f.where(h), s.value(), text)
-		}
+	}
+	return nil
+}
+
+// VerifyHDU reads an HDU and holds it against its DATASUM and CHECKSUM (FITS standard 4.0,
+// section 4.4.2.7), as far as it has them: an empty value, and a CHECKSUM of zeros, are not
+// defined yet.
+func (f *File) VerifyHDU(h *HDU) error {
+	dataSum, hasData := h.Header.Text("DATASUM")
+	checksum, hasCheck := h.Header.Text("CHECKSUM")
+	hasData = hasData && dataSum != ""
+	hasCheck = hasCheck && strings.Trim(checksum, "0") != ""
+	if !hasData && !hasCheck {
+		return nil
+	}
+	var data, all sum
+	padded := (h.size + blockSize - 1) / blockSize * blockSize
+	if _, err := io.Copy(&data, io.NewSectionReader(f.r, h.start, padded)); err != nil {
+		return fmt.Errorf("%s: %w", f.where(h), err)
+	}
+	data.Write(make([]byte, 3)) // completes the last word of a file that ends without padding
+	if want, err := strconv.ParseUint(strings.TrimSpace(dataSum), 10, 32); hasData && (err != nil || data.value() != uint32(want)) {
+		return fmt.Errorf("%s: the data do not add up to DATASUM (%d, not %q): they are damaged, or were changed without a new sum", f.where(h), data.value(), dataSum)
+	}
+	if !hasCheck {
+		return nil
+	}
+	if _, err := io.Copy(&all, io.NewSectionReader(f.r, h.head, h.start-h.head)); err != nil {
+		return fmt.Errorf("%s: %w", f.where(h), err)
+	}
+	// All of an HDU adds up to minus zero; plus zero would be zeros throughout.
+	if total := fold(all.acc + data.acc); total != math.MaxUint32 {
+		return fmt.Errorf("%s: the HDU does not add up to CHECKSUM: its header is damaged, or was changed without a new sum", f.where(h))
 	}
 	return nil
 }

@@ -360,17 +360,19 @@ func TestChecksums(t *testing.T) {
 		t.Error(err)
 	}
 	for i, h := range f.HDUs {
-		if h.size == 0 {
-			continue
-		}
-		changed := bytes.Clone(raw)
-		changed[h.start+h.size-1] ^= 1
-		g, err := NewFile("x", bytes.NewReader(changed), int64(len(changed)))
-		if err != nil {
-			t.Fatal(err)
-		}
-		if err := g.Verify(); err == nil || !strings.Contains(err.Error(), "damaged") {
-			t.Errorf("HDU %d %s with one bit changed: %v", i, h.Name, err)
+		for key, at := range map[string]int64{"DATASUM": h.start + h.size - 1, "CHECKSUM": h.start - 1} {
+			if key == "DATASUM" && h.size == 0 {
+				continue
+			}
+			changed := bytes.Clone(raw)
+			changed[at] ^= 1
+			g, err := NewFile("x", bytes.NewReader(changed), int64(len(changed)))
+			if err != nil {
+				t.Fatal(err)
+			}
+			if err := g.Verify(); err == nil || !strings.Contains(err.Error(), "add up to "+key) {
+				t.Errorf("HDU %d %s with one bit changed: %v", i, h.Name, err)
+			}
 		}
 	}
 }

@@ -37,6 +37,7 @@ type HDU struct {
 	Axes   []int
 
 	bitpix int
+	head   int64 // where the header begins
 	start  int64 // of the data
 	size   int64 // of the data, without padding
 }
@@ -145,7 +146,7 @@ func (f *File) hdu(pos int64) (*HDU, int64, error) {
 		}
 	}
 	h.Header = cards
-	h.start = at
+	h.head, h.start = pos, at
 	h.Kind = "IMAGE"
 	if pos > 0 {
 		h.Kind, _ = cards.Text("XTENSION")
