@@ -62,6 +62,12 @@ only): an ECSV file separated by commas or blanks, or plain comma-separated valu
 		if least < 1 {
 			return misusef("--least %d: must be at least 1: without members there is nothing to correct by", least)
 		}
+		var q *table.Prior
+		if prior != "" {
+			if q, err = table.ReadPrior(prior, width); err != nil {
+				return misusef("--prior: %w", err)
+			}
+		}
 		set, err := ensemble.Open(args[0])
 		if err != nil {
 			return misuse(err)
@@ -77,11 +83,7 @@ only): an ECSV file separated by commas or blanks, or plain comma-separated valu
 		parts := []string{set.Ensemble.SHA256, fmt.Sprint(set.Done), truth, estimator, features, fmt.Sprint(least, width)}
 		var inputs []string
 		weighted := ""
-		if prior != "" {
-			q, err := table.ReadPrior(prior, width)
-			if err != nil {
-				return misusef("--prior: %w", err)
-			}
+		if q != nil {
 			e, err := entryOf(prior)
 			if err != nil {
 				return misuse(err)

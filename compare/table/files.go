@@ -4,6 +4,7 @@ import (
 	"bytes"
 	"fmt"
 	"io"
+	"math"
 	"os"
 	"slices"
 	"strconv"
@@ -117,9 +118,14 @@ func scoreKey(s *Surface) string {
 
 // String tells what was achieved on members never used.
 func (s *Score) String() string {
+	if s.Members == 0 {
+		return unknownScore
+	}
 	return fmt.Sprintf("%.1f +- %.1f %% within 68 %%, %.1f +- %.1f %% within 95 %%, on %d members held out",
 		100*s.Coverage68.Mean, 100*s.Coverage68.Error, 100*s.Coverage95.Mean, 100*s.Coverage95.Error, s.Members)
 }
+
+const unknownScore = "coverage not known"
 
 func parseScore(text string) (s Score) {
 	var c [4]float64
@@ -226,7 +232,18 @@ func decode(e *ecsv.Table) (*Table, error) {
 	}
 	t.Origin = Origin{meta["program"], meta["ensemble"], meta["ensemble_sha256"], meta["varied"]}
 	t.Truth, t.Prior = meta["truth"], meta["prior"]
+	if !slices.Contains(Truths(), t.Truth) {
+		return nil, fmt.Errorf("meta truth is %q: must be one of %s", t.Truth, strings.Join(Truths(), ", "))
+	}
+	if len(t.Recipe) == 0 {
+		return nil, fmt.Errorf("meta has no recipe of the maps that it is good for: keys %s", recipePrefix+strings.Join(RecipeKeys(), ", "+recipePrefix))
+	}
 	var err error
+	for _, s := range t.Recipe {
+		if _, err := Recipe(nil).With(s.Key + "=" + s.Value); err != nil {
+			return nil, fmt.Errorf("meta %s%s: %w", recipePrefix, s.Key, err)
+		}
+	}
 	for _, n := range []struct {
 		key string
 		to  *int
@@ -285,7 +302,7 @@ func texts(e *ecsv.Table) (quantity, names []string, err error) {
 func surface(e *ecsv.Table, quantity, names string, from, to int) (*Surface, error) {
 	q := slices.Index(quantityNames[:], quantity)
 	if q < 0 {
-		return nil, fmt.Errorf("quantity %q", quantity)
+		return nil, fmt.Errorf("quantity %q: must be one of %s", quantity, strings.Join(quantityNames[:], ", "))
 	}
 	fs, err := ParseFeatures(names)
 	if err != nil {
@@ -300,9 +317,12 @@ func surface(e *ecsv.Table, quantity, names string, from, to int) (*Surface, err
 		if err != nil {
 			return nil, err
 		}
+		if u := e.Column(f.String()).Unit; u != f.Unit() {
+			return nil, fmt.Errorf("%s is in %q: must be in %q", f, u, f.Unit())
+		}
 		nodes := slices.Compact(slices.Sorted(slices.Values(x[from:to])))
 		if len(nodes) < 2 || !finite(nodes[0]) || !finite(nodes[len(nodes)-1]) {
-			return nil, fmt.Errorf("%s has %d nodes", f, len(nodes))
+			return nil, fmt.Errorf("%s has %d nodes: a grid needs two or more, none of them infinite", f, len(nodes))
 		}
 		s.Grid = append(s.Grid, Axis{f, nodes})
 	}
@@ -328,8 +348,15 @@ func surface(e *ecsv.Table, quantity, names string, from, to int) (*Surface, err
 	if err != nil {
 		return nil, err
 	}
-	for _, m := range members[from:to] {
+	for i, m := range members[from:to] {
+		if !(m >= 0 && m <= math.MaxInt32) {
+			return nil, fmt.Errorf("row %d: %s is %g", from+i+1, membersColumn, m)
+		}
 		s.Members = append(s.Members, int64(m))
+		v := []float64{s.Low95[i], s.Low68[i], s.Median[i], s.High68[i], s.High95[i]}
+		if !slices.IsSorted(v) || !finite(v[0]) || !finite(v[4]) {
+			return nil, fmt.Errorf("row %d: ln_low95 to ln_high95 are %g: must ascend and be finite", from+i+1, v)
+		}
 	}
 	return s, nil
 }
