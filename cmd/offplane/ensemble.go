@@ -82,6 +82,7 @@ type members struct {
 	task, tasks int
 	retry       bool
 	accept      bool
+	held        *folder
 }
 
 func (m *members) acceptFlag(cmd *cobra.Command) {
@@ -132,6 +133,14 @@ func (p *program) runEnsemble(ctx context.Context, l *ensemble.Loaded, m *member
 	if err != nil {
 		return err
 	}
+	if !m.part { // tasks share a folder
+		held, err := p.hold(m.out)
+		if err != nil {
+			return err
+		}
+		defer held.abandon()
+		m.held = held
+	}
 	if err := m.prepare(l); err != nil {
 		return err
 	}
@@ -159,6 +168,7 @@ func (p *program) runEnsemble(ctx context.Context, l *ensemble.Loaded, m *member
 		}
 		return p.told(m)
 	default:
+		m.held.abandon() // gathering takes it for itself
 		return p.gather(m, r)
 	}
 	set, err := ensemble.Open(m.out)

@@ -12,6 +12,38 @@ import (
 // TestKills is the short one of the two; the other is in .ci/soak.
 func TestKills(t *testing.T) { tryKills(t, 20) }
 
+// far is how many of the writers take little time to their results.
+const far = 4
+
+// writers are the other commands that write, upon what victims left in dir.
+func writers(t *testing.T, dir string) []victim {
+	t.Helper()
+	const campaign = `target: {scenario: tiny.yaml, set: ["inversion.estimators=[pair]"], from: 264 deg, to: 276 deg, inner: 1.10 Rsun, outer: 1.20 Rsun}
+goal: {random: 0.9, systematic: 0.9, yield: 0.05, success: 0.5}
+facts: {hours: 3 h}
+vary:
+  - {what: duration, values: [1 h, 2 h]}
+effort: {waves: 4 h, designs: 1, trials: 4}
+`
+	if err := os.WriteFile(filepath.Join(dir, "campaign.yaml"), []byte(campaign), 0o666); err != nil {
+		t.Fatal(err)
+	}
+	return []victim{
+		{name: "synth", args: []string{"synth", "tiny.yaml", "--quiet"}},
+		{name: "invert", args: []string{"invert", "data/observation.fits", "--quiet", "--set", "box=11", "--set", "track=11"}},
+		{name: "compare", args: []string{"compare", "--truth", "data/truth.fits", "--inferred", "data/inferred.fits", "--quiet"}},
+		{name: "plan", args: []string{"plan", "campaign.yaml", "--quiet"}},
+		{name: "budget", args: []string{"budget", "tiny.yaml", "--realisations", "2", "--quiet"}},
+		{name: "submit", args: []string{"ensemble", "submit", "few.yaml", "--engine", "other"}},
+		{name: "manual", args: []string{"manual"}},
+		{name: "explain.png", args: []string{"explain", "data", "--polar", "270,1.15"}, file: "--figure"},
+		{name: "scenario.svg", args: []string{"scenario", "show", "tiny.yaml"}, file: "--figure"},
+		{name: "line.png", args: []string{"line"}, file: "--figure"},
+		{name: "line.ecsv", args: []string{"line"}, file: "--ecsv"},
+		{name: "table.ecsv", args: []string{"table", "show"}, file: "--ecsv"},
+	}
+}
+
 // inNamespace returns a shell command line in mount and network namespaces of its own, as
 // root or in a user namespace.
 func inNamespace(script string) []string {
@@ -23,58 +55,120 @@ func inNamespace(script string) []string {
 }
 
 // A full disk, a limit on the size of files and a folder that cannot be written to give
-// one message, exit code 1, and nothing that looks complete.
+// one message, exit code 1, and nothing that looks complete. The victims get as far as
+// their results; for the others the disk is full from the start.
 func TestNoRoom(t *testing.T) {
 	dir := t.TempDir()
-	for _, v := range victims(t, dir) {
+	const (
+		full   = "mkdir -p full && mount -t tmpfs -o size=16k none full && "
+		sealed = "mkdir -p bound && mount --bind bound bound && mount -o remount,bind,ro bound && "
+	)
+	try := func(name, script, say string) {
+		t.Run(name, func(t *testing.T) {
+			p := startCommand(t, dir, inNamespace(script)...)
+			p.finish(exitFailed)
+			said := p.stderr.String()
+			if strings.Count(said, "\n") != 1 || !strings.HasPrefix(said, "offplane: ") || !strings.Contains(said, say) {
+				t.Errorf("want one line with %q, got\n%s", say, said)
+			}
+		})
+	}
+	killed, others := victims(t, dir), writers(t, dir)
+	for _, v := range append(killed, others[:far]...) {
 		command := "exec offplane " + strings.Join(v.args, " ") + " -o "
-		for _, c := range []struct{ name, script, say string }{
-			{"full disk", "mkdir -p full && mount -t tmpfs -o size=16k none full && " + command + "full/out", "no space left on device"},
-			{"file size", "ulimit -f 8 && " + command + "long-" + v.name, "file too large"},
-			{"read-only", "mkdir -p bound && mount --bind bound bound && mount -o remount,bind,ro bound && " + command + "bound/out", "read-only file system"},
-			{"read-only itself", "mkdir -p bound && mount --bind bound bound && mount -o remount,bind,ro bound && " + command + "bound", "read-only file system"},
-		} {
-			t.Run(v.name+" "+c.name, func(t *testing.T) {
-				p := startCommand(t, dir, inNamespace(c.script)...)
-				p.finish(exitFailed)
-				said := p.stderr.String()
-				if strings.Count(said, "\n") != 1 || !strings.HasPrefix(said, "offplane: ") || !strings.Contains(said, c.say) {
-					t.Errorf("want one line with %q, got\n%s", c.say, said)
-				}
-				if exists(filepath.Join(dir, "long-"+v.name, recordName)) {
-					t.Error("the folder looks complete")
-				}
-			})
+		try(v.name+", full disk", full+command+"full/out", "no space left on device")
+		try(v.name+", file size", "ulimit -f 8 && "+command+"long-"+v.name, "file too large")
+		if exists(filepath.Join(dir, "long-"+v.name, recordName)) {
+			t.Errorf("%s: the folder looks complete", v.name)
 		}
+	}
+	for _, v := range append(killed, others...) {
+		command := "exec offplane " + strings.Join(v.args, " ") + " "
+		to := func(dir string) string {
+			if v.file != "" {
+				return v.file + " " + dir + "/out" + filepath.Ext(v.name)
+			}
+			return "-o " + dir + "/out"
+		}
+		try(v.name+", no disk left", full+"(head -c 16k /dev/zero >full/ballast || true) 2>&- && "+command+to("full"), "no space left on device")
+		try(v.name+", read-only", sealed+command+to("bound"), "read-only file system")
+		if v.file == "" {
+			try(v.name+", read-only itself", sealed+command+"-o bound", "read-only file system")
+		}
+	}
+	for _, command := range []string{"line", "line --json", "scenario list", "scenario show quick", "table show", "ensemble list", "exact", "--help", "completion bash"} {
+		try(command+", nowhere to print", "exec offplane "+command+" >/dev/full", "no space left on device")
 	}
 }
 
 // No command needs a network: all work where there is none, not even a loopback.
 func TestNoNetwork(t *testing.T) {
 	dir := t.TempDir()
-	tiny, err := filepath.Abs("testdata/tiny.yaml")
-	if err != nil {
-		t.Fatal(err)
-	}
+	victims(t, dir)
+	writers(t, dir)
 	small := " --set 'image.from=268 deg' --set 'image.to=272 deg'"
 	script := strings.Join([]string{
 		"test \"$(cat /proc/net/route | wc -l)\" -le 1",
-		"offplane run " + tiny + " --quiet --frames -o run",
-		"offplane synth " + tiny + small + " --quiet -o data",
+		"offplane run tiny.yaml --quiet --frames -o run",
+		"offplane synth tiny.yaml" + small + " --quiet -o data2",
 		"offplane invert run/observation.fits --set box=11 --set track=11 --quiet -o maps",
 		"offplane compare --truth run/truth.fits --inferred maps/inferred.fits --quiet -o verdict",
 		"offplane explain run --polar 270,1.15 >explained",
 		"offplane table apply run/inferred.fits --recipe track=31 --recipe pixel=4.35 --quiet -o corrected",
-		"offplane table show >table",
-		"offplane scenario check " + tiny + " >checked",
+		"offplane table build fifty --features height --quiet -o table",
+		"offplane table show >shown",
+		"offplane scenario check tiny.yaml >checked",
 		"offplane line --height 1.1,1.2 >line",
 		"offplane ensemble show small >ensemble",
-		"offplane budget " + tiny + small + " --set 'image.outer=1.15 Rsun' --realisations 2 --quiet -o terms",
+		"offplane ensemble run few.yaml --quiet -o few",
+		"offplane ensemble submit few.yaml --engine other -o more >scripts",
+		"offplane budget tiny.yaml" + small + " --set 'image.outer=1.15 Rsun' --realisations 2 --quiet -o terms",
+		"offplane plan campaign.yaml --quiet -o plan",
+		"offplane exact >exact",
+		"offplane manual -o man",
 	}, "\n")
 	startCommand(t, dir, inNamespace(script)...).finish(0)
-	for _, folder := range []string{"run", "data", "maps", "verdict", "corrected", "terms"} {
+	for _, folder := range []string{"run", "data2", "maps", "verdict", "corrected", "table", "few", "terms", "plan"} {
 		if !exists(filepath.Join(dir, folder, recordName)) {
 			t.Errorf("%s is not complete", folder)
 		}
 	}
 }
+
+// The viewer is on the loopback and nowhere else: it answers where there is no other
+// network, listens at 127.0.0.1 alone, and ends by an interrupt.
+func TestViewOnLoopback(t *testing.T) {
+	dir := t.TempDir()
+	tiny, err := filepath.Abs("testdata/tiny.yaml")
+	if err != nil {
+		t.Fatal(err)
+	}
+	start(t, dir, "run", tiny, "--quiet", "-o", "run").finish(0)
+	if err := os.WriteFile(filepath.Join(dir, "look.py"), []byte(lookAround), 0o666); err != nil {
+		t.Fatal(err)
+	}
+	p := startCommand(t, dir, inNamespace("exec /usr/bin/python3 look.py")...)
+	p.finish(0)
+	if got := p.stdout.String(); got != "page\n127.0.0.1\nended\n" {
+		t.Errorf("%s%s", got, p.stderr.String())
+	}
+}
+
+// lookAround brings the loopback up (ioctl 0x8914, flags up and running), opens the page and
+// lists who listens (state 0A of proc(5)).
+const lookAround = `
+import fcntl, glob, signal, socket, struct, subprocess, urllib.request
+s = socket.socket()
+fcntl.ioctl(s, 0x8914, struct.pack("16sH14s", b"lo", 0x41, b""))
+view = subprocess.Popen(["offplane", "view", "run"], stdout=subprocess.PIPE, stderr=subprocess.DEVNULL, text=True)
+page = urllib.request.urlopen(view.stdout.readline().strip()).read()
+print("page" if b"<html" in page else page)
+for path in glob.glob("/proc/net/tcp*") + glob.glob("/proc/net/udp*"):
+    for line in open(path).read().splitlines()[1:]:
+        f = line.split()
+        if f[3] == "0A" or "udp" in path:
+            print(socket.inet_ntoa(struct.pack("<L", int(f[1].split(":")[0], 16))))
+view.send_signal(signal.SIGINT)
+view.wait()
+print("ended" if view.returncode >= 0 else view.returncode)
+`

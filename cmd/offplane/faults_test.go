@@ -6,39 +6,49 @@ import (
 	"bytes"
 	"errors"
 	"io/fs"
+	"maps"
 	"math/rand/v2"
 	"os"
 	"os/exec"
 	"path/filepath"
+	"slices"
 	"strings"
 	"testing"
 	"time"
 )
 
-// A victim is a command that is killed: its arguments without the folder.
+// A victim is a command that is killed or that finds no room: its arguments without the
+// place for its results.
 type victim struct {
 	name string
 	args []string
+	file string // flag of the one file that it writes, of the kind that name ends in; empty: -o DIR
 }
 
 // victims prepares what the commands read in dir.
 func victims(t *testing.T, dir string) []victim {
 	t.Helper()
-	tiny, err := filepath.Abs("testdata/tiny.yaml")
+	tiny, err := os.ReadFile("testdata/tiny.yaml")
 	if err != nil {
 		t.Fatal(err)
 	}
-	few := filepath.Join(dir, "few.yaml")
-	text := "base: " + tiny + "\nmembers: 4\nset: [image.from=268 deg, image.to=272 deg]\nparameters:\n  - {path: waves.amplitude, uniform: {from: 8 km/s, to: 16 km/s}}\n"
-	if err := os.WriteFile(few, []byte(text), 0o666); err != nil {
-		t.Fatal(err)
+	write := func(name, text string) {
+		if err := os.WriteFile(filepath.Join(dir, name), []byte(text), 0o666); err != nil {
+			t.Fatal(err)
+		}
 	}
-	data := filepath.Join(dir, "data")
-	start(t, dir, "run", tiny, "--quiet", "-o", data).finish(0)
+	const vary = "parameters:\n  - {path: waves.amplitude, uniform: {from: 8 km/s, to: 16 km/s}}\n"
+	write("tiny.yaml", string(tiny))
+	write("few.yaml", "base: tiny.yaml\nmembers: 4\nset: [image.from=268 deg, image.to=272 deg]\n"+vary)
+	// As few members as make a table.
+	write("fifty.yaml", "base: tiny.yaml\nmembers: 52\nset: [image.from=268 deg, image.to=272 deg, image.outer=1.15 Rsun]\n"+vary)
+	start(t, dir, "run", "tiny.yaml", "--frames", "--quiet", "-o", "data").finish(0)
+	start(t, dir, "ensemble", "run", "fifty.yaml", "--quiet", "-o", "fifty").finish(0)
 	return []victim{
-		{"run", []string{"run", tiny, "--quiet", "--workers", "2"}},
-		{"ensemble", []string{"ensemble", "run", few, "--quiet", "--workers", "2"}},
-		{"table", []string{"table", "apply", filepath.Join(data, "inferred.fits"), "--recipe", "track=31", "--recipe", "pixel=4.35", "--quiet"}},
+		{name: "run", args: []string{"run", "tiny.yaml", "--quiet", "--workers", "2"}},
+		{name: "ensemble", args: []string{"ensemble", "run", "few.yaml", "--quiet", "--workers", "2"}},
+		{name: "table-build", args: []string{"table", "build", "fifty", "--features", "height", "--quiet"}},
+		{name: "table-apply", args: []string{"table", "apply", "data/inferred.fits", "--recipe", "track=31", "--recipe", "pixel=4.35", "--quiet"}},
 	}
 }
 
@@ -105,7 +115,17 @@ func treeSums(t *testing.T, dir string, loose bool) map[string]string {
 	return out
 }
 
-// tryKills kills each command so many times at random moments. Whenever a folder has its
+// awaitWriting waits until a file is there, whole or in part, or the time is over.
+func awaitWriting(path string, atMost time.Duration) {
+	for began := time.Now(); time.Since(began) < atMost; time.Sleep(100 * time.Microsecond) {
+		if exists(path) || exists(path+part) {
+			return
+		}
+	}
+}
+
+// tryKills kills each command so many times, half of them at random moments, half while
+// a random file is being written. Whenever a folder has its
 // record, it holds the bytes of an undisturbed execution; whenever it has not, the files
 // under their own names are whole; the same command always goes on, without --force.
 func tryKills(t *testing.T, kills int) {
@@ -120,6 +140,7 @@ func tryKills(t *testing.T, kills int) {
 			if len(want) == 0 {
 				t.Fatal("no files")
 			}
+			names := slices.Sorted(maps.Keys(want))
 			random := rand.New(rand.NewPCG(1, 2))
 			out := filepath.Join(dir, v.name)
 			landed, finished := 0, 0
@@ -128,7 +149,11 @@ func tryKills(t *testing.T, kills int) {
 					t.Fatalf("%d of %d executions ended before they were killed", finished, finished+landed)
 				}
 				p := start(t, dir, append(v.args, "-o", out)...)
-				time.Sleep(time.Duration(random.Float64() * float64(took)))
+				if moment := time.Duration(random.Float64() * float64(took)); landed%2 == 0 {
+					time.Sleep(moment)
+				} else {
+					awaitWriting(filepath.Join(out, names[random.IntN(len(names))]), took)
+				}
 				p.cmd.Process.Kill()
 				err := p.cmd.Wait()
 				if x := (*exec.ExitError)(nil); errors.As(err, &x) && x.ExitCode() >= 0 {

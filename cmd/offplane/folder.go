@@ -58,16 +58,30 @@ func (p *program) open(dir string, j job, force bool) (*folder, error) {
 			}
 		}
 	}
-	_, err := os.Stat(dir)
-	f.made = errors.Is(err, fs.ErrNotExist)
-	if err := os.MkdirAll(dir, 0o777); err != nil {
-		return nil, unmade(err)
+	if err := f.take(); err != nil {
+		return nil, err
 	}
 	if err := f.claim(force); err != nil {
 		f.abandon()
 		return nil, err
 	}
 	return f, nil
+}
+
+// hold takes a folder for the time of a command that keeps other books of what it holds.
+func (p *program) hold(dir string) (*folder, error) {
+	f := &folder{dir: dir, warn: p.say, fresh: true}
+	return f, f.take()
+}
+
+// take makes the folder if need be and locks it.
+func (f *folder) take() error {
+	_, err := os.Stat(f.dir)
+	f.made = errors.Is(err, fs.ErrNotExist)
+	if err := os.MkdirAll(f.dir, 0o777); err != nil {
+		return unmade(err)
+	}
+	return f.lock()
 }
 
 // unmade is the error of a folder that cannot be made: a file in its place is misuse, a
@@ -79,10 +93,8 @@ func unmade(err error) error {
 	return err
 }
 
+// claim holds what is in the folder against the job and clears it for it.
 func (f *folder) claim(force bool) error {
-	if err := f.lock(); err != nil {
-		return err
-	}
 	var old job
 	text, err := io.ReadAll(f.marker)
 	if err != nil {
@@ -175,7 +187,12 @@ func (f *folder) write(name string, fill func(io.Writer) error) (err error) {
 		return err
 	}
 	w := bufio.NewWriterSize(out, 1<<16)
-	err = errors.Join(fill(w), w.Flush(), out.Close())
+	if err = fill(w); err == nil {
+		err = w.Flush()
+	}
+	if closing := out.Close(); err == nil {
+		err = closing
+	}
 	if err == nil {
 		err = os.Rename(out.Name(), f.path(name))
 	}

@@ -106,11 +106,15 @@ func writePlan(f *folder, a *plan.Plan) error {
 	text := func(s []byte) func(w io.Writer) error {
 		return func(w io.Writer) error { _, err := w.Write(s); return err }
 	}
+	if err := f.write("plan.json", a.WriteJSON); err != nil {
+		return err
+	}
 	table := a.Table()
-	return errors.Join(
-		f.write("plan.json", a.WriteJSON),
-		table.WriteFile(f.path("plan.ecsv")),
-		f.write("plan.txt", text([]byte(a.Text()))),
-		f.writeFigure("plan", report.Plan(a).Draw),
-	)
+	if err := table.WriteFile(f.path("plan.ecsv")); err != nil {
+		return err
+	}
+	if err := f.write("plan.txt", text([]byte(a.Text()))); err != nil {
+		return err
+	}
+	return f.writeFigure("plan", report.Plan(a).Draw)
 }

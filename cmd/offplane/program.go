@@ -35,15 +35,34 @@ type program struct {
 // Main executes the program with its arguments, without its name, and returns the
 // exit code.
 func Main(args []string, stdout, stderr io.Writer) int {
-	p := &program{args: args, stdout: stdout, stderr: stderr}
+	out := &output{w: stdout}
+	p := &program{args: args, stdout: out, stderr: stderr}
 	ctx, stop := withSignals(context.Background())
 	defer stop()
 	root := p.root()
 	root.SetArgs(args)
-	root.SetOut(stdout)
+	root.SetOut(out)
 	root.SetErr(stderr)
 	cmd, err := root.ExecuteContextC(ctx)
+	if f := (*fault)(nil); out.err != nil && !errors.As(err, &f) {
+		err = &fault{exitFailed, fmt.Errorf("results on standard output: %w", out.err)}
+	}
 	return p.exit(ctx, cmd, err)
+}
+
+// output is standard output; it remembers the first error, which few of those who print
+// look at.
+type output struct {
+	w   io.Writer
+	err error
+}
+
+func (o *output) Write(b []byte) (int, error) {
+	n, err := o.w.Write(b)
+	if o.err == nil {
+		o.err = err
+	}
+	return n, err
 }
 
 func (p *program) root() *cobra.Command {
