@@ -8,6 +8,7 @@ package report
 
 import (
 	"bytes"
+	"context"
 	_ "embed"
 	"encoding/base64"
 	"errors"
@@ -24,6 +25,7 @@ import (
 	"offplane/compare/stat"
 	"offplane/scenarios/units"
 	"offplane/synth/obs"
+	"offplane/synth/parallel"
 )
 
 // A Report is what WriteHTML needs.
@@ -69,9 +71,12 @@ func WriteHTML(w io.Writer, r *Report) error {
 			p.Flags = append(p.Flags, f)
 		}
 	}
-	for _, f := range r.Figures() {
-		p.Figures = append(p.Figures, r.show(&f))
-	}
+	figures := r.Figures()
+	p.Figures = make([]pageFigure, len(figures))
+	_ = parallel.For(context.Background(), len(figures), 0, func(_, i int) error { // nothing can fail
+		p.Figures[i] = r.show(&figures[i])
+		return nil
+	})
 	if r.Budget != nil {
 		p.Budget = r.budget()
 	}
