@@ -36,7 +36,7 @@ func (w *planner) explain(ctx context.Context) error {
 	if err != nil {
 		return err
 	}
-	p.Density, p.Signal, p.From, p.To = law.densest, law.signal, law.region.from, law.region.to
+	p.Density = law.densest
 	hours := float64(c.scenario.Scenario.Camera.Duration) / 3600
 	const endless = 1e7 // [h]
 	forever, err := w.predict(ctx, c.Design, If{1, 1, endless / hours, [2]bool{}})

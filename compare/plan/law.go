@@ -24,59 +24,79 @@ import (
 // recipe itself makes of the noise-free waves with noise added.
 type law struct {
 	*reference
-	abc     [][3]float64 // of each bin, for T in hours
-	nodes   []node
-	seen    [][]scatter // of each node and bin
-	chance  []Outcome   // scatter of the maps' own outcomes, of each node
-	cadence []node      // those with thinned frames, the first of which is not
-	thinned [][]scatter
+	abc     [][3]float64  // of each bin, for T in hours
+	hours   []float64     // durations of the nodes
+	seen    [][][]scatter // by duration, noise and bin
+	chance  [][]Outcome   // scatter of the maps' own outcomes, by duration and noise
+	cadence []float64     // of the frames that are left of noise-free waves [s]
+	thinned [][]scatter   // by these and bin, at mainNode
 }
 
-// Durations of the nodes [h] and noise ratios.
+// Durations of the nodes [h] beside one that the waves allow; noise over waves in the band,
+// the last of which leaves hardly a pixel, and noise as a share of all.
 const (
 	shortNode = 1.0
 	mainNode  = 2.0
 )
 
-var ratios = []float64{0, 0.3, 0.6, 0.85, 1.2}
+var (
+	ratios = []float64{0, 0.3, 0.6, 0.9, 1.3, 2.5}
+	shares = func() (u []float64) {
+		for _, x := range ratios {
+			u = append(u, share(x))
+		}
+		return u
+	}()
+)
+
+func share(ratio float64) float64 { return ratio * ratio / (1 + ratio*ratio) }
+
+// main is the index of mainNode.
+const main = 1
 
 // learnLaw tries the recipe on every node; cadence is the longest that is asked about [s].
 func (r *reference) learnLaw(ctx context.Context, cadence float64) (*law, error) {
-	w := &law{reference: r}
-	for _, x := range ratios {
-		w.nodes = append(w.nodes, node{mainNode, x, 1})
-	}
-	ends := []float64{shortNode}
+	w := &law{reference: r, hours: []float64{shortNode, mainNode}}
 	if long := float64(r.l.Effort.Waves) / 3600 / 6; long > 1.25*mainNode {
-		ends = append(ends, long)
+		w.hours = append(w.hours, long)
 	}
-	for _, t := range ends {
-		w.nodes = append(w.nodes, node{t, 0, 1}, node{t, endRatio, 1})
-	}
-	w.cadence = []node{w.nodes[0]}
+	thin := []int{1}
 	top := 1 / (2 * (r.recipe.Filter.Centre.Hz() + r.recipe.Filter.Width.Hz())) // as the scenario's own rule
 	for m := 2; float64(m-1)*r.cadence < cadence && float64(m)*r.cadence < top; m++ {
-		w.cadence = append(w.cadence, node{mainNode, 0, m})
+		thin = append(thin, m)
 	}
-	all := append(slices.Clone(w.nodes), w.cadence[1:]...)
-	report := r.o.report("estimator on the waves")
-	for i, n := range all {
+	report, done := r.o.report("estimator on the waves"), 0
+	try := func(n node) (sample, error) {
 		_, field, err := r.try(ctx, n)
+		if done++; report != nil && err == nil {
+			report(done, len(w.hours)*len(ratios)+len(thin)-1)
+		}
+		return field, err
+	}
+	for _, t := range w.hours {
+		var seen [][]scatter
+		var chances []Outcome
+		for _, x := range ratios {
+			field, err := try(node{t, x, 1})
+			if err != nil {
+				return nil, err
+			}
+			seen, chances = append(seen, r.region.scatters(field)), append(chances, chance(field))
+		}
+		w.seen, w.chance = append(w.seen, seen), append(w.chance, chances)
+	}
+	for _, m := range thin {
+		w.cadence = append(w.cadence, float64(m)*r.cadence)
+		if m == 1 {
+			w.thinned = append(w.thinned, w.seen[main][0])
+			continue
+		}
+		field, err := try(node{mainNode, 0, m})
 		if err != nil {
 			return nil, err
 		}
-		s := r.region.scatters(field)
-		if n.thin > 1 {
-			w.thinned = append(w.thinned, s)
-		} else {
-			w.seen = append(w.seen, s)
-			w.chance = append(w.chance, chance(field))
-		}
-		if report != nil {
-			report(i+1, len(all))
-		}
+		w.thinned = append(w.thinned, r.region.scatters(field))
 	}
-	w.thinned = slices.Insert(w.thinned, 0, w.seen[0])
 	for b := range r.region.bins() {
 		w.abc = append(w.abc, w.fit(b))
 	}
@@ -120,10 +140,10 @@ const leastYield = 0.5
 // fit returns a, b and c of a bin: least squares of relative errors, none negative.
 func (w *law) fit(b int) [3]float64 {
 	var rows [][3]float64
-	for i := range ratios {
-		v := w.seen[i][b].random
-		if y := v * v * w.nodes[i].hours; y > 0 && w.seen[i][b].yield > leastYield {
-			x := w.nodes[i].ratio * w.nodes[i].ratio
+	for i, x := range ratios {
+		v := w.seen[main][i][b]
+		if y := v.random * v.random * mainNode; y > 0 && v.yield > leastYield {
+			x *= x
 			rows = append(rows, [3]float64{1 / y, x / y, x * x / y})
 		}
 	}
@@ -159,9 +179,16 @@ func (w *law) fit(b int) [3]float64 {
 	return [3]float64{math.NaN(), math.NaN(), math.NaN()}
 }
 
-// formula is the law without what short series and long cadences add.
+// formula is the law without what short series and long cadences add. The noise counts as
+// no more than that which leaves pixels enough to tell their scatter: those few that more
+// of it leaves are the quiet ones.
 func (w *law) formula(b int, hours, ratio float64) float64 {
-	x := ratio * ratio
+	last := len(ratios) - 1
+	for last > 0 && math.IsNaN(w.seen[main][last][b].random) {
+		last--
+	}
+	x := min(ratio, ratios[last])
+	x *= x
 	q := w.abc[b]
 	return math.Sqrt((q[0] + q[1]*x + q[2]*x*x) / hours)
 }
@@ -169,112 +196,65 @@ func (w *law) formula(b int, hours, ratio float64) float64 {
 // at returns what maps of a design are like in one bin, without the noise of the
 // density. Between nodes it is linear in the logarithm of the duration and in N/(S+N).
 func (w *law) at(b int, hours, ratio, cadence float64) scatter {
-	u := ratio * ratio / (1 + ratio*ratio)
-	s := w.seen[0][b]
-	s.random = w.formula(b, hours, ratio)
-	get := func(of func(*scatter) float64) float64 {
-		y := w.noisy(b, u, of)
-		return y + w.lasting(b, hours, u, func(i int, main float64) float64 { return of(&w.seen[i][b]) - main }, of)
+	d, t := between(w.hours, hours, math.Log)
+	i, v := between(shares, share(ratio), nil)
+	mix := func(of func(d, i int) float64) float64 {
+		known := func(d, i int) float64 { // no pixel has a value at much noise
+			x := of(d, i)
+			for ; math.IsNaN(x) && i > 0; i-- {
+				x = of(d, i-1)
+			}
+			return x
+		}
+		return (known(d, i)*(1-v)+known(d, i+1)*v)*(1-t) + (known(d+1, i)*(1-v)+known(d+1, i+1)*v)*t
 	}
-	s.shift = get(func(s *scatter) float64 { return s.shift })
-	s.yield = min(max(get(func(s *scatter) float64 { return s.yield }), 0), 1)
-	if n := len(w.nodes); n > len(ratios)+2 {
-		s.spread = w.seen[n-2][b].spread // of the longest pieces, which tell it best
-	}
+	s := w.seen[main][0][b]
+	s.shift = mix(func(d, i int) float64 { return w.seen[d][i][b].shift })
+	s.yield = mix(func(d, i int) float64 { return w.seen[d][i][b].yield })
+	s.spread = w.seen[len(w.seen)-1][0][b].spread // of the longest pieces, which tell it best
 	// What the nodes were seen to have beside the formula: short series more, and those in
 	// which noise leaves the best pixels only, less.
-	beside := func(i int) float64 {
-		n := w.nodes[i]
-		if d := math.Log(w.seen[i][b].random / w.formula(b, n.hours, n.ratio)); !math.IsNaN(d) {
-			return d
-		}
-		return 0
-	}
-	main := w.noisyAt(u, beside)
-	s.random *= math.Exp(main + w.lasting(b, hours, u, func(i int, _ float64) float64 { return beside(i) - beside(w.twin(i)) }, nil))
+	s.random = w.formula(b, hours, ratio) * math.Exp(mix(func(d, i int) float64 {
+		return math.Log(w.seen[d][i][b].random / w.formula(b, w.hours[d], ratios[i]))
+	}))
 	w.sparse(&s, b, cadence)
 	return s
 }
 
-// endRatio is the noise of the nodes of other durations than the main one.
-const endRatio = 0.6
-
-// twin returns the main node with the noise of another node.
-func (w *law) twin(i int) int { return slices.Index(ratios, w.nodes[i].ratio) }
-
-// noisy interpolates the main nodes in u.
-func (w *law) noisy(b int, u float64, of func(*scatter) float64) float64 {
-	return w.noisyAt(u, func(i int) float64 { return of(&w.seen[i][b]) })
-}
-
-func (w *law) noisyAt(u float64, of func(i int) float64) float64 {
-	share := func(i int) float64 { return ratios[i] * ratios[i] / (1 + ratios[i]*ratios[i]) }
-	i := 0
-	for i+2 < len(ratios) && u > share(i+1) {
+// between finds the place of x in ascending numbers: x[i] (1-t) + x[i+1] t on a scale, nil
+// being the numbers' own. Beyond the ends t is that of the end.
+func between(xs []float64, x float64, scale func(float64) float64) (i int, t float64) {
+	for i+2 < len(xs) && x > xs[i+1] {
 		i++
 	}
-	t := min((u-share(i))/(share(i+1)-share(i)), 1)
-	lo, hi := of(i), of(i+1)
-	if math.IsNaN(hi) { // no pixel has a value at that much noise
-		return lo
+	if scale == nil {
+		scale = func(x float64) float64 { return x }
 	}
-	return lo*(1-t) + hi*t
-}
-
-// lasting interpolates what another duration than the main one changes.
-func (w *law) lasting(b int, hours, u float64, change func(i int, main float64) float64, of func(*scatter) float64) float64 {
-	first := len(ratios)
-	if hours > mainNode {
-		first += 2
-	}
-	if first >= len(w.nodes) {
-		return 0
-	}
-	t := math.Log(hours/mainNode) / math.Log(w.nodes[first].hours/mainNode)
-	t = min(max(t, 0), 1)
-	var y [2]float64
-	for k := range y {
-		main := 0.0
-		if of != nil {
-			main = of(&w.seen[w.twin(first+k)][b])
-		}
-		y[k] = change(first+k, main)
-	}
-	v := min(u*(1+endRatio*endRatio)/(endRatio*endRatio), 1)
-	if d := t * (y[0]*(1-v) + y[1]*v); !math.IsNaN(d) {
-		return d
-	}
-	return 0
+	lo, hi := scale(xs[i]), scale(xs[i+1])
+	return i, min(max((scale(x)-lo)/(hi-lo), 0), 1)
 }
 
 // sparse adds what a cadence does to noise-free waves beyond that of the reference.
 func (w *law) sparse(s *scatter, b int, cadence float64) {
-	i, t := 0, 0.0
-	for i+2 < len(w.thinned) && cadence > float64(w.cadence[i+1].thin)*w.reference.cadence {
-		i++
-	}
-	if i+1 >= len(w.thinned) {
+	if len(w.cadence) < 2 {
 		return
 	}
-	lo, hi := float64(w.cadence[i].thin)*w.reference.cadence, float64(w.cadence[i+1].thin)*w.reference.cadence
-	t = min(max((cadence-lo)/(hi-lo), 0), 1)
+	i, t := between(w.cadence, cadence, nil)
 	of := func(get func(*scatter) float64) float64 {
 		return get(&w.thinned[i][b])*(1-t) + get(&w.thinned[i+1][b])*t - get(&w.thinned[0][b])
 	}
-	first := w.thinned[0][b].random
-	s.random *= (1 + of(func(s *scatter) float64 { return s.random })/first)
+	s.random *= 1 + of(func(s *scatter) float64 { return s.random })/w.thinned[0][b].random
 	s.shift += of(func(s *scatter) float64 { return s.shift })
 	s.yield = min(max(s.yield+of(func(s *scatter) float64 { return s.yield }), 0), 1)
 }
 
-// nearest returns the scatter of single maps' outcomes at the node nearest to a design.
+// nearest returns the scatter of single maps' outcomes at the node nearest to a design;
+// nothing is known where no pixel is (ratio NaN).
 func (w *law) nearest(hours, ratio float64) Outcome {
-	best, least := 0, math.Inf(1)
-	for i, n := range w.nodes {
-		du := ratio*ratio/(1+ratio*ratio) - n.ratio*n.ratio/(1+n.ratio*n.ratio)
-		if d := math.Abs(math.Log(hours/n.hours)) + 2*math.Abs(du); d < least {
-			best, least = i, d
-		}
+	if math.IsNaN(ratio) {
+		return Outcome{math.NaN(), math.NaN(), math.NaN()}
 	}
-	return w.chance[best]
+	d, t := between(w.hours, hours, math.Log)
+	i, v := between(shares, share(ratio), nil)
+	return w.chance[d+int(math.Round(t))][i+int(math.Round(v))]
 }

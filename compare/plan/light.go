@@ -6,9 +6,7 @@ import (
 
 	"gonum.org/v1/gonum/mat"
 
-	"offplane/model"
 	"offplane/scenarios"
-	"offplane/synth"
 	"offplane/synth/line"
 )
 
@@ -20,12 +18,12 @@ type shine struct {
 	full    bool       // saturated
 }
 
-// shines returns the light of a scenario at some heights. Duration and number of frames
+// shine returns the light of a scenario at some heights. Duration and number of frames
 // do not matter to it.
-func shines(ctx context.Context, s scenarios.Scenario, light synth.Light, atom line.Emitter, corona *model.Corona, radii []float64, workers int) ([]shine, error) {
+func (p *predictor) shine(ctx context.Context, s scenarios.Scenario, radii []float64) ([]shine, error) {
 	s.Camera.Duration = max(3600, 20*s.Camera.Cadence) // short: the driver is not needed
 	s.Camera.SecondLine, s.Camera.Gaps = 1, nil
-	c, err := synth.NewSceneAs(ctx, &s, light, workers, synth.Assume{Corona: corona})
+	c, k, err := p.scene(ctx, &s)
 	if err != nil {
 		return nil, err
 	}
@@ -48,7 +46,7 @@ func shines(ctx context.Context, s scenarios.Scenario, light synth.Light, atom l
 			energy[l], o.energy[l] = parabola(x, q.Radiance, q.SNR)
 		}
 		// The inversion's density of what the lines shine without noise.
-		if _, slope, err := line.Density(atom, energy[1]/energy[0], v.Temperature.Kelvin(), radii[i]); err == nil {
+		if _, slope, err := line.Density(k.atom, energy[1]/energy[0], v.Temperature.Kelvin(), radii[i]); err == nil {
 			o.slope = math.Abs(slope)
 		} else {
 			o.slope = math.NaN()

@@ -2,6 +2,7 @@ package plan
 
 import (
 	"math"
+	"slices"
 
 	"offplane/compare/stat"
 )
@@ -23,21 +24,32 @@ type Outcome struct {
 	Yield      float64 // share of the pixels that have a field
 }
 
-// meets returns how far an outcome is from a goal: 0 or more if it is met. It is the
+// margin returns how far an outcome is from a goal: 0 or more if it is met. It is the
 // least of the three margins, each over its bound.
 func (o Outcome) margin(g *Goal) float64 {
-	m := min(1-o.Random/g.Random, 1-math.Abs(o.Systematic)/g.Systematic, o.Yield/g.Yield-1)
+	m := slices.Min(o.margins(g))
 	if math.IsNaN(m) {
 		return -1
 	}
 	return m
 }
 
+// margins are those of random error, shift and yield.
+func (o Outcome) margins(g *Goal) []float64 {
+	return []float64{1 - o.Random/g.Random, 1 - math.Abs(o.Systematic)/g.Systematic, o.Yield/g.Yield - 1}
+}
+
+// tightest names the bound with the least margin.
+func (o Outcome) tightest(g *Goal) string {
+	m := o.margins(g)
+	return []string{"random error", "shift", "yield"}[slices.Index(m, slices.Min(m))]
+}
+
 // A sample is the errors of many realisations: by realisation and pixel of the region,
 // NaN where a pixel has no value.
 type sample [][]float64
 
-// map1 returns the outcome of one realisation.
+// outcome returns that of one realisation.
 func outcome(x []float64) Outcome {
 	s := stat.Summarise(x)
 	return Outcome{(s.P84 - s.P16) / 2, s.Median, float64(s.Count) / float64(max(len(x), 1))}

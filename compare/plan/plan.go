@@ -68,8 +68,6 @@ type Plan struct {
 	Floor       Outcome    // of the same: no duration takes this away
 	Cases       []Case     // of the same: how the answer moves
 	Density     float64    // median of 1/2 ln(n/NE_SKY) without noise
-	Signal      []float64  // in-band rms of the waves, by bin [km/s]
-	From, To    []float64  // bins [solar radii]
 }
 
 // Chosen is the design that the plan speaks about.
@@ -103,7 +101,6 @@ func Run(ctx context.Context, l *Loaded, o Settings) (*Plan, error) {
 type planner struct {
 	*predictor
 	plan *Plan
-	lamp lamp
 }
 
 func (w *planner) predictAll(ctx context.Context, ds []Design) error {
@@ -136,7 +133,7 @@ func (w *planner) simulate(ctx context.Context) error {
 			return nil
 		}
 		var err error
-		if c.Trial, err = w.l.simulate(ctx, c.Design, e.Trials, random.Hash(w.l.Seed, uint64(n+1)), &w.lamp, w.o); err != nil {
+		if c.Trial, err = w.predictor.simulate(ctx, c.Design, e.Trials, random.Hash(w.l.Seed, uint64(n+1))); err != nil {
 			return err
 		}
 		w.calibrate()
@@ -230,9 +227,13 @@ func (w *planner) judge(c *Candidate) {
 	c.Error = Outcome{math.Hypot(k.Error.Random*c.Outcome.Random, known(r.chance.Random)), math.Hypot(k.Error.Systematic, known(r.chance.Systematic)), math.Hypot(k.Error.Yield, known(r.chance.Yield))}
 	c.Success = success(c.Outcome, c.Error, &w.l.Goal)
 	if t := c.Trial; t != nil {
-		// What was seen counts beside what was predicted, which weighs as much as four trials.
-		const weight = 4
-		c.Success = (weight*c.Success + float64(t.Met)) / (weight + float64(len(t.Each)))
+		// Trials count if they speak against the prediction, by two standard deviations. Good
+		// luck does not: the search would end at the design that had it.
+		const weight = 4 // of the prediction, in trials
+		n, met := float64(len(t.Each)), float64(t.Met)
+		if p := c.Success; met < n*p-2*math.Sqrt(n*p*(1-p)) {
+			c.Success = (weight*p + met) / (weight + n)
+		}
 	}
 }
 

@@ -10,6 +10,7 @@ import (
 	"offplane/scenarios"
 	"offplane/scenarios/units"
 	"offplane/synth"
+	"offplane/synth/camera"
 	"offplane/synth/line"
 )
 
@@ -17,30 +18,63 @@ import (
 type Prediction struct {
 	Outcome
 	Bins    []scatter
-	Speed   float64 // random error of ln v, mean of squares over the region
+	Speed   float64 // random error of ln v, mean of squares over the pixels with a field
 	Photons float64 // part of it that photons of the first line make
 	Density float64 // random error of 1/2 ln n by photons of both lines
-	Ratio   float64 // rms of noise over waves in the band, mean of squares
+	Ratio   float64 // rms of noise over waves in the band, mean of squares over the region
 	chance  Outcome // scatter of single maps
 }
 
-// A predictor predicts designs. What is costly is kept: waves of each size of pixel,
-// laws of each recipe, light of each camera.
+// A predictor predicts and simulates designs. What is costly is kept: field lines, waves of
+// each size of pixel, laws of each recipe, light of each camera.
 type predictor struct {
 	l       *Loaded
 	o       *Settings
 	cadence float64           // longest of all designs [s]
-	stills  map[string]*still // by size of pixel, as coronae
+	stills  map[string]*still // by size of pixel
 	laws    map[string]*law
 	light   map[string][]shine
 	coronae map[string]*corona
 }
 
-// A corona is what the light of one size of pixel needs.
+// A corona is what the light of the target needs; its seed is the campaign's, whatever that
+// of the waves is.
 type corona struct {
-	light  synth.Light
-	atom   line.Emitter
-	corona *model.Corona
+	light synth.Light
+	atom  line.Emitter // of the inversion
+	model *model.Corona
+}
+
+// corona returns that of a scenario, with its field lines traced.
+func (p *predictor) corona(ctx context.Context, s scenarios.Scenario) (*corona, error) {
+	key := fmt.Sprint(s.Image.Pixel, camera.Reach(s.Camera, s.Image.Pixel.Rad()))
+	if k := p.coronae[key]; k != nil {
+		return k, nil
+	}
+	s.Seed = p.l.Seed
+	k := &corona{}
+	var err error
+	if k.light, _, err = trial.Light(&s); err != nil {
+		return nil, err
+	}
+	if k.atom, _, err = trial.Model("inversion.line", s.Inversion.Line, s.Inversion.Helium); err != nil {
+		return nil, err
+	}
+	if k.model, err = synth.NewCorona(ctx, &s, k.light, p.o.Workers); err != nil {
+		return nil, err
+	}
+	p.coronae[key] = k
+	return k, nil
+}
+
+// scene returns that of a scenario.
+func (p *predictor) scene(ctx context.Context, s *scenarios.Scenario) (*synth.Scene, *corona, error) {
+	k, err := p.corona(ctx, *s)
+	if err != nil {
+		return nil, nil, err
+	}
+	c, err := synth.NewSceneAs(ctx, s, k.light, p.o.Workers, synth.Assume{Corona: k.model})
+	return c, k, err
 }
 
 func newPredictor(l *Loaded, o *Settings, ds []Design) *predictor {
@@ -73,7 +107,7 @@ func (p *predictor) law(ctx context.Context, s *scenarios.Scenario) (*law, error
 	q := p.stills[s.Image.Pixel.String()]
 	if q == nil {
 		var err error
-		if q, err = p.l.observe(ctx, *s, p.o); err != nil {
+		if q, err = p.observe(ctx, *s); err != nil {
 			return nil, err
 		}
 		p.stills[s.Image.Pixel.String()] = q
@@ -98,26 +132,11 @@ func (p *predictor) shines(ctx context.Context, s scenarios.Scenario, w *law) ([
 	if x := p.light[key]; x != nil {
 		return x, nil
 	}
-	k := p.coronae[s.Image.Pixel.String()]
-	if k == nil {
-		k = &corona{}
-		var err error
-		if k.light, _, err = trial.Light(&s); err != nil {
-			return nil, err
-		}
-		if k.atom, _, err = trial.Model("inversion.line", s.Inversion.Line, s.Inversion.Helium); err != nil {
-			return nil, err
-		}
-		if k.corona, err = synth.NewCorona(ctx, &s, k.light, p.o.Workers); err != nil {
-			return nil, err
-		}
-		p.coronae[s.Image.Pixel.String()] = k
-	}
 	radii := make([]float64, w.region.bins())
 	for b := range radii {
 		radii[b] = (w.region.from[b] + w.region.to[b]) / 2
 	}
-	x, err := shines(ctx, s, k.light, k.atom, k.corona, radii, p.o.Workers)
+	x, err := p.shine(ctx, s, radii)
 	if err != nil {
 		return nil, err
 	}
@@ -145,7 +164,7 @@ func (p *predictor) predict(ctx context.Context, d *Design, as If) (*Prediction,
 
 func (w *law) predict(x []shine, s *scenarios.Scenario, hours, frames, second float64, as If) *Prediction {
 	r := &Prediction{}
-	var weight float64
+	var valid, all float64
 	for b, y := range x {
 		ratio := y.doppler * math.Sqrt(2*float64(s.Camera.Cadence)*w.band) / (w.signal[b] * as.Amplitude)
 		if as.Dark[0] {
@@ -160,18 +179,21 @@ func (w *law) predict(x []shine, s *scenarios.Scenario, hours, frames, second fl
 			q.yield = 0
 		} else {
 			n := float64(q.pixels)
-			weight += n
+			r.Ratio += n * ratio * ratio
+			all += n
+			n *= q.yield
+			valid += n
 			quiet := w.at(b, hours, 0, float64(s.Camera.Cadence)).random
 			r.Speed += n * q.random * q.random
 			r.Photons += n * max(0, q.random*q.random-quiet*quiet)
 			r.Density += n * density * density
-			r.Ratio += n * ratio * ratio
 			q.random = math.Hypot(q.random, density)
 		}
 		r.Bins = append(r.Bins, q)
 	}
-	for _, v := range []*float64{&r.Speed, &r.Photons, &r.Density, &r.Ratio} {
-		*v = math.Sqrt(*v / weight)
+	r.Ratio = math.Sqrt(r.Ratio / all)
+	for _, v := range []*float64{&r.Speed, &r.Photons, &r.Density} {
+		*v = math.Sqrt(*v / valid)
 	}
 	r.Outcome = mixture(r.Bins)
 	r.chance = w.nearest(hours, r.Ratio)

@@ -7,9 +7,9 @@ import (
 	"offplane/compare/budget"
 	"offplane/compare/trial"
 	"offplane/invert"
-	"offplane/scenarios"
-	"offplane/scenarios/strict"
 	"offplane/synth"
+	"offplane/synth/line"
+	"offplane/synth/obs"
 	"offplane/synth/random"
 )
 
@@ -23,45 +23,57 @@ type Simulation struct {
 	Met     int // realisations that met the goal
 }
 
-// A lamp keeps the light of the last design: designs that differ in what the camera makes
-// of it alone share it.
-type lamp struct {
-	key   string
-	light *synth.Exposed
-	truth *synth.Truth
-	atom  invertEmitter
+// An exposure is the light of many observations of one design, one after the other, before
+// it passes the camera: designs that differ in photons alone can share it.
+type exposure struct {
+	light  *synth.Exposed
+	truth  obs.Maps
+	atom   line.Emitter
+	trials int
 }
 
-// invertEmitter is the atomic model of the inversion.
-type invertEmitter interface {
-	Emissivities(n, t, r float64) (j1, j2 float64)
-}
-
-// simulate takes a design through the whole chain: one long observation in pieces, each
-// as long as the design's. Seed addresses waves and noise.
-func (l *Loaded) simulate(ctx context.Context, d *Design, trials int, seed uint64, last *lamp, o *Settings) (*Simulation, error) {
+// expose makes the light of a design, as long as all of its trials. Seed addresses waves
+// and noise.
+func (p *predictor) expose(ctx context.Context, d *Design, trials int, seed uint64) (*exposure, error) {
 	s := d.scenario.Scenario
 	s.Seed = random.Hash(seed, 0x747269616c) >> 11 // "trial"
 	s.Camera = budget.Lasting(s.Camera, synth.Frames(&s), trials)
-	if err := last.turn(ctx, s, o); err != nil {
+	scene, k, err := p.scene(ctx, &s)
+	if err != nil {
 		return nil, err
 	}
-	long, err := last.light.Develop(ctx, s.Camera, true, o.Workers)
+	light, truth, err := scene.Expose(ctx, p.o.Workers, p.o.report("trials"))
+	if err != nil {
+		return nil, err
+	}
+	return &exposure{light, truth.Maps, k.atom, trials}, nil
+}
+
+// simulate takes a design through the whole chain.
+func (p *predictor) simulate(ctx context.Context, d *Design, trials int, seed uint64) (*Simulation, error) {
+	e, err := p.expose(ctx, d, trials, seed)
+	if err != nil {
+		return nil, err
+	}
+	return p.try(ctx, d, e)
+}
+
+// try makes observations of the light and inverts them.
+func (p *predictor) try(ctx context.Context, d *Design, e *exposure) (*Simulation, error) {
+	s := d.scenario.Scenario
+	long, err := e.light.Develop(ctx, budget.Lasting(s.Camera, synth.Frames(&s), e.trials), true, p.o.Workers)
 	if err != nil {
 		return nil, err
 	}
 	r := &Simulation{}
+	if r.region, err = newRegion(&p.l.Target, long, e.truth); err != nil {
+		return nil, err
+	}
 	var speed sample
-	truth := last.truth.Maps
-	sky, kink := truth.Get("B_SKY").Data, truth.Get("SPEED_SKY").Data
-	for k := range trials {
-		part := synth.Piece(long, k, trials)
-		if k == 0 {
-			if r.region, err = newRegion(&l.Target, long, truth); err != nil {
-				return nil, err
-			}
-		}
-		res, err := invert.Invert(ctx, part, last.atom, trial.Options(s.Inversion), o.Workers, nil)
+	sky, kink := e.truth.Get("B_SKY").Data, e.truth.Get("SPEED_SKY").Data
+	for k := range e.trials {
+		part := synth.Piece(long, k, e.trials)
+		res, err := invert.Invert(ctx, part, e.atom, trial.Options(s.Inversion), p.o.Workers, nil)
 		if err != nil {
 			return nil, err
 		}
@@ -82,7 +94,7 @@ func (l *Loaded) simulate(ctx context.Context, d *Design, trials int, seed uint6
 		r.Maps, speed = append(r.Maps, b), append(speed, v)
 		one := outcome(b)
 		r.Each = append(r.Each, one)
-		if one.margin(&l.Goal) >= 0 {
+		if one.margin(&p.l.Goal) >= 0 {
 			r.Met++
 		}
 	}
@@ -110,36 +122,4 @@ func mean(os []Outcome) (m Outcome) {
 		*q.to /= n
 	}
 	return m
-}
-
-// turn makes the light of a scenario, unless it is the last one's.
-func (m *lamp) turn(ctx context.Context, s scenarios.Scenario, o *Settings) error {
-	dark := s
-	c := &dark.Camera
-	c.Noise, c.Aperture, c.Throughput, c.Exposure, c.Coadds = false, 1, 1, 0, 1
-	c.ReadNoise, c.FullWell, c.Digit, c.FlatField, c.Background, c.KCorona = 0, 0, 0, 0, 0, 0
-	if s.Camera.Diffraction {
-		c.Aperture = s.Camera.Aperture // blurs
-	}
-	key := string(strict.Encode(dark))
-	if key == m.key {
-		return nil
-	}
-	light, _, err := trial.Light(&s)
-	if err != nil {
-		return err
-	}
-	if m.atom, _, err = trial.Model("inversion.line", s.Inversion.Line, s.Inversion.Helium); err != nil {
-		return err
-	}
-	scene, err := synth.NewScene(ctx, &s, light, o.Workers)
-	if err != nil {
-		return err
-	}
-	m.key = ""
-	if m.light, m.truth, err = scene.Expose(ctx, o.Workers, o.report("trials")); err != nil {
-		return err
-	}
-	m.key = key
-	return nil
 }

@@ -36,8 +36,9 @@ func (p *Plan) Text() string {
 	if len(p.Limit) > 0 {
 		say("Limit. %s", p.limitText())
 	}
+	say("Were it otherwise (chances by prediction alone; as planned %s):", percent(p.Cases[0].Success))
 	for _, q := range p.Cases[1:] {
-		say("With %s: random error %s, shift %+.1f %%, yield %s, chance %s.", q.Name, percent(q.Outcome.Random), 100*q.Outcome.Systematic, percent(q.Outcome.Yield), percent(q.Success))
+		say("with %s: random error %s, shift %+.1f %%, yield %s, chance %s", q.Name, percent(q.Outcome.Random), 100*q.Outcome.Systematic, percent(q.Outcome.Yield), percent(q.Success))
 	}
 	say("")
 	say("Basis. %d designs predicted from %.3g h of simulated waves%s; seed %d, offplane %s.", len(p.Candidates), float64(l.Effort.Waves)/3600, p.basis(), l.Seed, p.Version)
@@ -59,11 +60,14 @@ func (p *Plan) limitText() string {
 	g, c := &p.Campaign.Goal, p.Chosen()
 	now := c.Outcome.margin(g)
 	best := p.Limit[0]
+	helps := best.Margin > now+0.01
 	switch {
-	case best.Margin <= now+0.01:
+	case now >= 0 && !helps:
+		return fmt.Sprintf("The tightest bound, that of the %s, is kept with %.0f %% to spare; neither time nor photons\nwould add to that.", c.Outcome.tightest(g), 100*now)
+	case !helps:
 		return "No single thing helps: the goal is out of reach of this corona, camera and recipe together."
 	case now >= 0:
-		return fmt.Sprintf("The tightest of the three bounds is kept with %.0f %% to spare. What limits it most is %s\n(without: %.0f %%).", 100*now, best.Name, 100*best.Margin)
+		return fmt.Sprintf("The tightest bound, that of the %s, is kept with %.0f %% to spare. What limits it most is %s\n(without: %.0f %%).", c.Outcome.tightest(g), 100*now, best.Name, 100*best.Margin)
 	case best.Margin >= 0:
 		return fmt.Sprintf("Limited by %s: the goal would be met by %s.", best.Name, best.Change)
 	}

@@ -42,40 +42,33 @@ const restful = 30
 type still struct {
 	frames  *obs.Observation
 	truth   *synth.Truth
+	atom    line.Emitter
 	cadence float64 // [s]
 }
 
 // observe simulates the waves once, without noise.
-func (l *Loaded) observe(ctx context.Context, s scenarios.Scenario, o *Settings) (*still, error) {
+func (p *predictor) observe(ctx context.Context, s scenarios.Scenario) (*still, error) {
 	cadence := min(restful, math.Floor(450/float64(s.Waves.Spectrum.High)*10)/10)
 	c := &s.Camera
-	c.Cadence, c.Duration = units.Duration(cadence), l.Effort.Waves
+	c.Cadence, c.Duration = units.Duration(cadence), p.l.Effort.Waves
 	c.Noise, c.Sequential, c.TuningTime, c.DeadTime, c.Order = false, false, 0, 0, []int{}
 	c.Exposure, c.Coadds = min(c.Exposure, 1), 1
 	c.SecondLine, c.Switching = 4, "together"
 	c.Lost, c.Gaps, c.Pointing, c.FullWell, c.Digit, c.FlatField, c.Brightening = 0, nil, nil, 0, 0, 0, 0
-	s.Seed = random.Hash(l.Seed, 0x77617665) >> 11 // "wave"
-	light, _, err := trial.Light(&s)
+	s.Seed = random.Hash(p.l.Seed, 0x77617665) >> 11 // "wave"
+	scene, k, err := p.scene(ctx, &s)
 	if err != nil {
 		return nil, err
 	}
-	scene, err := synth.NewScene(ctx, &s, light, o.Workers)
-	if err != nil {
-		return nil, err
-	}
-	frames, truth, err := scene.Observe(ctx, o.Workers, o.report("waves"))
-	return &still{frames, truth, cadence}, err
+	frames, truth, err := scene.Observe(ctx, p.o.Workers, p.o.report("waves"))
+	return &still{frames, truth, k.atom, cadence}, err
 }
 
 // newReference is what a recipe needs of a still.
 func (l *Loaded) newReference(ctx context.Context, recipe scenarios.Inversion, q *still, o *Settings) (*reference, error) {
-	r := &reference{l: l, o: o, recipe: recipe, cadence: q.cadence, band: recipe.Filter.Width.Hz() * math.Sqrt(math.Pi/2)}
+	r := &reference{l: l, o: o, recipe: recipe, atom: q.atom, cadence: q.cadence, band: recipe.Filter.Width.Hz() * math.Sqrt(math.Pi/2)}
 	if recipe.Filter.Means == "sigma" {
 		r.band *= math.Sqrt2
-	}
-	var err error
-	if r.atom, _, err = trial.Model("inversion.line", recipe.Line, recipe.Helium); err != nil {
-		return nil, err
 	}
 	if err := r.learn(ctx, q.frames, q.truth); err != nil {
 		return nil, err
@@ -84,23 +77,31 @@ func (l *Loaded) newReference(ctx context.Context, recipe scenarios.Inversion, q
 	return r, nil
 }
 
-// bin is about how high a bin of the region is [solar radii].
-const bin = 0.05
+// A bin of the region is about so high [solar radii], so that noise and waves change little
+// within it, and has so many pixels.
+const (
+	bin     = 0.025
+	crowded = 20
+)
 
 // newRegion finds the pixels of the target that have a truth.
 func newRegion(t *Target, o *obs.Observation, truth obs.Maps) (g region, err error) {
 	inner, outer := float64(t.Inner), float64(t.Outer)
-	n := max(1, int(math.Round((outer-inner)/bin)))
+	sky := truth.Get("B_SKY").Data
+	var up []float64 // place of each pixel between inner and outer
+	for i, p := range o.Pixels {
+		h, _ := o.Grid.Polar(int(p)%o.Grid.Nx, int(p)/o.Grid.Nx)
+		if u := (h - inner) / (outer - inner); u >= 0 && u < 1 && sky[p] > 0 {
+			g.pixels, up = append(g.pixels, i), append(up, u)
+		}
+	}
+	n := max(1, min(int(math.Round((outer-inner)/bin)), len(up)/crowded))
 	for b := range n {
 		g.from = append(g.from, inner+(outer-inner)*float64(b)/float64(n))
 		g.to = append(g.to, inner+(outer-inner)*float64(b+1)/float64(n))
 	}
-	sky := truth.Get("B_SKY").Data
-	for i, p := range o.Pixels {
-		h, _ := o.Grid.Polar(int(p)%o.Grid.Nx, int(p)/o.Grid.Nx)
-		if b := int(math.Floor((h - inner) / (outer - inner) * float64(n))); b >= 0 && b < n && sky[p] > 0 {
-			g.pixels, g.bin = append(g.pixels, i), append(g.bin, b)
-		}
+	for _, u := range up {
+		g.bin = append(g.bin, int(u*float64(n)))
 	}
 	if len(g.pixels) < leastPixels {
 		return g, fmt.Errorf("target: %d pixels lie in the region, %d are too few to tell scatter: a wider wedge or smaller pixels would do", len(g.pixels), leastPixels-1)
