@@ -76,7 +76,19 @@ var planMarks = []struct {
 	{"design", faint, vgdraw.CircleGlyph{}},
 	{"none is better in time, error and yield", blue, vgdraw.CircleGlyph{}},
 	{"simulated", orange, vgdraw.PyramidGlyph{}},
-	{"chosen", vermillion, vgdraw.RingGlyph{}},
+	{"chosen", vermillion, ring{}},
+}
+
+// A ring is a circle with a stroke wide enough to be seen behind symbols.
+type ring struct{}
+
+func (ring) DrawGlyph(c *vgdraw.Canvas, style vgdraw.GlyphStyle, at vg.Point) {
+	var p vg.Path
+	p.Move(vg.Point{X: at.X + style.Radius, Y: at.Y})
+	p.Arc(at, style.Radius, 0, 2*math.Pi)
+	p.Close()
+	c.SetLineStyle(vgdraw.LineStyle{Color: style.Color, Width: style.Radius / 3})
+	c.Stroke(p)
 }
 
 // planDesigns draws one number of every design against its hours, and the bound of it.
@@ -102,9 +114,7 @@ func planDesigns(a *axes, p *plan.Plan, of func(plan.Outcome) float64, goal floa
 		}
 	}
 	q := p.Chosen()
-	for _, radius := range []float64{13, 14, 15, 16} {
-		dot(3, q.Hours, q.Outcome, radius)
-	}
+	dot(3, q.Hours, q.Outcome, 16)
 }
 
 // planCurve draws the error against the duration.
