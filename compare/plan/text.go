@@ -3,6 +3,7 @@ package plan
 import (
 	"fmt"
 	"math"
+	"strconv"
 	"strings"
 )
 
@@ -67,7 +68,7 @@ func (p *Plan) limitText() string {
 	case !helps:
 		return "No single thing helps: the goal is out of reach of this corona, camera and recipe together."
 	case now >= 0:
-		return fmt.Sprintf("The tightest bound, that of the %s, is kept with %.0f %% to spare. What limits it most is %s\n(without: %.0f %%).", c.Outcome.tightest(g), 100*now, best.Name, 100*best.Margin)
+		return fmt.Sprintf("The tightest bound, that of the %s, is kept with %.0f %% to spare.\nWhat limits it most is %s (without: %.0f %% to spare).", c.Outcome.tightest(g), 100*now, best.Name, 100*best.Margin)
 	case best.Margin >= 0:
 		return fmt.Sprintf("Limited by %s: the goal would be met by %s.", best.Name, best.Change)
 	}
@@ -78,7 +79,11 @@ func (p *Plan) limitText() string {
 func (c *Candidate) describe(l *Loaded) string {
 	var q []string
 	for j, v := range c.Values {
-		q = append(q, strings.ReplaceAll(l.Vary[j].What, "_", " ")+" "+v)
+		what := l.Vary[j].What
+		if share, err := strconv.ParseFloat(v, 64); err == nil && (what == "second_line" || what == "split") {
+			v = fmt.Sprintf("%.3g %% of the time", 100*share)
+		}
+		q = append(q, strings.ReplaceAll(what, "_", " ")+" "+v)
 	}
 	return strings.Join(q, ", ")
 }
