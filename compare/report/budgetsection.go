@@ -17,7 +17,7 @@ type budgetSection struct {
 	Sentence, Domain string
 	Figure           pageFigure
 	Rows             []budgetLine
-	Off              string // what is not in the scenario
+	SHA256           string // of its scenario
 }
 
 type budgetLine struct {
@@ -28,7 +28,7 @@ type budgetLine struct {
 // budget lays the error budget out for the page.
 func (r *Report) budget() *budgetSection {
 	b := r.Budget
-	s := &budgetSection{Sentence: budgetSentence(b), Domain: budgetDomain(b), Figure: r.show(Budget(b)), Off: strings.Join(absent(b), ", ")}
+	s := &budgetSection{Sentence: budgetSentence(b), Domain: budgetDomain(b), Figure: r.show(Budget(b)), SHA256: b.ScenarioSHA256}
 	if b.ScenarioSHA256 != r.Verdict.Summary.ScenarioSHA256 {
 		s.Sentence += " It is the budget of another image or seed of the same corona, observation and inversion."
 	}

@@ -80,6 +80,9 @@ func WriteHTML(w io.Writer, r *Report) error {
 	if r.Budget != nil {
 		p.Budget = r.budget()
 	}
+	if q := r.Pixel; q != nil {
+		p.Place = fmt.Sprintf("%.1f,%.1f", q.Place.SolarX, q.Place.SolarY)
+	}
 	var err error
 	if p.Downloads, err = r.downloads(); err != nil {
 		return fmt.Errorf("report: %w", err)
@@ -174,6 +177,7 @@ type page struct {
 	Pixel      string
 	Figures    []pageFigure
 	Budget     *budgetSection // nil without
+	Place      string         // of the pixel, X,Y [arcsec]; empty without
 	Ratios     []ratioRow
 	Heights    []heightRow
 	Structures []structureRow

@@ -286,7 +286,7 @@ func TestGlyphs(t *testing.T) {
 	if err != nil {
 		t.Fatal(err)
 	}
-	for _, r := range "−⁻⁰¹²³⁴⁵⁶⁷⁸⁹×√μ☉″[]" {
+	for _, r := range "−⁻⁰¹²³⁴⁵⁶⁷⁸⁹×√μ☉″[]°±–“”" {
 		var b sfnt.Buffer
 		if i, err := f.GlyphIndex(&b, r); err != nil || i == 0 {
 			t.Errorf("no glyph for %q", r)
@@ -307,7 +307,7 @@ var (
 
 func TestPage(t *testing.T) {
 	c := comparetest.Wedge(0.01)
-	c.Options.Text = "seed: 7\n"
+	c.Options.Text, c.Options.Files = "seed: 7\n", []compare.File{{Name: "grid.fits", SHA256: "aa11"}}
 	r := reportOf(t, c)
 	r.Pixel, r.Budget = somePixel(), someBudget()
 	s := render(t, r)
@@ -361,7 +361,8 @@ func TestPage(t *testing.T) {
 			t.Errorf("alt text %d says little: %q", i+1, alts[i][1])
 		}
 	}
-	for _, p := range append(r.Verdict.Summary.Sentences()[1:], "invented data for a test", r.Verdict.Summary.ScenarioSHA256, "1.05–1.10", "incoherent", "Not for operational use", "low-beta", "WKB", "closed") {
+	for _, p := range append(r.Verdict.Summary.Sentences()[1:], "invented data for a test", r.Verdict.Summary.ScenarioSHA256, "1.05–1.10", "incoherent", "Not for operational use", "low-beta", "WKB", "closed",
+		"aa11", "grid.fits", "offplane explain FOLDER --at") {
 		if !strings.Contains(s, p) {
 			t.Errorf("the page lacks %q", p)
 		}
