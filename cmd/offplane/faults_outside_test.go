@@ -9,8 +9,16 @@ import (
 	"testing"
 )
 
-// TestKills is the short one of the two; the other is in .ci/soak.
-func TestKills(t *testing.T) { tryKills(t, 20) }
+// TestFaults prepares what commands read once and has them killed, without room and without
+// a network. The long trial of kills is in .ci/soak.
+func TestFaults(t *testing.T) {
+	dir := t.TempDir()
+	killed := victims(t, dir)
+	t.Run("kills", func(t *testing.T) { tryKills(t, dir, killed, 20) })
+	t.Run("room", func(t *testing.T) { tryNoRoom(t, dir, killed, writers(t, dir)) })
+	t.Run("network", func(t *testing.T) { tryNoNetwork(t, dir) })
+	t.Run("loopback", func(t *testing.T) { tryLoopback(t, dir) })
+}
 
 // far is how many of the writers take little time to their results.
 const far = 4
@@ -57,8 +65,7 @@ func inNamespace(script string) []string {
 // A full disk, a limit on the size of files and a folder that cannot be written to give
 // one message, exit code 1, and nothing that looks complete. The victims get as far as
 // their results; for the others the disk is full from the start.
-func TestNoRoom(t *testing.T) {
-	dir := t.TempDir()
+func tryNoRoom(t *testing.T, dir string, killed, others []victim) {
 	const (
 		full   = "mkdir -p full && mount -t tmpfs -o size=16k none full && "
 		sealed = "mkdir -p bound && mount --bind bound bound && mount -o remount,bind,ro bound && "
@@ -73,7 +80,6 @@ func TestNoRoom(t *testing.T) {
 			}
 		})
 	}
-	killed, others := victims(t, dir), writers(t, dir)
 	for _, v := range append(killed, others[:far]...) {
 		command := "exec offplane " + strings.Join(v.args, " ") + " -o "
 		try(v.name+", full disk", full+command+"full/out", "no space left on device")
@@ -96,16 +102,13 @@ func TestNoRoom(t *testing.T) {
 			try(v.name+", read-only itself", sealed+command+"-o bound", "read-only file system")
 		}
 	}
-	for _, command := range []string{"line", "line --json", "scenario list", "scenario show quick", "table show", "ensemble list", "exact", "--help", "completion bash"} {
+	for _, command := range []string{"line", "line --json", "scenario list", "scenario show quick", "table show", "ensemble list", "--help", "completion bash"} {
 		try(command+", nowhere to print", "exec offplane "+command+" >/dev/full", "no space left on device")
 	}
 }
 
 // No command needs a network: all work where there is none, not even a loopback.
-func TestNoNetwork(t *testing.T) {
-	dir := t.TempDir()
-	victims(t, dir)
-	writers(t, dir)
+func tryNoNetwork(t *testing.T, dir string) {
 	small := " --set 'image.from=268 deg' --set 'image.to=272 deg'"
 	script := strings.Join([]string{
 		"test \"$(cat /proc/net/route | wc -l)\" -le 1",
@@ -137,13 +140,7 @@ func TestNoNetwork(t *testing.T) {
 
 // The viewer is on the loopback and nowhere else: it answers where there is no other
 // network, listens at 127.0.0.1 alone, and ends by an interrupt.
-func TestViewOnLoopback(t *testing.T) {
-	dir := t.TempDir()
-	tiny, err := filepath.Abs("testdata/tiny.yaml")
-	if err != nil {
-		t.Fatal(err)
-	}
-	start(t, dir, "run", tiny, "--quiet", "-o", "run").finish(0)
+func tryLoopback(t *testing.T, dir string) {
 	if err := os.WriteFile(filepath.Join(dir, "look.py"), []byte(lookAround), 0o666); err != nil {
 		t.Fatal(err)
 	}
@@ -160,7 +157,7 @@ const lookAround = `
 import fcntl, glob, signal, socket, struct, subprocess, urllib.request
 s = socket.socket()
 fcntl.ioctl(s, 0x8914, struct.pack("16sH14s", b"lo", 0x41, b""))
-view = subprocess.Popen(["offplane", "view", "run"], stdout=subprocess.PIPE, stderr=subprocess.DEVNULL, text=True)
+view = subprocess.Popen(["offplane", "view", "data"], stdout=subprocess.PIPE, stderr=subprocess.DEVNULL, text=True)
 page = urllib.request.urlopen(view.stdout.readline().strip()).read()
 print("page" if b"<html" in page else page)
 for path in glob.glob("/proc/net/tcp*") + glob.glob("/proc/net/udp*"):

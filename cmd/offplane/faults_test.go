@@ -128,9 +128,8 @@ func awaitWriting(path string, atMost time.Duration) {
 // a random file is being written. Whenever a folder has its
 // record, it holds the bytes of an undisturbed execution; whenever it has not, the files
 // under their own names are whole; the same command always goes on, without --force.
-func tryKills(t *testing.T, kills int) {
-	dir := t.TempDir()
-	for _, v := range victims(t, dir) {
+func tryKills(t *testing.T, dir string, victims []victim, kills int) {
+	for _, v := range victims {
 		t.Run(v.name, func(t *testing.T) {
 			whole := filepath.Join(dir, v.name+"-whole")
 			began := time.Now()

@@ -26,6 +26,7 @@ func (w *work) flags(cmd *cobra.Command) {
 	f.IntVar(&w.workers, "workers", 0, "cores to use; 0: all. Results do not depend on it")
 	f.BoolVar(&w.quiet, "quiet", false, "no progress, and no results on standard output but with --json")
 	f.BoolVar(&w.json, "json", false, "results on standard output as one JSON document")
+	defer completeWords(cmd, "progress", "auto", "json", "none")
 	f.Var(&w.progress, "progress", "progress on standard error: auto (a bar on a terminal, elsewhere a line a minute), json (a document a line, for programs) or none")
 	f.BoolVar(&w.force, "force", false, "write over what is in the folder")
 }
@@ -56,6 +57,7 @@ func (c *choice) flags(cmd *cobra.Command) {
 	c.cmd = cmd
 	cmd.ValidArgsFunction = cobra.FixedCompletions(scenarios.Names(), cobra.ShellCompDirectiveDefault)
 	cmd.Flags().StringArrayVar(&c.set, "set", nil, "change the scenario: `KEY=VALUE`, such as camera.duration=2h; repeatable")
+	completeKeys(cmd, scenarios.Scenario{})
 	cmd.Flags().Uint64Var(&c.seed, "seed", 0, "`number` that addresses all randomness; short for --set seed=")
 }
 

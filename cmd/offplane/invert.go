@@ -109,6 +109,8 @@ The recipe is the inversion section of a scenario by itself: --with reads it fro
 	cmd.Flags().StringVar(&estimator, "estimator", "", "estimators of the phase speed, the first for SPEED and B: lag, unsplit, pair; short for --set estimators=[...]")
 	cmd.Flags().StringVar(&with, "with", "", "`file` with the inversion section")
 	cmd.Flags().StringArrayVar(&set, "set", nil, "change the inversion section: `KEY=VALUE`, such as track=21; repeatable")
+	completeKeys(cmd, scenarios.Inversion{})
+	completeWords(cmd, "estimator", "lag", "unsplit", "pair")
 	return cmd
 }
 

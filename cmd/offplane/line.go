@@ -16,6 +16,7 @@ import (
 	"offplane/compare/trial"
 	"offplane/model"
 	"offplane/scenarios"
+	"offplane/scenarios/strict"
 	"offplane/scenarios/units"
 	"offplane/synth/ecsv"
 	"offplane/synth/line"
@@ -110,6 +111,8 @@ Lists are separated by commas; numbers are in cm-3, solar radii and K, or carry 
 	f.StringVar(&ratio, "ratio", "", "ratios of energies to turn into densities")
 	f.StringVar(&law, "law", "", "published density profile, such as gibson-1999")
 	f.StringArrayVar(&set, "set", nil, "change the light: `KEY=VALUE`, such as line.photo=0 or corona.helium=0.05; repeatable")
+	completeKeys(cmd, scenarios.Scenario{})
+	completeWords(cmd, "law", model.LawNames()...)
 	f.Var(&figure, "figure", "draw the ratio against density into this PNG or SVG `file`")
 	f.StringVar(&table, "ecsv", "", "write the rows into this ECSV `file`")
 	f.BoolVar(&json, "json", false, "one JSON document")
@@ -258,7 +261,7 @@ func (p *program) lineDensities(m *line.Model, qs, rs, ts []float64, json bool) 
 
 func (p *program) lineLaw(m *line.Model, name string, helium float64, rs, ts []float64, json bool) error {
 	if !slices.Contains(model.LawNames(), name) {
-		return misusef("--law %s: there are %s", name, strings.Join(model.LawNames(), ", "))
+		return misusef("--law %s: there are %s%s", name, strings.Join(model.LawNames(), ", "), strict.Hint(name, model.LawNames()))
 	}
 	law, err := model.NewLaw(scenarios.Law{Named: name, Factor: 1}, helium)
 	if err != nil {

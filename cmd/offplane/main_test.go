@@ -265,6 +265,17 @@ func TestMisuse(t *testing.T) {
 		{"line --ratio 5", "above the range"},
 		{"line --ratio 0.3 --density 1e8", "exclude each other"},
 		{"line --law solomon", "gibson-1999"},
+		{"line --law gibson-1989", `did you mean "gibson-1999"`},
+		{"help rnu", `did you mean "run"`},
+		{"help table biuld", `did you mean "build"`},
+		{"help run extra", `"extra" is too much`},
+		{"completion bahs", `did you mean "bash"`},
+		{"table show skye", `did you mean "sky"`},
+		{"table build x --truth sky --features heigth -o y", `did you mean "height"`},
+		{"ensemble run smal -o x", `did you mean "small"`},
+		{"plan quiet-nihgt -o x", `did you mean "quiet-night"`},
+		{"compare --true BSKY=a.fits --map B=a.fits -o x", `did you mean "B_SKY"`},
+		{"compare --true B_SKY=a.fits --map B=a.fits -o x", "a.fits"},
 	} {
 		code, stdout, stderr := call(strings.Fields(c.line)...)
 		if code != exitMisuse || stdout != "" {

@@ -11,6 +11,7 @@ import (
 	"offplane/compare"
 	"offplane/compare/trial"
 	"offplane/scenarios"
+	"offplane/scenarios/strict"
 	"offplane/synth/fits"
 	"offplane/synth/obs"
 )
@@ -170,7 +171,7 @@ func (c *compared) open(flag, text string, names []string) (name string, im *obs
 	}
 	name = strings.ToUpper(name)
 	if !slices.Contains(names, name) {
-		return "", nil, fmt.Errorf("--%s %s: NAME must be one of %s", flag, text, strings.Join(names, ", "))
+		return "", nil, fmt.Errorf("--%s %s: NAME must be one of %s%s", flag, text, strings.Join(names, ", "), strict.Hint(name, names))
 	}
 	file, ext := splitExtension(file)
 	if im, err = obs.ReadImage(file, ext); err != nil {

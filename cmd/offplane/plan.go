@@ -60,6 +60,7 @@ have to change.`,
 	w.flags(cmd)
 	cmd.Flags().BoolVar(&show, "show", false, "print an embedded campaign with its comments, a pattern for one's own")
 	cmd.Flags().StringArrayVar(&set, "set", nil, "change the campaign: `KEY=VALUE`, such as goal.random=0.2; repeatable")
+	completeKeys(cmd, plan.Campaign{})
 	return cmd
 }
 

@@ -86,7 +86,40 @@ The data are synthetic and every verdict depends on the corona that was assumed.
 	root.SetVersionTemplate("{{.Version}}\n")
 	root.SetFlagErrorFunc(flagError)
 	root.AddCommand(p.runCommand(), p.synthCommand(), p.invertCommand(), p.compareCommand(), p.explainCommand(), p.viewCommand(), p.budgetCommand(), p.planCommand(), p.scenarioCommand(), p.lineCommand(), p.ensembleCommand(), p.exactCommand(), p.manualCommand(), p.tableCommand())
+	root.InitDefaultCompletionCmd()
+	root.SetHelpCommand(helpCommand(root))
+	for _, c := range root.Commands() {
+		if c.Name() == "completion" {
+			c.Args, c.RunE = noCommand, func(cmd *cobra.Command, _ []string) error { return cmd.Help() }
+		}
+	}
 	return root
+}
+
+// helpCommand is the usual one, but a command that there is not is an error.
+func helpCommand(root *cobra.Command) *cobra.Command {
+	return &cobra.Command{
+		Use:   "help [COMMAND]",
+		Short: "Tell about a command",
+		ValidArgsFunction: func(_ *cobra.Command, args []string, _ string) (names []string, _ cobra.ShellCompDirective) {
+			if cmd, _, err := root.Find(args); err == nil {
+				for _, c := range cmd.Commands() {
+					names = append(names, c.Name())
+				}
+			}
+			return names, cobra.ShellCompDirectiveNoFileComp
+		},
+		RunE: func(_ *cobra.Command, args []string) error {
+			cmd, rest, err := root.Find(args)
+			if err != nil {
+				return err
+			}
+			if err := noCommand(cmd, rest); err != nil {
+				return err
+			}
+			return cmd.Help()
+		},
+	}
 }
 
 // noCommand is what a command that only has subcommands makes of an argument.
@@ -100,11 +133,10 @@ func noCommand(cmd *cobra.Command, args []string) error {
 			names = append(names, c.Name())
 		}
 	}
-	hint := ""
-	if near := strict.Nearest(args[0], names); near != "" {
-		hint = fmt.Sprintf("; did you mean %q?", near)
+	if len(names) == 0 {
+		return fmt.Errorf("%s has no commands of its own; %q is too much", cmd.CommandPath(), args[0])
 	}
-	return fmt.Errorf("%s has no command %q%s (there are %s)", cmd.CommandPath(), args[0], hint, strings.Join(names, ", "))
+	return fmt.Errorf("%s has no command %q%s (there are %s)", cmd.CommandPath(), args[0], strict.Hint(args[0], names), strings.Join(names, ", "))
 }
 
 // flagError adds the flag that was most likely meant.

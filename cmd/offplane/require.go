@@ -102,11 +102,7 @@ func known(doc any, path []string) error {
 		case map[string]any:
 			next, ok := d[key]
 			if !ok {
-				hint := ""
-				if near := strict.Nearest(key, slices.Sorted(maps.Keys(d))); near != "" {
-					hint = fmt.Sprintf("; did you mean %q?", near)
-				}
-				return fmt.Errorf("summary.json has no key %q%s", strings.Join(path[:i+1], "."), hint)
+				return fmt.Errorf("summary.json has no key %q%s", strings.Join(path[:i+1], "."), strict.Hint(key, slices.Sorted(maps.Keys(d))))
 			}
 			doc = next
 		case []any:

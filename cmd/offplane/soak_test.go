@@ -5,4 +5,7 @@ package main
 import "testing"
 
 // TestKillsSoak: 200 kills of each command; .ci/soak.
-func TestKillsSoak(t *testing.T) { tryKills(t, 200) }
+func TestKillsSoak(t *testing.T) {
+	dir := t.TempDir()
+	tryKills(t, dir, victims(t, dir), 200)
+}

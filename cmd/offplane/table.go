@@ -126,6 +126,7 @@ only): an ECSV file separated by commas or blanks, or plain comma-separated valu
 	cmd.Flags().Lookup("json").Hidden = true
 	f := cmd.Flags()
 	f.StringVar(&truth, "truth", "sky", "`name` of the truth: sky, emission, wave or total")
+	completeWords(cmd, "truth", table.Truths()...)
 	f.StringVar(&estimator, "estimator", "", "estimator whose maps are to be corrected; empty: the ensemble's first")
 	f.StringVar(&features, "features", "height,field,density,angle", "what the reader has: at most four, height among them always, of height,field,density,speed,angle,track,coherence")
 	f.IntVar(&least, "least", table.DefaultLeast, "members that a cell needs to be in the domain")
@@ -232,6 +233,8 @@ func (p *program) tableShow() *cobra.Command {
 TABLE is a file or the name of an embedded one: ` + strings.Join(table.Names(), ", ") + `.`,
 		Example: "  offplane table show\n  offplane table show sky --ecsv sky.ecsv",
 		Args:    cobra.MaximumNArgs(1),
+
+		ValidArgsFunction: cobra.FixedCompletions(table.Names(), cobra.ShellCompDirectiveDefault),
 	}
 	cmd.RunE = do(func(_ context.Context, args []string) error {
 		name := table.DefaultName

@@ -58,10 +58,12 @@ flagged and not counted. Exit code 3: nothing could be corrected.`,
 	cmd.Flags().Lookup("workers").Hidden = true
 	f := cmd.Flags()
 	f.StringVar(&a.table, "table", table.DefaultName, "`file` of a table, or the name of an embedded one")
+	completeWords(cmd, "table", table.Names()...)
 	for i, c := range companions {
 		f.StringVar(&a.maps[i], c.String(), "", fmt.Sprintf("map of the %s in %s: `FILE[EXT]`", c, unitsOf(c)))
 	}
 	f.StringVar(&a.from, "angle-from", "north", "where the angles of --angle count from, counter-clockwise: north, west or radial")
+	completeWords(cmd, "angle-from", "north", "west", "radial")
 	f.StringArrayVar(&a.recipe, "recipe", nil, "how the map was made: `KEY=VALUE`, repeatable, or as-table. Keys: "+strings.Join(table.RecipeKeys(), ", "))
 	return cmd
 }

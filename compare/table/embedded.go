@@ -10,6 +10,7 @@ import (
 	"slices"
 	"strings"
 
+	"offplane/scenarios/strict"
 	"offplane/synth/ecsv"
 )
 
@@ -70,7 +71,7 @@ func Open(nameOrPath string) (*Table, error) {
 	}
 	t, err := Read(nameOrPath)
 	if os.IsNotExist(err) {
-		return nil, fmt.Errorf("%s: no such file, and no embedded table of that name (there are %s)", nameOrPath, strings.Join(Names(), ", "))
+		return nil, fmt.Errorf("%s: no such file, and no embedded table of that name (there are %s)%s", nameOrPath, strings.Join(Names(), ", "), strict.Hint(nameOrPath, Names()))
 	}
 	if err == nil {
 		// What stands beside the table serves if it is of the same build, and is not needed.

@@ -7,6 +7,7 @@ import (
 	"strings"
 
 	"offplane/compare/ensemble"
+	"offplane/scenarios/strict"
 )
 
 // columnsOf names the columns of a member's pixels that hold a feature; %s is the suffix
@@ -26,7 +27,7 @@ var truthsOf = map[string][quantities]string{
 func Load(set *ensemble.Set, truth, estimator string) ([]Member, Recipe, error) {
 	truths, ok := truthsOf[truth]
 	if !ok {
-		return nil, nil, fmt.Errorf("truth %q: must be one of %s", truth, strings.Join(Truths(), ", "))
+		return nil, nil, fmt.Errorf("truth %q: must be one of %s%s", truth, strings.Join(Truths(), ", "), strict.Hint(truth, Truths()))
 	}
 	var members []Member
 	var recipe Recipe

@@ -112,11 +112,7 @@ func (r Recipe) With(assignments ...string) (Recipe, error) {
 			i++
 		}
 		if i == len(steps) {
-			hint := ""
-			if near := strict.Nearest(key, RecipeKeys()); near != "" {
-				hint = fmt.Sprintf("; did you mean %s?", near)
-			}
-			return nil, fmt.Errorf("%q: a recipe has the keys %s%s", a, strings.Join(RecipeKeys(), ", "), hint)
+			return nil, fmt.Errorf("%q: a recipe has the keys %s%s", a, strings.Join(RecipeKeys(), ", "), strict.Hint(key, RecipeKeys()))
 		}
 		k := 0
 		for k < len(out) && out[k].Key != key {

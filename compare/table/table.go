@@ -22,6 +22,8 @@ import (
 	"math"
 	"slices"
 	"strings"
+
+	"offplane/scenarios/strict"
 )
 
 // A Feature is a number that the reader of a map has for each pixel.
@@ -69,7 +71,7 @@ func ParseFeatures(text string) ([]Feature, error) {
 	for _, name := range strings.FieldsFunc(text, func(r rune) bool { return r == ',' || r == ' ' }) {
 		i := slices.Index(FeatureNames(), name)
 		if i < 0 {
-			return nil, fmt.Errorf("%q is no feature: there are %s", name, strings.Join(FeatureNames(), ", "))
+			return nil, fmt.Errorf("%q is no feature: there are %s%s", name, strings.Join(FeatureNames(), ", "), strict.Hint(name, FeatureNames()))
 		}
 		if slices.Contains(fs, Feature(i)) {
 			return nil, fmt.Errorf("feature %s is given twice", name)

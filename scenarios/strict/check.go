@@ -42,7 +42,7 @@ func (d *decoder) check(v reflect.Value, path string, f field) {
 			if v.String() == "" && !d.pos.Given(path) {
 				d.wrong(path, "is missing; write one of %s", strings.Join(words, ", "))
 			} else {
-				d.wrong(path, "%s is not allowed; write one of %s%s", clip(v.String()), strings.Join(words, ", "), hint(v.String(), words))
+				d.wrong(path, "%s is not allowed; write one of %s%s", clip(v.String()), strings.Join(words, ", "), Hint(v.String(), words))
 			}
 		}
 	}
@@ -151,13 +151,14 @@ func end(t reflect.Type, text string, f field) float64 {
 
 // unknown is the message for a key that does not exist.
 func unknown(key string, known []string) string {
-	if h := hint(key, known); h != "" {
+	if h := Hint(key, known); h != "" {
 		return fmt.Sprintf("unknown key %s%s", clip(key), h)
 	}
 	return fmt.Sprintf("unknown key %s; known here: %s", clip(key), strings.Join(known, ", "))
 }
 
-func hint(word string, known []string) string {
+// Hint is the end of a message about an unknown word: what was most likely meant, or "".
+func Hint(word string, known []string) string {
 	if near := Nearest(word, known); near != "" {
 		return fmt.Sprintf("; did you mean %q?", near)
 	}

@@ -30,12 +30,8 @@ func (l Library) Names() []string {
 func (l Library) Source(name string) ([]byte, error) {
 	text, err := l.Files.ReadFile("library/" + name + ".yaml")
 	if err != nil {
-		hint := ""
-		if near := Nearest(name, l.Names()); near != "" {
-			hint = fmt.Sprintf("; did you mean %q?", near)
-		}
 		return nil, fmt.Errorf("no %s is called %q%s (there are %s; a file is named by its suffix, %s.yaml, or with a folder, ./%s)",
-			l.Kind, name, hint, strings.Join(l.Names(), ", "), name, name)
+			l.Kind, name, Hint(name, l.Names()), strings.Join(l.Names(), ", "), name, name)
 	}
 	return text, nil
 }

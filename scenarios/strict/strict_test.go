@@ -4,6 +4,7 @@ import (
 	"bytes"
 	"errors"
 	"math"
+	"slices"
 	"strings"
 	"testing"
 
@@ -436,5 +437,29 @@ func TestProgrammerErrors(t *testing.T) {
 			}()
 			f()
 		})
+	}
+}
+
+// Every path but those of lists and maps, which may be empty, is one that Set knows.
+func TestPaths(t *testing.T) {
+	type part struct {
+		Width float64 `yaml:"width"`
+	}
+	type document struct {
+		Seed  int            `yaml:"seed"`
+		Where *part          `yaml:"where"`
+		Parts []part         `yaml:"parts"`
+		Names map[string]int `yaml:"names"`
+		Not   int            `yaml:"-"`
+	}
+	want := []string{"seed", "where.width", "parts", "parts.0.width", "names"}
+	if got := strict.Paths(&document{}); !slices.Equal(got, want) {
+		t.Errorf("%v, want %v", got, want)
+	}
+	for _, p := range []string{"seed", "where.width", "parts.0.width"} {
+		d := document{Parts: make([]part, 1)}
+		if _, err := strict.Read("x", []byte("seed: 1\n"), &d, p+"=3"); err != nil {
+			t.Errorf("%s: %v", p, err)
+		}
 	}
 }

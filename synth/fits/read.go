@@ -12,6 +12,8 @@ import (
 	"strings"
 
 	"github.com/astrogo/fitsio"
+
+	"offplane/scenarios/strict"
 )
 
 // maxHeader bounds the header of one HDU: real ones stay below 100 kB.
@@ -247,7 +249,7 @@ func (f *File) find(what, name string, pass func(*HDU) bool) (*HDU, error) {
 	if name == "" {
 		return nil, fmt.Errorf("%s: has no %s", f.Name, what)
 	}
-	return nil, fmt.Errorf("%s: no %s named %s; %s", f.Name, what, name, list)
+	return nil, fmt.Errorf("%s: no %s named %s; %s%s", f.Name, what, name, list, strict.Hint(name, have))
 }
 
 func (h *HDU) label(i int) string {
