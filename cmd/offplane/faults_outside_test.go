@@ -13,9 +13,9 @@ import (
 // a network. The long trial of kills is in .ci/soak.
 func TestFaults(t *testing.T) {
 	dir := t.TempDir()
-	killed := victims(t, dir)
+	killed, others := victims(t, dir), writers(t, dir)
 	t.Run("kills", func(t *testing.T) { tryKills(t, dir, killed, 20) })
-	t.Run("room", func(t *testing.T) { tryNoRoom(t, dir, killed, writers(t, dir)) })
+	t.Run("room", func(t *testing.T) { tryNoRoom(t, dir, killed, others) })
 	t.Run("network", func(t *testing.T) { tryNoNetwork(t, dir) })
 	t.Run("loopback", func(t *testing.T) { tryLoopback(t, dir) })
 }
@@ -112,27 +112,27 @@ func tryNoNetwork(t *testing.T, dir string) {
 	small := " --set 'image.from=268 deg' --set 'image.to=272 deg'"
 	script := strings.Join([]string{
 		"test \"$(cat /proc/net/route | wc -l)\" -le 1",
-		"offplane run tiny.yaml --quiet --frames -o run",
-		"offplane synth tiny.yaml" + small + " --quiet -o data2",
-		"offplane invert run/observation.fits --set box=11 --set track=11 --quiet -o maps",
-		"offplane compare --truth run/truth.fits --inferred maps/inferred.fits --quiet -o verdict",
-		"offplane explain run --polar 270,1.15 >explained",
-		"offplane table apply run/inferred.fits --recipe track=31 --recipe pixel=4.35 --quiet -o corrected",
-		"offplane table build fifty --features height --quiet -o table",
+		"offplane run tiny.yaml --quiet --frames -o net/run",
+		"offplane synth tiny.yaml" + small + " --quiet -o net/data",
+		"offplane invert net/run/observation.fits --set box=11 --set track=11 --quiet -o net/maps",
+		"offplane compare --truth net/run/truth.fits --inferred net/maps/inferred.fits --quiet -o net/verdict",
+		"offplane explain net/run --polar 270,1.15 >explained",
+		"offplane table apply net/run/inferred.fits --recipe track=31 --recipe pixel=4.35 --quiet -o net/corrected",
+		"offplane table build fifty --features height --quiet -o net/table",
 		"offplane table show >shown",
 		"offplane scenario check tiny.yaml >checked",
 		"offplane line --height 1.1,1.2 >line",
 		"offplane ensemble show small >ensemble",
-		"offplane ensemble run few.yaml --quiet -o few",
-		"offplane ensemble submit few.yaml --engine other -o more >scripts",
-		"offplane budget tiny.yaml" + small + " --set 'image.outer=1.15 Rsun' --realisations 2 --quiet -o terms",
-		"offplane plan campaign.yaml --quiet -o plan",
+		"offplane ensemble run few.yaml --quiet -o net/few",
+		"offplane ensemble submit few.yaml --engine other -o net/more >scripts",
+		"offplane budget tiny.yaml" + small + " --set 'image.outer=1.15 Rsun' --realisations 2 --quiet -o net/terms",
+		"offplane plan campaign.yaml --quiet -o net/plan",
 		"offplane exact >exact",
-		"offplane manual -o man",
+		"offplane manual -o net/man",
 	}, "\n")
 	startCommand(t, dir, inNamespace(script)...).finish(0)
-	for _, folder := range []string{"run", "data2", "maps", "verdict", "corrected", "table", "few", "terms", "plan"} {
-		if !exists(filepath.Join(dir, folder, recordName)) {
+	for _, folder := range []string{"run", "data", "maps", "verdict", "corrected", "table", "few", "terms", "plan"} {
+		if !exists(filepath.Join(dir, "net", folder, recordName)) {
 			t.Errorf("%s is not complete", folder)
 		}
 	}
