@@ -478,9 +478,6 @@ func (c *Corona) kinkOf(n float64) float64 {
 	return (p[0].N + p[1].N) / 2
 }
 
-// Mu returns rho/(m_p n_e) of the corona.
-func (c *Corona) Mu() float64 { return c.mu }
-
 // At returns the corona at p (solar frame, solar radii, outside the Sun).
 func (c *Corona) At(p r3.Vec) Point {
 	q := Point{R: norm(p)}
@@ -581,15 +578,6 @@ func (c *Corona) spaceAt(p r3.Vec, q *Point) {
 	if l.ends != 1 {
 		q.Line.TauTop = math.Inf(-1)
 	}
-}
-
-// Expansion returns how much more than radially the flux tube has widened between the
-// line's first foot and the point: B_foot / (B r^2). 0 for a line without foot.
-func (c *Corona) Expansion(q *Point) float64 {
-	if q.Line.Ends == 0 {
-		return 0
-	}
-	return norm(c.field.B(q.Line.Foot[0].Vector())) / (norm(q.B) * q.R * q.R)
 }
 
 // LongestDelay returns the longest travel time [s] of a train that a sample may ask

@@ -16,14 +16,7 @@ import (
 )
 
 func (p *program) ensembleCommand() *cobra.Command {
-	cmd := &cobra.Command{
-		Use:   "ensemble",
-		Short: "Many scenarios that differ in chosen parameters, here or on a cluster",
-		Args:  noCommand,
-		RunE:  func(cmd *cobra.Command, _ []string) error { return cmd.Help() },
-	}
-	cmd.AddCommand(p.ensembleList(), p.ensembleShow(), p.ensembleRun(), p.ensembleStatus(), p.ensembleGather(), p.ensembleSubmit())
-	return cmd
+	return group("ensemble", "Many scenarios that differ in chosen parameters, here or on a cluster", p.ensembleList(), p.ensembleShow(), p.ensembleRun(), p.ensembleStatus(), p.ensembleGather(), p.ensembleSubmit())
 }
 
 func (p *program) ensembleList() *cobra.Command {

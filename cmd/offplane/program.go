@@ -122,6 +122,18 @@ func helpCommand(root *cobra.Command) *cobra.Command {
 	}
 }
 
+// group returns a command that only holds others.
+func group(use, short string, commands ...*cobra.Command) *cobra.Command {
+	cmd := &cobra.Command{
+		Use:   use,
+		Short: short,
+		Args:  noCommand,
+		RunE:  func(cmd *cobra.Command, _ []string) error { return cmd.Help() },
+	}
+	cmd.AddCommand(commands...)
+	return cmd
+}
+
 // noCommand is what a command that only has subcommands makes of an argument.
 func noCommand(cmd *cobra.Command, args []string) error {
 	if len(args) == 0 {

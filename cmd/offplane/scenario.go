@@ -15,14 +15,7 @@ import (
 )
 
 func (p *program) scenarioCommand() *cobra.Command {
-	cmd := &cobra.Command{
-		Use:   "scenario",
-		Short: "The library of scenarios, and a check of your own",
-		Args:  noCommand,
-		RunE:  func(cmd *cobra.Command, _ []string) error { return cmd.Help() },
-	}
-	cmd.AddCommand(p.scenarioList(), p.scenarioShow(), p.scenarioCheck())
-	return cmd
+	return group("scenario", "The library of scenarios, and a check of your own", p.scenarioList(), p.scenarioShow(), p.scenarioCheck())
 }
 
 func (p *program) scenarioList() *cobra.Command {

@@ -14,14 +14,7 @@ import (
 )
 
 func (p *program) tableCommand() *cobra.Command {
-	cmd := &cobra.Command{
-		Use:   "table",
-		Short: "Correction tables: from ensembles, and for published maps",
-		Args:  noCommand,
-		RunE:  func(cmd *cobra.Command, _ []string) error { return cmd.Help() },
-	}
-	cmd.AddCommand(p.tableBuild(), p.tableApply(), p.tableShow())
-	return cmd
+	return group("table", "Correction tables: from ensembles, and for published maps", p.tableBuild(), p.tableApply(), p.tableShow())
 }
 
 // tableFiles are what table build leaves.

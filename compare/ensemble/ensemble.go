@@ -68,12 +68,6 @@ type Value struct {
 	Text string // as in YAML, such as "12 km/s"
 }
 
-// Number returns the value without its unit; ok is false if it is not a number.
-func (v Value) Number() (x float64, ok bool) {
-	q, err := parseQuantity(v.Text)
-	return q.number, err == nil
-}
-
 // A Loaded ensemble is complete and valid.
 type Loaded struct {
 	Ensemble

@@ -165,14 +165,6 @@ func (m *Member) column(name string) any {
 	return nil
 }
 
-// Columns returns the names of the columns and their FITS units, in the file's order.
-func (m *Member) Columns() (names, units []string) {
-	for _, c := range m.pixels.Columns {
-		names, units = append(names, c.Name), append(units, c.Unit)
-	}
-	return names, units
-}
-
 // Counts returns the pixels of the field, and those with a B of the first estimator.
 func (m *Member) Counts() (total, valid int) {
 	for _, h := range m.Heights {

@@ -26,18 +26,6 @@ func Quantile(p float64, x []float64) float64 {
 // number is even.
 func Median(x []float64) float64 { return Quantile(0.5, x) }
 
-// MAD returns the median absolute deviation of x from its median, not scaled:
-// for Gaussian data the standard deviation is 1.4826 times it.
-func MAD(x []float64) float64 {
-	s := sorted(x)
-	m := quantile(0.5, s)
-	for i := range s {
-		s[i] = math.Abs(s[i] - m)
-	}
-	slices.Sort(s)
-	return quantile(0.5, s)
-}
-
 // A Summary is what is said of one sample: its median, the percentiles that
 // enclose the middle 68 and 95 per cent, and how many values it holds. With no
 // value at all every number but Count is NaN.
