@@ -74,13 +74,13 @@ func coveragePatch() (patch, Options, []string, []string) {
 	return q, opt, []string{"SPEED", "SPEED_UNSPLIT", "SPEED_PAIR", "ANGLE"}, []string{"SPEED_ERR", "SPEED_ERR_UNSPLIT", "SPEED_ERR_PAIR", "ANGLE_ERR"}
 }
 
-// hold checks that intervals of one error either way hold the mean of 64 realisations in 60
-// to 76 % of the cases, at every height and for every estimator (68 % by definition).
-func hold(t *testing.T, q patch, opt Options, names, errs []string) {
+// hold checks that intervals of one error either way hold the mean of 64 realisations in 60 %
+// of the cases to most, at every height and for every estimator (68 % by definition).
+func hold(t *testing.T, q patch, opt Options, names, errs []string, most float64) {
 	t.Helper()
 	for k, shares := range coverage(t, q, opt, 64, names, errs) {
 		for b, s := range shares {
-			if !(s >= 0.60 && s <= 0.76) {
+			if !(s >= 0.60 && s <= most) {
 				t.Errorf("%s, height bin %d: %.3f of the intervals hold the mean", names[k], b, s)
 			}
 		}
@@ -90,13 +90,13 @@ func hold(t *testing.T, q patch, opt Options, names, errs []string) {
 // The errors of phase speed and direction hold what they promise.
 func TestCoverage(t *testing.T) {
 	q, opt, names, errs := coveragePatch()
-	hold(t, q, opt, names, errs)
+	hold(t, q, opt, names, errs, 0.76)
 }
 
-// They also do where the arrival times change across the tracks as much as along them, so
-// that what turns a track by a degree changes the speed by 1.7 %.
+// They also do where the arrival times change across the tracks by half as much again as along
+// them, so that what turns a track by a degree changes the speed by 2.6 %.
 func TestCoverageWhereTracksMatter(t *testing.T) {
 	q, opt, names, errs := coveragePatch()
-	q.shear = 2
-	hold(t, q, opt, names, errs)
+	q.ny, q.shear = 20, 1.5
+	hold(t, q, opt, names, errs, 0.76)
 }

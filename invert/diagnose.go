@@ -96,7 +96,7 @@ func Diagnose(ctx context.Context, o *obs.Observation, e line.Emitter, opt Optio
 
 // trackReach is how far directions are needed for the track of a pixel and those that
 // tell its error [pixels].
-func (o *Options) trackReach() int { return o.Track/2 + 2 + angleReach + angleLattice }
+func (o *Options) trackReach() int { return o.Track/2 + 2 + swayReach + angleLattice }
 
 // around returns the steps between those of the series and measure for one pixel alone.
 func (r *run) around(pixel int) (steps [3]func(w *worker, q int), err error) {
@@ -113,7 +113,7 @@ func (r *run) around(pixel int) (steps [3]func(w *worker, q int), err error) {
 		}
 	}
 	far := r.opt.trackReach()
-	return [3]func(w *worker, q int){within(far, r.direct), within(far, r.swing), within(angleReach+angleLattice, r.sway)}, nil
+	return [3]func(w *worker, q int){within(far, r.direct), within(far, r.swing), within(swayReach, r.sway)}, nil
 }
 
 // diagnose tells of a pixel of the field whose surroundings have directions.

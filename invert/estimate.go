@@ -160,12 +160,13 @@ const errorBins = 2
 //
 // So it holds whatever makes the estimate scatter on one track, noise as well as waves that
 // are not those of the model, and no bias. What the track adds is in sway.go. With that the
-// interval of one error holds the mean of many realisations in 61 to 74 % of the cases on
-// patches of plane waves, from no noise at all to that of a frame as large as three quarters of
-// the waves (TestCoverage, TestCoverageElsewhere), and in 59 to 75 % on a wedge of quick, where
-// structures cross along the line of sight (TestCoverageOnQuick in compare/trial; derived).
-// Unsplit is the exception there: where waves run both ways its slowness passes through zero,
-// and no interval holds a mean of such speeds.
+// interval of one error holds the mean of 64 realisations in 62 to 75 % of the cases on patches
+// of plane waves (TestCoverage, TestCoverageWhereTracksMatter; 50 to 57 % for pair without the
+// track's part where it matters), in 66 to 80 % from no noise at all to that of a frame as
+// large as three quarters of the waves (TestCoverageElsewhere: a few are too wide), and in
+// 62 to 72 % on a wedge of quick, where structures cross along the line of sight
+// (TestCoverageOnQuick in compare/trial; derived). Unsplit is the exception there: where waves
+// run both ways its slowness passes through zero, and no interval holds a mean of such speeds.
 func resampled(pull, share []float64) float64 {
 	sum, last := 0.0, 0.0
 	for i := 0; i < len(pull); i += errorBins {

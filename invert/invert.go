@@ -297,7 +297,7 @@ func newRun(o *obs.Observation, e line.Emitter, opt Options) (*run, error) {
 	run := &run{estimatorMaps: estimators, field: f, cube: cube, timing: when, means: means, result: r, variance: make([]float64, np), spread: make([][2]float32, np), dft: newDFT(b)}
 	run.turns = make([][2]float32, np)
 	run.swung = [2][][2]float32{make([][2]float32, np), make([][2]float32, np)}
-	run.moved = make([]float32, np*len(estimators))
+	run.moved = make([][2]float32, np*len(estimators))
 
 	for i, m := range [2][]float32{o.Density, o.Ratio} {
 		if m != nil && len(m) != np {
@@ -406,7 +406,7 @@ type run struct {
 	spread        [][2]float32    // variance of the axis, resampled and formal [rad^2]; zeros: not known
 	turns         [][2]float32    // cos and sin of twice the error of the axis; zeros: not known
 	swung         [2][][2]float32 // axes turned by that error, both ways
-	moved         []float32       // squared relative error of each estimator's speed from that of the track; NaN: not known
+	moved         [][2]float32    // relative variances of the speeds on a lattice, by estimators: what the track adds, and the resampled; zeros: not known
 	variance      []float64       // white-noise variance of the Doppler series [(km/s)^2]; NaN: not known
 	estimatorMaps []estimatorMaps
 }
@@ -426,7 +426,7 @@ type worker struct {
 	weight     [2][]float64
 	usable     []float64
 	frame      []float64
-	swayed     [2][]swayed // on tracks turned either way, by estimators
+	swayed     [3][]swayed // on tracks turned either way and the track itself, by estimators
 	v          []float64   // a series of frames that are not evenly spaced
 	bad        []bool
 }
@@ -682,7 +682,7 @@ func (r *run) direct(w *worker, p int) {
 		return
 	}
 	r.turn(p, s.angle)
-	if r.onLattice(p) {
+	if r.on(angleLattice, p) {
 		if d, ok := w.islands.halves(p); ok {
 			r.spread[p] = [2]float32{float32(d * d), float32(s.err * s.err)}
 			sin, cos := math.Sincos(2 * d)
@@ -704,7 +704,7 @@ func (r *run) direct(w *worker, p int) {
 // calibrate makes the formal error of a pixel's angle a true one.
 func (r *run) calibrate(p int) {
 	var found, formal float64
-	r.lattice(p, func(q int) {
+	r.lattice(angleLattice, angleReach, p, func(q int) {
 		found += float64(r.spread[q][0])
 		formal += float64(r.spread[q][1])
 	})
@@ -760,7 +760,7 @@ func (r *run) measure(w *worker, p int) {
 	w.noise = r.noise(p)
 	for i, e := range w.estimators {
 		m := e.measure(w, rows, n, centre, rise >= leastRise)
-		m.err = math.Hypot(m.err, m.v*r.trackError(p, i))
+		m.err = r.withTrack(p, i, m.v, m.err)
 		m.ok = m.ok && m.err < m.v
 		r.note(p, i, m, n, w.lags.step)
 		if i == 0 && m.against && rise >= leastRise {

@@ -398,7 +398,7 @@ func TestBadDataDoNotSpread(t *testing.T) {
 		dx, dy := i%q.nx-x, i/q.nx-y
 		if dx*dx+dy*dy > 12*12 { // half a window and half a track away
 			for m := range after.Maps {
-				around := 12 + angleReach + angleLattice // errors are those of the surroundings
+				around := 12 + swayReach + angleLattice // errors are those of the surroundings
 				if strings.Contains(after.Maps[m].Name, "_ERR") && dx*dx+dy*dy <= around*around {
 					continue
 				}

@@ -8,12 +8,11 @@ import "math"
 // pair on quick scatter by 6.5 km/s in its lowest bin of height, with their own tracks by 20
 // (own simulation, 11 realisations).
 //
-// So at one pixel in angleLattice both ways the track is traced twice more, along directions
-// that are all turned by what the halves of the spectrum tell about their errors, one way and
-// the other. Half the difference of the logarithms of both speeds is a draw of that error.
-// What the frequencies disagree on in it is in the resampled error of any track already, which
-// is why its square is taken less the square of its own resampled error. The mean within
-// angleReach pixels joins the variance of the speed.
+// So at one pixel in swayLattice both ways the track is traced again along directions that
+// are all turned by what the halves of the spectrum tell about their errors, one way and the
+// other. What the frequencies disagree on in the speeds' differences is in the resampled error
+// of any track already, and is taken off. The mean variance within swayReach pixels joins that
+// of the speed.
 
 // swing turns the direction of a pixel both ways by the error of the nearest lattice point.
 func (r *run) swing(_ *worker, p int) {
@@ -27,29 +26,32 @@ func (r *run) swing(_ *worker, p int) {
 	r.swung[1][p] = [2]float32{float32(a[0]*c) + float32(a[1]*s), float32(a[1]*c) - float32(a[0]*s)}
 }
 
-// nearestLattice returns the line of the lattice next to x.
-func nearestLattice(x int) int { return x/angleLattice*angleLattice + angleLattice/2 }
+// nearestLattice returns the line of the lattice of directions next to x.
+func nearestLattice(x int) int { return (x + angleLattice/2) / angleLattice * angleLattice }
 
-// onLattice says whether a pixel is one of those that tell the errors of directions.
-func (r *run) onLattice(p int) bool {
+// on says whether a pixel lies on a lattice.
+func (r *run) on(lattice, p int) bool {
 	x, y := r.at(p)
-	return x == nearestLattice(x) && y == nearestLattice(y)
+	return x%lattice == 0 && y%lattice == 0
 }
+
+// One pixel in swayLattice both ways tells of those within swayReach.
+const (
+	swayLattice = 2 * angleLattice
+	swayReach   = 9
+)
 
 // sway measures a pixel of the lattice on tracks along the turned directions.
 func (r *run) sway(w *worker, p int) {
-	if !r.onLattice(p) {
+	if !r.on(swayLattice, p) {
 		return
 	}
 	out := r.moved[p*len(w.estimators) : (p+1)*len(w.estimators)]
-	for i := range out {
-		out[i] = float32(math.NaN())
-	}
-	if r.axis[p] == ([2]float32{}) {
+	if r.axis[p] == ([2]float32{}) || r.turns[p] == ([2]float32{}) {
 		return
 	}
-	for k := range w.swayed {
-		centre, rise := w.track.along(r.swung[k], p, r.opt.Track/2)
+	for k, axis := range [3][][2]float32{r.swung[0], r.swung[1], r.axis} {
+		centre, rise := w.track.along(axis, p, r.opt.Track/2)
 		n := len(w.track.points)
 		if n < r.leastTrack() {
 			return
@@ -66,49 +68,55 @@ func (r *run) sway(w *worker, p int) {
 		}
 	}
 	for i := range out {
-		out[i] = float32(systematic(&w.swayed[0][i], &w.swayed[1][i]))
+		left, right, middle := &w.swayed[0][i], &w.swayed[1][i], &w.swayed[2][i]
+		if !math.IsNaN(left.v * right.v * middle.v) {
+			told := middle.v * middle.v * resampled(middle.pull, middle.share)
+			out[i] = [2]float32{float32(systematic(left, right, middle)), float32(told)}
+		}
 	}
 }
 
-// systematic returns the squared relative error of a speed that two turned tracks tell, less
-// what would make them differ as much by chance.
-func systematic(a, b *swayed) float64 {
-	if math.IsNaN(a.v) || math.IsNaN(b.v) {
-		return math.NaN()
-	}
-	d := math.Log(a.v/b.v) / 2
-	for j := range a.pull {
-		a.pull[j] = (a.v*a.pull[j] - b.v*b.pull[j]) / 2
-		a.share[j] = (a.share[j] + b.share[j]) / 2
-	}
-	return d*d - resampled(a.pull, a.share)
-}
-
-// A swayed is a speed on a turned track.
+// A swayed is a speed on one of the tracks.
 type swayed struct {
 	v           float64 // [km/s]; NaN: not significant
 	pull, share []float64
 }
 
-// trackError returns the relative error of a speed of estimator i that comes from the
-// track; 0 if it is not known.
-func (r *run) trackError(p, i int) float64 {
-	sum, n := 0.0, 0
-	r.lattice(p, func(q int) {
-		if m := float64(r.moved[q*len(r.estimatorMaps)+i]); !math.IsNaN(m) {
-			sum += m
-			n++
-		}
-	})
-	return math.Sqrt(max(sum, 0) / float64(max(n, 1)))
+// systematic returns the squared relative error of a speed that tracks turned either way and
+// the track between them tell: with x a turn in standard deviations ln v = a + d x + e x^2,
+// whose variance is d^2 + 2 e^2 (derived). Each square is taken less what it is by chance.
+func systematic(left, right, middle *swayed) float64 {
+	d, e := math.Log(left.v/right.v)/2, math.Log(left.v*right.v/(middle.v*middle.v))/2
+	for j, m := range middle.pull {
+		l, r := left.v*left.pull[j], right.v*right.pull[j]
+		left.pull[j], right.pull[j] = (l-r)/2, (l+r)/2-middle.v*m
+	}
+	return d*d - resampled(left.pull, middle.share) + 2*(e*e-resampled(right.pull, middle.share))
 }
 
-// lattice calls f for the pixels of the lattice within angleReach of that nearest to p.
-func (r *run) lattice(p int, f func(q int)) {
+// withTrack returns the error of a speed v of estimator i, err what the frequencies tell. The
+// better these agree at a pixel of the lattice, the more it counts.
+func (r *run) withTrack(p, i int, v, err float64) float64 {
+	var sum, weight float64
+	r.lattice(swayLattice, swayReach, p, func(q int) {
+		if m := r.moved[q*len(r.estimatorMaps)+i]; m[1] > 0 {
+			w := 1 / math.Sqrt(float64(m[1]))
+			sum += w * float64(m[0])
+			weight += w
+		}
+	})
+	if !(sum > 0) {
+		return err
+	}
+	return math.Hypot(err, v*math.Sqrt(sum/weight))
+}
+
+// lattice calls f for the pixels of a lattice within reach of p either way.
+func (r *run) lattice(step, reach, p int, f func(q int)) {
+	up := func(x int) int { return (max(x, 0) + step - 1) / step * step }
 	x, y := r.at(p)
-	x, y = nearestLattice(x), nearestLattice(y)
-	for j := y - angleReach; j <= y+angleReach; j += angleLattice {
-		for i := x - angleReach; i <= x+angleReach; i += angleLattice {
+	for j := up(y - reach); j <= y+reach; j += step {
+		for i := up(x - reach); i <= x+reach; i += step {
 			if q := r.find(i, j); q >= 0 {
 				f(q)
 			}
