@@ -88,7 +88,13 @@ func Diagnose(ctx context.Context, o *obs.Observation, e line.Emitter, opt Optio
 	if err != nil {
 		return nil, err
 	}
-	if err := r.steps(ctx, workers, nil, r.spectrum, r.normalise, near[0], near[1], near[2]); err != nil {
+	if err := r.steps(ctx, workers, nil, r.spectrum); err != nil {
+		return nil, err
+	}
+	if err := r.removeTrend(ctx, workers); err != nil {
+		return nil, err
+	}
+	if err := r.steps(ctx, workers, nil, r.normalise, near[0], near[1], near[2]); err != nil {
 		return nil, err
 	}
 	return r.diagnose(r.newWorker(), pixel), nil

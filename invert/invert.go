@@ -223,15 +223,18 @@ const chunk = 64
 // distance from the Sun has no outward side: SPEED is then that of the stronger
 // waves. Pair has one speed for both.
 func Invert(ctx context.Context, o *obs.Observation, e line.Emitter, opt Options, workers int, progress func(done, total int)) (*Result, error) {
-	r, err := newRun(o, e, opt)
+	v, err := Begin(o, e, opt)
 	if err != nil {
 		return nil, err
 	}
-	if err := r.steps(ctx, workers, progress, r.spectrum, r.normalise, r.direct, r.swing, r.sway, r.measure); err != nil {
+	if progress == nil {
+		progress = func(int, int) {}
+	}
+	n := len(o.Pixels)
+	if err := v.take(ctx, o, workers, func(done, total int) { progress(done, total+stepsLeft*n) }); err != nil {
 		return nil, err
 	}
-	r.finish()
-	return r.result, nil
+	return v.Finish(ctx, workers, func(done, total int) { progress(n+done, n+total) })
 }
 
 // newRun checks an observation and a recipe and prepares their inversion.
@@ -314,22 +317,18 @@ func newRun(o *obs.Observation, e line.Emitter, opt Options) (*run, error) {
 	return run, nil
 }
 
-// steps runs steps one after the other over the field, the first of which has to be
-// spectrum.
+// steps runs steps one after the other over the field: spectrum, then, when the trend is
+// removed, normalise and the others.
 func (r *run) steps(ctx context.Context, workers int, progress func(done, total int), steps ...func(w *worker, p int)) error {
 	np := len(r.pixels)
-	workers = parallel.Workers(workers)
-	scratch := make([]*worker, workers)
-	for i := range scratch {
-		scratch[i] = r.newWorker()
-	}
+	workers = r.hire(workers)
 	var mu sync.Mutex
 	done, total := 0, len(steps)*np
-	for i, step := range steps {
+	for _, step := range steps {
 		err := parallel.For(ctx, (np+chunk-1)/chunk, workers, func(w, c int) error {
 			from, to := c*chunk, min((c+1)*chunk, np)
 			for p := from; p < to; p++ {
-				step(scratch[w], p)
+				step(r.scratch[w], p)
 			}
 			if progress != nil {
 				mu.Lock()
@@ -342,13 +341,17 @@ func (r *run) steps(ctx context.Context, workers int, progress func(done, total 
 		if err != nil {
 			return err
 		}
-		if i == 0 {
-			if err := r.removeTrend(ctx, workers); err != nil {
-				return err
-			}
-		}
 	}
 	return nil
+}
+
+// hire makes sure that each worker has its scratch, and returns their number.
+func (r *run) hire(workers int) int {
+	workers = parallel.Workers(workers)
+	for len(r.scratch) < workers {
+		r.scratch = append(r.scratch, r.newWorker())
+	}
+	return workers
 }
 
 // finish copies the flags into their map.
@@ -409,6 +412,7 @@ type run struct {
 	moved         [][2]float32    // relative variances of the speeds on a lattice, by estimators: what the track adds, and the resampled; zeros: not known
 	variance      []float64       // white-noise variance of the Doppler series [(km/s)^2]; NaN: not known
 	estimatorMaps []estimatorMaps
+	scratch       []*worker
 }
 
 // A worker is one goroutine's scratch.
@@ -619,7 +623,11 @@ func norm(row []float32) float32 {
 
 // normalise: rms, series for the caller, unit norm.
 func (r *run) normalise(w *worker, p int) {
-	row, series := r.spec[p*r.band.row:(p+1)*r.band.row], r.result.Series.Series(p, 0)
+	row := r.spec[p*r.band.row : (p+1)*r.band.row]
+	var series []float32
+	if s := r.result.Series; s != nil {
+		series = s.Series(p, 0)
+	}
 	n := norm(row)
 	r.norm[p] = n
 	if n == 0 {
@@ -629,7 +637,9 @@ func (r *run) normalise(w *worker, p int) {
 		}
 		return
 	}
-	w.transform.backward(row, series)
+	if series != nil {
+		w.transform.backward(row, series)
+	}
 	if waves := r.power(p) * (1 - r.noise(p)); waves > 0 {
 		r.set(mapDopplerRMS, p, math.Sqrt(waves))
 	} else {

@@ -67,7 +67,29 @@ type Exposed struct {
 
 // Expose makes the light and the truth of a scene; Develop makes observations of it.
 func (c *Scene) Expose(ctx context.Context, workers int, progress func(done, total int)) (*Exposed, *Truth, error) {
-	return c.expose(ctx, workers, tile, progress)
+	d := c.newDevelopment()
+	w := d.newWindow([]strip{{litTo: len(d.lit)}})
+	w.slide(0, len(d.lit))
+	l := d.newLighting(workers, tile, progress)
+	if err := l.shine(ctx, w, 0); err != nil {
+		return nil, nil, err
+	}
+	return &Exposed{d, w.raw}, l.truth, nil
+}
+
+// develop takes the light through the camera's stages. It uses the light up.
+func (e *Exposed) develop(ctx context.Context, workers int) (*obs.Observation, error) {
+	w := &window{to: len(e.lit), raw: e.raw}
+	if s := e.scatter(); s != nil {
+		if err := w.scatter(ctx, s, workers); err != nil {
+			return nil, err
+		}
+	}
+	o, err := e.development.develop(ctx, w, 0, len(e.field), workers)
+	if err != nil {
+		return nil, err
+	}
+	return o, lit(o)
 }
 
 // Develop makes an observation with a camera that may have fewer stages than the
@@ -92,6 +114,7 @@ func (e *Exposed) Develop(ctx context.Context, cam scenarios.Camera, lost bool, 
 		}
 		d.plan = &plan
 	}
+	d.whole = d.head()
 	n := Exposed{development: &d}
 	for l, raw := range e.raw {
 		n.raw[l] = raw

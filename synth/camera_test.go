@@ -375,20 +375,20 @@ var everything = append(slices.Clone(small), "camera.like=20cm-4.35arcsec", "cam
 	"camera.pointing={jitter: 2 arcsec, drift_x: 20 arcsec, drift_y: -5 arcsec}", "camera.scatter.share=0.05", "camera.brightening=0.1",
 	"camera.occulter={radius: 1.06 Rsun, width: 20 arcsec}", "camera.field_stop=1.32 Rsun", "camera.lost=0.05", "camera.gaps=[{from: 5 min, length: 1 min}]")
 
-// With every stage on, workers and tiles change no bit.
+// With every stage on, workers, tiles and strips change no bit.
 func TestCameraDoesNotDependOnWorkersOrTiles(t *testing.T) {
 	s, l := load(t, "quick", everything...)
 	k := scene(t, s, l)
 	var want [32]byte
-	for i, c := range []struct{ workers, tile int }{{1, 16}, {3, 7}} {
-		o, tr, err := k.observe(context.Background(), c.workers, c.tile, nil)
+	for i, c := range []struct{ workers, tile, rows int }{{1, 16, 32}, {3, 7, 2}} {
+		o, tr, err := k.observe(context.Background(), c.workers, c.tile, c.rows, nil)
 		if err != nil {
 			t.Fatal(err)
 		}
 		if got := fingerprint(o, tr); i == 0 {
 			want = got
 		} else if got != want {
-			t.Errorf("%d workers, tiles of %d: other bits", c.workers, c.tile)
+			t.Errorf("%d workers, tiles of %d, strips of %d rows: other bits", c.workers, c.tile, c.rows)
 		}
 		for _, m := range o.Mean[0] {
 			for _, x := range m {

@@ -41,9 +41,14 @@ type development struct {
 	moved []int32 // places in the wide grid whose spread light is moved into the field
 	lit   []int32 // places whose light is spread there
 	moves [2][][]camera.Move
+
+	half           int              // of the widest point spread [pixels]
+	litAt, movedAt []int32          // number in lit and moved, plus one, by place
+	whole          *obs.Observation // its head
 }
 
-func (c *Scene) newDevelopment(cam *camera.Camera, plan *camera.Schedule) *development {
+func (c *Scene) newDevelopment() *development {
+	cam, plan := c.camera(), camera.NewSchedule(c.s.Camera, Frames(c.s), c.s.Seed)
 	d := &development{c: c, cam: cam, plan: plan, all: Field(&c.Grid, c.s)}
 	reach := 0
 	for l, frames := range [2]int{len(plan.Lost[0]), len(plan.Lost[1])} {
@@ -53,8 +58,8 @@ func (c *Scene) newDevelopment(cam *camera.Camera, plan *camera.Schedule) *devel
 			reach = max(reach, r)
 		}
 	}
-	half := max(cam.Spread[0].Half, cam.Spread[1].Half)
-	d.wide = widen(c.Grid, reach+half)
+	d.half = max(cam.Spread[0].Half, cam.Spread[1].Half)
+	d.wide = widen(c.Grid, reach+d.half)
 	places := make([]int32, len(d.all))
 	for i, p := range d.all {
 		places[i] = d.wide.place(&c.Grid, p)
@@ -63,7 +68,12 @@ func (c *Scene) newDevelopment(cam *camera.Camera, plan *camera.Schedule) *devel
 		}
 	}
 	d.moved = d.dilate(places, reach)
-	d.lit = d.dilate(d.moved, half)
+	d.lit = d.dilate(d.moved, d.half)
+	d.litAt = d.numbers(d.lit)
+	if reach > 0 {
+		d.movedAt = d.numbers(d.moved)
+	}
+	d.whole = d.head()
 	return d
 }
 
@@ -128,34 +138,76 @@ func (d *development) numbers(places []int32) []int32 {
 	return at
 }
 
-// develop makes the frames of one line from the raw radiance of the lit places, which
-// it overwrites.
-func (d *development) develop(ctx context.Context, raw *obs.Cube, line, workers int) (*obs.Cube, error) {
-	frames := obs.NewCube(len(d.field), raw.Tunings, raw.Frames)
-	if raw.Frames == 0 {
+// head returns the observation that is to be made, without means and frames.
+func (d *development) head() *obs.Observation {
+	c, cam, plan := d.c, d.cam, d.plan
+	o := &obs.Observation{Grid: c.Grid, Pixels: d.field, Unit: Unit}
+	for l := range 2 {
+		for k, off := range c.s.Camera.Tunings {
+			o.Tunings = append(o.Tunings, obs.Tuning{Line: l + 1, Index: k, Wavelength: c.light.Rest[l] + float64(off), Delay: plan.Delay[k],
+				FilterFWHM: float64(c.s.Camera.Filter), Offset: float64(off), Stages: c.s.Camera.Stages})
+		}
+	}
+	for l := range 2 {
+		background, electrons, readNoise := d.background(l), cam.Electrons[l], cam.ReadNoise
+		if !c.s.Camera.Noise { // as if every photon were endlessly many electrons
+			electrons, readNoise = math.Inf(1), 0
+		}
+		for f, lost := range plan.Lost[l] {
+			exposure := float64(c.s.Camera.Exposure)
+			if lost {
+				exposure = 0
+			}
+			o.Exposures = append(o.Exposures, obs.Exposure{
+				Line: l + 1, Frame: f, Time: plan.Time(l, f, float64(c.s.Camera.Cadence)), Exposure: exposure,
+				Electrons: electrons, Background: background, ReadNoise: readNoise,
+			})
+		}
+	}
+	return o
+}
+
+// develop takes pixels of the field, by number, through the camera's stages from the
+// point spread on. The window must hold the light of all places whose light they get; the
+// observation is good until it is developed again.
+func (d *development) develop(ctx context.Context, w *window, from, to, workers int) (*obs.Observation, error) {
+	o := *d.whole
+	o.Pixels = d.field[from:to]
+	for l := range o.Frames {
+		var err error
+		if o.Frames[l], err = d.frames(ctx, w, l, from, to, workers); err != nil {
+			return nil, err
+		}
+		o.Mean[l] = obs.Means(o.Frames[l])
+	}
+	return withoutDark(&o), nil
+}
+
+// frames makes the frames of one line.
+func (d *development) frames(ctx context.Context, w *window, line, from, to, workers int) (*obs.Cube, error) {
+	raw := w.raw[line]
+	w.made[line] = room(w.made[line], to-from, raw.Tunings, raw.Frames)
+	frames := w.made[line]
+	if raw.Frames == 0 || from == to {
 		return frames, nil
 	}
-	scatter := camera.NewScatter(d.c.s.Camera, d.c.Grid.Pixel*obs.Arcsec, d.wide.Nx, d.lit)
-	lit := d.numbers(d.lit)
-	var moved []int32
 	var spread *obs.Cube // of one tuning, before it is moved
+	movedFrom := 0
 	if d.moves[line][0] != nil {
-		moved = d.numbers(d.moved)
-		spread = obs.NewCube(len(d.moved), 1, raw.Frames)
+		reach := d.wide.margin - d.half
+		movedFrom = d.before(d.moved, d.row(from)-reach)
+		movedTo := d.before(d.moved, d.row(to-1)+reach+1)
+		w.spread = room(w.spread, movedTo-movedFrom, 1, raw.Frames)
+		spread = w.spread
 	}
 	lost := d.plan.Lost[line]
 	workers = parallel.Workers(workers)
 	spreaders := make([]spreader, workers)
 	for k := range raw.Tunings {
-		source := func(i int) []float32 { return raw.Series(i, k) }
-		if scatter != nil {
-			if err := scatter.Apply(ctx, source, workers); err != nil {
-				return nil, err
-			}
-		}
+		source := func(i int) []float32 { return w.series(line, i, k) }
 		if spread != nil {
-			err := parallel.For(ctx, len(d.moved), workers, func(w, i int) error {
-				spreaders[w].spread(spread.Series(i, 0), &d.cam.Spread[line], d.wide.Nx, int(d.moved[i]), lit, source)
+			err := parallel.For(ctx, spread.Pixels, workers, func(w, i int) error {
+				spreaders[w].spread(spread.Series(i, 0), &d.cam.Spread[line], d.wide.Nx, int(d.moved[movedFrom+i]), d.litAt, source)
 				return nil
 			})
 			if err != nil {
@@ -168,14 +220,14 @@ func (d *development) develop(ctx context.Context, raw *obs.Cube, line, workers 
 				gain = append(gain, float32(d.cam.Gain(d.plan.Time(line, f, float64(d.c.s.Camera.Cadence))+d.plan.Delay[k])))
 			}
 		}
-		err := parallel.For(ctx, len(d.field), workers, func(w, i int) error {
+		err := parallel.For(ctx, frames.Pixels, workers, func(w, i int) error {
 			dst := frames.Series(i, k)
-			p := d.field[i]
+			p := d.field[from+i]
 			place := int(d.wide.place(&d.c.Grid, p))
 			if spread != nil {
-				d.move(dst, place, moved, spread, d.moves[line][k])
+				d.move(dst, place, movedFrom, spread, d.moves[line][k])
 			} else {
-				spreaders[w].spread(dst, &d.cam.Spread[line], d.wide.Nx, place, lit, source)
+				spreaders[w].spread(dst, &d.cam.Spread[line], d.wide.Nx, place, d.litAt, source)
 			}
 			for t, g := range gain {
 				dst[t] *= g
@@ -223,19 +275,56 @@ func (s *spreader) spread(dst []float32, k *camera.Kernel, columns, place int, l
 }
 
 // move fills dst with the light at a place, frame by frame from where the image stands.
-func (d *development) move(dst []float32, place int, moved []int32, spread *obs.Cube, moves []camera.Move) {
+// spread holds the spread light of the moved places from a number on.
+func (d *development) move(dst []float32, place, from int, spread *obs.Cube, moves []camera.Move) {
 	for t := range dst {
 		m := &moves[t]
 		sum := float32(0)
 		for j, wy := range m.Wy {
 			row := float32(0)
 			for i, wx := range m.Wx {
-				if q := int(moved[place+(m.Y+j)*d.wide.Nx+m.X+i]); q > 0 {
-					row += float32(wx * spread.Data[(q-1)*spread.Frames+t])
+				if q := int(d.movedAt[place+(m.Y+j)*d.wide.Nx+m.X+i]); q > 0 {
+					row += float32(wx * spread.Data[(q-1-from)*spread.Frames+t])
 				}
 			}
 			sum += float32(wy * row)
 		}
 		dst[t] = sum
 	}
+}
+
+// withoutDark takes out of the field the pixels of which no frame of the first line is
+// whole.
+func withoutDark(o *obs.Observation) *obs.Observation {
+	var keep []int
+	for i, x := range o.Mean[0][0] {
+		if x == x {
+			keep = append(keep, i)
+		}
+	}
+	if len(keep) == len(o.Pixels) {
+		return o
+	}
+	pixels := make([]int32, len(keep))
+	for j, i := range keep {
+		pixels[j] = o.Pixels[i]
+	}
+	o.Pixels = pixels
+	for l, c := range o.Frames {
+		kept := obs.NewCube(len(keep), c.Tunings, c.Frames)
+		for j, i := range keep {
+			for k := range c.Tunings {
+				copy(kept.Series(j, k), c.Series(i, k))
+			}
+		}
+		o.Frames[l] = kept
+		for k, m := range o.Mean[l] {
+			mean := make([]float32, len(keep))
+			for j, i := range keep {
+				mean[j] = m[i]
+			}
+			o.Mean[l][k] = mean
+		}
+	}
+	return o
 }

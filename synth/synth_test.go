@@ -324,20 +324,25 @@ func fingerprint(o *obs.Observation, tr *Truth) [32]byte {
 
 var small = []string{"image.from=268 deg", "image.to=271 deg", "camera.duration=20 min", "sight.step=1.5", "image.pixel=8 arcsec"}
 
-// Workers and tiles change no bit.
+// Workers, tiles and strips change no bit, and every place shines once.
 func TestObservationDoesNotDependOnWorkersOrTiles(t *testing.T) {
 	s, l := load(t, "quick", small...)
 	k := scene(t, s, l)
 	var want [32]byte
-	for i, c := range []struct{ workers, tile int }{{1, 16}, {2, 16}, {3, 7}, {1, 1}} {
-		o, tr, err := k.observe(context.Background(), c.workers, c.tile, nil)
+	places := len(k.newDevelopment().lit)
+	for i, c := range []struct{ workers, tile, rows int }{{1, 16, 32}, {2, 16, 32}, {3, 7, 3}, {1, 1, 1}} {
+		shone := 0
+		o, tr, err := k.observe(context.Background(), c.workers, c.tile, c.rows, func(done, _ int) { shone = done })
 		if err != nil {
 			t.Fatal(err)
+		}
+		if shone != places {
+			t.Errorf("strips of %d rows: light of %d places, %d are lit", c.rows, shone, places)
 		}
 		if got := fingerprint(o, tr); i == 0 {
 			want = got
 		} else if got != want {
-			t.Errorf("%d workers, tiles of %d: other bits", c.workers, c.tile)
+			t.Errorf("%d workers, tiles of %d, strips of %d rows: other bits", c.workers, c.tile, c.rows)
 		}
 	}
 }

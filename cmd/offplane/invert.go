@@ -137,6 +137,12 @@ func (p *program) infer(ctx context.Context, o *trial.Outcome, v scenarios.Inver
 	if err != nil {
 		return computing(ctx, err)
 	}
+	return p.writeInferred(ctx, o, v, file, f, r, bar)
+}
+
+// writeInferred writes maps and series; file holds the atomic data of the inversion, if
+// they are not the embedded ones.
+func (p *program) writeInferred(ctx context.Context, o *trial.Outcome, v scenarios.Inversion, file *compare.File, f *folder, r *record, bar *progress) error {
 	r.stage("inversion")
 	bar.update("writing", 0, 0)
 	var files []compare.File

@@ -14,6 +14,7 @@ import (
 	"offplane/compare/report"
 	"offplane/compare/stat"
 	"offplane/compare/trial"
+	"offplane/invert"
 	"offplane/scenarios"
 	"offplane/synth/fits"
 	"offplane/synth/obs"
@@ -93,14 +94,26 @@ func (p *program) run(ctx context.Context, l *scenarios.Loaded, w *work, g *gate
 	r.Inputs = inputs
 	defer f.abandon()
 	defer bar.wipe()
-	o, err := p.observe(ctx, l, w, f, r, bar, opt.frames)
+	v := l.Scenario.Inversion
+	emitter, file, err := trial.Model("line", v.Line, v.Helium)
+	if err != nil {
+		return misuse(err)
+	}
+	var inversion *invert.Inversion
+	o, err := p.observe(ctx, l, w, f, r, bar, opt.frames, func(head *obs.Observation) (take func(*obs.Observation) error, err error) {
+		inversion, err = invert.Begin(head, emitter, trial.Options(v))
+		return func(part *obs.Observation) error { return inversion.Take(ctx, part, w.workers) }, err
+	})
 	if err != nil {
 		return err
 	}
-	if err := p.infer(ctx, o, l.Scenario.Inversion, w, f, r, bar); err != nil {
+	bar.update("inversion", 0, 0)
+	if o.Inferred, err = inversion.Finish(ctx, w.workers, bar.stageFunc("inversion")); err != nil {
+		return computing(ctx, err)
+	}
+	if err := p.writeInferred(ctx, o, v, file, f, r, bar); err != nil {
 		return err
 	}
-	o.Observation.Frames = [2]*obs.Cube{} // the next run needs their place
 	bar.update("method", 0, 0)
 	o.Plane, err = trial.Plane(ctx, l, o.Inferred.Maps.Get("ANGLE").Data, trial.Settings{Workers: w.workers, Progress: bar.update})
 	if err != nil {

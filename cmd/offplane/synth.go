@@ -36,7 +36,7 @@ truth.fits says what the corona was.`,
 		}
 		defer f.abandon()
 		defer bar.wipe()
-		o, err := p.observe(ctx, l, &w, f, r, bar, frames)
+		o, err := p.observe(ctx, l, &w, f, r, bar, frames, nil)
 		if err != nil {
 			return err
 		}
@@ -62,11 +62,12 @@ truth.fits says what the corona was.`,
 	return cmd
 }
 
-// observe makes observation and truth and writes them.
-func (p *program) observe(ctx context.Context, l *scenarios.Loaded, w *work, f *folder, r *record, bar *progress, frames bool) (*trial.Outcome, error) {
+// observe makes observation and truth and writes them. Begin, if not nil, is given the head
+// of the observation before it is made and returns what takes its parts.
+func (p *program) observe(ctx context.Context, l *scenarios.Loaded, w *work, f *folder, r *record, bar *progress, frames bool, begin func(head *obs.Observation) (func(part *obs.Observation) error, error)) (*trial.Outcome, error) {
 	r.Scenario, r.ScenarioSHA256, r.Seed = l.Name, l.SHA256, &l.Scenario.Seed
 	bar.update("corona", 0, 0)
-	o, err := trial.Observe(ctx, l, trial.Settings{Workers: w.workers, Progress: bar.update})
+	o, rec, err := trial.Begin(ctx, l, trial.Settings{Workers: w.workers})
 	if err != nil {
 		// Whatever the corona or the data refuse was asked for by the scenario.
 		return nil, computing(ctx, err)
@@ -79,12 +80,36 @@ func (p *program) observe(ctx context.Context, l *scenarios.Loaded, w *work, f *
 		r.Inputs = append(r.Inputs, e)
 		p.doubt(file.Path)
 	}
+	take := func(*obs.Observation) error { return nil }
+	if begin != nil {
+		if take, err = begin(rec.Head); err != nil {
+			return nil, computing(ctx, err)
+		}
+	}
+	out, err := obs.CreateObservation(f.path("observation.fits"), rec.Head, primary(), frames)
+	if err != nil {
+		return nil, err
+	}
+	defer out.Abort()
+	var unwritten error
+	o.Observation, o.Truth, err = rec.Parts(ctx, w.workers, bar.stageFunc("synthesis"), func(part *obs.Observation) error {
+		if unwritten = out.Add(part); unwritten != nil {
+			return unwritten
+		}
+		return take(part)
+	})
+	if unwritten != nil {
+		return nil, unwritten
+	}
+	if err != nil {
+		return nil, computing(ctx, err)
+	}
 	r.stage("synthesis")
 	bar.update("writing", 0, 0)
 	if err := obs.WriteMaps(f.path("truth.fits"), &o.Truth.Grid, o.Truth.Maps, primary(), scenarioHDU(l, o.Files)); err != nil {
 		return nil, err
 	}
-	if err := obs.WriteObservation(f.path("observation.fits"), o.Observation, primary(), frames); err != nil {
+	if err := out.Close(o.Observation); err != nil {
 		return nil, err
 	}
 	r.stage("writing")

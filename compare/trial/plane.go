@@ -6,6 +6,7 @@ import (
 	"offplane/invert"
 	"offplane/scenarios"
 	"offplane/synth"
+	"offplane/synth/obs"
 )
 
 // Plane measures what the tracker makes of waves that it sees without any line of sight
@@ -22,14 +23,28 @@ func Plane(ctx context.Context, l *scenarios.Loaded, directions []float32, s Set
 	if err != nil {
 		return nil, err
 	}
-	o, _, err := synth.Synthesize(ctx, &c, light, s.Workers, nil)
+	scene, err := synth.NewScene(ctx, &c, light, s.Workers)
 	if err != nil {
 		return nil, err
 	}
-	o.Mean[1] = nil // no density is asked for
+	rec, err := scene.Record()
+	if err != nil {
+		return nil, err
+	}
 	opt := Options(c.Inversion)
 	opt.Directions = directions
-	r, err := invert.Invert(ctx, o, nil, opt, s.Workers, s.report("method"))
+	head := *rec.Head
+	head.Mean[1] = nil // no density is asked for
+	inversion, err := invert.Begin(&head, nil, opt)
+	if err != nil {
+		return nil, err
+	}
+	inversion.MapsOnly = true
+	take := func(part *obs.Observation) error { return inversion.Take(ctx, part, s.Workers) }
+	if _, _, err = rec.Parts(ctx, s.Workers, nil, take); err != nil {
+		return nil, err
+	}
+	r, err := inversion.Finish(ctx, s.Workers, s.report("method"))
 	if err != nil {
 		return nil, err
 	}

@@ -42,7 +42,7 @@ func (s *Settings) report(stage string) func(done, total int) {
 // An Outcome holds every noun of the sentence.
 type Outcome struct {
 	Scene       *synth.Scene
-	Observation *obs.Observation // with frames
+	Observation *obs.Observation
 	Truth       *synth.Truth
 	Inferred    *invert.Result
 	Plane       []float32 // see Plane; nil unless it was asked for
@@ -50,9 +50,9 @@ type Outcome struct {
 	Files       []File
 }
 
-// Run runs a scenario.
+// Run runs a scenario. The frames of its observation are not kept.
 func Run(ctx context.Context, l *scenarios.Loaded, s Settings) (*Outcome, error) {
-	o, err := Observe(ctx, l, s)
+	o, rec, err := Begin(ctx, l, s)
 	if err != nil {
 		return nil, err
 	}
@@ -61,7 +61,15 @@ func Run(ctx context.Context, l *scenarios.Loaded, s Settings) (*Outcome, error)
 	if err != nil {
 		return nil, err
 	}
-	if o.Inferred, err = invert.Invert(ctx, o.Observation, emitter, Options(v), s.Workers, s.report("inversion")); err != nil {
+	inversion, err := invert.Begin(rec.Head, emitter, Options(v))
+	if err != nil {
+		return nil, err
+	}
+	take := func(part *obs.Observation) error { return inversion.Take(ctx, part, s.Workers) }
+	if o.Observation, o.Truth, err = rec.Parts(ctx, s.Workers, s.report("synthesis"), take); err != nil {
+		return nil, err
+	}
+	if o.Inferred, err = inversion.Finish(ctx, s.Workers, s.report("inversion")); err != nil {
 		return nil, err
 	}
 	if s.Method {
@@ -73,32 +81,42 @@ func Run(ctx context.Context, l *scenarios.Loaded, s Settings) (*Outcome, error)
 	return o, err
 }
 
-// Observe runs a scenario as far as the observation and the truth.
-func Observe(ctx context.Context, l *scenarios.Loaded, s Settings) (*Outcome, error) {
+// Begin runs a scenario as far as the scene, and prepares its observation.
+func Begin(ctx context.Context, l *scenarios.Loaded, s Settings) (*Outcome, *synth.Recording, error) {
 	c := &l.Scenario
 	light, files, err := Light(c)
 	if err != nil {
-		return nil, err
+		return nil, nil, err
 	}
-	o := &Outcome{Files: files}
-	if o.Scene, err = synth.NewScene(ctx, c, light, s.Workers); err != nil {
-		return nil, err
-	}
-	o.Observation, o.Truth, err = o.Scene.Observe(ctx, s.Workers, s.report("synthesis"))
-	if err != nil {
-		return nil, err
-	}
-	o.Observation.Scenario = l.SHA256
 	if v := c.Inversion.Line.Data; v != "" {
 		_, file, err := atom("inversion.line", v)
 		if err != nil {
-			return nil, err
+			return nil, nil, err
 		}
-		if len(o.Files) == 0 || o.Files[0] != *file {
-			o.Files = append(o.Files, *file)
+		if len(files) == 0 || files[0] != *file {
+			files = append(files, *file)
 		}
 	}
-	return o, nil
+	o := &Outcome{Files: files}
+	if o.Scene, err = synth.NewScene(ctx, c, light, s.Workers); err != nil {
+		return nil, nil, err
+	}
+	rec, err := o.Scene.Record()
+	if err != nil {
+		return nil, nil, err
+	}
+	rec.Head.Scenario = l.SHA256
+	return o, rec, nil
+}
+
+// Observe runs a scenario as far as the observation, with its frames, and the truth.
+func Observe(ctx context.Context, l *scenarios.Loaded, s Settings) (*Outcome, error) {
+	o, rec, err := Begin(ctx, l, s)
+	if err != nil {
+		return nil, err
+	}
+	o.Observation, o.Truth, err = rec.Whole(ctx, s.Workers, s.report("synthesis"))
+	return o, err
 }
 
 // Judge compares inferred maps with the truth of a scenario. plane is what Plane returns;

@@ -16,6 +16,7 @@ import (
 	"encoding/binary"
 	"errors"
 	"fmt"
+	"io"
 	"math"
 	"os"
 	"strconv"
@@ -41,7 +42,8 @@ type Writer struct {
 	buf   *bufio.Writer
 	pos   int64
 	names map[string]bool
-	open  *body // streamed HDU not yet closed
+	open  *body   // streamed HDU not yet closed
+	kept  []*body // those whose data come in any order
 	err   error
 }
 
@@ -97,6 +99,11 @@ func (w *Writer) Close() error {
 	}
 	if w.err == nil && w.open != nil {
 		w.err = w.fail(w.open.name, w.open.unfinished())
+	}
+	for _, b := range w.kept {
+		if w.err == nil && b.left != 0 {
+			w.err = w.fail(b.name, b.unfinished())
+		}
 	}
 	err := w.buf.Flush()
 	if e := w.file.Close(); err == nil {
@@ -164,6 +171,7 @@ type body struct {
 	name   string
 	header Header
 	start  int64
+	from   int64 // of the data
 	data   sum
 	left   int64 // bytes of data to come
 	total  int64
@@ -174,6 +182,7 @@ func (w *Writer) begin(h Header) (*body, error) {
 	b := &body{w: w, header: h, start: w.pos}
 	n, err := w.buf.Write(h.encode())
 	w.pos += int64(n)
+	b.from = w.pos
 	return b, err
 }
 
@@ -190,7 +199,7 @@ func (b *body) Write(p []byte) (int, error) {
 	return n, err
 }
 
-// end pads the data, fills in the sums and writes the header again.
+// end pads the data and finishes the HDU.
 func (b *body) end() error {
 	if b.left != 0 {
 		return b.unfinished()
@@ -202,6 +211,13 @@ func (b *body) end() error {
 		}
 		b.left = 0
 	}
+	w.open = nil
+	return b.sums()
+}
+
+// sums fills in the sums of the data and writes the header again.
+func (b *body) sums() error {
+	w := b.w
 	data := b.data.value()
 	b.header.Set("DATASUM", strconv.FormatUint(uint64(data), 10), "of the data")
 	var total sum
@@ -212,7 +228,6 @@ func (b *body) end() error {
 		return err
 	}
 	_, err := w.file.WriteAt(b.header.encode(), b.start)
-	w.open = nil
 	return err
 }
 
@@ -365,6 +380,61 @@ func (w *Writer) Cube(name string, header Header, axes ...int) (*CubeWriter, err
 	return &CubeWriter{body: b, raw: make([]byte, 4*axes[0]*axes[1])}, nil
 }
 
+// Reserve is Cube for pixels that come in any order, by WriteAt; other HDUs may be
+// written before them.
+func (w *Writer) Reserve(name string, header Header, axes ...int) (*CubeWriter, error) {
+	c, err := w.Cube(name, header, axes...)
+	if err != nil {
+		return nil, err
+	}
+	b := c.body
+	w.open, w.kept = nil, append(w.kept, b)
+	w.pos += (b.total + blockSize - 1) / blockSize * blockSize
+	err = w.buf.Flush()
+	if err == nil {
+		err = w.file.Truncate(w.pos) // zeros, also for the padding
+	}
+	if err == nil {
+		_, err = w.file.Seek(w.pos, io.SeekStart)
+	}
+	return c, w.fail(name, err)
+}
+
+// WriteAt writes pixels of a reserved cube from number i on, x fastest. Each pixel must be
+// written once; after the last one the HDU is finished.
+func (c *CubeWriter) WriteAt(pixels []float32, i int) error {
+	b := c.body
+	if b.w.err != nil {
+		return b.w.err
+	}
+	size, at := 4*int64(len(pixels)), 4*int64(i)
+	if i < 0 || at+size > b.total || size > b.left {
+		return b.w.fail(b.name, fmt.Errorf("%d pixels from %d on are too many", len(pixels), i))
+	}
+	if len(c.raw) < int(size) {
+		c.raw = make([]byte, size)
+	}
+	raw := c.raw[:size]
+	encode(raw, pixels)
+	b.data.Write(raw)
+	b.left -= size
+	_, err := b.w.file.WriteAt(raw, b.from+at)
+	if err == nil && b.left == 0 {
+		err = b.sums()
+	}
+	return b.w.fail(b.name, err)
+}
+
+func encode(raw []byte, pixels []float32) {
+	for i, v := range pixels {
+		bits := math.Float32bits(v)
+		if v != v {
+			bits = quietNaN32
+		}
+		binary.BigEndian.PutUint32(raw[4*i:], bits)
+	}
+}
+
 // WritePlane writes the next plane, x fastest; after the last one the HDU is
 // finished.
 func (c *CubeWriter) WritePlane(plane []float32) error {
@@ -375,13 +445,7 @@ func (c *CubeWriter) WritePlane(plane []float32) error {
 	if 4*len(plane) != len(c.raw) || b.left == 0 {
 		return b.w.fail(b.name, fmt.Errorf("a plane of %d pixels too many or of the wrong size", len(plane)))
 	}
-	for i, v := range plane {
-		bits := math.Float32bits(v)
-		if v != v {
-			bits = quietNaN32
-		}
-		binary.BigEndian.PutUint32(c.raw[4*i:], bits)
-	}
+	encode(c.raw, plane)
 	_, err := b.Write(c.raw)
 	if err == nil && b.left == 0 {
 		err = b.end()

@@ -3,7 +3,6 @@ package obs
 import (
 	"fmt"
 	"math"
-	"strconv"
 
 	"offplane/synth/fits"
 )
@@ -22,36 +21,15 @@ const blockFrames = 16
 // Every mean of the first line must be finite: that is how the field is found
 // again.
 func WriteObservation(path string, o *Observation, primary fits.Header, frames bool) error {
-	if err := o.check(frames); err != nil {
-		return fmt.Errorf("%s: %w", path, err)
-	}
-	if _, err := o.Grid.header(); err != nil {
-		return fmt.Errorf("%s: %w", path, err)
-	}
-	if o.Scenario != "" {
-		primary = append(append(fits.Header{}, primary...), fits.Card{Key: "SCENSHA", Value: o.Scenario})
-	}
-	w, err := fits.Create(path, primary)
+	w, err := CreateObservation(path, o, primary, frames)
 	if err != nil {
 		return err
 	}
 	defer w.Abort()
-	for line := 1; line <= 2; line++ {
-		if err := o.writeMean(w, line); err != nil {
-			return err
-		}
+	if err := w.Add(o); err != nil {
+		return err
 	}
-	for _, t := range []fits.Table{o.tuningTable(), o.exposureTable()} {
-		if err := w.AddTable(t); err != nil {
-			return err
-		}
-	}
-	for line := 1; frames && line <= 2; line++ {
-		if err := o.writeFrames(w, line); err != nil {
-			return err
-		}
-	}
-	return w.Close()
+	return w.Close(o)
 }
 
 // check returns an error if the parts of an observation do not fit each other.
@@ -140,72 +118,12 @@ func (o *Observation) lineHeader(tunings []Tuning, about string, axes ...axis) (
 	return append(h, cards...), err
 }
 
-func (o *Observation) writeMean(w *fits.Writer, line int) error {
-	tunings := o.LineTunings(line)
-	if len(tunings) == 0 {
-		return nil
-	}
-	h, err := o.lineHeader(tunings, "mean radiance through the filter", wavelengths(tunings))
-	if err != nil {
-		return err
-	}
-	cube, err := w.Cube(fmt.Sprintf("LINE%d_MEAN", line), h, o.Grid.Nx, o.Grid.Ny, len(tunings))
-	if err != nil {
-		return err
-	}
-	plane := blank(o.Grid.Nx * o.Grid.Ny)
-	for k := range tunings {
-		for i, p := range o.Pixels {
-			plane[p] = o.Mean[line-1][k][i]
-		}
-		if err := cube.WritePlane(plane); err != nil {
-			return err
-		}
-	}
-	return nil
-}
-
 func blank(n int) []float32 {
 	plane := make([]float32, n)
 	for i := range plane {
 		plane[i] = float32(math.NaN())
 	}
 	return plane
-}
-
-func (o *Observation) writeFrames(w *fits.Writer, line int) error {
-	c := o.Frames[line-1]
-	tunings, exposures := o.LineTunings(line), o.LineExposures(line)
-	if c == nil || len(exposures) == 0 {
-		return nil
-	}
-	h, err := o.lineHeader(tunings, "radiance through the filter", wavelengths(tunings), times(exposures))
-	if err != nil {
-		return err
-	}
-	cube, err := w.Cube("LINE"+strconv.Itoa(line), h, o.Grid.Nx, o.Grid.Ny, c.Tunings, c.Frames)
-	if err != nil {
-		return err
-	}
-	plane := blank(o.Grid.Nx * o.Grid.Ny)
-	return c.blocks(func(from, to int, planes [][]float32) error {
-		for p := range c.Pixels {
-			for k := range c.Tunings {
-				for j, v := range c.Series(p, k)[from:to] {
-					planes[j*c.Tunings+k][p] = v
-				}
-			}
-		}
-		for _, values := range planes {
-			for i, p := range o.Pixels {
-				plane[p] = values[i]
-			}
-			if err := cube.WritePlane(plane); err != nil {
-				return err
-			}
-		}
-		return nil
-	})
 }
 
 // blocks calls do for one block of frames after the other, with a buffer of one

@@ -2,6 +2,7 @@ package obs
 
 import (
 	"bytes"
+	"errors"
 	"math"
 	"os"
 	"path/filepath"
@@ -71,6 +72,58 @@ func TestObservationRoundTrip(t *testing.T) {
 	}
 }
 
+// An observation in parts has the bytes of the whole; parts out of order are refused.
+func TestObservationInParts(t *testing.T) {
+	o := testObservation(37, 16)
+	head := *o
+	for l, c := range o.Frames {
+		head.Frames[l] = &Cube{Pixels: c.Pixels, Tunings: c.Tunings, Frames: c.Frames}
+	}
+	part := func(from, to int) *Observation {
+		p := *o
+		p.Pixels = o.Pixels[from:to]
+		for l, c := range o.Frames {
+			size := c.Tunings * c.Frames
+			p.Frames[l] = &Cube{Pixels: to - from, Tunings: c.Tunings, Frames: c.Frames, Data: c.Data[from*size : to*size]}
+		}
+		return &p
+	}
+	cuts := []int{0}
+	for i := 1; i < len(o.Pixels); i++ {
+		if int(o.Pixels[i])/o.Grid.Nx != int(o.Pixels[i-1])/o.Grid.Nx && len(cuts) < 3 {
+			cuts = append(cuts, i)
+		}
+	}
+	cuts = append(cuts, len(o.Pixels))
+	dir := t.TempDir()
+	whole, parts := filepath.Join(dir, "whole.fits"), filepath.Join(dir, "parts.fits")
+	if err := WriteObservation(whole, o, nil, true); err != nil {
+		t.Fatal(err)
+	}
+	w, err := CreateObservation(parts, &head, nil, true)
+	if err != nil {
+		t.Fatal(err)
+	}
+	for i, to := range cuts[1:] {
+		if err := w.Add(part(cuts[i], to)); err != nil {
+			t.Fatal(err)
+		}
+	}
+	if err := w.Add(part(0, cuts[1])); err == nil || !strings.Contains(err.Error(), "comes next") {
+		t.Errorf("a part again: %v", err)
+	}
+	bare := *o
+	bare.Frames = [2]*Cube{}
+	if err := w.Close(&bare); err != nil {
+		t.Fatal(err)
+	}
+	a, _ := os.ReadFile(whole)
+	b, _ := os.ReadFile(parts)
+	if len(cuts) != 4 || len(a) == 0 || !bytes.Equal(a, b) {
+		t.Errorf("%d parts: other bytes than the whole", len(cuts)-1)
+	}
+}
+
 // Frames without means bring field and means themselves.
 func TestObservationOfFramesAlone(t *testing.T) {
 	o := testObservation(37, 16)
@@ -90,12 +143,8 @@ func TestObservationOfFramesAlone(t *testing.T) {
 			t.Fatal(err)
 		}
 	}
-	for line := 1; line <= 2; line++ {
-		if err := o.writeFrames(w, line); err != nil {
-			t.Fatal(err)
-		}
-	}
-	if err := w.Close(); err != nil {
+	r := Recorder{path: path, head: o, out: w}
+	if err := errors.Join(r.reserveFrames(), r.rows(o, o.Grid.Ny), w.Close()); err != nil {
 		t.Fatal(err)
 	}
 	back, err := ReadObservation(path)
