@@ -297,7 +297,7 @@ func newRun(o *obs.Observation, e line.Emitter, opt Options) (*run, error) {
 	}
 	maps, estimators := mapsOf(&o.Grid, o.Unit, opt.Estimators)
 	r := &Result{Maps: maps, Series: obs.NewCube(np, 1, when.frames), Cadence: when.cadence}
-	run := &run{estimatorMaps: estimators, field: f, cube: cube, timing: when, means: means, result: r, variance: make([]float64, np), spread: make([][2]float32, np), dft: newDFT(b)}
+	run := &run{estimatorMaps: estimators, field: f, cube: cube, timing: when, means: means, result: r, variance: make([]float64, np), ratio: make([][2]float64, np), spread: make([][2]float32, np), dft: newDFT(b)}
 	run.turns = make([][2]float32, np)
 	run.swung = [2][][2]float32{make([][2]float32, np), make([][2]float32, np)}
 	run.moved = make([][2]float32, np*len(estimators))
@@ -411,6 +411,7 @@ type run struct {
 	swung         [2][][2]float32 // axes turned by that error, both ways
 	moved         [][2]float32    // relative variances of the speeds on a lattice, by estimators: what the track adds, and the resampled; zeros: not known
 	variance      []float64       // white-noise variance of the Doppler series [(km/s)^2]; NaN: not known
+	ratio         [][2]float64    // of the lines and its variance in the logarithm; NaN: not known
 	estimatorMaps []estimatorMaps
 	scratch       []*worker
 }
@@ -513,7 +514,7 @@ func (r *run) spectrum(w *worker, p int) {
 	} else if r.means[0] != nil { // a Doppler cube has no profile
 		r.flag[p] |= FlagNoLine
 	}
-	r.density(p, first, second)
+	r.divide(p, first, second)
 
 	t := w.transform
 	bad := r.series(w, p)
@@ -532,9 +533,10 @@ func (r *run) spectrum(w *worker, p int) {
 	r.norm[p] = norm(row)
 }
 
-// density: ratio and electron density of a pixel, a user's own maps before the profiles.
-func (r *run) density(p int, first, second reading) {
-	ratio := math.NaN()
+// divide: ratio of the lines of a pixel, a user's own maps before the profiles.
+func (r *run) divide(p int, first, second reading) {
+	ratio, variance := math.NaN(), math.NaN()
+	r.ratio[p] = [2]float64{ratio, variance}
 	switch {
 	case r.own.density != nil:
 		if n := float64(r.own.density[p]); n > 0 && !math.IsInf(n, 1) {
@@ -547,12 +549,24 @@ func (r *run) density(p int, first, second reading) {
 		ratio = float64(r.own.ratio[p])
 	case first.ok && second.ok:
 		ratio = second.energy / first.energy
+		if r.means[0].noise.known && r.means[1].noise.known {
+			variance = first.energyVar/float64(r.present(p)) + second.energyVar/float64(r.means[1].noise.frames)
+		}
 	}
 	if math.IsNaN(ratio) {
 		r.flag[p] |= FlagNoRatio
 		return
 	}
 	r.set(mapRatio, p, ratio)
+	r.ratio[p] = [2]float64{ratio, variance}
+}
+
+// density: electron density of a pixel from its ratio.
+func (r *run) density(p int) {
+	ratio, variance := r.ratio[p][0], r.ratio[p][1]
+	if math.IsNaN(ratio) {
+		return
+	}
 	ix, iy := r.at(p)
 	dist, _ := r.grid.Polar(ix, iy)
 	n, slope, why := r.inverter.Density(ratio, dist)
@@ -561,9 +575,8 @@ func (r *run) density(p int, first, second reading) {
 		return
 	}
 	r.set(mapDensity, p, n)
-	if r.own.ratio == nil && r.means[0].noise.known && r.means[1].noise.known {
-		v := first.energyVar/float64(r.present(p)) + second.energyVar/float64(r.means[1].noise.frames)
-		r.set(mapDensityErr, p, n*math.Abs(slope)*math.Sqrt(v))
+	if !math.IsNaN(variance) {
+		r.set(mapDensityErr, p, n*math.Abs(slope)*math.Sqrt(variance))
 	}
 }
 
@@ -621,8 +634,9 @@ func norm(row []float32) float32 {
 	return float32(math.Sqrt(sum))
 }
 
-// normalise: rms, series for the caller, unit norm.
+// normalise: density, rms, series for the caller, unit norm.
 func (r *run) normalise(w *worker, p int) {
+	r.density(p)
 	row := r.spec[p*r.band.row : (p+1)*r.band.row]
 	var series []float32
 	if s := r.result.Series; s != nil {

@@ -15,8 +15,9 @@ type Inversion struct {
 	// MapsOnly leaves out the series of the result.
 	MapsOnly bool
 
-	run   *run
-	taken []int32 // raster indices
+	run     *run
+	emitter line.Emitter
+	taken   []int32 // raster indices
 }
 
 // Begin prepares the inversion of an observation of which head has grid, field, tunings,
@@ -27,7 +28,7 @@ func Begin(head *obs.Observation, e line.Emitter, opt Options) (*Inversion, erro
 	if err != nil {
 		return nil, err
 	}
-	return &Inversion{run: r, taken: make([]int32, 0, len(head.Pixels))}, nil
+	return &Inversion{run: r, emitter: e, taken: make([]int32, 0, len(head.Pixels))}, nil
 }
 
 // Take takes the next part, an observation of its own pixels. They follow those of the
@@ -53,7 +54,7 @@ func (v *Inversion) take(ctx context.Context, part *obs.Observation, workers int
 	f, row := *r.field, r.band.row
 	f.pixels, f.spec, f.norm, f.flag = part.Pixels, r.spec[from*row:to*row], r.norm[from:to], r.flag[from:to]
 	some := *r
-	some.field, some.cube, some.variance = &f, part.Frames[0], r.variance[from:to]
+	some.field, some.cube, some.variance, some.ratio = &f, part.Frames[0], r.variance[from:to], r.ratio[from:to]
 	some.own.density, some.own.ratio = part.Density, part.Ratio
 	for i, m := range r.means {
 		if m != nil {
@@ -66,7 +67,7 @@ func (v *Inversion) take(ctx context.Context, part *obs.Observation, workers int
 }
 
 // stepsLeft is the number of steps of Finish.
-const stepsLeft = 3
+const stepsLeft = 5
 
 // Finish makes the maps and series of what was taken. Progress is that of Invert.
 func (v *Inversion) Finish(ctx context.Context, workers int, progress func(done, total int)) (*Result, error) {
@@ -82,6 +83,12 @@ func (v *Inversion) Finish(ctx context.Context, workers int, progress func(done,
 		r.spec = r.spec[:n*r.band.row] // the others end with the pixels
 		s := r.result.Series
 		s.Pixels, s.Data = n, s.Data[:n*s.Frames]
+		if r.inverter != nil { // its range is that of the field
+			var err error
+			if r.inverter, err = newInverter(v.emitter, r.opt.Temperature, r.field); err != nil {
+				return nil, err
+			}
+		}
 	}
 	if v.MapsOnly {
 		r.result.Series = nil

@@ -5,6 +5,7 @@ import (
 	"crypto/sha256"
 	"encoding/binary"
 	"encoding/hex"
+	"errors"
 	"fmt"
 	"math"
 	"os"
@@ -440,6 +441,12 @@ func TestRefusals(t *testing.T) {
 		{"short cube", func(w *Writer) { w.Cube("A", nil, 1, 1, 2) }, "[A]: A has only 0 of its 8 bytes of data"},
 		{"early HDU", func(w *Writer) { w.Cube("A", nil, 1, 1, 2); AddImage(w, "B", nil, one, pixel) }, "[B]: begun too early: A has only"},
 		{"long cube", func(w *Writer) { c, _ := w.Cube("A", nil, 1, 1, 1); c.WritePlane(pixel); c.WritePlane(pixel) }, "[A]: a plane of 1 pixels too many"},
+		{"short reserve", func(w *Writer) {
+			c, _ := w.Reserve("A", nil, 1, 1, 2)
+			AddImage(w, "B", nil, one, pixel)
+			c.WriteAt(pixel, 1)
+		}, "[A]: A has only 4 of its 8 bytes of data"},
+		{"beyond the reserve", func(w *Writer) { c, _ := w.Reserve("A", nil, 1, 1, 2); c.WriteAt(pixel, 2) }, "[A]: 1 pixels from 2 on are too many"},
 		{"axes", func(w *Writer) { w.Cube("A", nil, math.MaxInt, math.MaxInt, 2) }, "[A]: axes ["},
 		{"table BUNIT", func(w *Writer) {
 			w.AddTable(Table{Name: "A", Header: Header{{"BUNIT", "G", ""}}, Columns: []Column{{Name: "x", Data: []int32{}}}})
@@ -468,6 +475,50 @@ func TestRefusals(t *testing.T) {
 		if len(left) != 0 {
 			t.Errorf("%s: left %v", c.name, left)
 		}
+	}
+}
+
+// Pixels of reserved cubes in any order give the bytes of planes in their order.
+func TestReserve(t *testing.T) {
+	dir := t.TempDir()
+	var files [2][]byte
+	axes := []int{5, 3, 2}
+	pixels := make([]float32, 30)
+	for i := range pixels {
+		pixels[i] = float32(math.Sin(float64(i)))
+	}
+	pixels[7] = float32(math.NaN())
+	for i, reserved := range []bool{false, true} {
+		path := filepath.Join(dir, fmt.Sprint(i))
+		w, err := Create(path, nil)
+		if err != nil {
+			t.Fatal(err)
+		}
+		begin := w.Cube
+		if reserved {
+			begin = w.Reserve
+		}
+		var last [2]*CubeWriter
+		for j, name := range []string{"A", "B"} {
+			if last[j], err = begin(name, Header{{"BUNIT", "G", ""}}, axes...); err != nil {
+				t.Fatal(err)
+			}
+			for k := 0; !reserved && k < 30; k += 15 {
+				err = errors.Join(err, last[j].WritePlane(pixels[k:k+15]))
+			}
+		}
+		for _, at := range []int{20, 5, 0, 25, 10, 15} {
+			for j := 1; reserved && j >= 0; j-- {
+				err = errors.Join(err, last[j].WriteAt(pixels[at:at+5], at))
+			}
+		}
+		if err := errors.Join(err, w.Close()); err != nil {
+			t.Fatal(err)
+		}
+		files[i], _ = os.ReadFile(path)
+	}
+	if len(files[0]) == 0 || !bytes.Equal(files[0], files[1]) {
+		t.Errorf("%d and %d bytes, not the same", len(files[0]), len(files[1]))
 	}
 }
 
