@@ -10,6 +10,7 @@
 //     and means weighted by emission and by wave power.
 //  4. light.go adds up, frame by frame, the light of every sample through every filter
 //     tuning, Doppler shifted by its own velocity at that tuning's time (package kernel).
+//     window.go holds the light of some rows of the image at a time.
 //  5. develop.go takes the light through the stages of the camera (package camera): the
 //     Observation. budget.go says beforehand what it will be worth.
 package synth
