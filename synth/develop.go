@@ -69,10 +69,7 @@ func (c *Scene) newDevelopment() *development {
 	}
 	d.moved = d.dilate(places, reach)
 	d.lit = d.dilate(d.moved, d.half)
-	d.litAt = d.numbers(d.lit)
-	if reach > 0 {
-		d.movedAt = d.numbers(d.moved)
-	}
+	d.litAt, d.movedAt = d.numbers(d.lit), d.numbers(d.moved)
 	d.whole = d.head()
 	return d
 }
