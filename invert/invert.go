@@ -300,7 +300,7 @@ func newRun(o *obs.Observation, e line.Emitter, opt Options) (*run, error) {
 	run := &run{estimatorMaps: estimators, field: f, cube: cube, timing: when, means: means, result: r, variance: make([]float64, np), ratio: make([][2]float64, np), spread: make([][2]float32, np), dft: newDFT(b)}
 	run.turns = make([][2]float32, np)
 	run.swung = [2][][2]float32{make([][2]float32, np), make([][2]float32, np)}
-	run.moved = make([][2]float32, np*len(estimators))
+	run.moved = make([]float32, np*len(estimators))
 
 	for i, m := range [2][]float32{o.Density, o.Ratio} {
 		if m != nil && len(m) != np {
@@ -409,7 +409,7 @@ type run struct {
 	spread        [][2]float32    // variance of the axis, resampled and formal [rad^2]; zeros: not known
 	turns         [][2]float32    // cos and sin of twice the error of the axis; zeros: not known
 	swung         [2][][2]float32 // axes turned by that error, both ways
-	moved         [][2]float32    // relative variances of the speeds on a lattice, by estimators: what the track adds, and the resampled; zeros: not known
+	moved         []float32       // squared relative error of each estimator's speed that the track's makes, on a lattice; NaN: not known
 	variance      []float64       // white-noise variance of the Doppler series [(km/s)^2]; NaN: not known
 	ratio         [][2]float64    // of the lines and its variance in the logarithm; NaN: not known
 	estimatorMaps []estimatorMaps

@@ -5,8 +5,9 @@ import "math"
 // The errors of the directions move the tracks, and the speeds with them: where arrival
 // times change across a track too, a small turn changes the slope of the lags in
 // proportion. With tracks held at the mean directions of all realisations, the speeds of
-// pair on quick scatter by 6.5 km/s in its lowest bin of height, with their own tracks by 20
-// (own simulation, 11 realisations).
+// pair on a wedge of quick scatter by 6 km/s in its lowest bin of height and errors without
+// the track's part hold their mean in 72 % of the cases; with their own tracks they scatter by
+// 29 km/s (own simulation, 64 realisations).
 //
 // So at one pixel in swayLattice both ways the track is traced again along directions that
 // are all turned by what the halves of the spectrum tell about their errors, one way and the
@@ -47,6 +48,9 @@ func (r *run) sway(w *worker, p int) {
 		return
 	}
 	out := r.moved[p*len(w.estimators) : (p+1)*len(w.estimators)]
+	for i := range out {
+		out[i] = float32(math.NaN())
+	}
 	if r.axis[p] == ([2]float32{}) || r.turns[p] == ([2]float32{}) {
 		return
 	}
@@ -68,11 +72,7 @@ func (r *run) sway(w *worker, p int) {
 		}
 	}
 	for i := range out {
-		left, right, middle := &w.swayed[0][i], &w.swayed[1][i], &w.swayed[2][i]
-		if !math.IsNaN(left.v * right.v * middle.v) {
-			told := middle.v * middle.v * resampled(middle.pull, middle.share)
-			out[i] = [2]float32{float32(systematic(left, right, middle)), float32(told)}
-		}
+		out[i] = float32(systematic(&w.swayed[0][i], &w.swayed[1][i], &w.swayed[2][i]))
 	}
 }
 
@@ -86,6 +86,9 @@ type swayed struct {
 // the track between them tell: with x a turn in standard deviations ln v = a + d x + e x^2,
 // whose variance is d^2 + 2 e^2 (derived). Each square is taken less what it is by chance.
 func systematic(left, right, middle *swayed) float64 {
+	if math.IsNaN(left.v * right.v * middle.v) {
+		return math.NaN()
+	}
 	d, e := math.Log(left.v/right.v)/2, math.Log(left.v*right.v/(middle.v*middle.v))/2
 	for j, m := range middle.pull {
 		l, r := left.v*left.pull[j], right.v*right.pull[j]
@@ -94,21 +97,16 @@ func systematic(left, right, middle *swayed) float64 {
 	return d*d - resampled(left.pull, middle.share) + 2*(e*e-resampled(right.pull, middle.share))
 }
 
-// withTrack returns the error of a speed v of estimator i, err what the frequencies tell. The
-// better these agree at a pixel of the lattice, the more it counts.
+// withTrack returns the error of a speed v of estimator i, err what the frequencies tell.
 func (r *run) withTrack(p, i int, v, err float64) float64 {
-	var sum, weight float64
+	sum, n := 0.0, 0
 	r.lattice(swayLattice, swayReach, p, func(q int) {
-		if m := r.moved[q*len(r.estimatorMaps)+i]; m[1] > 0 {
-			w := 1 / math.Sqrt(float64(m[1]))
-			sum += w * float64(m[0])
-			weight += w
+		if m := float64(r.moved[q*len(r.estimatorMaps)+i]); !math.IsNaN(m) {
+			sum += m
+			n++
 		}
 	})
-	if !(sum > 0) {
-		return err
-	}
-	return math.Hypot(err, v*math.Sqrt(sum/weight))
+	return math.Hypot(err, v*math.Sqrt(max(sum, 0)/float64(max(n, 1))))
 }
 
 // lattice calls f for the pixels of a lattice within reach of p either way.
