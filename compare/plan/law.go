@@ -28,7 +28,7 @@ type law struct {
 	hours   []float64     // durations of the nodes
 	seen    [][][]scatter // by duration, noise and bin
 	chance  [][]Outcome   // scatter of the maps' own outcomes, by duration and noise
-	cadence []float64     // of the frames that are left of noise-free waves [s]
+	slow    []float64     // cadences of fewer frames of noise-free waves [s]
 	thinned [][]scatter   // by these and bin, at mainNode
 }
 
@@ -86,7 +86,7 @@ func (r *reference) learnLaw(ctx context.Context, cadence float64) (*law, error)
 		w.seen, w.chance = append(w.seen, seen), append(w.chance, chances)
 	}
 	for _, m := range thin {
-		w.cadence = append(w.cadence, float64(m)*r.cadence)
+		w.slow = append(w.slow, float64(m)*r.cadence)
 		if m == 1 {
 			w.thinned = append(w.thinned, w.seen[main][0])
 			continue
@@ -236,10 +236,10 @@ func between(xs []float64, x float64, scale func(float64) float64) (i int, t flo
 
 // sparse adds what a cadence does to noise-free waves beyond that of the reference.
 func (w *law) sparse(s *scatter, b int, cadence float64) {
-	if len(w.cadence) < 2 {
+	if len(w.slow) < 2 {
 		return
 	}
-	i, t := between(w.cadence, cadence, nil)
+	i, t := between(w.slow, cadence, nil)
 	of := func(get func(*scatter) float64) float64 {
 		return get(&w.thinned[i][b])*(1-t) + get(&w.thinned[i+1][b])*t - get(&w.thinned[0][b])
 	}

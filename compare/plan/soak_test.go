@@ -30,6 +30,15 @@ var (
 // of the points of a grid over duration, cadence and photons, none used in calibration.
 //
 //	go test -tags soak -run TestSpeedOnAGrid ./compare/plan -timeout 0 [-plan.trials 80] [-plan.kept FILE]
+//
+// Measured, 30 points of 80 realisations, 13 CPU minutes: 29 within 25 %, predicted over
+// simulated 0.79 to 1.11 and 1.28 (1 h at noise over waves of 1.6); before tunings in turn
+// were part of the law for long cadences 28, 0.74 to 1.27. Noise over waves went from 0.05
+// to 1.6, where a third of the pixels has a value (33 to 42 % predicted, 26 to 39 % seen).
+// Beyond, at 3.7 (1 cm), no pixel has a value in half of the realisations: there is no
+// scatter to predict, and the predicted yield says so (3 to 7 %). From 2 h on the simulated
+// scatter goes as T^-0.504; 1 h every 90 s scatters by 0.0627, every 10 s by 0.0609; 2 h
+// every 60 s by 0.0397, every 15 s by 0.0377.
 func TestSpeedOnAGrid(t *testing.T) {
 	// The wedge of the embedded campaigns, lines of sight and all. Exposures fill the
 	// cadence, so that noise over waves depends on the aperture nearly alone.
@@ -171,37 +180,58 @@ func (q *point) keep(t *testing.T) {
 // and the likeliest design at 70 % of its hours fails in most.
 //
 //	go test -tags soak -run TestRecommendation ./compare/plan -timeout 0 [-plan.trials 40]
-//
-// Measured with 40 trials each: 36 met by the recommended design (1.75 h), 12 by the
-// likeliest at 70 % (1.22 h). With a goal of 0.018, near the floor, they were 36 and 29:
-// there 30 % of the hours make little difference.
 func TestRecommendation(t *testing.T) {
-	n := min(*trials, 40)
-	l := loadPlane(t, "goal.random=0.025", "goal.systematic=0.2", "effort.designs=6", "vary.0.range={from: 1 h, to: 6 h, steps: 21}", "vary.2.range.steps=2", "vary.3.values=[0.05]")
-	p, err := Run(context.Background(), l, Settings{})
-	if err != nil {
-		t.Fatal(err)
-	}
-	if p.Best == nil {
-		t.Fatalf("no design meets the goal: %s", p.Shortfall())
-	}
-	var cheap *Candidate
-	for i := range p.Candidates {
-		if c := &p.Candidates[i]; c.Hours <= 0.7*p.Best.Hours && (cheap == nil || c.Success > cheap.Success) {
-			cheap = c
-		}
-	}
-	for i, c := range []*Candidate{p.Best, cheap} {
-		if c == nil {
-			t.Fatal("nothing is cheaper")
-		}
-		s, err := newPredictor(l, &Settings{}, nil).simulate(context.Background(), c.Design, n, random.Hash(7, uint64(i)))
+	short := "vary.0.range={from: 1 h, to: 6 h, steps: 21}"
+	for _, q := range []struct {
+		name  string
+		l     *Loaded
+		steep bool // the error falls faster with time than as T^-1/2
+	}{
+		{"plane, 2.5 %", loadPlane(t, "goal.random=0.025", "goal.systematic=0.2", "effort.designs=6", short, "vary.2.range.steps=2", "vary.3.values=[0.05]"), true},
+		{"plane, 1.8 %", loadPlane(t, "goal.random=0.018", "goal.systematic=0.2", "effort.designs=6", short, "vary.2.range.steps=2", "vary.3.values=[0.05]"), false},
+		{"wedge, 6 %", loadWedge(t), true},
+	} {
+		p, err := Run(context.Background(), q.l, Settings{})
 		if err != nil {
 			t.Fatal(err)
 		}
-		fmt.Printf("%v, %.2f h: predicted %.4f, chance %.2f; simulated %.4f, %d of %d met\n", c.Values, c.Hours, c.Outcome, c.Success, s.Outcome, s.Met, n)
-		if i == 0 && 10*s.Met < 8*n || i == 1 && 2*s.Met >= n {
-			t.Errorf("%v: %d of %d met", c.Values, s.Met, n)
+		if p.Best == nil {
+			t.Fatalf("%s: no design meets the goal: %s", q.name, p.Shortfall())
+		}
+		var cheap *Candidate
+		for i := range p.Candidates {
+			if c := &p.Candidates[i]; c.Hours <= 0.7*p.Best.Hours && (cheap == nil || c.Success > cheap.Success) {
+				cheap = c
+			}
+		}
+		if cheap == nil {
+			t.Fatalf("%s: nothing is cheaper than %.2f h", q.name, p.Best.Hours)
+		}
+		n, w := min(*trials, 40), newPredictor(q.l, &Settings{}, nil)
+		for i, c := range []*Candidate{p.Best, cheap} {
+			s, err := w.simulate(context.Background(), c.Design, n, random.Hash(7, uint64(i)))
+			if err != nil {
+				t.Fatal(err)
+			}
+			var each []float64
+			for _, o := range s.Each {
+				each = append(each, o.Random)
+			}
+			fmt.Printf("%s: %v, %.2f h: predicted %.4f, chance %.2f; simulated %.4f, one map +- %.4f, %d of %d met\n", q.name, c.Values, c.Hours, c.Outcome, c.Success, s.Outcome, deviation(each), s.Met, n)
+			if i == 0 && 10*s.Met < 8*n || i == 1 && q.steep && 2*s.Met >= n {
+				t.Errorf("%s: %v: %d of %d met", q.name, c.Values, s.Met, n)
+			}
 		}
 	}
+}
+
+// loadWedge is an embedded campaign in which the duration alone may vary.
+func loadWedge(t *testing.T) *Loaded {
+	t.Helper()
+	l, err := Load("quiet-night", "effort.waves=24 h", "effort.designs=6", "vary.0.range={from: 45 min, to: 240 min, steps: 27}", "vary.1.values=[30 s]",
+		"vary.2.values=[0.1]", "vary.3.values=[2.5 s]", "vary.4.values=[8 ppm]")
+	if err != nil {
+		t.Fatal(err)
+	}
+	return l
 }

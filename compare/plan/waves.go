@@ -11,6 +11,7 @@ import (
 	"offplane/scenarios"
 	"offplane/scenarios/units"
 	"offplane/synth"
+	"offplane/synth/camera"
 	"offplane/synth/line"
 	"offplane/synth/obs"
 	"offplane/synth/random"
@@ -19,13 +20,12 @@ import (
 // A reference is long noise-free Doppler series of the target in pixels of one size, and
 // what one recipe makes of them.
 type reference struct {
+	*still
 	l      *Loaded
 	o      *Settings
 	recipe scenarios.Inversion
-	atom   line.Emitter
 
 	doppler *obs.Observation // a Doppler cube [km/s]
-	cadence float64          // of it [s]
 	band    float64          // noise bandwidth of the recipe [Hz]
 	region  region
 	offset  []float64 // ln(B/B_SKY) less ln v of the same map, each pixel of the region: speed of the truth and density
@@ -43,11 +43,13 @@ type still struct {
 	frames  *obs.Observation
 	truth   *synth.Truth
 	atom    line.Emitter
-	cadence float64 // [s]
+	cadence float64          // [s]
+	camera  scenarios.Camera // that of the scenario
 }
 
 // observe simulates the waves once, without noise.
 func (p *predictor) observe(ctx context.Context, s scenarios.Scenario) (*still, error) {
+	whole := s.Camera
 	cadence := min(restful, math.Floor(450/float64(s.Waves.Spectrum.High)*10)/10)
 	c := &s.Camera
 	c.Cadence, c.Duration = units.Duration(cadence), p.l.Effort.Waves
@@ -61,12 +63,12 @@ func (p *predictor) observe(ctx context.Context, s scenarios.Scenario) (*still, 
 		return nil, err
 	}
 	frames, truth, err := scene.Observe(ctx, p.o.Workers, p.o.report("waves"))
-	return &still{frames, truth, k.atom, cadence}, err
+	return &still{frames, truth, k.atom, cadence, whole}, err
 }
 
 // newReference is what a recipe needs of a still.
 func (l *Loaded) newReference(ctx context.Context, recipe scenarios.Inversion, q *still, o *Settings) (*reference, error) {
-	r := &reference{l: l, o: o, recipe: recipe, atom: q.atom, cadence: q.cadence, band: recipe.Filter.Width.Hz() * math.Sqrt(math.Pi/2)}
+	r := &reference{l: l, o: o, recipe: recipe, still: q, band: recipe.Filter.Width.Hz() * math.Sqrt(math.Pi/2)}
 	if recipe.Filter.Means == "sigma" {
 		r.band *= math.Sqrt2
 	}
@@ -147,11 +149,7 @@ func fieldOf(v, n, mu float64) float64 {
 // dopplerCube turns noise-free frames into Doppler shifts: the centre of the parabola
 // through the logarithms.
 func dopplerCube(o *obs.Observation) *obs.Observation {
-	ts := o.LineTunings(1)
-	x := make([]float64, len(ts))
-	for k, t := range ts {
-		x[k] = t.Offset / (t.Wavelength - t.Offset) * units.LightSpeed / 1e5
-	}
+	x := speeds(o)
 	solve := throughLogs(x)
 	in := o.Frames[0]
 	out := obs.NewCube(in.Pixels, 1, in.Frames)
@@ -168,6 +166,33 @@ func dopplerCube(o *obs.Observation) *obs.Observation {
 		}
 	}
 	return cubeOf(o, out)
+}
+
+// speeds returns the tunings of the first line [km/s].
+func speeds(o *obs.Observation) []float64 {
+	ts := o.LineTunings(1)
+	x := make([]float64, len(ts))
+	for k, t := range ts {
+		x[k] = t.Offset / (t.Wavelength - t.Offset) * units.LightSpeed / 1e5
+	}
+	return x
+}
+
+// turns returns how much each of the reference's frames counts in one frame of a cadence
+// that many times as long. Tunings that are exposed in turn see the waves at different
+// times: the logarithm of a Gaussian line of width w shifts by 2 x v/w^2 at the tuning x,
+// so that a tuning's share in the shift is x times its part in the parabola's slope
+// (derived).
+func (q *still) turns(thin int) []float64 {
+	weight := make([]float64, thin)
+	x := speeds(q.frames)
+	solve := throughLogs(x)
+	c := q.camera
+	c.Cadence, c.Gaps = units.Duration(float64(thin)*q.cadence), nil
+	for k, t := range camera.NewSchedule(c, 1, 0).Delay {
+		weight[min(int(math.Round(t/q.cadence)), thin-1)] += solve.At(1, k) * x[k]
+	}
+	return weight
 }
 
 // cubeOf makes an observation of Doppler shifts.
@@ -208,13 +233,18 @@ func (r *reference) try(ctx context.Context, n node) (speed, field sample, err e
 		// White noise of variance s^2 keeps 2 dt B s^2 of it in the band.
 		sigma[p] *= n.ratio / math.Sqrt(2*r.cadence*float64(n.thin)*r.band)
 	}
+	turns := r.turns(n.thin)
 	for k := range r.pieces(n.hours) {
 		part := obs.NewCube(long.Pixels, 1, frames/n.thin)
 		for p := range long.Pixels {
 			key := random.NewKey(r.l.Seed, 0x6e6f6465, uint64(k), uint64(p), math.Float64bits(n.ratio), uint64(n.thin), uint64(frames)) // "node"
 			in, out := long.Series(p, 0)[k*frames:], part.Series(p, 0)
 			for f := range out {
-				out[f] = in[f*n.thin]
+				sum := 0.0
+				for j, w := range turns {
+					sum += float64(w * float64(in[f*n.thin+j]))
+				}
+				out[f] = float32(sum)
 				if sigma[p] > 0 {
 					out[f] += float32(sigma[p] * key.Normal(uint64(f)))
 				}
