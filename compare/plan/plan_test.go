@@ -7,7 +7,12 @@ import (
 	"strings"
 	"testing"
 
+	"github.com/google/go-cmp/cmp"
+	"github.com/google/go-cmp/cmp/cmpopts"
+
+	"offplane/scenarios"
 	"offplane/scenarios/strict"
+	"offplane/synth/obs"
 	"offplane/synth/random"
 )
 
@@ -285,6 +290,32 @@ func TestJudge(t *testing.T) {
 	for met, want := range []float64{0.3, 0.38, 0.47, 0.55, 0.63, 0.72, p, p, p} {
 		if got := chance(&Simulation{Each: each, Met: met}); math.Abs(got-want) > 0.005 {
 			t.Errorf("%d of 8 met: chance %.3f, want %.3f", met, got, want)
+		}
+	}
+}
+
+// Tunings in turn see the waves at different times: the wings make the shift, the centre
+// has no part in it.
+func TestTurns(t *testing.T) {
+	q := &still{frames: &obs.Observation{}, cadence: 30, camera: scenarios.Default().Camera}
+	for i, x := range q.camera.Tunings {
+		q.frames.Tunings = append(q.frames.Tunings, obs.Tuning{Line: 1, Index: i, Wavelength: 1074.7 + float64(x), Offset: float64(x)})
+	}
+	same := cmpopts.EquateApprox(0, 1e-3)
+	for _, c := range []struct {
+		sequential bool
+		order      []int
+		thin       int
+		want       []float64
+	}{
+		{false, nil, 3, []float64{1, 0, 0}},
+		{true, nil, 1, []float64{1}},
+		{true, nil, 3, []float64{0.5, 0, 0.5}},
+		{true, []int{1, 0, 2}, 3, []float64{0, 0.5, 0.5}},
+	} {
+		q.camera.Sequential, q.camera.Order = c.sequential, c.order
+		if got := q.turns(c.thin); !cmp.Equal(got, c.want, same) {
+			t.Errorf("%+v: %v", c, got)
 		}
 	}
 }
