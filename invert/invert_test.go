@@ -294,6 +294,47 @@ func TestDirectionOfTravel(t *testing.T) {
 	}
 }
 
+// Tracks that one arm cuts short at the rim of the field are flagged, others are not: by
+// the geometry of straight tracks of 15 steps either way that end half a pixel outside, but
+// for those within two steps of the border between both.
+func TestOneSidedTracks(t *testing.T) {
+	q := defaultPatch()
+	q.frames = 180
+	r := q.invert(t, Default())
+	s, c := math.Sincos(q.angle * math.Pi / 180)
+	arm := func(p int, sign float64) (n int) {
+		for n < 15 {
+			x, y := float64(p%q.nx)-sign*s*float64(n+1), float64(p/q.nx)+sign*c*float64(n+1)
+			if x < -0.5 || y < -0.5 || x > float64(q.nx)-0.5 || y > float64(q.ny)-0.5 {
+				break
+			}
+			n++
+		}
+		return n
+	}
+	var seen [2]int
+	for p, flag := range r.Maps.Get("FLAG").Ints {
+		if flag&(FlagIslandSmall|FlagIslandRound|FlagTrackShort) != 0 {
+			continue
+		}
+		a, b := arm(p, 1), arm(p, -1)
+		if d := 2*min(a, b) - max(a, b); d > 4 || d < -4 {
+			got := flag&FlagOneSided != 0
+			if want := d < 0; got != want {
+				t.Errorf("pixel %d, %d: arms of %d and %d steps, flagged %v", p%q.nx, p/q.nx, a, b, got)
+			} else if want {
+				seen[1]++
+			} else {
+				seen[0]++
+			}
+		}
+	}
+	t.Logf("%d tracks with two sides, %d with one", seen[0], seen[1])
+	if min(seen[0], seen[1]) < 200 {
+		t.Errorf("%d tracks with two sides, %d with one", seen[0], seen[1])
+	}
+}
+
 // Frames through the filter give what the Doppler cube gives, photon noise comes off
 // the Doppler rms, and the density's error is its scatter.
 func TestFramesWithPhotonNoise(t *testing.T) {
