@@ -608,9 +608,10 @@ func cpuTime() float64 {
 	return float64(u.Utime.Sec+u.Stime.Sec) + float64(u.Utime.Usec+u.Stime.Usec)/1e6
 }
 
-// 60 x 60 pixels of three tunings, 21-pixel window, 31-point track. Measured in turn with
-// the version before (16 000 to 19 500 for the first): 22 000 to 26 700 pixels a second of
-// processor time, on two shared cores.
+// 60 x 60 pixels of three tunings, 21-pixel window, 31-point track. Measured in turn with the
+// version before in one process, best of 20, on two cores that were busy: 30 000 pixels a
+// second of processor time for the first (28 500 before, whose errors left the track out), 20
+// 000 for the last.
 func BenchmarkInvert(b *testing.B) {
 	for _, c := range []struct {
 		name       string
