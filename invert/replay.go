@@ -1,6 +1,7 @@
 package invert
 
 import (
+	"context"
 	"fmt"
 	"math"
 	"slices"
@@ -45,14 +46,15 @@ func DiagnoseSeries(g *obs.Grid, pixels []int32, series *obs.Cube, cadence float
 	}
 	as := *r.band // the series as they are
 	as.weight, as.taper = slices.Repeat([]float64{1}, len(as.weight)), slices.Repeat([]float64{1}, len(as.taper))
-	w := r.newWorker()
-	w.transform = newTransformer(&as, newDFT(&as))
-	for _, step := range []func(w *worker, p int){r.spectrum, r.normalise, near[0], near[1], near[2]} {
-		for p := range pixels {
-			step(w, p)
-		}
+	r.hire(0)
+	d := newDFT(&as)
+	for _, w := range r.scratch {
+		w.transform = newTransformer(&as, d)
 	}
-	return r.diagnose(w, pixel), nil
+	if err := r.steps(context.Background(), 0, nil, r.spectrum, r.normalise, near[0], near[1], near[2]); err != nil {
+		return nil, err
+	}
+	return r.diagnose(r.scratch[0], pixel), nil
 }
 
 // A PlaneWave is a wave on a track of equidistant points, alone in the data: one wave
