@@ -311,6 +311,13 @@ type speed struct {
 // truth unweighted, 1.76 and 1.89 with the coherence and its square; derived, own
 // simulation.)
 //
+// Lags bend where the speed changes along the track. On a track with two equal arms a line has
+// the slope that a parabola has at the pixel, so the bend costs what the third order does:
+// below 1 % where the speed grows by less than a factor 1.6 from end to end (see
+// TestAverageOverTheTrack). A track with one arm reads the speed of its middle, which a
+// parabola would mend at 3.8 times the error (derived; 16 points of like errors): such tracks
+// are flagged instead.
+//
 // The search goes outward from the centre, each point starting where the two before it
 // point, so a peak one period off is not taken.
 //
