@@ -13,3 +13,10 @@ func TestRandomScenariosSoak(t *testing.T) {
 		t.Run(fmt.Sprint(number), func(t *testing.T) { sane(t, drawn(t, number)) })
 	}
 }
+
+// TestSeenFromBehindSoak: .ci/soak tests.
+func TestSeenFromBehindSoak(t *testing.T) {
+	for number := uint64(0); number < 60; number++ {
+		t.Run(fmt.Sprint(number), func(t *testing.T) { turned(t, drawn(t, number)) })
+	}
+}
