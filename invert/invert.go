@@ -50,7 +50,7 @@ type Options struct {
 	Estimators []string
 
 	// Directions, if not nil, are taken in place of the islands' [deg, like ANGLE], one a
-	// pixel of the grid, NaN for none: other data on the tracks of these. The default is nil.
+	// pixel of the grid, NaN for none: other data on the tracks of these, and errors for tracks that are known. The default is nil.
 	Directions []float32
 }
 
