@@ -108,7 +108,7 @@ func TestViewBrowser(t *testing.T) {
 // A click on the full ring of the default, which RING_DIR holds or which is run here. How
 // long it takes from the click until all is drawn is printed; the viewer promises 0.3 s on
 // a machine with nothing else to do. Of a busy one only the processor's time tells: the
-// answer may take half a second of it at most, with all that the test does itself.
+// answer may take 0.6 s of it at most, with all that the test does itself.
 func TestRingBrowser(t *testing.T) {
 	dir := os.Getenv("RING_DIR")
 	if dir == "" {
@@ -148,8 +148,8 @@ func TestRingBrowser(t *testing.T) {
 	took, work = took[1:], work[1:] // the first waits for the corona
 	t.Logf("%d clicks on %d x %d pixels: median %.0f ms, %.0f to %.0f; processor of the server %.0f ms, %.0f to %.0f", len(took), g.Nx, g.Ny,
 		stat.Median(took), slices.Min(took), slices.Max(took), stat.Median(work), slices.Min(work), slices.Max(work))
-	if m := stat.Median(work); m > 500 {
-		t.Errorf("an answer takes %.0f ms of a processor, want 500 or less", m)
+	if m := stat.Median(work); m > 600 {
+		t.Errorf("an answer takes %.0f ms of a processor, want 600 or less", m)
 	}
 }
 
