@@ -110,7 +110,7 @@ func (v *validator) image(s *Scenario) {
 	v.rule(n <= maxPixels, []string{"image.pixel", "image.inner", "image.outer", "image.from", "image.to", "image.roll", "observer.distance"},
 		"%v makes an image of %.3g pixels; at most %.3g are allowed", m.Pixel, n, float64(maxPixels))
 	bytes := 4 * n * float64(len(s.Camera.Tunings)) * float64(s.Camera.Duration/s.Camera.Cadence)
-	v.rule(bytes <= maxFrames, []string{"camera.cadence", "camera.duration", "image.pixel"},
+	v.rule(bytes <= maxFrames, []string{"camera.cadence", "camera.duration", "camera.tunings", "image", "observer.distance"},
 		"%.3g pixels, %d tunings and a frame every %v for %v make %.3g GB of frames; at most %.3g GB are allowed", n, len(s.Camera.Tunings), s.Camera.Cadence, s.Camera.Duration, bytes/1e9, maxFrames/1e9)
 	if !s.Sight.Plane {
 		step := s.Sight.Step * s.Waves.Cell.Rsun() * float64(m.Outer)
@@ -135,7 +135,8 @@ func (m *Image) pixels(distance units.Distance) float64 {
 	from, to, roll := float64(m.From), float64(m.To), float64(m.Roll)
 	corner(from)
 	corner(to)
-	for q := math.Ceil((from - roll) / 90); q*90+roll < to; q++ { // where the rim touches the sides
+	// Where the rim touches the sides: four places, whatever the angles are.
+	for i, q := 0, math.Ceil((from-roll)/90); i < 4 && q*90+roll < to; i, q = i+1, q+1 {
 		corner(q*90 + roll)
 	}
 	return math.Ceil((right-left)/pitch) * math.Ceil((high-low)/pitch)
@@ -188,22 +189,21 @@ func (v *validator) band(c *Camera, f *Band) {
 	if f.Means == "sigma" {
 		reach *= math.Sqrt2
 	}
-	frequencies := func(frames int) (n int) {
-		for j := 1; 2*j < frames; j++ {
-			if math.Abs(1e3*float64(j)/(float64(frames)*float64(c.Cadence))-float64(f.Centre)) <= reach {
-				n++
-			}
-		}
-		return n
+	// Those of j/(frames cadence) below Nyquist's; counted, not listed: frames may be absurd.
+	frequencies := func(frames float64) float64 {
+		scale := frames * float64(c.Cadence) / 1e3
+		first := max(1, math.Ceil((float64(f.Centre)-reach)*scale))
+		last := min(math.Ceil(frames/2)-1, math.Floor((float64(f.Centre)+reach)*scale))
+		return max(0, last-first+1)
 	}
-	frames := int(float64(c.Duration)/float64(c.Cadence) + 1e-9)
+	frames := math.Floor(float64(c.Duration)/float64(c.Cadence) + 1e-9)
 	have, enough := frequencies(frames), frames
 	const most = 1 << 14
 	for frequencies(enough) < leastFrequencies && enough < most {
 		enough++
 	}
 	v.rule(have >= leastFrequencies || enough == most, []string{"camera.duration", "camera.cadence", "inversion.filter.width"},
-		"%v is too short: the inversion's band needs %d frequencies and has %d; write %v or more", c.Duration, leastFrequencies, have, units.Duration(float64(enough)*float64(c.Cadence)))
+		"%v is too short: the inversion's band needs %d frequencies and has %.0f; write %v or more", c.Duration, leastFrequencies, have, units.Duration(enough*float64(c.Cadence)))
 }
 
 // timing checks that everything finds its time.

@@ -321,11 +321,22 @@ type head struct {
 	Meta yaml.Node `yaml:"meta"`
 }
 
+// maxBytes bounds what is read of a table; ours stay below a megabyte.
+const maxBytes = 1 << 26
+
 // Read reads a table. Integer and float types of other widths become int64 and
 // float64. Without a head a column is float64 if every field is a number, else
 // string.
 func Read(r io.Reader) (*Table, error) {
-	in := bufio.NewReader(r)
+	limit := &io.LimitedReader{R: r, N: maxBytes + 1}
+	t, err := read(bufio.NewReader(limit))
+	if limit.N == 0 {
+		return nil, fmt.Errorf("is too large; at most %d bytes are read", maxBytes)
+	}
+	return t, err
+}
+
+func read(in *bufio.Reader) (*Table, error) {
 	var yamlText strings.Builder
 	line := 0
 	ecsv := false
