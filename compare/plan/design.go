@@ -1,6 +1,7 @@
 package plan
 
 import (
+	"context"
 	"fmt"
 	"math"
 	"slices"
@@ -22,7 +23,7 @@ type Design struct {
 }
 
 // designs lists the whole design space, the last knob first.
-func (l *Loaded) designs() []Design {
+func (l *Loaded) designs(ctx context.Context) ([]Design, error) {
 	n := 1
 	for _, v := range l.values {
 		n *= len(v)
@@ -37,9 +38,12 @@ func (l *Loaded) designs() []Design {
 			d.Values[j] = v[rest%len(v)]
 			rest /= len(v)
 		}
+		if err := ctx.Err(); err != nil {
+			return nil, err
+		}
 		l.resolve(d)
 	}
-	return out
+	return out, nil
 }
 
 // resolve makes the scenario of a design and counts its hours.

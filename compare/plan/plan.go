@@ -80,7 +80,10 @@ func (p *Plan) Chosen() *Candidate {
 
 // Run makes the plan of a campaign.
 func Run(ctx context.Context, l *Loaded, o Settings) (*Plan, error) {
-	ds := l.designs()
+	ds, err := l.designs(ctx)
+	if err != nil {
+		return nil, err
+	}
 	if err := possible(ds); err != nil {
 		return nil, err
 	}

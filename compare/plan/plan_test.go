@@ -20,9 +20,12 @@ import (
 func TestPlane(t *testing.T) {
 	l := loadPlane(t, "effort.designs=1", "effort.trials=4")
 	o := &Settings{}
-	ds := l.designs()
-	w := &planner{predictor: newPredictor(l, o, ds), plan: &Plan{Campaign: l}}
 	ctx := context.Background()
+	ds, err := l.designs(ctx)
+	if err != nil {
+		t.Fatal(err)
+	}
+	w := &planner{predictor: newPredictor(l, o, ds), plan: &Plan{Campaign: l}}
 	if err := w.predictAll(ctx, ds); err != nil {
 		t.Fatal(err)
 	}
