@@ -180,6 +180,12 @@ func (q *point) keep(t *testing.T) {
 // and the likeliest design at 70 % of its hours fails in most.
 //
 //	go test -tags soak -run TestRecommendation ./compare/plan -timeout 0 [-plan.trials 40]
+//
+// Measured, of 40 (in brackets the predicted chance of a map): on the plane with 2.5 % 36
+// (0.95) and 13 (0.36); on the wedge with 6 % 38 (0.95) and 12 (0.44); on the plane with
+// 1.8 % 40 (0.90) and 28 (0.59). The last is no matter of the floor, which is 0.2 %: there
+// the error goes as T^-1/2, so that 30 % less time costs 20 % of error, less than one map's
+// own error scatters (0.0020 to 0.0046 of 0.0166).
 func TestRecommendation(t *testing.T) {
 	short := "vary.0.range={from: 1 h, to: 6 h, steps: 21}"
 	for _, q := range []struct {

@@ -3,6 +3,7 @@ package plan
 import (
 	"fmt"
 	"math"
+	"slices"
 	"strconv"
 	"strings"
 )
@@ -40,6 +41,11 @@ func (p *Plan) Text() string {
 	say("Were it otherwise (chances by prediction alone; as planned %s):", percent(p.Cases[0].Success))
 	for _, q := range p.Cases[1:] {
 		say("with %s: random error %s, shift %+.1f %%, yield %s, chance %s", q.Name, percent(q.Outcome.Random), 100*q.Outcome.Systematic, percent(q.Outcome.Yield), percent(q.Success))
+	}
+	if q := p.choices(); len(q) > 0 {
+		say("")
+		say("Each choice by itself, all else as above (random error, chance):")
+		say("%s", strings.Join(q, "\n"))
 	}
 	say("")
 	say("Basis. %d designs predicted from %.3g h of simulated waves%s; seed %d, offplane %s.", len(p.Candidates), float64(l.Effort.Waves)/3600, p.basis(), l.Seed, p.Version)
@@ -79,13 +85,55 @@ func (p *Plan) limitText() string {
 func (c *Candidate) describe(l *Loaded) string {
 	var q []string
 	for j, v := range c.Values {
-		what := l.Vary[j].What
-		if share, err := strconv.ParseFloat(v, 64); err == nil && (what == "second_line" || what == "split") {
-			v = fmt.Sprintf("%.3g %% of the time", 100*share)
-		}
-		q = append(q, strings.ReplaceAll(what, "_", " ")+" "+v)
+		q = append(q, l.Vary[j].named()+" "+l.Vary[j].value(v))
 	}
 	return strings.Join(q, ", ")
+}
+
+func (k *Knob) named() string {
+	switch k.What {
+	case "second_line":
+		return "second line's share of the time"
+	case "split":
+		return "second line's share of the night"
+	}
+	return k.What
+}
+
+// value words a value of a knob.
+func (k *Knob) value(v string) string {
+	if share, err := strconv.ParseFloat(v, 64); err == nil && (k.What == "second_line" || k.What == "split") {
+		return fmt.Sprintf("%.3g %%", 100*share)
+	}
+	return v
+}
+
+// choices says of each knob what other values would do, all else as chosen: one line each.
+func (p *Plan) choices() []string {
+	const most = 6
+	l, c := p.Campaign, p.Chosen()
+	var lines []string
+	for j := range l.Vary {
+		var row []*Candidate
+		for i := range p.Candidates {
+			d := &p.Candidates[i]
+			others := func(v []string) []string { return slices.Concat(v[:j], v[j+1:]) }
+			if slices.Equal(others(d.Values), others(c.Values)) {
+				row = append(row, d)
+			}
+		}
+		n := min(len(row), most)
+		if n < 2 {
+			continue
+		}
+		var q []string
+		for i := range n {
+			d := row[(i*(len(row)-1)+(n-1)/2)/(n-1)]
+			q = append(q, fmt.Sprintf("%s: %s, %.0f %%", l.Vary[j].value(d.Values[j]), percent(d.Outcome.Random), 100*d.Success))
+		}
+		lines = append(lines, l.Vary[j].named()+" "+strings.Join(q, "; "))
+	}
+	return lines
 }
 
 // camera says what the frames of a design are.
