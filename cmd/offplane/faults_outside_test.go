@@ -16,6 +16,7 @@ func TestFaults(t *testing.T) {
 	killed, others := victims(t, dir), writers(t, dir)
 	t.Run("kills", func(t *testing.T) { tryKills(t, dir, killed, 20) })
 	t.Run("room", func(t *testing.T) { tryNoRoom(t, dir, killed, others) })
+	t.Run("held", func(t *testing.T) { tryHeld(t, dir, append(killed, others...)) })
 	t.Run("network", func(t *testing.T) { tryNoNetwork(t, dir) })
 	t.Run("loopback", func(t *testing.T) { tryLoopback(t, dir) })
 }
@@ -104,6 +105,35 @@ func tryNoRoom(t *testing.T, dir string, killed, others []victim) {
 	}
 	for _, command := range []string{"line", "line --json", "scenario list", "scenario show quick", "table show", "ensemble list", "--help", "completion bash"} {
 		try(command+", nowhere to print", "exec offplane "+command+" >/dev/full", "no space left on device")
+	}
+}
+
+// Two processes do not work in one folder: the second is refused.
+func tryHeld(t *testing.T, dir string, all []victim) {
+	held := filepath.Join(dir, "held")
+	if err := os.Mkdir(held, 0o777); err != nil {
+		t.Fatal(err)
+	}
+	f, err := os.Create(filepath.Join(held, markerName))
+	if err != nil {
+		t.Fatal(err)
+	}
+	defer f.Close()
+	if err := lock(f); err != nil {
+		t.Fatal(err)
+	}
+	for _, v := range all {
+		if v.file != "" || v.name == "submit" || v.name == "manual" { // scripts and pages may be written twice
+			continue
+		}
+		p := start(t, dir, append(v.args, "-o", "held")...)
+		p.finish(exitMisuse)
+		if want := "offplane: held is held by another process that writes to it\n"; p.stderr.String() != want {
+			t.Errorf("%s: %s", v.name, p.stderr.String())
+		}
+	}
+	if list, err := os.ReadDir(held); err != nil || len(list) != 1 {
+		t.Errorf("left %v, %v", list, err)
 	}
 }
 
