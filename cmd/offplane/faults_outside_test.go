@@ -27,16 +27,7 @@ const far = 4
 // writers are the other commands that write, upon what victims left in dir.
 func writers(t *testing.T, dir string) []victim {
 	t.Helper()
-	const campaign = `target: {scenario: tiny.yaml, set: ["inversion.estimators=[pair]"], from: 264 deg, to: 276 deg, inner: 1.10 Rsun, outer: 1.20 Rsun}
-goal: {random: 0.9, systematic: 0.9, yield: 0.05, success: 0.5}
-facts: {hours: 3 h}
-vary:
-  - {what: duration, values: [1 h, 2 h]}
-effort: {waves: 4 h, designs: 1, trials: 4}
-`
-	if err := os.WriteFile(filepath.Join(dir, "campaign.yaml"), []byte(campaign), 0o666); err != nil {
-		t.Fatal(err)
-	}
+	campaignFile(t, dir)
 	return []victim{
 		{name: "synth", args: []string{"synth", "tiny.yaml", "--quiet"}},
 		{name: "invert", args: []string{"invert", "data/observation.fits", "--quiet", "--set", "box=11", "--set", "track=11"}},
