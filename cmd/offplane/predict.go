@@ -59,7 +59,9 @@ const (
 	baseBytes     = 60e6   // the program, lines and tables
 	cacheBytes    = 160e6  // spectra of the driver, at most
 	pixelBytes    = 15e3   // spectra of the driver for one pixel
-	copies        = 2.5    // of the frames: before and behind the camera, and series
+	keptBytes     = 5.5    // of a pixel and frame: its series, and what of it lies in the band
+	placeBytes    = 250    // of a pixel of the image: maps and lists
+	stripRows     = 80     // rows of mean length of a strip of the image, of whose frames there are two copies
 	slack         = 1.25   // of the heap
 )
 
@@ -119,8 +121,12 @@ func predict(ctx context.Context, l *scenarios.Loaded, workers int) (*prediction
 
 	values := float64(len(s.Camera.Tunings)) * (frames + float64(p.Second))
 	cube := 4 * pixels * values
-	p.Memory = slack * (baseBytes + copies*cube + min(cacheBytes, pixels*pixelBytes))
 	size := float64(scene.Grid.Nx * scene.Grid.Ny)
+	held := 2 * cube * min(1, stripRows/float64(scene.Grid.Ny))
+	if s.Camera.Scatter != nil { // each pixel lights all others
+		held += cube
+	}
+	p.Memory = slack * (baseBytes + keptBytes*pixels*frames + placeBytes*size + held + min(cacheBytes, pixels*pixelBytes))
 	const maps = 15 + 16 + 4 // truth, inferred, bias
 	p.Disk = 4*size*(maps+2*float64(len(s.Camera.Tunings))) + 4*pixels*frames + 1e6
 	p.Framed = p.Disk + float64(b.Bytes)
