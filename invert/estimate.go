@@ -163,8 +163,8 @@ const errorBins = 2
 // interval of one error holds the mean of 64 realisations in 62 to 76 % of the cases on patches
 // of plane waves (TestCoverage, TestCoverageWhereTracksMatter; 50 to 57 % for pair without the
 // track's part where it matters), in 62 to 81 % from no noise at all to that of a frame as
-// large as three quarters of the waves (TestCoverageElsewhere: a few are too wide), and in 60
-// to 71 % on a wedge of quick, where structures cross along the line of sight
+// large as three quarters of the waves (TestCoverageElsewhere: a few are too wide), and in 58
+// to 72 % on a wedge of quick, where structures cross along the line of sight
 // (TestCoverageOnQuick in compare/trial; derived). Unsplit is the exception there: where waves
 // run both ways its slowness passes through zero, and no interval holds a mean of such speeds.
 func resampled(pull, share []float64) float64 {
