@@ -47,7 +47,7 @@ func (r *Report) budget() *budgetSection {
 // signed prints a logarithm with its sign, a dash for none.
 func signed(v stat.Number) string {
 	s := cell(float64(v), 3)
-	if v > 0 {
+	if v >= 0.0005 { // what rounds to 0 has no sign
 		s = "+" + s
 	}
 	return s
@@ -70,7 +70,7 @@ func absent(b *budget.Budget) (names []string) {
 
 // budgetSentence tells the total, what the method makes of it, and the largest terms.
 func budgetSentence(b *budget.Budget) string {
-	terms := slices.DeleteFunc(slices.Clone(b.Terms), func(l budget.Term) bool { return !l.On })
+	terms := slices.DeleteFunc(slices.Clone(b.Terms), func(l budget.Term) bool { return math.Abs(float64(l.Field.Share)) < 0.0005 })
 	slices.SortStableFunc(terms, func(x, y budget.Term) int {
 		return cmp.Compare(math.Abs(float64(y.Field.Share)), math.Abs(float64(x.Field.Share)))
 	})
