@@ -6,6 +6,7 @@ import (
 	"fmt"
 	"os"
 	"path/filepath"
+	"slices"
 	"strings"
 	"text/tabwriter"
 
@@ -115,26 +116,26 @@ the same bytes wherever it is computed, so an ensemble may be shared out: --task
 		if err != nil {
 			return misuse(err)
 		}
-		return p.runEnsemble(ctx, l, &m)
+		return p.runEnsemble(ctx, args[0], l, &m)
 	})
 	return cmd
 }
 
-func (p *program) runEnsemble(ctx context.Context, l *ensemble.Loaded, m *members) error {
+func (p *program) runEnsemble(ctx context.Context, name string, l *ensemble.Loaded, m *members) error {
 	r := newRecord("ensemble", p.args, m.out, parallel.Workers(m.workers))
 	numbers, err := m.share(l)
 	if err != nil {
 		return err
 	}
 	if !m.part { // tasks share a folder
-		held, err := p.hold(m.out)
+		held, err := p.hold(m.out, "ensemble", m.force)
 		if err != nil {
 			return err
 		}
 		defer held.abandon()
 		m.held = held
 	}
-	if err := m.prepare(l); err != nil {
+	if err := m.prepare(name, l); err != nil {
 		return err
 	}
 	bar := newProgress(p.stderr, m.quiet, m.progress)
@@ -197,14 +198,20 @@ func (m *members) share(l *ensemble.Loaded) ([]int, error) {
 
 // prepare holds the folder against the ensemble. A task never clears it: others may be
 // at work there.
-func (m *members) prepare(l *ensemble.Loaded) error {
+func (m *members) prepare(name string, l *ensemble.Loaded) error {
 	if m.force && m.part {
 		return misusef("--force does not go with --task: other tasks may be at work in %s", m.out)
 	}
-	if m.force {
+	own := filepath.Join(m.out, ensemble.Entries[0])
+	switch {
+	case m.force && sameFile(name, own):
+		return misusef("%s would be read and written: choose another folder", name)
+	case m.force:
 		if err := clearEnsemble(m.out); err != nil {
 			return err
 		}
+	case !exists(own) && exists(filepath.Join(m.out, recordName)):
+		return (&folder{dir: m.out}).complete()
 	}
 	err := ensemble.Prepare(l, m.out)
 	switch {
@@ -228,7 +235,8 @@ func (m *members) reopen(todo int) error {
 // clearEnsemble takes away what run and gather leave; the record first, so that the
 // folder is not complete from then on.
 func clearEnsemble(dir string) error {
-	for _, name := range append([]string{recordName, membersFile}, ensemble.Entries...) {
+	other := recorded(filepath.Join(dir, recordName))
+	for _, name := range slices.Concat([]string{recordName, membersFile}, ensemble.Entries, other) {
 		if err := os.RemoveAll(filepath.Join(dir, name)); err != nil {
 			return err
 		}

@@ -11,6 +11,7 @@ import (
 	"io/fs"
 	"os"
 	"path/filepath"
+	"slices"
 	"syscall"
 )
 
@@ -51,8 +52,9 @@ type folder struct {
 // in any case. What an earlier try at the same job left is removed: it starts afresh.
 func (p *program) open(dir string, j job, force bool) (*folder, error) {
 	f := &folder{dir: dir, job: j, warn: p.say}
-	for _, in := range j.inputs {
-		for _, name := range j.files {
+	// What an earlier command left is removed, and may be what this one reads.
+	for _, name := range slices.Concat(j.files, recorded(f.path(recordName))) {
+		for _, in := range j.inputs {
 			if sameFile(in, f.path(name)) {
 				return nil, misusef("%s would be read and written: choose another folder", in)
 			}
@@ -68,10 +70,38 @@ func (p *program) open(dir string, j job, force bool) (*folder, error) {
 	return f, nil
 }
 
-// hold takes a folder for the time of a command that keeps other books of what it holds.
-func (p *program) hold(dir string) (*folder, error) {
-	f := &folder{dir: dir, warn: p.say, fresh: true}
-	return f, f.take()
+// hold takes a folder for the time of a command that keeps other books of what it holds:
+// none that another command has not finished, unless force is set.
+func (p *program) hold(dir, command string, force bool) (*folder, error) {
+	f := &folder{dir: dir, warn: p.say}
+	if err := f.take(); err != nil {
+		return nil, err
+	}
+	old, unfinished, err := f.begun()
+	if err == nil && unfinished && old.Command != command && !force {
+		err = f.occupied(&old)
+	}
+	if err != nil {
+		f.abandon()
+		return nil, err
+	}
+	return f, nil
+}
+
+// begun returns the job that the marker tells of; ok is false if there is none.
+func (f *folder) begun() (old job, ok bool, err error) {
+	text, err := io.ReadAll(f.marker)
+	f.fresh = len(text) == 0
+	// A marker that its maker had no time to fill in says nothing.
+	return old, err == nil && json.Unmarshal(text, &old) == nil && old.SHA256 != "", err
+}
+
+func (f *folder) occupied(old *job) error {
+	return misusef("%s holds an unfinished %s of other input: choose another folder, or write over it with --force", f.dir, old.Command)
+}
+
+func (f *folder) complete() error {
+	return misusef("%s is complete: choose another folder, or write over it with --force", f.dir)
 }
 
 // take makes the folder if need be and locks it.
@@ -95,22 +125,18 @@ func unmade(err error) error {
 
 // claim holds what is in the folder against the job and clears it for it.
 func (f *folder) claim(force bool) error {
-	var old job
-	text, err := io.ReadAll(f.marker)
+	old, unfinished, err := f.begun()
 	if err != nil {
 		return err
 	}
-	// A marker that its maker had no time to fill in says nothing.
-	unfinished := json.Unmarshal(text, &old) == nil && old.SHA256 != ""
 	same := unfinished && old.Command == f.job.Command && old.SHA256 == f.job.SHA256
-	f.fresh = len(text) == 0
 	complete := exists(f.path(recordName))
 	switch {
 	case force:
 	case complete:
-		return misusef("%s is complete: choose another folder, or write over it with --force", f.dir)
+		return f.complete()
 	case unfinished && !same:
-		return misusef("%s holds an unfinished %s of other input: choose another folder, or write over it with --force", f.dir, old.Command)
+		return f.occupied(&old)
 	case !unfinished && !f.carriesJob():
 		for _, name := range f.job.files {
 			if exists(f.path(name)) {
@@ -131,7 +157,7 @@ func (f *folder) claim(force bool) error {
 			}
 		}
 	}
-	text, err = json.Marshal(f.job)
+	text, err := json.Marshal(f.job)
 	if err != nil {
 		return err
 	}

@@ -77,7 +77,7 @@ func (p *program) submit(ctx context.Context, name string, s *submission) error 
 		return misuse(err)
 	}
 	m := members{work: work{out: s.out}, retry: true}
-	if err := m.prepare(l); err != nil {
+	if err := m.prepare(name, l); err != nil {
 		return err
 	}
 	set, err := ensemble.Open(s.out)
