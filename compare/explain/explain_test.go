@@ -422,7 +422,7 @@ func TestBadFolders(t *testing.T) {
 		}
 	}
 	write(bytes.Replace(good, []byte("3 G"), []byte("4 G"), 1))
-	refused("the SHA-256 of scenario_text is")
+	refused("the scenario is damaged: its SHA-256 is")
 	write([]byte("{}"))
 	refused("carries no scenario")
 	write(good)
