@@ -104,7 +104,7 @@ func (w *planner) limits(ctx context.Context, c *Candidate) error {
 	now := c.Outcome
 	o := now
 	o.Systematic -= w.plan.Density
-	add("density along the line of sight", "no observation changes it: a correction of the density, or a goal that allows it", o)
+	add("density along the line of sight", "not the observation; a correction of the density, or a goal that allows its bias", o)
 	o = now
 	o.Systematic = w.plan.Density
 	o.Random = math.Sqrt(max(0, now.Random*now.Random-w.plan.Floor.Random*w.plan.Floor.Random))

@@ -76,9 +76,9 @@ func (p *Plan) limitText() string {
 	case now >= 0:
 		return fmt.Sprintf("The tightest bound, that of the %s, is kept with %.0f %% to spare.\nWhat limits it most is %s (without: %.0f %% to spare).", c.Outcome.tightest(g), 100*now, best.Name, 100*best.Margin)
 	case best.Margin >= 0:
-		return fmt.Sprintf("Limited by %s: the goal would be met by %s.", best.Name, best.Change)
+		return fmt.Sprintf("Limited by %s: without that the goal would be met.\nWhat would have to change: %s.", best.Name, best.Change)
 	}
-	return fmt.Sprintf("Limited most by %s (%s), but that alone does not do: the goal stays missed by\n%.0f %% of its bound instead of %.0f %%.", best.Name, best.Change, -100*best.Margin, -100*now)
+	return fmt.Sprintf("Limited most by %s, but that alone does not do:\nthe goal stays missed by %.0f %% of its bound instead of %.0f %%. What would have to change: %s.", best.Name, -100*best.Margin, -100*now, best.Change)
 }
 
 // describe lists the values that vary.
