@@ -41,8 +41,6 @@ func Main(args []string, stdout, stderr io.Writer) int {
 	defer stop()
 	root := p.root()
 	root.SetArgs(args)
-	root.SetOut(out)
-	root.SetErr(stderr)
 	cmd, err := root.ExecuteContextC(ctx)
 	if f := (*fault)(nil); out.err != nil && !errors.As(err, &f) {
 		err = &fault{exitFailed, fmt.Errorf("results on standard output: %w", out.err)}
@@ -86,6 +84,8 @@ The data are synthetic and every verdict depends on the corona that was assumed.
 	root.SetVersionTemplate("{{.Version}}\n")
 	root.SetFlagErrorFunc(flagError)
 	root.AddCommand(p.runCommand(), p.synthCommand(), p.invertCommand(), p.compareCommand(), p.explainCommand(), p.viewCommand(), p.budgetCommand(), p.planCommand(), p.scenarioCommand(), p.lineCommand(), p.ensembleCommand(), p.exactCommand(), p.manualCommand(), p.tableCommand())
+	root.SetOut(p.stdout) // before the next line, which remembers it
+	root.SetErr(p.stderr)
 	root.InitDefaultCompletionCmd()
 	root.SetHelpCommand(helpCommand(root))
 	for _, c := range root.Commands() {
