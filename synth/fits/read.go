@@ -743,6 +743,15 @@ func (t *Table) Floats(name string) ([]float64, error) {
 	return nil, t.mismatch(c, "one number a row")
 }
 
+// Unit returns the unit of a column; empty if there is none.
+func (t *Table) Unit(name string) string {
+	c, err := t.column(name)
+	if err != nil {
+		return ""
+	}
+	return c.Unit
+}
+
 // Ints returns an integer column of one number a row.
 func (t *Table) Ints(name string) ([]int64, error) {
 	c, err := t.column(name)

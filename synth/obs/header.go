@@ -230,7 +230,10 @@ func readGrid(h fits.Header, axes []int) (Grid, error) {
 	return g, nil
 }
 
-// sameFrame reports whether two grids have the same pixels on the same sky.
+// sameFrame reports whether two grids have the same pixels on the same sky, to some
+// thousandths of a pixel: units and programs round differently.
 func (g *Grid) sameFrame(o *Grid) bool {
-	return g.Nx == o.Nx && g.Ny == o.Ny && g.Pixel == o.Pixel && g.CentreX == o.CentreX && g.CentreY == o.CentreY && g.Roll == o.Roll && g.Distance == o.Distance
+	near := func(a, b, tolerance float64) bool { return math.Abs(a-b) <= tolerance }
+	return g.Nx == o.Nx && g.Ny == o.Ny && near(g.Pixel, o.Pixel, 1e-6*g.Pixel) && near(g.Distance, o.Distance, 1e-6*g.Distance) &&
+		near(g.CentreX, o.CentreX, 1e-3) && near(g.CentreY, o.CentreY, 1e-3) && near(g.Roll, o.Roll, 1e-4)
 }

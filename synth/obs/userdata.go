@@ -34,13 +34,21 @@ type UserData struct {
 	Electrons   float64      // detected electrons per unit of the frames; 0: not known
 }
 
-// IsObservation reports whether a file was written by WriteObservation.
-func IsObservation(path string) (bool, error) {
+// IsObservation reports whether a file was written by WriteObservation; one image of a
+// file, FILE[EXT], never was.
+func IsObservation(name string) (bool, error) {
+	path, ext, err := splitName(name)
+	if err != nil {
+		return false, err
+	}
 	f, err := fits.Open(path)
 	if err != nil {
 		return false, err
 	}
 	defer f.Close()
+	if ext != "" {
+		return false, nil
+	}
 	for _, h := range f.HDUs {
 		if strings.EqualFold(h.Name, "TUNINGS") {
 			return true, nil
@@ -277,14 +285,20 @@ func (c *userCube) linear(axis string, units map[string]float64, missing string)
 	i := c.at[axis]
 	key := func(s string) string { return fmt.Sprintf("%s%d", s, i) }
 	for j := range c.Axes {
-		if v, ok := c.Header.Float(fmt.Sprintf("PC%d_%d", i, j+1)); ok && j+1 != i && v != 0 {
-			return nil, fmt.Errorf("%s: PC%d_%d is %g: the %s axis may not depend on another", c.name, i, j+1, v, axis)
+		for _, kind := range []string{"PC", "CD"} {
+			if v, ok := c.Header.Float(fmt.Sprintf("%s%d_%d", kind, i, j+1)); ok && j+1 != i && v != 0 {
+				return nil, fmt.Errorf("%s: %s%d_%d is %g: the %s axis may not depend on another", c.name, kind, i, j+1, v, axis)
+			}
 		}
 	}
-	step, ok := c.Header.Float(key("CDELT"))
+	// CDi_i replaces CDELTi, PCi_i multiplies it (Greisen & Calabretta 2002, A&A 395, 1061).
+	step, ok := c.Header.Float(fmt.Sprintf("CD%d_%d", i, i))
 	if !ok {
-		if step, ok = c.Header.Float(fmt.Sprintf("CD%d_%d", i, i)); !ok {
+		if step, ok = c.Header.Float(key("CDELT")); !ok {
 			return nil, fmt.Errorf("%s: %s is missing: %s", c.name, key("CDELT"), missing)
+		}
+		if v, ok := c.Header.Float(fmt.Sprintf("PC%d_%d", i, i)); ok {
+			step *= v
 		}
 	}
 	unit, _ := c.Header.Text(key("CUNIT"))
@@ -367,13 +381,20 @@ func (u *UserData) times(c *userCube, frames int) ([]float64, error) {
 				if times, err = t.Floats("time"); err != nil {
 					return nil, err
 				}
+				unit := t.Unit("time")
+				scale, ok := timeUnits[strings.ToLower(unit)]
+				if !ok {
+					return nil, fmt.Errorf("%s: column time of table TIMES is in %q; want s, ms, min, h or d", c.name, unit)
+				}
+				for i := range times {
+					times[i] *= scale
+				}
 			}
 		}
 	}
 	if times == nil {
 		var err error
-		// Seconds are the default of the standard.
-		times, err = c.linear("time", map[string]float64{"s": 1, "": 1, "ms": 1e-3, "min": 60, "h": 3600, "d": 86400},
+		times, err = c.linear("time", timeUnits,
 			"the times of the frames are not known; want a linear axis in s, min, h or d, a table TIMES with a column time [s], or the cadence")
 		if err != nil {
 			return nil, err
@@ -391,6 +412,9 @@ func (u *UserData) times(c *userCube, frames int) ([]float64, error) {
 	}
 	return times, nil
 }
+
+// timeUnits in seconds, which are the default of the standard.
+var timeUnits = map[string]float64{"s": 1, "": 1, "ms": 1e-3, "min": 60, "h": 3600, "d": 86400}
 
 // velocity returns the factor from Doppler shifts of the file to km/s.
 func (u *UserData) velocity(c *userCube) (float64, error) {
@@ -484,6 +508,9 @@ func (o *Observation) readUserFrames(c *userCube, tunings, frames int, scale flo
 	for i, n := range seen {
 		if n == 0 {
 			empty = append(empty, fmt.Sprint(i+1))
+			for p := range o.Pixels { // zeros are no shifts where all are
+				o.Frames[0].Data[p*tunings*frames+i] = float32(math.NaN())
+			}
 		}
 	}
 	if 4*len(empty) > frames {

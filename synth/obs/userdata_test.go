@@ -120,3 +120,24 @@ func TestUserCube(t *testing.T) {
 		}
 	}
 }
+
+// The step of an axis is CDELT times PC or the element of CD (Greisen & Calabretta 2002,
+// A&A 395, 1061), and the times of a table have the unit of their column.
+func TestStepsOfAxes(t *testing.T) {
+	for name, cards := range map[string][]fits.Card{
+		"PC":       {{Key: "CDELT3", Value: 15.0}, {Key: "PC3_3", Value: 2.0}},
+		"CD":       {{Key: "CDELT3", Value: 1.0}, {Key: "CD3_3", Value: 30.0}},
+		"CD alone": {{Key: "CD3_3", Value: 30.0}},
+		"minutes":  {{Key: "CDELT3", Value: 0.5}, {Key: "CUNIT3", Value: "min"}},
+	} {
+		path := userFile(t, []int{8, 6, 5}, append([]fits.Card{{Key: "CTYPE3", Value: "TIME"}, {Key: "BUNIT", Value: "km/s"}}, cards...)...)
+		o, err := ReadUserData(UserData{First: path})
+		if err != nil {
+			t.Errorf("%s: %v", name, err)
+			continue
+		}
+		if e := o.Exposures[1]; math.Abs(e.Time-30) > 1e-9 {
+			t.Errorf("%s: the second frame is at %g s", name, e.Time)
+		}
+	}
+}
