@@ -276,9 +276,8 @@ func (w *planner) choose() {
 	pareto(p.Candidates)
 }
 
-// Total is the random error and the shift in one number.
-func (o Outcome) Total() float64 { return math.Hypot(o.Random, o.Systematic) }
-
+// pareto marks the designs than which none is better in hours, random error and yield at
+// once. The shift is hardly a matter of the design, and known less well than it differs.
 func pareto(cs []Candidate) {
 	order := make([]*Candidate, len(cs))
 	for i := range cs {
@@ -290,19 +289,19 @@ func pareto(cs []Candidate) {
 			return -1
 		case a.Hours > b.Hours:
 			return 1
-		case a.Outcome.Total() < b.Outcome.Total():
+		case a.Outcome.Random < b.Outcome.Random:
 			return -1
-		case a.Outcome.Total() > b.Outcome.Total():
+		case a.Outcome.Random > b.Outcome.Random:
 			return 1
 		}
 		return 0
 	})
 	var front []*Candidate
 	for _, c := range order {
-		e := c.Outcome.Total()
+		e := c.Outcome.Random
 		c.Pareto = !math.IsNaN(e)
 		for _, f := range front {
-			if f.Outcome.Total() <= e && f.Outcome.Yield >= c.Outcome.Yield {
+			if f.Outcome.Random <= e && f.Outcome.Yield >= c.Outcome.Yield {
 				c.Pareto = false
 				break
 			}

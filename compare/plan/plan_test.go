@@ -129,7 +129,7 @@ func TestOutOfReach(t *testing.T) {
 	if err != nil {
 		t.Fatal(err)
 	}
-	if p.Best != nil || p.Nearest == nil || !strings.Contains(p.Shortfall(), "at most 0.1 % wanted") || !strings.Contains(p.Text(), "No design") {
+	if p.Best != nil || p.Nearest == nil || !strings.Contains(p.Shortfall(), "at most 0.05 % wanted") || !strings.Contains(p.Text(), "No design") {
 		t.Errorf("%v %s\n%s", p.Best, p.Shortfall(), p.Text())
 	}
 	for set, want := range map[string]string{

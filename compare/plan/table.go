@@ -62,7 +62,7 @@ func (p *Plan) Table() ecsv.Table {
 	floats("yield", "", "share of the pixels with a field", func(c *Candidate) float64 { return c.Outcome.Yield })
 	floats("yield_error", "", "standard deviation of the share in one map about the prediction", func(c *Candidate) float64 { return c.Error.Yield })
 	floats("success", "", "chance to meet the goal", func(c *Candidate) float64 { return c.Success })
-	ints("pareto", "1: no design is better in hours, error and yield at once", func(c *Candidate) int { return truth(c.Pareto) })
+	ints("pareto", "1: no design is better in hours, random error and yield at once", func(c *Candidate) int { return truth(c.Pareto) })
 	floats("speed_random", "", "random error of ln(v) of one pixel, before calibration", func(c *Candidate) float64 { return c.Raw.Speed })
 	floats("speed_photons", "", "part of it that photons make", func(c *Candidate) float64 { return c.Raw.Photons })
 	floats("density_random", "", "random error of 1/2 ln(n) by photons", func(c *Candidate) float64 { return c.Raw.Density })
@@ -209,4 +209,9 @@ func (c *Candidate) frames() [2]int {
 	return [2]int{n, min(n, s.Camera.SecondLine)}
 }
 
-func percent(x float64) string { return fmt.Sprintf("%.1f %%", 100*x) }
+func percent(x float64) string {
+	if x > 0 && x < 0.001 {
+		return fmt.Sprintf("%.1g %%", 100*x)
+	}
+	return fmt.Sprintf("%.1f %%", 100*x)
+}

@@ -45,6 +45,9 @@ func budgetFigure(b *budget.Budget, f Format) []byte {
 	lo, hi := 0.0, 0.0
 	for _, s := range steps {
 		lo, hi = min(lo, s.from, s.mid, s.to), max(hi, s.from, s.mid, s.to)
+		if s.err > 0 { // false for NaN
+			lo, hi = min(lo, s.to-s.err), max(hi, s.to+s.err)
+		}
 	}
 	a := budgetAxes(c, budgetLeft, budgetWide, base, top, lo, hi)
 	a.fall(steps, y)
@@ -136,7 +139,7 @@ func budgetAxes(c *canvas, x, w, base, top, lo, hi float64) *budgetPanel {
 	return p
 }
 
-func (p *budgetPanel) ticks() []tick { return linearTicks(p.xlo, p.xhi, int(p.w/110)) }
+func (p *budgetPanel) ticks() []tick { return linearTicks(p.xlo, p.xhi, int(p.w/80)) }
 
 func (p *budgetPanel) title(s string) {
 	p.c.frame(p.x, p.y, p.w, p.h)

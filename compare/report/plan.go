@@ -25,10 +25,16 @@ func planFigure(p *plan.Plan, f Format) []byte {
 	c := newCanvas(f, figureWidth, hgt)
 	g := &p.Campaign.Goal
 	hours, high, worst := 0.0, 1.2*g.Random, max(g.Random, g.Systematic)
+	least := math.Inf(1)
+	for i := range p.Candidates {
+		if e := p.Candidates[i].Outcome.Random; e < least { // false for NaN
+			least = e
+		}
+	}
 	for i := range p.Candidates {
 		q := &p.Candidates[i]
 		hours = max(hours, q.Hours)
-		if e := q.Outcome.Random; e < 3*g.Random {
+		if e := q.Outcome.Random; e < 3*max(g.Random, least) {
 			high = max(high, 1.1*e)
 		}
 	}
@@ -74,7 +80,7 @@ var planMarks = []struct {
 	shape  vgdraw.GlyphDrawer
 }{
 	{"design", faint, vgdraw.CircleGlyph{}},
-	{"none is better in time, error and yield", blue, vgdraw.CircleGlyph{}},
+	{"none is better in time, random error and yield", blue, vgdraw.CircleGlyph{}},
 	{"simulated", orange, vgdraw.PyramidGlyph{}},
 	{"chosen", vermillion, ring{}},
 }
