@@ -36,10 +36,13 @@ func (r *run) on(lattice, p int) bool {
 	return x%lattice == 0 && y%lattice == 0
 }
 
-// One pixel in swayLattice both ways tells of those within swayReach.
+// One pixel in swayLattice both ways tells of those within swayReach, and none of more than
+// swayMost: a speed that a turn changes by half is out of its expansion, and alone would
+// take the speeds of all pixels around.
 const (
 	swayLattice = 2 * angleLattice
 	swayReach   = 9
+	swayMost    = 0.25
 )
 
 // sway measures a pixel of the lattice on tracks along the turned directions.
@@ -94,7 +97,7 @@ func systematic(left, right, middle *swayed) float64 {
 		l, r := left.v*left.pull[j], right.v*right.pull[j]
 		left.pull[j], right.pull[j] = (l-r)/2, (l+r)/2-middle.v*m
 	}
-	return d*d - resampled(left.pull, middle.share) + 2*(e*e-resampled(right.pull, middle.share))
+	return min(d*d-resampled(left.pull, middle.share)+2*(e*e-resampled(right.pull, middle.share)), swayMost)
 }
 
 // withTrack returns the error of a speed v of estimator i, err what the frequencies tell.

@@ -446,7 +446,7 @@ func (r *Report) profiles(v *view, foot string) (Figure, bool) {
 		Name: "profiles",
 		Draw: func(f Format) []byte { return profileFigure(f, heights, [2]float64{edges[0], edges[n]}, ps, foot) },
 		Alt:  "Height profiles of field, phase speed and density: truths and inferred values with bands from the 16th to the 84th percentile, and below them the ratio of inferred to true.",
-		Caption: fmt.Sprintf("Height profiles: median of the pixels in steps of %.2g solar radii; bands, of the dashed truths between thin lines, run from the 16th to the 84th percentile. Black: truth at the plane of the sky (B_SKY [G], SPEED_SKY [km/s], NE_SKY [cm⁻³]); dashed and dotted: the other truths, weighted by emission (B_EMIS, NE_EMIS) or by wave power (B_WAVE, SPEED_WAVE), and the total field (BTOT_SKY); red: inferred B, SPEED, NE%s. Below: inferred over the sky truth, pixel by pixel, on a logarithmic axis from 0.5 to 2. Domain: %s; truths over the same pixels.",
+		Caption: fmt.Sprintf("Height profiles: median of the pixels in steps of %.2g solar radii; bands, of the dashed truths between thin lines, run from the 16th to the 84th percentile. Black: truth at the plane of the sky (B_SKY [G], SPEED_SKY [km/s], NE_SKY [cm⁻³]); dashed and dotted: the other truths, weighted by emission (B_EMIS, NE_EMIS) or by wave power (B_WAVE, SPEED_WAVE), and the total field (BTOT_SKY); orange: inferred B, SPEED, NE%s. Below: inferred over the sky truth, pixel by pixel, on a logarithmic axis from 0.5 to 2. Domain: %s; truths over the same pixels.",
 			1/float64(perRadius), e, r.domain()),
 	}, true
 }
