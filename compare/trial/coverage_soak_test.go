@@ -15,8 +15,8 @@ import (
 // Over 64 seeds of a wedge of quick the interval of one error either way holds a pixel's mean
 // over the seeds in 60 to 76 % of the cases in every bin of height: directions, and speeds of
 // lag and pair (68 % by definition). One of nine misses that: measured, from the lowest bin to
-// the highest, lag 0.666, 0.618, 0.626; pair 0.610, 0.625, 0.576 (0.603, 0.631, 0.604 with other
-// waves); angle 0.694, 0.719, 0.688; unsplit 0.486, 0.536, 0.575. With all tracks held at the
+// the highest, lag 0.664, 0.610, 0.606; pair 0.610, 0.624, 0.567 (0.603, 0.631, 0.604 with other
+// waves); angle 0.694, 0.719, 0.688; unsplit 0.428, 0.511, 0.563. With all tracks held at the
 // mean directions pair has 0.720, 0.711, 0.695. Half of this wedge's tracks end at its sides.
 //
 //	go test -tags soak -run TestCoverageOnQuick -v -timeout 1h ./compare/trial
