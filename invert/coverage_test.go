@@ -2,7 +2,9 @@ package invert
 
 import (
 	"context"
+	"fmt"
 	"math"
+	"slices"
 	"testing"
 )
 
@@ -74,14 +76,19 @@ func coveragePatch() (patch, Options, []string, []string) {
 	return q, opt, []string{"SPEED", "SPEED_UNSPLIT", "SPEED_PAIR", "ANGLE"}, []string{"SPEED_ERR", "SPEED_ERR_UNSPLIT", "SPEED_ERR_PAIR", "ANGLE_ERR"}
 }
 
-// hold checks that intervals of one error either way hold the mean of 64 realisations in 60 %
-// of the cases to most, at every height and for every estimator (68 % by definition).
-func hold(t *testing.T, q patch, opt Options, names, errs []string, most float64) {
+// hold holds the shares to what is asked, 60 to 76 % in every bin of height. Bins that are
+// known to miss it are told, as map and bin, and must miss it still: a list that is too long
+// is an error too.
+func hold(t *testing.T, q patch, opt Options, names, errs []string, misses ...string) {
 	t.Helper()
 	for k, shares := range coverage(t, q, opt, 64, names, errs) {
 		for b, s := range shares {
-			if !(s >= 0.60 && s <= most) {
-				t.Errorf("%s, height bin %d: %.3f of the intervals hold the mean", names[k], b, s)
+			bin := fmt.Sprintf("%s %d", names[k], b)
+			switch in := s >= 0.60 && s <= 0.76; {
+			case !in && !slices.Contains(misses, bin):
+				t.Errorf("%s: %.3f of the intervals hold the mean", bin, s)
+			case in && slices.Contains(misses, bin):
+				t.Errorf("%s: %.3f of the intervals hold the mean: it no longer misses", bin, s)
 			}
 		}
 	}
@@ -90,7 +97,7 @@ func hold(t *testing.T, q patch, opt Options, names, errs []string, most float64
 // The errors of phase speed and direction hold what they promise.
 func TestCoverage(t *testing.T) {
 	q, opt, names, errs := coveragePatch()
-	hold(t, q, opt, names, errs, 0.76)
+	hold(t, q, opt, names, errs)
 }
 
 // They also do where the arrival times change across the tracks by half as much again as along
@@ -98,5 +105,5 @@ func TestCoverage(t *testing.T) {
 func TestCoverageWhereTracksMatter(t *testing.T) {
 	q, opt, names, errs := coveragePatch()
 	q.ny, q.shear = 20, 1.5
-	hold(t, q, opt, names, errs, 0.76)
+	hold(t, q, opt, names, errs)
 }

@@ -77,7 +77,10 @@ func TestCoverageOnQuick(t *testing.T) {
 		for b := range held {
 			share := held[b] / all[b]
 			t.Logf("%-13s height bin %d: %.3f of %.0f; scatter %.2f, error %.2f", name, b, share, all[b], stat.Median(scatter[b]), stat.Median(errors[b]))
-			if name == "SPEED_PAIR" && b == bins-1 && share > 0.55 { // the miss
+			if name == "SPEED_PAIR" && b == bins-1 { // known to miss it
+				if math.Abs(share-0.567) > 0.03 {
+					t.Errorf("%s, height bin %d: %.3f of the intervals hold the mean, 0.567 was measured", name, b, share)
+				}
 				continue
 			}
 			// Where waves run both ways the slowness of waves as they are passes through zero:
