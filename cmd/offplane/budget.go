@@ -90,10 +90,7 @@ func (p *program) budget(ctx context.Context, l *scenarios.Loaded, w *work, o bu
 		return err
 	}
 	r.stage("writing")
-	if err := ctx.Err(); err != nil {
-		return err
-	}
-	if err := f.finish(r); err != nil {
+	if err := f.finish(ctx, r); err != nil {
 		return err
 	}
 	bar.wipe()

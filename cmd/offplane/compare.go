@@ -97,10 +97,7 @@ same tracks. --method=false leaves that out.`,
 			return err
 		}
 		r.stage("verdict")
-		if err := ctx.Err(); err != nil {
-			return err
-		}
-		if err := f.finish(r); err != nil {
+		if err := f.finish(ctx, r); err != nil {
 			return err
 		}
 		bar.wipe()

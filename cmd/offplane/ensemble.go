@@ -163,7 +163,7 @@ func (p *program) runEnsemble(ctx context.Context, name string, l *ensemble.Load
 		return p.told(m)
 	default:
 		m.held.abandon() // gathering takes it for itself
-		return p.gather(m, r)
+		return p.gather(ctx, m, r)
 	}
 	set, err := ensemble.Open(m.out)
 	if err != nil {
@@ -329,9 +329,9 @@ members are missing: offplane ensemble run goes on with them.`,
 	m.acceptFlag(cmd)
 	cmd.Flags().BoolVar(&m.quiet, "quiet", false, "no results on standard output")
 	cmd.Flags().BoolVar(&m.json, "json", false, "results on standard output as one JSON document")
-	cmd.RunE = do(func(_ context.Context, args []string) error {
+	cmd.RunE = do(func(ctx context.Context, args []string) error {
 		m.out = args[0]
-		return p.gather(&m, newRecord("ensemble", p.args, m.out, parallel.Workers(m.workers)))
+		return p.gather(ctx, &m, newRecord("ensemble", p.args, m.out, parallel.Workers(m.workers)))
 	})
 	return cmd
 }
@@ -339,7 +339,7 @@ members are missing: offplane ensemble run goes on with them.`,
 const membersFile = "members.ecsv"
 
 // gather makes the folder complete; r was begun with the command.
-func (p *program) gather(m *members, r *record) error {
+func (p *program) gather(ctx context.Context, m *members, r *record) error {
 	set, err := ensemble.Open(m.out)
 	if err != nil {
 		return misuse(err)
@@ -372,7 +372,7 @@ func (p *program) gather(m *members, r *record) error {
 		return err
 	}
 	r.stage("gather")
-	if err := f.finish(r); err != nil {
+	if err := f.finish(ctx, r); err != nil {
 		return err
 	}
 	return p.told(m)

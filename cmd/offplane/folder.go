@@ -2,6 +2,7 @@ package main
 
 import (
 	"bufio"
+	"context"
 	"crypto/sha256"
 	"encoding/hex"
 	"encoding/json"
@@ -228,8 +229,12 @@ func (f *folder) write(name string, fill func(io.Writer) error) (err error) {
 	return err
 }
 
-// finish writes the record, which makes the folder complete, and lets go of it.
-func (f *folder) finish(r *record) error {
+// finish writes the record, which makes the folder complete, and lets go of it; not after
+// an interrupt.
+func (f *folder) finish(ctx context.Context, r *record) error {
+	if err := ctx.Err(); err != nil {
+		return err
+	}
 	for _, name := range f.job.files {
 		e, err := entryOf(f.path(name))
 		if err != nil {

@@ -84,7 +84,7 @@ The recipe is the inversion section of a scenario by itself: --with reads it fro
 		if err := p.infer(ctx, out, v, &w, f, r, bar); err != nil {
 			return err
 		}
-		if err := f.finish(r); err != nil {
+		if err := f.finish(ctx, r); err != nil {
 			return err
 		}
 		bar.wipe()

@@ -84,10 +84,7 @@ func (p *program) plan(ctx context.Context, l *plan.Loaded, w *work) error {
 		return err
 	}
 	r.stage("writing")
-	if err := ctx.Err(); err != nil {
-		return err
-	}
-	if err := f.finish(r); err != nil {
+	if err := f.finish(ctx, r); err != nil {
 		return err
 	}
 	bar.wipe()

@@ -140,10 +140,7 @@ func (p *program) run(ctx context.Context, l *scenarios.Loaded, w *work, g *gate
 		return err
 	}
 	r.stage("verdict")
-	if err := ctx.Err(); err != nil {
-		return err
-	}
-	if err := f.finish(r); err != nil {
+	if err := f.finish(ctx, r); err != nil {
 		return err
 	}
 	bar.wipe()

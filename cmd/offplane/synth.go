@@ -40,7 +40,7 @@ truth.fits says what the corona was.`,
 		if err != nil {
 			return err
 		}
-		if err := f.finish(r); err != nil {
+		if err := f.finish(ctx, r); err != nil {
 			return err
 		}
 		bar.wipe()

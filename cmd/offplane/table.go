@@ -105,7 +105,7 @@ only): an ECSV file separated by commas or blanks, or plain comma-separated valu
 			return err
 		}
 		r.stage("writing")
-		if err := f.finish(r); err != nil {
+		if err := f.finish(ctx, r); err != nil {
 			return err
 		}
 		bar.wipe()

@@ -147,10 +147,7 @@ func (p *program) apply(ctx context.Context, w *work, a *application, name strin
 		return err
 	}
 	r.stage("correction")
-	if err := ctx.Err(); err != nil {
-		return err
-	}
-	if err := f.finish(r); err != nil {
+	if err := f.finish(ctx, r); err != nil {
 		return err
 	}
 	bar.wipe()
